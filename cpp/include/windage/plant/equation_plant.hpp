@@ -1,0 +1,30 @@
+// A plant written as equations: its right-hand side is a tape.
+#pragma once
+
+#include <windage/plant/ode_plant.hpp>
+#include <windage/plant/tape.hpp>
+
+namespace windage {
+
+class equation_plant final : public ode_plant {
+public:
+    equation_plant(const plant_description& d, const integration_settings& settings, const plant_disturbances& w,
+                   signal_arena& arena);
+
+    void evaluate_output(constant_signal time, constant_signal input) override;
+    constant_signal output() const override { return output_; }
+
+private:
+    void derivative(const block_state& x, block_state& dx, const stage& s) override;
+    void begin_plant(const trial_block& block) override;
+    void bind(tape& t, const std::vector<program_input>& inputs, const block_state& x, constant_signal time,
+              constant_signal command, const constant_signal* disturbances);
+
+    std::vector<program_input> derivative_inputs_, output_inputs_;
+    tape derivatives_, output_tape_;
+    const plant_disturbances& disturbances_;
+    std::vector<constant_signal> now_;
+    signal output_;
+};
+
+} // namespace windage

@@ -1,0 +1,84 @@
+// A plant whose differential equations are integrated at fixed steps between samples, together with the first-order
+// lag of the actuator where there is one. What the equations are is left to the derived plants.
+#pragma once
+
+#include <vector>
+
+#include <boost/numeric/odeint/stepper/euler.hpp>
+#include <boost/numeric/odeint/stepper/runge_kutta4_classic.hpp>
+#include <boost/numeric/odeint/stepper/runge_kutta_cash_karp54.hpp>
+
+#include <windage/plant/block_state.hpp>
+#include <windage/plant/description.hpp>
+#include <windage/plant/plant.hpp>
+#include <windage/plant/step_plan.hpp>
+
+namespace windage {
+
+namespace odeint = boost::numeric::odeint;
+
+struct integration_settings {
+    integrator_kind kind = integrator_kind::rk4;
+    int steps_per_sample = 1;
+    double tolerance = 1e-10;  ///< of integrator_kind::reference
+    bool split = false;        ///< the command changes inside the interval
+    number lag;                ///< time constant of the actuator, 0: none
+};
+
+class ode_plant : public plant {
+public:
+    ode_plant(const plant_description& d, const integration_settings& settings, const plant_disturbances& w,
+              bool reads_time, signal_arena& arena);
+
+    void begin(const trial_block& block, constant_signal sample_period, constant_signal fraction,
+               const lane_value& initial_command) override;
+    void advance(const sample_interval& interval) override;
+    constant_signal state(int i) const override { return x_[i]; }
+    int states() const override { return states_; }
+    constant_signal lagged_input() const override { return has_lag_ ? x_[states_] : nullptr; }
+
+protected:
+    /// What acts during one stage of one step.
+    struct stage {
+        constant_signal step = nullptr;     ///< length h of the whole step
+        constant_signal time = nullptr;     ///< of the stage; null unless something reads it
+        constant_signal command = nullptr;  ///< after the delay, before the lag
+        std::vector<constant_signal> disturbances;
+    };
+
+    /// dx = h f(t, x, u, w) of the plant's own states.
+    virtual void derivative(const block_state& x, block_state& dx, const stage& s) = 0;
+    /// One step of every lane; `stages` as many as the integrator has.
+    virtual void take_step(const std::vector<stage>& stages);
+    virtual void begin_plant(const trial_block& block) = 0;
+
+    std::size_t size_;
+    int states_;
+    bool has_lag_;
+    integrator_kind integrator_;
+    block_state x_;
+    signal inverse_lag_;
+
+private:
+    void full_derivative(const block_state& x, block_state& dx, const stage& s);
+    void prepare_stages();
+    void advance_reference(const sample_interval& interval);
+    void integrate_reference(constant_signal start, constant_signal length, constant_signal command);
+
+    const plant_disturbances& w_;
+    double tolerance_;
+    bool split_, evaluates_stages_;
+    std::vector<lane_value> initial_state_;
+    lane_value lag_;
+    step_plan plan_;
+    std::vector<double> abscissae_;   // distinct fractions of a step at which stages lie
+    std::vector<int> stage_buffer_;   // which of them each stage uses
+    std::vector<stage> stages_;
+    std::vector<signal> stage_time_;                 // one a distinct abscissa
+    std::vector<std::vector<signal>> stage_values_;  // per abscissa, one a disturbance
+    odeint::euler<block_state, double, block_state, double, block_algebra> euler_;
+    odeint::runge_kutta4_classic<block_state, double, block_state, double, block_algebra> rk4_;
+    odeint::runge_kutta_cash_karp54<block_state, double, block_state, double, block_algebra> cash_karp_;
+};
+
+} // namespace windage

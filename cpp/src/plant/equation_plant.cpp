@@ -1,0 +1,70 @@
+#include <windage/plant/equation_plant.hpp>
+
+#include <stdexcept>
+
+namespace windage {
+namespace {
+
+void check_inputs(const program& p, const plant_description& d) {
+    for (const program_input& input : p.inputs) {
+        const bool is_known = (input.kind == source_kind::state && std::size_t(input.index) < d.states.size()) ||
+                              (input.kind == source_kind::disturbance && input.index < d.disturbances) ||
+                              input.kind == source_kind::plant_input || input.kind == source_kind::time ||
+                              input.kind == source_kind::value;
+        if (!is_known || input.index < 0)
+            throw std::invalid_argument("plant: the equations read an input that the plant does not have");
+    }
+}
+
+const plant_description& checked(const plant_description& d, const plant_disturbances& w) {
+    check_inputs(d.derivatives, d);
+    check_inputs(d.output, d);
+    if (d.derivatives.outputs.size() != d.states.size())
+        throw std::invalid_argument("plant: one equation a state is expected");
+    if (d.output.outputs.size() != 1) throw std::invalid_argument("plant: one output is expected");
+    if (w.count() != d.disturbances) throw std::invalid_argument("plant: one disturbance for each name is expected");
+    return d;
+}
+
+} // namespace
+
+equation_plant::equation_plant(const plant_description& d, const integration_settings& settings,
+                               const plant_disturbances& w, signal_arena& arena)
+    : ode_plant(checked(d, w), settings, w, d.derivatives.reads(source_kind::time), arena),
+      derivative_inputs_(d.derivatives.inputs), output_inputs_(d.output.inputs),
+      derivatives_(d.derivatives, arena, tape::outputs::scaled), output_tape_(d.output, arena, tape::outputs::as_written),
+      disturbances_(w), output_(arena.take()) {
+    output_tape_.bind_output(0, output_);
+}
+
+void equation_plant::begin_plant(const trial_block& block) {
+    derivatives_.begin(block);
+    output_tape_.begin(block);
+}
+
+void equation_plant::bind(tape& t, const std::vector<program_input>& inputs, const block_state& x, constant_signal time,
+                          constant_signal command, const constant_signal* disturbances) {
+    for (std::size_t i = 0; i < inputs.size(); ++i) {
+        const program_input& input = inputs[i];
+        if (input.kind == source_kind::state) t.bind_input(i, x[input.index]);
+        if (input.kind == source_kind::time) t.bind_input(i, time);
+        if (input.kind == source_kind::disturbance) t.bind_input(i, disturbances[input.index]);
+        if (input.kind == source_kind::plant_input) t.bind_input(i, has_lag_ ? x[states_] : command);
+    }
+}
+
+void equation_plant::derivative(const block_state& x, block_state& dx, const stage& s) {
+    bind(derivatives_, derivative_inputs_, x, s.time, s.command, s.disturbances.data());
+    for (int i = 0; i < states_; ++i) derivatives_.bind_output(i, dx[i]);
+    derivatives_.bind_scale(s.step);
+    derivatives_.run();
+}
+
+void equation_plant::evaluate_output(constant_signal time, constant_signal input) {
+    now_.resize(disturbances_.count());
+    for (int k = 0; k < disturbances_.count(); ++k) now_[k] = disturbances_.now(k);
+    bind(output_tape_, output_inputs_, x_, time, input, now_.data());
+    output_tape_.run();
+}
+
+} // namespace windage

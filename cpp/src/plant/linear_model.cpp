@@ -1,0 +1,97 @@
+// State-space models of the linear stock plants.
+#include <stdexcept>
+#include <string>
+
+#include <windage/plant/linear_plant.hpp>
+
+namespace windage {
+namespace {
+
+linear_model zeros(int states, int disturbances) {
+    using Eigen::MatrixXd;
+    return {MatrixXd::Zero(states, states), MatrixXd::Zero(states, 1), MatrixXd::Zero(states, disturbances),
+            MatrixXd::Zero(1, states)};
+}
+
+// y^(n) = b u + w
+linear_model integrator_chain(int order, double gain) {
+    linear_model m = zeros(order, 1);
+    for (int i = 0; i + 1 < order; ++i) m.a(i, i + 1) = 1.0;
+    m.b(order - 1, 0) = gain;
+    m.e(order - 1, 0) = 1.0;
+    m.c(0, 0) = 1.0;
+    return m;
+}
+
+// K / (T s + 1), with the disturbance added to the input
+linear_model first_order(double gain, double time_constant) {
+    linear_model m = zeros(1, 1);
+    m.a(0, 0) = -1.0 / time_constant;
+    m.b(0, 0) = m.e(0, 0) = gain / time_constant;
+    m.c(0, 0) = 1.0;
+    return m;
+}
+
+// K / (T^2 s^2 + 2 D T s + 1), with the disturbance added to the input
+linear_model second_order(double gain, double time_constant, double damping) {
+    linear_model m = zeros(2, 1);
+    const double square = time_constant * time_constant;
+    m.a(0, 1) = 1.0;
+    m.a(1, 0) = -1.0 / square;
+    m.a(1, 1) = -2.0 * damping / time_constant;
+    m.b(1, 0) = m.e(1, 0) = gain / square;
+    m.c(0, 0) = 1.0;
+    return m;
+}
+
+// Controllable canonical form, with the disturbance added to the input
+linear_model transfer_function(const std::vector<double>& numbers, int numerator_terms) {
+    const int n = int(numbers.size()) - numerator_terms - 1;
+    const double lead = numbers[numerator_terms];
+    linear_model m = zeros(n, 1);
+    for (int i = 0; i + 1 < n; ++i) m.a(i, i + 1) = 1.0;
+    for (int i = 0; i < n; ++i) m.a(n - 1, i) = -numbers[numbers.size() - 1 - i] / lead;
+    m.b(n - 1, 0) = m.e(n - 1, 0) = 1.0;
+    for (int i = 0; i < numerator_terms; ++i) m.c(0, i) = numbers[numerator_terms - 1 - i] / lead;
+    return m;
+}
+
+linear_model state_space(const std::vector<double>& numbers, int n, int disturbances) {
+    linear_model m = zeros(n, disturbances);
+    const double* next = numbers.data();
+    for (int i = 0; i < n; ++i)
+        for (int j = 0; j < n; ++j) m.a(i, j) = *next++;
+    for (int i = 0; i < n; ++i) m.b(i, 0) = *next++;
+    for (int i = 0; i < n; ++i)
+        for (int j = 0; j < disturbances; ++j) m.e(i, j) = *next++;
+    for (int i = 0; i < n; ++i) m.c(0, i) = *next++;
+    return m;
+}
+
+void expect_numbers(const plant_description& d, std::size_t numbers, std::size_t states) {
+    if (d.numbers.size() != numbers || d.states.size() != states)
+        throw std::invalid_argument("plant: " + std::to_string(d.numbers.size()) + " numbers and " +
+                                    std::to_string(d.states.size()) + " states; expected " + std::to_string(numbers) +
+                                    " and " + std::to_string(states));
+}
+
+} // namespace
+
+linear_model realise(const plant_description& d, const std::vector<double>& numbers) {
+    const std::size_t n = d.states.size(), order = std::size_t(d.order > 0 ? d.order : 0);
+    switch (d.kind) {
+    case plant_kind::integrator_chain: expect_numbers(d, 1, order); return integrator_chain(d.order, numbers[0]);
+    case plant_kind::first_order: expect_numbers(d, 2, 1); return first_order(numbers[0], numbers[1]);
+    case plant_kind::second_order: expect_numbers(d, 3, 2); return second_order(numbers[0], numbers[1], numbers[2]);
+    case plant_kind::transfer_function:
+        expect_numbers(d, order + n + 1, n);
+        if (order < 1 || order > n) throw std::invalid_argument("plant: the transfer function must be strictly proper");
+        return transfer_function(numbers, d.order);
+    case plant_kind::state_space:
+        expect_numbers(d, n * (n + 2 + std::size_t(d.disturbances)), n);
+        return state_space(numbers, int(n), d.disturbances);
+    default: throw std::invalid_argument("plant: not a linear stock plant");
+    }
+}
+
+} // namespace windage

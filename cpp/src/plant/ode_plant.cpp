@@ -1,0 +1,166 @@
+#include <windage/plant/ode_plant.hpp>
+
+#include <algorithm>
+#include <stdexcept>
+#include <string>
+
+namespace windage {
+namespace {
+
+// Distinct abscissae of the stages, and which of them each stage uses.
+void tableau(integrator_kind kind, std::vector<double>& abscissae, std::vector<int>& stages) {
+    switch (kind) {
+    case integrator_kind::euler: abscissae = {0.0}; stages = {0}; return;
+    case integrator_kind::rk4: abscissae = {0.0, 0.5, 1.0}; stages = {0, 1, 1, 2}; return;
+    case integrator_kind::cash_karp5:
+    case integrator_kind::reference:  // Cash & Karp 1990, ACM TOMS 16(3) 201-222
+        abscissae = {0.0, 1.0 / 5.0, 3.0 / 10.0, 3.0 / 5.0, 1.0, 7.0 / 8.0};
+        stages = {0, 1, 2, 3, 4, 5};
+        return;
+    }
+}
+
+} // namespace
+
+ode_plant::ode_plant(const plant_description& d, const integration_settings& settings, const plant_disturbances& w,
+                     bool reads_time, signal_arena& arena)
+    : size_(arena.block_size()), states_(int(d.states.size())), has_lag_(!settings.lag.is_constant(0.0)),
+      integrator_(settings.kind), x_(d.states.size() + (has_lag_ ? 1 : 0), arena.block_size()),
+      inverse_lag_(arena.take()), w_(w), tolerance_(settings.tolerance), split_(settings.split),
+      evaluates_stages_(reads_time || !w.are_held()), lag_(settings.lag, arena),
+      plan_(settings.steps_per_sample, settings.split, arena) {
+    if (settings.steps_per_sample < 1)
+        throw std::invalid_argument("steps_per_sample is " + std::to_string(settings.steps_per_sample) +
+                                    "; expected at least 1");
+    if (d.initial_state.size() != d.states.size())
+        throw std::invalid_argument("plant: " + std::to_string(d.initial_state.size()) + " initial states for " +
+                                    std::to_string(d.states.size()) + " states");
+    for (const number& n : d.initial_state) initial_state_.emplace_back(n, arena);
+    tableau(settings.kind, abscissae_, stage_buffer_);
+    const std::size_t buffers = evaluates_stages_ ? abscissae_.size() : 0;
+    for (std::size_t c = 0; c < buffers; ++c) {
+        stage_time_.push_back(arena.take());
+        stage_values_.emplace_back();
+        for (int i = 0; i < w.count(); ++i) stage_values_[c].push_back(arena.take());
+    }
+    stages_.resize(stage_buffer_.size());
+    for (stage& s : stages_) s.disturbances.resize(w.count());
+}
+
+void ode_plant::begin(const trial_block& block, constant_signal sample_period, constant_signal fraction,
+                      const lane_value& initial_command) {
+    for (std::size_t i = 0; i < initial_state_.size(); ++i) {
+        initial_state_[i].begin(block);
+        std::copy_n(initial_state_[i].data(), size_, x_[i]);
+    }
+    if (has_lag_) {
+        lag_.begin(block);
+        for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP { (1.0 / lag_.pack_at(i)).store(inverse_lag_ + i); });
+        std::copy_n(initial_command.data(), size_, x_[states_]);
+    }
+    plan_.begin(sample_period, fraction);
+    begin_plant(block);
+}
+
+void ode_plant::advance(const sample_interval& interval) {
+    if (integrator_ == integrator_kind::reference) return advance_reference(interval);
+    for (int j = 0; j < plan_.steps(); ++j) {
+        plan_.prepare(j, interval);
+        prepare_stages();
+        take_step(stages_);
+    }
+}
+
+void ode_plant::prepare_stages() {
+    if (evaluates_stages_)
+        for (std::size_t c = 0; c < abscissae_.size(); ++c) {
+            const double fraction = abscissae_[c];
+            for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP {
+                (wide::load(plan_.start() + i) + fraction * wide::load(plan_.step() + i)).store(stage_time_[c] + i);
+            });
+            for (int k = 0; k < w_.count(); ++k) w_.evaluate(k, stage_time_[c], stage_values_[c][k]);
+        }
+    for (std::size_t s = 0; s < stages_.size(); ++s) {
+        stage& here = stages_[s];
+        here.step = plan_.step();
+        here.command = plan_.command();
+        here.time = evaluates_stages_ ? stage_time_[stage_buffer_[s]] : nullptr;
+        for (int k = 0; k < w_.count(); ++k)
+            here.disturbances[k] = evaluates_stages_ ? stage_values_[stage_buffer_[s]][k] : w_.now(k);
+    }
+}
+
+void ode_plant::full_derivative(const block_state& x, block_state& dx, const stage& s) {
+    derivative(x, dx, s);
+    if (!has_lag_) return;
+    for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP {
+        const wide lag_rate = (wide::load(s.command + i) - wide::load(x[states_] + i)) * wide::load(inverse_lag_ + i);
+        (lag_rate * wide::load(s.step + i)).store(dx[states_] + i);
+    });
+}
+
+void ode_plant::take_step(const std::vector<stage>& stages) {
+    std::size_t next = 0;  // odeint asks for the stages in their order
+    auto system = [&](const block_state& x, block_state& dx, double) { full_derivative(x, dx, stages[next++]); };
+    if (integrator_ == integrator_kind::euler) euler_.do_step(system, x_, 0.0, 1.0);
+    if (integrator_ == integrator_kind::rk4) rk4_.do_step(system, x_, 0.0, 1.0);
+    if (integrator_ == integrator_kind::cash_karp5) cash_karp_.do_step(system, x_, 0.0, 1.0);
+}
+
+void ode_plant::advance_reference(const sample_interval& interval) {
+    block_state buffer(2, size_);
+    for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP {
+        const wide period = wide::load(interval.period + i);
+        const wide fraction = split_ ? wide::load(interval.fraction + i) : wide(0.0);
+        (period - fraction).store(buffer[0] + i);
+        (wide::load(interval.time + i) + fraction).store(buffer[1] + i);
+    });
+    if (split_) integrate_reference(interval.time, interval.fraction, interval.before);
+    integrate_reference(buffer[1], buffer[0], interval.after);
+}
+
+// Steps are halved and doubled, never scaled by a computed power, so that the digits of the audit are the same on
+// every machine. All lanes hold the same trial; the first one steers.
+void ode_plant::integrate_reference(constant_signal start, constant_signal length, constant_signal command) {
+    if (!(length[0] > 0.0)) return;
+    stage here;
+    here.step = length;
+    here.command = command;
+    here.disturbances.resize(w_.count());
+    auto system = [&](const block_state& x, block_state& dx, double tau) {
+        for (int k = 0; k < w_.count(); ++k) here.disturbances[k] = w_.now(k);
+        if (evaluates_stages_) {
+            for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP {
+                (wide::load(start + i) + tau * wide::load(length + i)).store(stage_time_[0] + i);
+            });
+            here.time = stage_time_[0];
+            for (int k = 0; k < w_.count(); ++k) {
+                w_.evaluate(k, stage_time_[0], stage_values_[0][k]);
+                here.disturbances[k] = stage_values_[0][k];
+            }
+        }
+        full_derivative(x, dx, here);
+    };
+    block_state next(x_.signals(), size_), error(x_.signals(), size_);
+    constexpr int finest = 24;  // steps of 2^-24 of the interval and below mean a trial that runs away
+    std::int64_t done = 0, whole = std::int64_t(1) << finest, step = whole;
+    while (done < whole) {
+        const double scale = 1.0 / double(whole);
+        cash_karp_.do_step(system, x_, double(done) * scale, next, double(step) * scale, error);
+        double worst = 0.0;
+        for (std::size_t s = 0; s < x_.signals(); ++s) {
+            const double e = error[s][0] < 0 ? -error[s][0] : error[s][0];
+            const double size = x_[s][0] < 0 ? -x_[s][0] : x_[s][0];
+            worst = std::max(worst, e / (tolerance_ * (size + 1e-3)));
+        }
+        if (worst > 1.0 && step > 1) {
+            step /= 2;
+            continue;
+        }
+        done += step;
+        std::copy_n(next.data(), x_.size(), x_.data());
+        if (worst < 0.01 && done % (2 * step) == 0 && done + 2 * step <= whole) step *= 2;
+    }
+}
+
+} // namespace windage
