@@ -1,0 +1,39 @@
+// Linear active disturbance rejection control, output form and error form, of any order, with a current observer.
+// Output form: Herbst 2013, Electronics 2(3) 246-279, doi 10.3390/electronics2030246.
+// Error form: Madonski, Herbst, Stankovic 2023, Control Theory Technol., doi 10.1007/s11768-023-00129-y.
+#pragma once
+
+#include <vector>
+
+#include <windage/control/controller.hpp>
+#include <windage/control/description.hpp>
+
+namespace windage {
+
+class linear_adrc : public controller {
+public:
+    linear_adrc(const controller_description& d, signal_arena& arena);
+
+    void begin(const trial_block& block, const lane_value& sample_period, const lane_value& initial_command) override;
+    void sample(std::int64_t k, const signal* reference, constant_signal measured, constant_signal applied) override;
+    constant_signal output() const override { return output_; }
+    int reference_derivatives() const override;
+    int estimates() const override { return d_.order + 1; }
+    constant_signal estimate(int i) const override { return estimates_ + std::size_t(i) * size_; }
+
+private:
+    template <int Order> void sample_order(std::int64_t k, const signal* reference, constant_signal measured,
+                                           constant_signal fed);
+    template <int Order> wide command(const wide* x, const signal* reference, std::size_t i) const;
+    void place_gains(std::size_t i, wide sample_period);
+
+    controller_description d_;
+    std::size_t size_;
+    lane_value controller_bandwidth_, observer_bandwidth_, b0_, controller_factor_, observer_factor_;
+    std::vector<lane_value> given_controller_gains_, given_observer_gains_;
+    signal controller_gains_, observer_gains_;  // n and n + 1 signals
+    signal period_, inverse_b0_, estimates_, output_;
+    const lane_value* initial_command_ = nullptr;
+};
+
+} // namespace windage

@@ -1,0 +1,130 @@
+#include <windage/control/linear_adrc.hpp>
+
+#include <stdexcept>
+#include <string>
+
+#include <windage/control/gains.hpp>
+#include <windage/control/observer.hpp>
+
+namespace windage {
+namespace {
+
+void check(const controller_description& d) {
+    const auto refuse = [](const std::string& text) { throw std::invalid_argument("controller: " + text); };
+    if (d.order < 1 || d.order > max_order)
+        refuse("order is " + std::to_string(d.order) + "; expected 1 to " + std::to_string(max_order));
+    if (!d.controller_gains.empty() && int(d.controller_gains.size()) != d.order)
+        refuse("controller_gains has " + std::to_string(d.controller_gains.size()) + " numbers; expected " +
+               std::to_string(d.order) + ", one a state");
+    if (!d.observer_gains.empty() && int(d.observer_gains.size()) != d.order + 1)
+        refuse("observer_gains has " + std::to_string(d.observer_gains.size()) + " numbers; expected " +
+               std::to_string(d.order + 1) + ", one a state and one for the total disturbance");
+}
+
+} // namespace
+
+linear_adrc::linear_adrc(const controller_description& d, signal_arena& arena)
+    : d_((check(d), d)), size_(arena.block_size()), controller_bandwidth_(d.controller_bandwidth, arena),
+      observer_bandwidth_(d.observer_bandwidth, arena), b0_(d.b0, arena),
+      controller_factor_(d.controller_gain_factor, arena), observer_factor_(d.observer_gain_factor, arena),
+      controller_gains_(arena.take(d.order)), observer_gains_(arena.take(d.order + 1)), period_(arena.take()),
+      inverse_b0_(arena.take()), estimates_(arena.take(d.order + 1)), output_(arena.take()) {
+    for (const number& n : d.controller_gains) given_controller_gains_.emplace_back(n, arena);
+    for (const number& n : d.observer_gains) given_observer_gains_.emplace_back(n, arena);
+}
+
+int linear_adrc::reference_derivatives() const {
+    return d_.form == adrc_form::output && d_.reference_derivatives ? d_.order : 0;
+}
+
+void linear_adrc::begin(const trial_block& block, const lane_value& sample_period, const lane_value& initial_command) {
+    for (lane_value* n : {&controller_bandwidth_, &observer_bandwidth_, &b0_, &controller_factor_, &observer_factor_})
+        n->begin(block);
+    for (lane_value& n : given_controller_gains_) n.begin(block);
+    for (lane_value& n : given_observer_gains_) n.begin(block);
+    initial_command_ = &initial_command;
+    for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP {
+        const wide period = sample_period.pack_at(i);
+        place_gains(i, period);
+        period.store(period_ + i);
+        (1.0 / b0_.pack_at(i)).store(inverse_b0_ + i);
+        for (int s = 0; s <= d_.order; ++s) wide(0.0).store(estimates_ + s * size_ + i);
+        initial_command.pack_at(i).store(output_ + i);
+    });
+}
+
+void linear_adrc::place_gains(std::size_t i, wide sample_period) {
+    wide k[max_order], l[max_order + 1];
+    controller_gains(d_.order, controller_bandwidth_.pack_at(i), k);
+    observer_gains(d_.order, d_.discretisation, observer_bandwidth_.pack_at(i), sample_period, l);
+    for (int s = 0; s < d_.order; ++s) {
+        const wide gain = given_controller_gains_.empty() ? k[s] : given_controller_gains_[s].pack_at(i);
+        (gain * controller_factor_.pack_at(i)).store(controller_gains_ + s * size_ + i);
+    }
+    for (int s = 0; s <= d_.order; ++s) {
+        const wide gain = given_observer_gains_.empty() ? l[s] : given_observer_gains_[s].pack_at(i);
+        (gain * observer_factor_.pack_at(i)).store(observer_gains_ + s * size_ + i);
+    }
+}
+
+void linear_adrc::sample(std::int64_t k, const signal* reference, constant_signal measured, constant_signal applied) {
+    const constant_signal fed = d_.observer_input == observer_input_kind::limited ? applied : output_;
+    switch (d_.order) {
+    case 1: return sample_order<1>(k, reference, measured, fed);
+    case 2: return sample_order<2>(k, reference, measured, fed);
+    case 3: return sample_order<3>(k, reference, measured, fed);
+    case 4: return sample_order<4>(k, reference, measured, fed);
+    case 5: return sample_order<5>(k, reference, measured, fed);
+    case 6: return sample_order<6>(k, reference, measured, fed);
+    case 7: return sample_order<7>(k, reference, measured, fed);
+    case 8: return sample_order<8>(k, reference, measured, fed);
+    }
+    static_assert(max_order == 8);
+}
+
+template <int Order>
+void linear_adrc::sample_order(std::int64_t k, const signal* reference, constant_signal measured, constant_signal fed) {
+    const bool error_form = d_.form == adrc_form::error;
+    const bool holds = d_.discretisation == discretisation_kind::zero_order_hold;
+    const bool starts_measured = k == 0 && d_.observer_start == observer_start_kind::measured;
+    for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP {
+        wide x[Order + 1], gains[Order + 1];
+        for (int s = 0; s <= Order; ++s) {
+            x[s] = wide::load(estimates_ + s * size_ + i);
+            gains[s] = wide::load(observer_gains_ + s * size_ + i);
+        }
+        // In the error form the observer follows e = r - y, which the command drives with the opposite sign.
+        const wide followed = error_form ? wide::load(reference[0] + i) - wide::load(measured + i)
+                                         : wide::load(measured + i);
+        const wide drive = b0_.pack_at(i) * wide::load(fed + i);
+        if (starts_measured) {
+            x[0] = followed;
+            x[Order] = error_form ? drive : -drive;  // at rest under the initial command
+        } else {
+            const wide top = error_form ? x[Order] - drive : x[Order] + drive;
+            const wide period = wide::load(period_ + i);
+            holds ? predict_zero_order_hold<Order>(x, top, period) : predict_euler<Order>(x, top, period);
+        }
+        correct<Order>(x, followed, gains);
+        for (int s = 0; s <= Order; ++s) x[s].store(estimates_ + s * size_ + i);
+        command<Order>(x, reference, i).store(output_ + i);
+    });
+}
+
+// Output form: u = (k_1 (r - x_1) + ... + k_n (r^(n-1) - x_n) + r^(n) - x_{n+1}) / b0.
+// Error form:  u = (k_1 x_1 + ... + k_n x_n + x_{n+1}) / b0.
+template <int Order> wide linear_adrc::command(const wide* x, const signal* reference, std::size_t i) const {
+    const bool error_form = d_.form == adrc_form::error;
+    const bool fed = d_.reference_derivatives;
+    wide sum = 0.0;
+    for (int s = 0; s < Order; ++s) {
+        wide deviation = error_form ? x[s] : -x[s];
+        if (!error_form && (s == 0 || fed)) deviation += wide::load(reference[s] + i);
+        sum += wide::load(controller_gains_ + s * size_ + i) * deviation;
+    }
+    if (!error_form && fed) sum += wide::load(reference[Order] + i);
+    if (d_.cancel_disturbance) sum = error_form ? sum + x[Order] : sum - x[Order];
+    return sum * wide::load(inverse_b0_ + i);
+}
+
+} // namespace windage
