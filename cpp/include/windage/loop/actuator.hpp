@@ -1,0 +1,29 @@
+// The command on its way to the plant: limits, rate limit and resolution at each sample, then the transport delay.
+// The first-order lag that follows is integrated together with the plant (plant/ode_plant.hpp).
+#pragma once
+
+#include <windage/loop/clock.hpp>
+#include <windage/loop/description.hpp>
+#include <windage/loop/quantiser.hpp>
+
+namespace windage {
+
+class command_limiter {
+public:
+    command_limiter(const actuator_description& d, signal_arena& arena);
+
+    void begin(const trial_block& block, const sample_clock& clock);
+    /// Limits the controller's output into `command`.
+    void sample(constant_signal wanted);
+    constant_signal command() const { return command_; }
+    const lane_value& initial() const { return initial_; }
+
+private:
+    lane_value low_, high_, rate_limit_, resolution_, initial_;
+    bool has_limits_;
+    signal largest_change_;  // a sample
+    signal command_;
+    std::size_t size_;
+};
+
+} // namespace windage

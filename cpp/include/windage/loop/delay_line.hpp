@@ -1,0 +1,42 @@
+// Transport delay of the command, exact for any non-negative delay: m whole samples and a fraction phi.
+// Between t_k and t_{k+1} the plant sees u_{k-m-1} for phi seconds and u_{k-m} for the rest; each lane has its own
+// m and phi. Where the delay is a whole number of samples in every trial the interval is not split at all.
+#pragma once
+
+#include <vector>
+
+#include <windage/loop/clock.hpp>
+#include <windage/loop/description.hpp>
+
+namespace windage {
+
+class delay_line {
+public:
+    delay_line(const loop_description& d, signal_arena& arena);
+
+    void begin(const trial_block& block, const sample_clock& clock, const lane_value& initial_command);
+    void sample(std::int64_t k, constant_signal command);
+
+    /// The interval is split: the command changes phi after the sample instant.
+    bool is_split() const { return split_; }
+    constant_signal before() const { return before_; }      ///< command until t_k + phi
+    constant_signal after() const { return after_; }        ///< command from t_k + phi on
+    constant_signal fraction() const { return fraction_; }  ///< phi, s
+    /// Command that acts right after the sample instant.
+    constant_signal acting() const { return split_ ? acting_ : after_; }
+
+    static bool needs_split(const loop_description& d);
+
+private:
+    const double* slot(std::int64_t k) const { return history_.data() + std::size_t(k % depth_) * size_; }
+
+    lane_value delay_, dead_time_;
+    std::size_t size_;
+    bool split_, same_for_all_;
+    std::int64_t depth_ = 1;
+    std::vector<double> history_;
+    std::vector<std::int64_t> whole_;  // m of each lane
+    signal fraction_, before_, after_, acting_;
+};
+
+} // namespace windage

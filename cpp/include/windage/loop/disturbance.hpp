@@ -1,0 +1,41 @@
+// Disturbances: inputs of the plant that the controller does not choose. A function of time is evaluated wherever the
+// integrator asks for it; a noise changes at each sample and is held in between.
+#pragma once
+
+#include <memory>
+#include <optional>
+#include <vector>
+
+#include <windage/loop/clock.hpp>
+#include <windage/loop/noise.hpp>
+#include <windage/loop/time_function.hpp>
+
+namespace windage {
+
+class disturbance {
+public:
+    disturbance(const disturbance_description& d, bool time_is_uniform, signal_arena& arena);
+
+    void begin(const trial_block& block, const sample_clock& clock);
+    /// Value at the sample instant, into `now`; noises move on to sample k.
+    void sample(std::int64_t k, const sample_clock& clock);
+    /// Value at any other time of this sample interval.
+    void evaluate(constant_signal time, signal out) const;
+
+    /// Does not change between two samples.
+    bool is_held() const { return !function_ || function_->is_constant(); }
+    constant_signal now() const { return now_; }
+
+private:
+    void begin_gauss_markov(const trial_block& block, const sample_clock& clock);
+
+    disturbance_kind kind_;
+    std::size_t size_;
+    std::optional<time_function> function_;
+    std::vector<lane_value> numbers_;
+    std::optional<white_noise> noise_;
+    signal now_;
+    signal keep_ = nullptr, gain_ = nullptr;  // of the noise: w_{k+1} = keep * w_k + gain * n
+};
+
+} // namespace windage

@@ -1,0 +1,34 @@
+#include <windage/loop/actuator.hpp>
+
+namespace windage {
+
+command_limiter::command_limiter(const actuator_description& d, signal_arena& arena)
+    : low_(d.low, arena), high_(d.high, arena), rate_limit_(d.rate_limit, arena), resolution_(d.resolution, arena),
+      initial_(d.initial, arena), has_limits_(d.has_limits), largest_change_(arena.take()), command_(arena.take()),
+      size_(arena.block_size()) {}
+
+void command_limiter::begin(const trial_block& block, const sample_clock& clock) {
+    for (lane_value* n : {&low_, &high_, &rate_limit_, &resolution_, &initial_}) n->begin(block);
+    constexpr double unlimited = 0x1p1000;
+    for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP {
+        const wide rate = rate_limit_.pack_at(i);
+        select(rate > 0.0, rate * clock.period().pack_at(i), unlimited).store(largest_change_ + i);
+        initial_.pack_at(i).store(command_ + i);
+    });
+}
+
+void command_limiter::sample(constant_signal wanted) {
+    const bool limits_rate = !rate_limit_.is_constant(0.0), rounds = !resolution_.is_constant(0.0);
+    for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP {
+        wide u = wide::load(wanted + i);
+        if (has_limits_) u = clip(u, low_.pack_at(i), high_.pack_at(i));
+        if (limits_rate) {
+            const wide before = wide::load(command_ + i), change = wide::load(largest_change_ + i);
+            u = clip(u, before - change, before + change);
+        }
+        if (rounds) u = quantise(u, resolution_.pack_at(i));
+        u.store(command_ + i);
+    });
+}
+
+} // namespace windage

@@ -1,0 +1,174 @@
+#include <windage/loop/loop.hpp>
+
+#include <stdexcept>
+
+#include <windage/control/linear_adrc.hpp>
+
+#include "make_plant.hpp"
+
+namespace windage {
+
+class loop::disturbance_bank final : public plant_disturbances {
+public:
+    disturbance_bank(const loop_description& d, bool time_is_uniform, signal_arena& arena)
+        : size_(arena.block_size()) {
+        for (const disturbance_description& w : d.disturbances) all_.emplace_back(w, time_is_uniform, arena);
+    }
+    void begin(const trial_block& block, const sample_clock& clock) {
+        for (disturbance& w : all_) w.begin(block, clock);
+    }
+    void sample(std::int64_t k, const sample_clock& clock) {
+        for (disturbance& w : all_) w.sample(k, clock);
+    }
+    int count() const override { return int(all_.size()); }
+    bool are_held() const override {
+        for (const disturbance& w : all_)
+            if (!w.is_held()) return false;
+        return true;
+    }
+    constant_signal now(int which) const override { return all_[which].now(); }
+    void evaluate(int which, constant_signal time, signal out) const override {
+        const disturbance& w = all_[which];
+        if (!w.is_held()) return w.evaluate(time, out);
+        for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP { wide::load(w.now() + i).store(out + i); });
+    }
+
+private:
+    std::vector<disturbance> all_;
+    std::size_t size_;
+};
+
+namespace {
+
+// A command that changes inside the interval does so at an instant that may differ from lane to lane, and so do the
+// steps: only an unsplit interval of a common period keeps the stages of all lanes at the same times.
+bool stages_are_uniform(const loop_description& d) {
+    return d.sample_period.is_constant() && !delay_line::needs_split(d);
+}
+
+} // namespace
+
+loop::loop(const loop_description& d, signal_arena& arena)
+    : size_(arena.block_size()), clock_(d.sample_period, d.duration, arena),
+      disturbances_(std::make_unique<disturbance_bank>(d, stages_are_uniform(d), arena)),
+      reference_(d.reference, d.sample_period.is_constant(), arena), sensor_(d.sensor, arena),
+      controller_(std::make_unique<linear_adrc>(d.controller, arena)), limiter_(d.actuator, arena), delay_(d, arena),
+      error_(arena.take()), input_(arena.take()), zero_(arena.take()) {
+    plant_ = make_plant(d, *disturbances_, arena);
+    for (int i = 0; i <= controller_->reference_derivatives(); ++i) reference_signals_.push_back(arena.take());
+    name_signals(d);
+    for (const expression_description& e : d.expressions) add_expression(e, arena);
+}
+
+loop::~loop() = default;
+
+void loop::begin(const trial_block& block) {
+    clock_.begin(block);
+    disturbances_->begin(block, clock_);
+    reference_.begin(block);
+    sensor_.begin(block, clock_);
+    limiter_.begin(block, clock_);
+    delay_.begin(block, clock_, limiter_.initial());
+    plant_->begin(block, clock_.period().data(), delay_.fraction(), limiter_.initial());
+    controller_->begin(block, clock_.period(), limiter_.initial());
+    for (named_expression& e : expressions_) e.formula.begin(block);
+    for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP { limiter_.initial().pack_at(i).store(input_ + i); });
+}
+
+void loop::sample(std::int64_t k) {
+    clock_.tick(k, size_);
+    disturbances_->sample(k, clock_);
+    plant_->evaluate_output(clock_.time(), input_);
+    sample_reference();
+    sample_error();
+    sensor_.sample(k, plant_->output());
+    controller_->sample(k, reference_signals_.data(), sensor_.measured(), limiter_.command());
+    limiter_.sample(controller_->output());
+    delay_.sample(k, limiter_.command());
+    const constant_signal acting = plant_->lagged_input() ? plant_->lagged_input() : delay_.acting();
+    for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP { wide::load(acting + i).store(input_ + i); });
+    for (named_expression& e : expressions_) e.formula.run();
+}
+
+void loop::sample_reference() {
+    reference_.evaluate(clock_.time(), reference_signals_.data(), int(reference_signals_.size()) - 1);
+}
+
+void loop::sample_error() {
+    for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP {
+        (wide::load(reference_signals_[0] + i) - wide::load(plant_->output() + i)).store(error_ + i);
+    });
+}
+
+void loop::advance() {
+    plant_->advance({clock_.time(), clock_.period().data(), delay_.is_split() ? delay_.fraction() : nullptr,
+                     delay_.before(), delay_.after()});
+}
+
+constant_signal loop::find(const std::string& name) const {
+    const auto found = signals_.find(name);
+    if (found == signals_.end()) throw std::invalid_argument("loop: there is no signal named '" + name + "'");
+    return found->second;
+}
+
+void loop::mark_diverged(signal diverged) const {
+    for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP {
+        auto finite = is_finite(wide::load(plant_->state(0) + i));
+        for (int s = 1; s < plant_->states(); ++s) finite = finite & is_finite(wide::load(plant_->state(s) + i));
+        const auto running = wide::load(clock_.time() + i) <= wide::load(clock_.end() + i);
+        const wide before = wide::load(diverged + i);
+        select(running & !finite, 1.0, before).store(diverged + i);
+    });
+}
+
+void loop::name_signals(const loop_description& d) {
+    signals_["time"] = clock_.time();
+    signals_["reference"] = reference_signals_[0];
+    signals_["error"] = error_;
+    signals_["output"] = plant_->output();
+    signals_["measured"] = sensor_.measured();
+    signals_["command"] = limiter_.command();
+    signals_["input"] = input_;
+    for (std::size_t i = 0; i < d.plant.states.size(); ++i) signals_[d.plant.states[i]] = plant_->state(int(i));
+    for (std::size_t i = 0; i < d.disturbances.size(); ++i) signals_[d.disturbances[i].name] = disturbances_->now(int(i));
+    for (int i = 0; i < controller_->estimates(); ++i)
+        signals_["estimate_" + std::to_string(i + 1)] = controller_->estimate(i);
+    if (!d.input_name.empty()) signals_.try_emplace(d.input_name, input_);
+    if (!d.output_name.empty()) signals_.try_emplace(d.output_name, plant_->output());
+}
+
+void loop::add_expression(const expression_description& e, signal_arena& arena) {
+    if (e.formula.outputs.size() != 1) throw std::invalid_argument("expression '" + e.name + "': one output is expected");
+    named_expression made{tape(e.formula, arena, tape::outputs::as_written), arena.take()};
+    for (std::size_t i = 0; i < e.formula.inputs.size(); ++i) {
+        const program_input& input = e.formula.inputs[i];
+        if (input.kind == source_kind::signal) made.formula.bind_input(i, find(input.signal));
+        else if (input.kind == source_kind::time) made.formula.bind_input(i, clock_.time());
+        else if (input.kind != source_kind::value)
+            throw std::invalid_argument("expression '" + e.name + "' may read signals, numbers and time only");
+    }
+    made.formula.bind_output(0, made.value);
+    signals_[e.name] = made.value;
+    expressions_.push_back(std::move(made));
+}
+
+std::vector<std::string> signal_names(const loop_description& d) {
+    std::vector<std::string> names{"time", "reference", "error", "output", "measured", "command", "input"};
+    for (const std::string& s : d.plant.states) names.push_back(s);
+    for (const disturbance_description& w : d.disturbances) names.push_back(w.name);
+    for (int i = 0; i <= d.controller.order; ++i) names.push_back("estimate_" + std::to_string(i + 1));
+    const auto is_new = [&](const std::string& name) {
+        for (const std::string& known : names)
+            if (known == name) return false;
+        return !name.empty();
+    };
+    for (const std::string& alias : {d.input_name, d.output_name})
+        if (is_new(alias)) names.push_back(alias);
+    for (const expression_description& e : d.expressions) {
+        if (!is_new(e.name)) throw std::invalid_argument("expression '" + e.name + "': a signal has this name already");
+        names.push_back(e.name);
+    }
+    return names;
+}
+
+} // namespace windage

@@ -1,0 +1,43 @@
+#include <windage/loop/sensor.hpp>
+
+namespace windage {
+
+sensor::sensor(const sensor_description& d, signal_arena& arena)
+    : gain_(d.gain, arena), bias_(d.bias, arena), noise_level_(d.noise, arena),
+      filter_frequency_(d.filter_frequency, arena), resolution_(d.resolution, arena), low_(d.low, arena),
+      high_(d.high, arena), has_range_(d.has_range), filter_gain_(arena.take()), measured_(arena.take()),
+      filtered_(arena.take()), size_(arena.block_size()) {
+    if (!d.noise.is_constant(0.0)) noise_.emplace(d.stream, arena);
+}
+
+void sensor::begin(const trial_block& block, const sample_clock& clock) {
+    for (lane_value* n : {&gain_, &bias_, &noise_level_, &filter_frequency_, &resolution_, &low_, &high_})
+        n->begin(block);
+    if (noise_) noise_->begin(block);
+    // Backward Euler of T dv/dt = y - v: v += (Ts/T) / (1 + Ts/T) (y - v).
+    constexpr double two_pi = 6.283185307179586476925;
+    for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP {
+        const wide ratio = two_pi * filter_frequency_.pack_at(i) * clock.period().pack_at(i);
+        select(ratio > 0.0, ratio / (1.0 + ratio), 1.0).store(filter_gain_ + i);
+        wide(0.0).store(filtered_ + i);
+    });
+}
+
+void sensor::sample(std::int64_t k, constant_signal output) {
+    const constant_signal noise = noise_ ? noise_->sample(k) : nullptr;
+    const bool filters = !filter_frequency_.is_constant(0.0), rounds = !resolution_.is_constant(0.0);
+    for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP {
+        wide y = gain_.pack_at(i) * wide::load(output + i) + bias_.pack_at(i);
+        if (noise) y += noise_level_.pack_at(i) * wide::load(noise + i);
+        if (filters) {
+            const wide before = k == 0 ? y : wide::load(filtered_ + i);  // starts settled on the first reading
+            y = before + wide::load(filter_gain_ + i) * (y - before);
+            y.store(filtered_ + i);
+        }
+        if (rounds) y = quantise(y, resolution_.pack_at(i));
+        if (has_range_) y = clip(y, low_.pack_at(i), high_.pack_at(i));
+        y.store(measured_ + i);
+    });
+}
+
+} // namespace windage
