@@ -1,0 +1,41 @@
+#include <windage/measure/measure.hpp>
+
+#include <stdexcept>
+
+#include <windage/measure/band_time.hpp>
+#include <windage/measure/response.hpp>
+
+#include "reduction.hpp"
+
+namespace windage {
+
+std::unique_ptr<measure> make_measure(const measure_description& d, constant_signal values, signal_arena& arena) {
+    const auto plain = [&]<class Reducer>(Reducer reducer) -> std::unique_ptr<measure> {
+        return std::make_unique<reduction<Reducer>>(d, values, arena, std::move(reducer));
+    };
+    using namespace reducers;
+    switch (d.kind) {
+    case measure_kind::peak: return plain(peak{});
+    case measure_kind::minimum: return plain(lowest{});
+    case measure_kind::maximum: return plain(highest{});
+    case measure_kind::mean: return plain(mean{});
+    case measure_kind::rms: return plain(root_mean_square{});
+    case measure_kind::standard_deviation: return plain(standard_deviation{});
+    case measure_kind::final_value: return plain(final_value{});
+    case measure_kind::integral_absolute: return plain(integral<magnitude>{});
+    case measure_kind::integral_square: return plain(integral<square>{});
+    case measure_kind::integral_time_absolute: return plain(integral<time_weighted_magnitude>{});
+    case measure_kind::total_variation: return plain(total_variation{});
+    case measure_kind::rms_change: return plain(rms_change{});
+    case measure_kind::time_outside: return plain(band_time(d, false, arena));
+    case measure_kind::time_at_limits: return plain(band_time(d, true, arena));
+    case measure_kind::overshoot: return plain(excursion(false, arena));
+    case measure_kind::undershoot: return plain(excursion(true, arena));
+    case measure_kind::rise_time: return plain(rise_time(d, arena));
+    case measure_kind::settling_time: return plain(settling_time(d, true, arena));
+    case measure_kind::settling_time_absolute: return plain(settling_time(d, false, arena));
+    }
+    throw std::invalid_argument("measure: unknown kind");
+}
+
+} // namespace windage

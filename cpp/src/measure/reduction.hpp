@@ -1,0 +1,80 @@
+// The loop that every measure shares: which lanes are inside the window, and the running values of each pack.
+#pragma once
+
+#include <windage/measure/reducers.hpp>
+#include <windage/measure/window.hpp>
+
+namespace windage {
+
+/// `Reducer` may hold lane values of its own; it is told of each block by `begin_block`.
+template <class Reducer> class reduction final : public measure {
+public:
+    reduction(const measure_description& d, constant_signal values, signal_arena& arena, Reducer reducer = {})
+        : values_(values), size_(arena.block_size()), window_(d, arena), reducer_(std::move(reducer)),
+          running_(arena.take(Reducer::values)), seen_(arena.take()) {}
+
+    void begin(const trial_block& block, const measure_timing& timing, const target_source& targets) override {
+        window_.begin(block, timing);
+        period_ = timing.period;
+        if constexpr (requires { reducer_.begin_block(block, window_.stop(), targets); })
+            reducer_.begin_block(block, window_.stop(), targets);
+        for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP {
+            wide v[Reducer::values];
+            reducer_.begin(v);
+            for (int k = 0; k < Reducer::values; ++k) v[k].store(running_ + k * size_ + i);
+            wide(0.0).store(seen_ + i);
+        });
+    }
+
+    void update(constant_signal time) override {
+        if (!window_.is_uniform())
+            for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP { add<true>(time, i); });
+        else if (window_.uniformly_inside(time))
+            for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP { add<false>(time, i); });
+    }
+
+    /// A window that holds no sample leaves the measure undefined.
+    void finish(signal result) const override {
+        for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP {
+            wide v[Reducer::values];
+            for (int k = 0; k < Reducer::values; ++k) v[k] = wide::load(running_ + k * size_ + i);
+            wide value;
+            if constexpr (requires { reducer_.finish(v, i, window_.start(i)); })
+                value = reducer_.finish(v, i, window_.start(i));
+            else
+                value = reducer_.finish(v);
+            select(wide::load(seen_ + i) > 0.0, value, std::numeric_limits<double>::quiet_NaN()).store(result + i);
+        });
+    }
+
+private:
+    template <bool Masked> WINDAGE_INLINE void add(constant_signal time, std::size_t i) {
+        const wide t = wide::load(time + i), dt = wide::load(period_ + i);
+        const wide seen = wide::load(seen_ + i);
+        const sample_point at{wide::load(values_ + i), t - window_.start(i), dt, seen == 0.0,
+                              t + 0.5 * dt > wide::load(window_.stop() + i)};
+        wide v[Reducer::values], before[Reducer::values];
+        for (int k = 0; k < Reducer::values; ++k) before[k] = v[k] = wide::load(running_ + k * size_ + i);
+        if constexpr (requires { reducer_.add(v, at, i); })
+            reducer_.add(v, at, i);
+        else
+            reducer_.add(v, at);
+        if constexpr (Masked) {
+            const auto inside = window_.inside(t, i);
+            for (int k = 0; k < Reducer::values; ++k) v[k] = select(inside, v[k], before[k]);
+            select(inside, seen + 1.0, seen).store(seen_ + i);
+        } else {
+            (seen + 1.0).store(seen_ + i);
+        }
+        for (int k = 0; k < Reducer::values; ++k) v[k].store(running_ + k * size_ + i);
+    }
+
+    constant_signal values_;
+    std::size_t size_;
+    measure_window window_;
+    Reducer reducer_;
+    signal running_, seen_;
+    constant_signal period_ = nullptr;
+};
+
+} // namespace windage
