@@ -1,0 +1,45 @@
+// Runs the trials of one block after another. Each worker has its own; everything is allocated once.
+#pragma once
+
+#include <functional>
+#include <memory>
+#include <vector>
+
+#include <windage/campaign/campaign.hpp>
+#include <windage/campaign/parameters.hpp>
+#include <windage/loop/loop.hpp>
+#include <windage/measure/measure.hpp>
+
+namespace windage {
+
+class block_runner {
+public:
+    block_runner(const study_description& study, const parameter_source& source, std::size_t block_size);
+
+    /// Runs `count` <= block size trials from `first` on and writes them at `offset`. `keep_going` is asked now and then;
+    /// returns false, with nothing written, once it says no.
+    bool run(std::uint64_t first, std::size_t count, const result_columns& to, std::size_t offset,
+             const std::function<bool()>& keep_going);
+
+    recording replay(std::uint64_t trial, const std::vector<std::string>& names);
+
+    std::size_t block_size() const { return arena_.block_size(); }
+
+private:
+    class reference_targets;
+
+    void begin(std::uint64_t first, std::size_t count);
+    void write(std::size_t count, const result_columns& to, std::size_t offset) const;
+    bool all_diverged() const;
+
+    signal_arena arena_;
+    const parameter_source& source_;
+    loop loop_;
+    std::vector<std::unique_ptr<measure>> measures_;
+    std::vector<std::uint64_t> trials_;
+    std::vector<double> parameters_;
+    trial_block block_;
+    signal diverged_, result_;
+};
+
+} // namespace windage

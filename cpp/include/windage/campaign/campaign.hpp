@@ -1,0 +1,70 @@
+// A campaign: the trials of a study, run in parallel and in any order, with the same digits always.
+//
+// A trial is a pure function of (study, index): its parameters and its noise come from counter-based random streams,
+// and its lanes do not see each other. Threads, block size and the range asked for decide only who computes it.
+#pragma once
+
+#include <cstddef>
+#include <cstdint>
+#include <functional>
+#include <memory>
+#include <string>
+#include <vector>
+
+#include <windage/campaign/description.hpp>
+
+namespace windage {
+
+enum class trial_status : std::uint8_t { finished = 0, diverged = 1 };
+
+/// Where the results go: column c of trial i at [c * stride + i]. The caller owns the memory.
+struct result_columns {
+    double* parameters = nullptr;
+    double* measures = nullptr;
+    std::uint8_t* status = nullptr;
+    std::size_t stride = 0;
+};
+
+struct run_options {
+    int threads = 0;              ///< 0: as many as the machine offers
+    std::size_t block_size = 0;   ///< trials simulated together; 0: chosen
+    /// Called about ten times a second on the calling thread with the trials done so far; false cancels.
+    std::function<bool(std::uint64_t)> progress;
+};
+
+struct recording {
+    std::vector<std::string> signals;
+    std::size_t samples = 0;
+    std::vector<double> values;  ///< signal s at sample k: [s * samples + k]
+};
+
+class campaign {
+public:
+    /// Throws std::invalid_argument where the study cannot be run.
+    explicit campaign(study_description study);
+    ~campaign();
+    campaign(campaign&&) noexcept;
+
+    std::size_t parameters() const;
+    std::size_t measures() const { return study_.measures.size(); }
+    const std::vector<std::string>& signals() const { return signals_; }
+    std::uint64_t trials_available() const;
+
+    /// Runs trials first .. first + count - 1. Returns how many are valid from the first on: `count`, or fewer after a
+    /// cancel. A trial that diverged has undefined measures.
+    std::uint64_t run(std::uint64_t first, std::uint64_t count, const result_columns& to, const run_options& options) const;
+
+    /// One trial with every signal at every sample; the same digits as in `run`.
+    recording replay(std::uint64_t trial) const;
+
+private:
+    study_description study_;
+    std::vector<std::string> signals_;
+    std::unique_ptr<class parameter_source> source_;
+};
+
+/// One measure over a recorded signal, by the code that measures trials. `target` is where a response should end.
+double evaluate_measure(const measure_description& d, const std::vector<double>& time, const std::vector<double>& values,
+                        double target, double sample_period);
+
+} // namespace windage

@@ -1,0 +1,45 @@
+// Drawing the parameters of trials: every spread is the image of one uniform number, a pure function of
+// (seed, trial, stream of the spread). Correlated spreads share a Gaussian copula.
+#pragma once
+
+#include <cstdint>
+#include <vector>
+
+#include <Eigen/Core>
+
+#include <windage/campaign/description.hpp>
+
+namespace windage {
+
+/// Throws std::invalid_argument naming the spread and what is wrong with its numbers.
+void check(const spread_description& s);
+
+class parameter_source {
+public:
+    explicit parameter_source(const study_description& study);
+
+    std::size_t count() const { return spreads_.size(); }
+    /// The parameters of one trial into values[0 .. count - 1], `stride` apart.
+    void draw(std::uint64_t trial, double* values, std::size_t stride) const;
+    /// Largest number of trials that the spreads can supply (tables of rows end).
+    std::uint64_t trials_available() const { return available_; }
+
+private:
+    struct copula {
+        std::vector<int> columns;
+        Eigen::MatrixXd factor;  // lower Cholesky factor
+    };
+
+    double uniform(std::uint64_t trial, std::size_t column) const;
+    void correlate(std::uint64_t trial, const copula& c, std::vector<double>& uniforms) const;
+
+    std::uint64_t seed_;
+    std::uint64_t available_;
+    std::vector<spread_description> spreads_;
+    std::vector<copula> copulas_;
+};
+
+/// The value of a spread at probability p (for `rows`: of trial `trial`).
+double quantile(const spread_description& s, double p, std::uint64_t trial);
+
+} // namespace windage

@@ -1,0 +1,100 @@
+#include <windage/campaign/block_runner.hpp>
+
+#include <algorithm>
+#include <limits>
+
+namespace windage {
+
+class block_runner::reference_targets final : public target_source {
+public:
+    explicit reference_targets(const loop& l) : loop_(l) {}
+    void target(constant_signal time, signal out) const override {
+        signal outs[1] = {out};
+        loop_.reference().evaluate(time, outs, 0);
+    }
+
+private:
+    const loop& loop_;
+};
+
+block_runner::block_runner(const study_description& study, const parameter_source& source, std::size_t block_size)
+    : arena_(block_size), source_(source), loop_(study.loop, arena_), trials_(block_size),
+      parameters_(source.count() * block_size), diverged_(arena_.take()), result_(arena_.take()) {
+    for (const measure_description& m : study.measures)
+        measures_.push_back(make_measure(m, loop_.find(m.signal), arena_));
+    block_ = {block_size, study.seed, trials_.data(), parameters_.data()};
+}
+
+// Lanes beyond the last trial repeat it: their results are not written.
+void block_runner::begin(std::uint64_t first, std::size_t count) {
+    for (std::size_t lane = 0; lane < block_.size; ++lane) {
+        trials_[lane] = first + std::min(lane, count - 1);
+        if (lane < count)
+            source_.draw(trials_[lane], parameters_.data() + lane, block_.size);
+        else
+            for (std::size_t p = 0; p < source_.count(); ++p)
+                parameters_[p * block_.size + lane] = parameters_[p * block_.size + count - 1];
+    }
+    loop_.begin(block_);
+    const reference_targets targets(loop_);
+    const measure_timing timing{loop_.clock().period().data(), loop_.clock().end(), loop_.clock().end_is_uniform()};
+    for (auto& m : measures_) m->begin(block_, timing, targets);
+    std::fill_n(diverged_, block_.size, 0.0);
+}
+
+bool block_runner::run(std::uint64_t first, std::size_t count, const result_columns& to, std::size_t offset,
+                       const std::function<bool()>& keep_going) {
+    begin(first, count);
+    const std::int64_t last = loop_.clock().last_sample();
+    // A state that is not finite stays so, and a look now and then finds it; but where trials end at different times
+    // a lane must not be blamed for what happens after its own end.
+    const std::int64_t look_every = loop_.clock().end_is_uniform() ? 64 : 1;
+    for (std::int64_t k = 0; k <= last; ++k) {
+        loop_.sample(k);
+        for (auto& m : measures_) m->update(loop_.clock().time());
+        if (k % look_every == 0 || k == last) {
+            loop_.mark_diverged(diverged_);
+            if (all_diverged()) break;
+        }
+        if (k % 64 == 63 && !keep_going()) return false;
+        if (k < last) loop_.advance();
+    }
+    write(count, to, offset);
+    return true;
+}
+
+bool block_runner::all_diverged() const {
+    return std::all_of(diverged_, diverged_ + block_.size, [](double d) { return d != 0.0; });
+}
+
+void block_runner::write(std::size_t count, const result_columns& to, std::size_t offset) const {
+    for (std::size_t p = 0; p < source_.count(); ++p)
+        std::copy_n(parameters_.data() + p * block_.size, count, to.parameters + p * to.stride + offset);
+    for (std::size_t i = 0; i < count; ++i)
+        to.status[offset + i] = std::uint8_t(diverged_[i] != 0.0 ? trial_status::diverged : trial_status::finished);
+    for (std::size_t m = 0; m < measures_.size(); ++m) {
+        measures_[m]->finish(result_);
+        for (std::size_t i = 0; i < count; ++i)
+            to.measures[m * to.stride + offset + i] =
+                diverged_[i] != 0.0 ? std::numeric_limits<double>::quiet_NaN() : result_[i];
+    }
+}
+
+recording block_runner::replay(std::uint64_t trial, const std::vector<std::string>& names) {
+    begin(trial, 1);
+    std::vector<constant_signal> sources;
+    for (const std::string& name : names) sources.push_back(loop_.find(name));
+    recording r;
+    r.signals = names;
+    // The block may hold longer trials only where lanes differ; here all lanes are the same trial.
+    r.samples = std::size_t(loop_.clock().last_sample()) + 1;
+    r.values.resize(names.size() * r.samples);
+    for (std::size_t k = 0; k < r.samples; ++k) {
+        loop_.sample(std::int64_t(k));
+        for (std::size_t s = 0; s < sources.size(); ++s) r.values[s * r.samples + k] = sources[s][0];
+        if (k + 1 < r.samples) loop_.advance();
+    }
+    return r;
+}
+
+} // namespace windage

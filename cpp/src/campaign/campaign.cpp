@@ -1,0 +1,90 @@
+#include <windage/campaign/campaign.hpp>
+
+#include <algorithm>
+#include <stdexcept>
+
+#include <oneapi/tbb/global_control.h>
+#include <oneapi/tbb/parallel_for.h>
+#include <oneapi/tbb/partitioner.h>
+#include <oneapi/tbb/task_arena.h>
+
+#include <windage/campaign/block_runner.hpp>
+
+#include "work_queue.hpp"
+
+namespace windage {
+namespace {
+
+#ifdef WINDAGE_BLOCK
+constexpr std::size_t usual_block = WINDAGE_BLOCK;
+#else
+constexpr std::size_t usual_block = 128;
+#endif
+
+std::size_t whole_packs(std::size_t trials) { return (trials + lanes - 1) / lanes * lanes; }
+
+int threads_for(const run_options& options) {
+    if (options.threads > 0) return options.threads;
+    return std::max(1, oneapi::tbb::this_task_arena::max_concurrency());
+}
+
+// Few trials make small blocks, so that every thread has some; the digits do not depend on it.
+std::size_t block_size_for(const run_options& options, std::uint64_t count, int threads) {
+    if (options.block_size > 0) return whole_packs(options.block_size);
+    const std::uint64_t share = (count + threads - 1) / threads;
+    return std::min(usual_block, whole_packs(std::size_t(std::min<std::uint64_t>(share, usual_block))));
+}
+
+} // namespace
+
+campaign::campaign(study_description study)
+    : study_(std::move(study)), signals_(signal_names(study_.loop)), source_(std::make_unique<parameter_source>(study_)) {
+    block_runner(study_, *source_, lanes);  // builds every stage once, so that a bad description is refused here
+}
+
+campaign::~campaign() = default;
+campaign::campaign(campaign&&) noexcept = default;
+
+std::size_t campaign::parameters() const { return source_->count(); }
+std::uint64_t campaign::trials_available() const { return source_->trials_available(); }
+
+std::uint64_t campaign::run(std::uint64_t first, std::uint64_t count, const result_columns& to,
+                            const run_options& options) const {
+    const std::uint64_t available = trials_available();
+    if (first > available || count > available - first)
+        throw std::invalid_argument("run: trials up to " + std::to_string(first + count) + " asked for; the table of "
+                                    "parameter values has " + std::to_string(available) + " rows");
+    if (count == 0) return 0;
+    const int threads = threads_for(options);
+    const bool one_by_one = study_.loop.integrator == integrator_kind::reference;  // its steps follow one trial
+    const std::size_t block_size = one_by_one ? lanes : block_size_for(options, count, threads);
+    const std::size_t trials_per_block = one_by_one ? 1 : block_size;
+    work_queue queue((count + trials_per_block - 1) / trials_per_block, options.progress);
+
+    const auto work = [&](int) {
+        queue.guard([&] {
+            block_runner runner(study_, *source_, block_size);
+            std::uint64_t block = 0;
+            while (queue.take(block)) {
+                const std::uint64_t offset = block * trials_per_block;
+                const std::size_t trials = std::size_t(std::min<std::uint64_t>(trials_per_block, count - offset));
+                if (runner.run(first + offset, trials, to, std::size_t(offset), [&] { return queue.keep_going(); }))
+                    queue.finish(block, trials);
+            }
+        });
+    };
+    // The arena bounds the threads of this run; the global limit lets it have more than the machine has cores.
+    const oneapi::tbb::global_control limit(oneapi::tbb::global_control::max_allowed_parallelism,
+                                            std::size_t(threads));
+    oneapi::tbb::task_arena arena(threads);
+    arena.execute([&] { oneapi::tbb::parallel_for(0, threads, work, oneapi::tbb::simple_partitioner()); });
+    queue.rethrow();
+    return std::min(count, queue.finished_prefix() * trials_per_block);
+}
+
+recording campaign::replay(std::uint64_t trial) const {
+    if (trial >= trials_available()) throw std::invalid_argument("replay: the study has no trial of this index");
+    return block_runner(study_, *source_, lanes).replay(trial, signals_);
+}
+
+} // namespace windage
