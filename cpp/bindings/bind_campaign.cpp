@@ -1,0 +1,129 @@
+// Campaigns in Python: describe -> run(first, count) -> columns.
+#include <pybind11/functional.h>
+#include <pybind11/numpy.h>
+#include <pybind11/pybind11.h>
+#include <pybind11/stl.h>
+
+#include <windage/campaign/campaign.hpp>
+#include <windage/campaign/parameters.hpp>
+#include <windage/control/gains.hpp>
+
+#include "bind_engine.hpp"
+#include "describe.hpp"
+
+namespace windage::bindings {
+
+namespace py = pybind11;
+
+namespace {
+
+using column = py::array_t<double, py::array::c_style>;
+
+py::tuple run(const campaign& c, std::uint64_t first, std::uint64_t count, int threads, std::size_t block_size,
+              const py::object& progress) {
+    if (threads < 0) throw std::invalid_argument("threads: expected 0 or more");
+    if (count > (std::uint64_t(1) << 40)) throw std::invalid_argument("count: more trials than memory can hold");
+    const auto n = py::ssize_t(count);
+    column parameters({py::ssize_t(c.parameters()), n}), measures({py::ssize_t(c.measures()), n});
+    py::array_t<std::uint8_t> status(n);
+    const result_columns to{parameters.mutable_data(), measures.mutable_data(), status.mutable_data(), count};
+
+    bool interrupted = false;
+    py::object failure = py::none();
+    run_options options;
+    options.threads = threads;
+    options.block_size = block_size;
+    // Runs on this thread, between two samples of a block, and takes the lock of the interpreter for its own length.
+    options.progress = [&](std::uint64_t done) {
+        const py::gil_scoped_acquire lock;
+        try {
+            if (PyErr_CheckSignals() != 0) throw py::error_already_set();
+            return progress.is_none() || progress(done).cast<bool>();
+        } catch (py::error_already_set& e) {
+            interrupted = e.matches(PyExc_KeyboardInterrupt);
+            if (!interrupted) failure = e.value();
+            return false;
+        }
+    };
+    std::uint64_t completed = 0;
+    {
+        const py::gil_scoped_release unlock;  // workers touch no Python object
+        completed = c.run(first, count, to, options);
+    }
+    if (!failure.is_none()) {
+        PyErr_SetObject(py::type::of(failure).ptr(), failure.ptr());
+        throw py::error_already_set();
+    }
+    return py::make_tuple(parameters, measures, status, completed);
+}
+
+column replay(const campaign& c, std::uint64_t trial) {
+    recording r;
+    {
+        const py::gil_scoped_release unlock;
+        r = c.replay(trial);
+    }
+    column values({py::ssize_t(r.signals.size()), py::ssize_t(r.samples)});
+    std::copy(r.values.begin(), r.values.end(), values.mutable_data());
+    return values;
+}
+
+column quantiles(const py::dict& source, const column& probabilities) {
+    const spread_description s = read_spread(source, "spread");
+    check(s);
+    column out(probabilities.size());
+    for (py::ssize_t i = 0; i < probabilities.size(); ++i)
+        out.mutable_data()[i] = quantile(s, probabilities.data()[i], std::uint64_t(i));
+    return out;
+}
+
+column gains(int count, const std::function<void(wide*)>& place) {
+    wide values[max_order + 1];
+    place(values);
+    column out(count);
+    for (int i = 0; i < count; ++i) out.mutable_data()[i] = values[i][0];
+    return out;
+}
+
+void check_order(int order) {
+    if (order < 1 || order > max_order)
+        throw std::invalid_argument("order: found " + std::to_string(order) + "; expected 1 to " +
+                                    std::to_string(max_order));
+}
+
+double measure_recording(const py::dict& measure, const std::vector<double>& time, const std::vector<double>& values,
+                         double target, double sample_period) {
+    return evaluate_measure(read_measure(measure, "measure"), time, values, target, sample_period);
+}
+
+} // namespace
+
+void bind_campaign(py::module_& m) {
+    py::class_<campaign>(m, "Campaign", "A study made ready to run.")
+        .def(py::init([](const py::dict& study) { return campaign(read_study(study)); }), py::arg("study"))
+        .def("signal_names", &campaign::signals, "Names of the signals in the order of a replay.")
+        .def_property_readonly("trials_available", &campaign::trials_available)
+        .def("run", run, py::arg("first"), py::arg("count"), py::arg("threads") = 0, py::arg("block_size") = 0,
+             py::arg("progress") = py::none(),
+             "Run trials; returns parameters (n, count), measures (n, count), status (count,) and the trials completed.")
+        .def("replay", replay, py::arg("trial"), "Every signal of one trial at every sample: (signals, samples).");
+    m.def("evaluate_measure", measure_recording, py::arg("measure"), py::arg("time"), py::arg("values"),
+          py::arg("target"), py::arg("sample_period"), "One measure over a recorded signal.");
+    m.def("spread_quantiles", quantiles, py::arg("spread"), py::arg("probabilities"));
+    m.def("controller_gains", [](int order, double bandwidth) {
+        check_order(order);
+        return gains(order, [&](wide* to) { controller_gains(order, bandwidth, to); });
+    }, py::arg("order"), py::arg("controller_bandwidth"));
+    m.def("continuous_observer_gains", [](int order, double bandwidth) {
+        check_order(order);
+        return gains(order + 1, [&](wide* to) { continuous_observer_gains(order, bandwidth, to); });
+    }, py::arg("order"), py::arg("observer_bandwidth"));
+    m.def("observer_gains", [](int order, double bandwidth, double sample_period, const std::string& discretisation) {
+        check_order(order);
+        const auto kind = read_discretisation(discretisation);
+        return gains(order + 1, [&](wide* to) { observer_gains(order, kind, bandwidth, sample_period, to); });
+    }, py::arg("order"), py::arg("observer_bandwidth"), py::arg("sample_period"),
+       py::arg("discretisation") = "zero_order_hold");
+}
+
+} // namespace windage::bindings
