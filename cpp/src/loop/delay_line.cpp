@@ -1,6 +1,7 @@
 #include <windage/loop/delay_line.hpp>
 
 #include <algorithm>
+#include <bit>
 
 namespace windage {
 namespace {
@@ -42,23 +43,21 @@ void delay_line::begin(const trial_block& block, const sample_clock& clock, cons
             longest = std::max(longest, whole_[i + lane]);
         }
     }
-    depth_ = longest + 2;
+    depth_ = std::int64_t(std::bit_ceil(std::uint64_t(longest + 2)));  // a power of two wraps without a division
     history_.resize(std::size_t(depth_) * size_);
     for (std::int64_t k = 0; k < depth_; ++k)
         std::copy_n(initial_command.data(), size_, history_.data() + std::size_t(k) * size_);
 }
 
 void delay_line::sample(std::int64_t k, constant_signal command) {
-    std::copy_n(command, size_, history_.data() + std::size_t(k % depth_) * size_);
-    const std::int64_t base = k + depth_;  // keeps the remainders below from going negative
+    std::copy_n(command, size_, slot(k));
     if (same_for_all_) {
-        std::copy_n(slot(base - whole_[0]), size_, after_);
-        if (split_) std::copy_n(slot(base - whole_[0] - 1), size_, before_);
+        std::copy_n(slot(k - whole_[0]), size_, after_);
+        if (split_) std::copy_n(slot(k - whole_[0] - 1), size_, before_);
     } else {
-        for (std::size_t i = 0; i < size_; ++i) {
-            after_[i] = slot(base - whole_[i])[i];
-            if (split_) before_[i] = slot(base - whole_[i] - 1)[i];
-        }
+        for (std::size_t i = 0; i < size_; ++i) after_[i] = slot(k - whole_[i])[i];
+        if (split_)
+            for (std::size_t i = 0; i < size_; ++i) before_[i] = slot(k - whole_[i] - 1)[i];
     }
     if (split_)
         for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP {

@@ -28,7 +28,8 @@ public:
     static bool needs_split(const loop_description& d);
 
 private:
-    const double* slot(std::int64_t k) const { return history_.data() + std::size_t(k % depth_) * size_; }
+    /// Commands of sample k, also of those before the first one.
+    double* slot(std::int64_t k) { return history_.data() + std::size_t(k & (depth_ - 1)) * size_; }
 
     lane_value delay_, dead_time_;
     std::size_t size_;

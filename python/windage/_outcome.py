@@ -1,0 +1,265 @@
+"""The outcome of a run: what each trial drew, measured and met."""
+
+from __future__ import annotations
+
+import html
+from collections.abc import Mapping
+from functools import cached_property
+from types import MappingProxyType
+from typing import TYPE_CHECKING, Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from ._describe import Described
+from ._errors import DescriptionError, suggestion
+from ._numbers import checked_integer
+from ._runner import Columns, Report
+from ._slack import slack_of
+
+if TYPE_CHECKING:
+    from ._drivers import Drivers
+    from ._study import Study
+    from ._verdict import Verdict, VerdictTable
+
+Values = NDArray[np.float64]
+STATUS = ("finished", "diverged")
+
+
+class Outcome:
+    """Drawn parameters, measures and slacks of a contiguous range of trials. Made by `Study.run`.
+
+    Arrays are read-only views of the engine's columns. Position i of an array belongs to trial `first + i`;
+    `failures` and `diverged` hold indices of trials, which `Study.replay` takes.
+    """
+
+    def __init__(
+        self,
+        study: Study,
+        described: Described,
+        columns: Columns,
+        first: int = 0,
+        judged: frozenset[int] = frozenset(),
+    ) -> None:
+        self.study = study
+        self.first = first
+        self.requested = columns.requested
+        self._described = described
+        self._columns = columns
+        self._judged = set(judged)
+        for array in (columns.parameters, columns.measures, columns.status):
+            array.flags.writeable = False
+
+    @property
+    def trials(self) -> int:
+        """Number of trials that were run."""
+        return self._columns.trials
+
+    @property
+    def interrupted(self) -> bool:
+        """Whether the run was stopped before all trials asked for were run."""
+        return self.trials < self.requested
+
+    @cached_property
+    def parameters(self) -> Mapping[str, Values]:
+        """Drawn parameters by name, each an array of shape (trials,)."""
+        named = zip(self._described.columns, self._columns.parameters, strict=True)
+        return MappingProxyType({column.name: values for column, values in named})
+
+    @cached_property
+    def measures(self) -> Mapping[str, Values]:
+        """Measures by their words, each an array of shape (trials,); NaN where a trial diverged."""
+        named = zip(measure_names(self._described), self._columns.measures, strict=True)
+        return MappingProxyType(dict(named))
+
+    @cached_property
+    def slack(self) -> Values:
+        """Distance to each limit, shape (trials, requirements): at least 0 where met.
+
+        It is -infinity where the trial diverged or the measure is undefined.
+        """
+        columns = self._columns
+        return slack_of(
+            self._described, self.study.requirements, columns.parameters, columns.measures, columns.status
+        )
+
+    @property
+    def met(self) -> NDArray[np.bool_]:
+        """Which requirements are met, shape (trials, requirements)."""
+        return self.slack >= 0.0
+
+    @cached_property
+    def passed(self) -> NDArray[np.bool_]:
+        """Which trials finished and met every requirement, shape (trials,)."""
+        passed: NDArray[np.bool_] = (self._columns.status == 0) & (self.slack >= 0.0).all(axis=1)
+        passed.flags.writeable = False
+        return passed
+
+    @cached_property
+    def failures(self) -> NDArray[np.int64]:
+        """Indices of the trials that failed."""
+        return self._indices(~self.passed)
+
+    @cached_property
+    def diverged(self) -> NDArray[np.int64]:
+        """Indices of the trials that diverged; they are among the failures."""
+        return self._indices(self._columns.status != 0)
+
+    @property
+    def status(self) -> NDArray[np.uint8]:
+        """0 where a trial finished, 1 where it diverged, shape (trials,)."""
+        return self._columns.status
+
+    @property
+    def requirements(self) -> tuple[str, ...]:
+        """The requirements under their names."""
+        return tuple(requirement.label for requirement in self.study.requirements)
+
+    def failed(self, requirement: int | str) -> NDArray[np.int64]:
+        """Return the indices of the trials that missed one requirement, given by its place or name."""
+        return self._indices(~(self.slack[:, self._place(requirement)] >= 0.0))
+
+    def verdict(self, at_least: float, confidence: float = 0.95) -> Verdict:
+        """Judge the claim that at least a fraction of all trials passes, at a confidence.
+
+        Parameters
+        ----------
+        at_least : float
+            Pass probability claimed, above 0 and below 1.
+        confidence : float
+            Confidence of the verdict, 0.5 up to but not including 1.
+
+        Returns
+        -------
+        Verdict
+            Pass, fail or inconclusive, by exact one-sided Clopper-Pearson bounds. Judging again after
+            `extend` counts as a further look, and the verdict says so.
+        """
+        from windage._verdict import judge
+
+        return judge(
+            len(self.failures),
+            self.trials,
+            len(self.diverged),
+            at_least,
+            confidence,
+            requirement=joint_requirement(self.requirements),
+            **self.study.cautions(),
+            looks=self._look(),
+        )
+
+    def verdicts(self, at_least: float | Mapping[str, float], confidence: float = 0.95) -> VerdictTable:
+        """Judge each requirement by itself, corrected so that all verdicts hold together (Bonferroni)."""
+        from windage._verdict import judge_many
+
+        if not self.requirements:
+            raise DescriptionError("study.requirements", "none", "at least one requirement to judge")
+        missed = dict(zip(self.requirements, (~self.met).sum(axis=0).tolist(), strict=True))
+        return judge_many(
+            missed,
+            self.trials,
+            len(self.diverged),
+            at_least,
+            confidence,
+            **self.study.cautions(),
+            looks=self._look(),
+        )
+
+    def extend(self, trials: int, threads: int = 0, progress: bool | Report | None = None) -> Outcome:
+        """Return an outcome with further trials, equal to the last bit to one longer run.
+
+        Parameters
+        ----------
+        trials : int
+            How many further trials to run.
+        threads, progress
+            As for `Study.run`.
+        """
+        trials = checked_integer(trials, "trials", 1, 1 << 40)
+        more = self.study._columns(self.first + self.trials, trials, threads, progress)
+        mine = self._columns
+        joined = Columns(
+            np.concatenate([mine.parameters, more.parameters], axis=1),
+            np.concatenate([mine.measures, more.measures], axis=1),
+            np.concatenate([mine.status, more.status]),
+            mine.trials + trials,
+        )
+        return Outcome(self.study, self._described, joined, self.first, frozenset(self._judged))
+
+    def table(self) -> Any:
+        """Return a `pyarrow.Table`, one row a trial.
+
+        Columns: "trial", the drawn parameters, the measures, "slack of ..." for each requirement, "passed"
+        and "status". Columns of numbers share the memory of this outcome.
+        """
+        from ._arrow import outcome_table
+
+        return outcome_table(self)
+
+    def drivers(self) -> Drivers:
+        """Return how strongly each drawn parameter goes along with slack and failure: a first hint."""
+        from ._drivers import find_drivers
+
+        return find_drivers(self)
+
+    def plot(self, *args: Any, **options: Any) -> Any:
+        """Plot the outcome; see `windage._plots.plot_outcome`."""
+        import importlib
+
+        return importlib.import_module("windage._plots").plot_outcome(self, *args, **options)
+
+    def __len__(self) -> int:
+        return self.trials
+
+    def __repr__(self) -> str:
+        return "\n".join([self._headline(), *(f"  {text}" for text in self._rows())])
+
+    def _repr_html_(self) -> str:
+        rows = "".join(f"<li>{html.escape(text)}</li>" for text in self._rows())
+        return f"<p><strong>{html.escape(self._headline())}</strong></p><ul>{rows}</ul>"
+
+    def _headline(self) -> str:
+        asked = f" (stopped; {self.requested:,} asked for)" if self.interrupted else ""
+        failed, diverged = len(self.failures), len(self.diverged)
+        return f"Outcome of {self.trials:,} trials{asked}: {failed:,} failed, {diverged:,} of them diverged"
+
+    def _rows(self) -> list[str]:
+        missed = (~self.met).sum(axis=0).tolist()
+        return [f"{n:,} missed: {label}" for label, n in zip(self.requirements, missed, strict=True)]
+
+    def _indices(self, chosen: NDArray[np.bool_]) -> NDArray[np.int64]:
+        indices = np.flatnonzero(chosen).astype(np.int64) + self.first
+        indices.flags.writeable = False
+        return indices
+
+    def _place(self, requirement: int | str) -> int:
+        names = self.requirements
+        if isinstance(requirement, str):
+            if requirement not in names:
+                mend = suggestion(requirement, names)
+                raise DescriptionError("requirement", requirement, "a requirement of the study", mend)
+            return names.index(requirement)
+        return checked_integer(requirement, "requirement", 0, len(names) - 1)
+
+    def _look(self) -> int:
+        """Count this judgement: at a number of trials judged before it is no further look."""
+        self._judged.add(self.trials)
+        return len(self._judged)
+
+
+def measure_names(described: Described) -> list[str]:
+    """Return a name for each measure: its words, with a number where they are the same."""
+    names: list[str] = []
+    for measure in described.measures:
+        label, count = measure.label, 2
+        while label in names:
+            label, count = f"{measure.label} [{count}]", count + 1
+        names.append(label)
+    return names
+
+
+def joint_requirement(labels: tuple[str, ...]) -> str:
+    """Return in words what a trial has to do to pass."""
+    if not labels:
+        return "the trial finishes"
+    return labels[0] if len(labels) == 1 else f"all {len(labels)} requirements met in the same trial"

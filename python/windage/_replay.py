@@ -1,0 +1,213 @@
+"""One trial again, with every signal: the same digits as in the run it comes from."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Mapping
+from typing import TYPE_CHECKING, Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from ._describe import Described
+from ._errors import DescriptionError, suggestion
+from ._measures import Requirement
+from ._numbers import Number, Spread
+from ._shared_numbers import Column, Shared
+from ._slack import slack_of
+
+if TYPE_CHECKING:
+    from ._loop import Loop
+
+Values = NDArray[np.float64]
+
+
+class Replay:
+    """Every signal of one trial, one value a sample instant.
+
+    `replay["error"]` is the array of a signal. Made by `Study.replay` and `Study.nominal`.
+
+    Attributes
+    ----------
+    trial : int or None
+        Index of the trial; None for the nominal unit.
+    time : ndarray, shape (samples,)
+        Sample instants, s.
+    parameters, measures : mapping of str to float
+        Drawn parameters and measures of this trial.
+    slack : ndarray, shape (requirements,)
+        Distance to each limit, at least 0 where met, -infinity if the trial diverged.
+    met : ndarray of bool, shape (requirements,)
+        Which requirements are met.
+    diverged : bool
+        Whether a state of the plant left the finite range.
+    """
+
+    def __init__(
+        self,
+        loop: Loop,
+        requirements: tuple[Requirement, ...],
+        described: Described,
+        run: tuple[Values, Values, NDArray[np.uint8]],
+        signals: Mapping[str, Values],
+        trial: int | None,
+    ) -> None:
+        parameters, measures, status = run
+        self.trial = trial
+        self.requirements = requirements
+        self._loop = loop
+        self._signals = dict(signals)
+        self._described = described
+        self.parameters = {c.name: float(v) for c, v in zip(described.columns, parameters[:, 0], strict=True)}
+        self.measures = {m.label: float(v) for m, v in zip(described.measures, measures[:, 0], strict=True)}
+        self.slack: Values = slack_of(described, requirements, parameters, measures, status)[0]
+        self.met: NDArray[np.bool_] = self.slack >= 0.0
+        self.diverged = bool(status[0])
+
+    @property
+    def time(self) -> Values:
+        """Sample instants, s."""
+        return self._signals["time"]
+
+    @property
+    def signals(self) -> tuple[str, ...]:
+        """Names of the signals."""
+        return tuple(self._signals)
+
+    @property
+    def passed(self) -> bool:
+        """Whether the trial finished and met every requirement."""
+        return not self.diverged and bool(self.met.all())
+
+    def __getitem__(self, signal: str) -> Values:
+        if signal not in self._signals:
+            mend = suggestion(str(signal), self._signals)
+            raise DescriptionError("replay", signal, "the name of a signal", mend)
+        return self._signals[signal]
+
+    def __iter__(self) -> Any:
+        return iter(self._signals)
+
+    def __len__(self) -> int:
+        return len(self._signals)
+
+    @property
+    def total_disturbance(self) -> Values:
+        """The true total disturbance f = y^(n) - b0 u, shape (samples,).
+
+        Notes
+        -----
+        y^(n) is the n-th central difference of the true output at the sample instants, which is the mean of
+        the n-th derivative over n sample periods (n + 1 for odd n), weighted by a B-spline (Peano kernel; de
+        Boor 1978, A Practical Guide to Splines, chapter IX, from memory). The same weights are applied to the
+        input u, held between its changes, so that for an integrator chain f is exact to rounding. With a lag
+        in the actuator the input is not held, and the straight line between its samples is used. Where the
+        difference would reach beyond the trial the value is NaN.
+        """
+        n = self._loop.controller.order
+        period, b0 = self._value(self._loop.sample_period, "sample_period"), self._b0()
+        derivative = central_difference(self["output"], n, period)
+        return derivative - b0 * _averaged(self._mean_input(period), n)
+
+    @property
+    def estimated_disturbance(self) -> Values:
+        """The controller's estimate of the total disturbance, in the sense of `total_disturbance`.
+
+        Notes
+        -----
+        The observer of the output form estimates f itself. The one of the error form follows e = r - y with
+        e^(n) = r^(n) - f - b0 u, so its last estimate is that of r^(n) - f, and the estimate of f is r^(n)
+        minus it; r^(n) is taken as a central difference like y^(n).
+        """
+        n = self._loop.controller.order
+        last = self[f"estimate_{n + 1}"]
+        if self._loop.controller.form == "output":
+            return last
+        period = self._value(self._loop.sample_period, "sample_period")
+        return central_difference(self["reference"], n, period) - last
+
+    def plot(self, *args: Any, **options: Any) -> Any:
+        """Plot the trial; see `windage._plots.plot_replay`."""
+        import importlib
+
+        return importlib.import_module("windage._plots").plot_replay(self, *args, **options)
+
+    def __repr__(self) -> str:
+        name = "nominal unit" if self.trial is None else f"trial {self.trial}"
+        fate = "diverged" if self.diverged else ("passed" if self.passed else "failed")
+        if not self.requirements and not self.diverged:
+            fate = "finished"
+        lines = [f"Replay of {name}: {fate}, {len(self.time)} samples of {len(self._signals)} signals"]
+        for requirement, slack in zip(self.requirements, self.slack, strict=True):
+            lines.append(
+                f"  {'met   ' if slack >= 0.0 else 'MISSED'}  {requirement.label}  (slack {slack:.4g})"
+            )
+        return "\n".join(lines)
+
+    def _b0(self) -> float:
+        return self._value(self._loop.controller.b0, "controller.b0")
+
+    def _value(self, number: Number, path: str) -> float:
+        """Return the value that a number has in this trial."""
+        if not isinstance(number, Spread):
+            return number
+        for column in self._described.columns:
+            is_shared = isinstance(number, Shared | Column) and column.spread == number
+            if column.path == path or is_shared:
+                return self.parameters[column.name]
+        raise KeyError(path)
+
+    def _mean_input(self, period: float) -> Values:
+        """Return the mean of the plant's input over each sample interval."""
+        u = self["input"]
+        if self._loop.actuator.time_constant != 0.0:
+            share = 0.5
+        else:
+            delay = self._value(self._loop.actuator.delay, "actuator.delay")
+            delay += self._value(self._loop.plant.dead_time, "plant.dead_time")
+            samples = delay / period
+            # As the engine: the command changes this part of a period after the sample instant.
+            share = 0.0 if abs(samples - round(samples)) <= 1e-9 else samples - math.floor(samples)
+        if share == 0.0:
+            return u[:-1]
+        # Before the change the command is the sampled one, after it that of the next sample; with a lag, the
+        # trapezium rule.
+        return share * u[:-1] + (1.0 - share) * u[1:]
+
+
+def central_difference(values: Values, order: int, period: float) -> Values:
+    """Return the central difference quotient of an order, NaN where it would reach beyond the ends.
+
+    For odd orders it is the mean of the two differences that lie half a period to either side.
+    """
+    differences: Values = np.diff(values, n=order) / period**order
+    return _centred(differences, order, len(values))
+
+
+def _averaged(intervals: Values, order: int) -> Values:
+    """Return the B-spline mean that a central difference takes, of something constant in each interval."""
+    weights = np.asarray(eulerian(order), dtype=np.float64) / math.factorial(order)
+    means = np.convolve(intervals, weights, mode="valid") if len(intervals) >= order else np.empty(0)
+    return _centred(means, order, len(intervals) + 1)
+
+
+def _centred(differences: Values, order: int, samples: int) -> Values:
+    """Put values that span `order` periods at the sample in their middle."""
+    result = np.full(samples, np.nan)
+    if order % 2:
+        differences = 0.5 * (differences[1:] + differences[:-1]) if len(differences) > 1 else np.empty(0)
+    margin = (order + 1) // 2
+    if len(differences):
+        result[margin : margin + len(differences)] = differences
+    return result
+
+
+def eulerian(order: int) -> list[int]:
+    """Return the Eulerian numbers of an order: its factorial times the B-spline's integrals over intervals."""
+    row = [1]
+    for n in range(2, order + 1):
+        row = [
+            (n - k) * (row[k - 1] if k > 0 else 0) + (k + 1) * (row[k] if k < len(row) else 0)
+            for k in range(n)
+        ]
+    return row

@@ -1,0 +1,300 @@
+"""The study: a loop, its requirements and a seed; everything needed to repeat the work."""
+
+from __future__ import annotations
+
+import dataclasses
+from collections.abc import Iterator, Mapping, Sequence
+from dataclasses import dataclass
+from functools import cached_property
+from typing import Any, Self
+
+import numpy as np
+
+from ._accuracy import chosen_steps
+from ._controllers import Controller
+from ._describe import Described, describe
+from ._descriptions import Description, rebuilt, unknown_name
+from ._errors import DescriptionError
+from ._loop import Loop
+from ._measures import Measure, Requirement
+from ._not_varied import Cautions, not_varied
+from ._numbers import Spread, checked_integer, high_of, low_of, nominal_of
+from ._outcome import Outcome
+from ._replay import Replay
+from ._runner import Columns, Report, make_campaign, run_columns
+from ._study_checks import (
+    check_positive_definite,
+    check_windows,
+    checked_correlations,
+    checked_measures,
+    checked_requirements,
+    checked_table,
+    with_table,
+)
+from ._tally import Counter, Tally
+
+MOST_TRIALS = 1 << 40
+#: Largest replay, bytes.
+LARGEST_REPLAY = 4_000_000_000
+
+
+@dataclass(frozen=True, repr=False, eq=False)
+class Study(Description):
+    """A loop, what is required of it, and the seed of all random numbers.
+
+    Parameters
+    ----------
+    loop : Loop
+        The control loop.
+    requirements : sequence of Requirement
+        What each trial has to meet: `measure <= limit` or `measure >= limit`.
+    seed : int
+        0 to 2^64 - 1. A trial is a function of study and index alone: the same digits on every machine.
+    measures : sequence of Measure
+        Further measures, without a limit.
+    table : mapping of str to array_like, shape (rows,), optional
+        The user's own table of joint parameter values, read by `column(name)`.
+    correlations : mapping of (str, str) to float, optional
+        Rank correlations (Spearman) between drawn parameters, by their path ("plant.inertia") or shared name,
+        through a Gaussian copula. Pairs not given within a group count as uncorrelated.
+
+    Raises
+    ------
+    DescriptionError
+        If a signal or parameter does not exist, a window lies outside the duration, or correlations
+        contradict each other.
+    """
+
+    loop: Loop
+    requirements: Sequence[Requirement] = ()
+    seed: int = 0
+    measures: Sequence[Measure] = ()
+    table: Mapping[str, Sequence[float]] | None = None
+    correlations: Mapping[tuple[str, str], float] | None = None
+
+    def __post_init__(self) -> None:
+        if not isinstance(self.loop, Loop):
+            raise DescriptionError("study.loop", self.loop, "Loop(...)")
+        put = object.__setattr__
+        put(self, "requirements", checked_requirements(self.requirements))
+        put(self, "measures", checked_measures(self.measures))
+        put(self, "seed", checked_integer(self.seed, "study.seed", 0, 2**64 - 1))
+        put(self, "table", checked_table(self.table))
+        put(self, "correlations", checked_correlations(self.correlations))
+        if not self.requirements and not self.measures:
+            mend = "Add for example peak('error') <= 0.01."
+            raise DescriptionError("study.requirements", "none", "at least one requirement or measure", mend)
+        loop, requirements, measures = self._bound
+        check_windows(loop, requirements, measures)
+        check_positive_definite(self._describe(1).study["correlations"])
+
+    def run(self, trials: int, threads: int = 0, progress: bool | Report | None = None) -> Outcome:
+        """Run the trials 0 to trials - 1.
+
+        Parameters
+        ----------
+        trials : int
+            Number of trials, at least 1.
+        threads : int
+            0: every core. It has no influence on any digit.
+        progress : bool or callable or None
+            None: a bar if the standard error stream is a terminal; True or False: always or never; a callable
+            gets the trials done and asked for and stops the run by returning False.
+
+        Returns
+        -------
+        Outcome
+            After Ctrl-C or a stop: of the trials finished so far.
+        """
+        count = checked_integer(trials, "trials", 1, MOST_TRIALS)
+        columns = self._columns(0, count, threads, progress)
+        return Outcome(self, self._run_description, columns)
+
+    def batches(
+        self, trials: int, size: int = 100_000, threads: int = 0, progress: bool | Report | None = None
+    ) -> Iterator[Outcome]:
+        """Run the trials 0 to trials - 1 in batches, for more trials than memory holds.
+
+        Yields
+        ------
+        Outcome
+            Of up to `size` trials each; `Outcome.first` is the index of its first trial. After an interrupted
+            batch there is none.
+        """
+        count = checked_integer(trials, "trials", 1, MOST_TRIALS)
+        size = checked_integer(size, "size", 1, MOST_TRIALS)
+        for first in range(0, count, size):
+            columns = self._columns(first, min(size, count - first), threads, progress)
+            outcome = Outcome(self, self._run_description, columns, first)
+            yield outcome
+            if outcome.interrupted:
+                return
+
+    def count(
+        self,
+        trials: int,
+        keep_failures: int = 10_000,
+        size: int = 100_000,
+        threads: int = 0,
+        progress: bool | Report | None = None,
+    ) -> Tally:
+        """Run the trials 0 to trials - 1 and count the failures, in memory that does not grow with `trials`.
+
+        Parameters
+        ----------
+        trials : int
+            Number of trials.
+        keep_failures : int
+            How many indices of failing trials to keep, the first ones.
+        size, threads, progress
+            As for `batches`.
+        """
+        counter = Counter(self, checked_integer(keep_failures, "keep_failures", 0, MOST_TRIALS))
+        for outcome in self.batches(trials, size, threads, progress):
+            counter.add(outcome)
+        return counter.tally(trials)
+
+    def replay(self, trial: int) -> Replay:
+        """Run one trial again and return every signal, with the same digits as in `run`."""
+        trial = checked_integer(trial, "trial", 0, MOST_TRIALS)
+        described = self._describe(self.resolved_steps(), every_signal=True)
+        return _replay(self._bound[0], self.requirements, described, trial, trial)
+
+    def nominal(self) -> Replay:
+        """Run the nominal unit: every spread at its nominal value, noise as in trial 0."""
+        loop, requirements, measures = rebuilt(
+            self._bound, lambda x: nominal_of(x) if isinstance(x, Spread) else None
+        )
+        described = describe(
+            loop, requirements, measures, {}, self.seed, self.resolved_steps(), every_signal=True
+        )
+        return _replay(loop, requirements, described, 0, None)
+
+    def resolved_steps(self) -> int:
+        """Return the integration steps in a sample period, chosen once if the loop says "auto".
+
+        Raises
+        ------
+        DescriptionError
+            If no number of steps is enough; see `windage._accuracy`.
+        """
+        return self._steps
+
+    @property
+    def parameters(self) -> dict[str, Spread]:
+        """The drawn parameters by name."""
+        return {column.name: column.spread for column in self._describe(1).columns}
+
+    @cached_property
+    def digest(self) -> str:
+        """SHA-256 of everything that decides the digits of a trial, in hexadecimal digits.
+
+        The order of names in a mapping has no meaning; the version of the study format is included.
+        """
+        from ._study_text import digest_of
+
+        return digest_of(self)
+
+    def warnings(self) -> list[str]:
+        """Return what looks wrong with the study but is allowed, in words."""
+        return self._bound[0].warnings()
+
+    def with_(self, **changes: Any) -> Self:
+        """Return a copy with some arguments changed, those of the study or those of its loop.
+
+        Examples
+        --------
+        `study.with_(seed=7)`, `study.with_(controller=faster, sample_period=1e-3)`
+        """
+        of_study = [f.name for f in dataclasses.fields(self)]
+        of_loop = [f.name for f in dataclasses.fields(Loop)]
+        for name in changes:
+            if name not in of_study + of_loop:
+                raise unknown_name("Study", name, of_study + of_loop)
+        inner = {name: value for name, value in changes.items() if name in of_loop}
+        outer = {name: value for name, value in changes.items() if name in of_study}
+        if inner:
+            outer["loop"] = outer.get("loop", self.loop).with_(**inner)
+        return dataclasses.replace(self, **outer)
+
+    def with_controller(self, controller: Controller) -> Self:
+        """Return a copy with another controller."""
+        return self.with_(controller=controller)
+
+    def cautions(self) -> Cautions:
+        """Return what a verdict has to name: numbers held at one value, spreads, truncated spreads."""
+        columns = self._describe(1).columns
+        return Cautions(
+            not_varied=not_varied(self.loop),
+            spreads=tuple(f"{c.name}: {c.spread!r}" for c in columns),
+            truncated=tuple(c.name for c in columns if c.spread._is_truncated()),
+        )
+
+    def __eq__(self, other: object) -> bool:
+        return self.digest == other.digest if isinstance(other, Study) else NotImplemented
+
+    def __hash__(self) -> int:
+        return hash(self.digest)
+
+    def __repr__(self) -> str:
+        steps: Any = self.loop.steps_per_sample
+        if steps == "auto":
+            chosen = self.__dict__.get("_steps")
+            steps = "auto" if chosen is None else f"auto ({chosen})"
+        loop, plant = self.loop, type(self.loop.plant).__name__
+        lines = [
+            f"Study {self.digest[:12]}: {plant} under {type(loop.controller).__name__} of order "
+            f"{loop.controller.order}, seed {self.seed}, steps per sample {steps}"
+        ]
+        lines += [f"  {name}: {spread!r}" for name, spread in self.parameters.items()]
+        lines += [f"  requires {requirement.label}" for requirement in self.requirements]
+        lines += [f"  measures {measure.label}" for measure in self.measures]
+        return "\n".join(lines)
+
+    @cached_property
+    def _bound(self) -> tuple[Loop, tuple[Requirement, ...], tuple[Measure, ...]]:
+        """Loop, requirements and measures whose columns know their values."""
+        parts: Any = (self.loop, self.requirements, self.measures)
+        bound: tuple[Loop, tuple[Requirement, ...], tuple[Measure, ...]] = with_table(parts, self.table)  # type: ignore[arg-type]
+        return bound
+
+    @cached_property
+    def _steps(self) -> int:
+        return chosen_steps(*self._bound, self.correlations or {}, self.seed)
+
+    @cached_property
+    def _run_description(self) -> Described:
+        return self._describe(self.resolved_steps())
+
+    @cached_property
+    def _campaign(self) -> Any:
+        return make_campaign(self._run_description.study)
+
+    def _describe(self, steps: int, *, every_signal: bool = False) -> Described:
+        return describe(*self._bound, self.correlations or {}, self.seed, steps, every_signal=every_signal)
+
+    def _columns(self, first: int, count: int, threads: int, progress: bool | Report | None) -> Columns:
+        return run_columns(self._campaign, first, count, threads, progress)
+
+
+def _replay(
+    loop: Loop, requirements: Sequence[Requirement], described: Described, index: int, trial: int | None
+) -> Replay:
+    campaign = make_campaign(described.study)
+    columns = run_columns(campaign, index, 1, 1, False)
+    if columns.trials < 1:
+        raise KeyboardInterrupt
+    names = campaign.signal_names()
+    samples = _longest(loop)
+    if 8.0 * len(names) * samples > LARGEST_REPLAY:
+        found = f"{len(names)} signals of {samples:.3g} samples"
+        raise DescriptionError("replay", found, f"at most {LARGEST_REPLAY / 1e9:g} GB", "Shorten the trial.")
+    values = campaign.replay(index)
+    values.flags.writeable = False
+    run = (columns.parameters, columns.measures, columns.status)
+    signals = dict(zip(names, np.asarray(values), strict=True))
+    return Replay(loop, tuple(requirements), described, run, signals, trial)
+
+
+def _longest(loop: Loop) -> float:
+    return high_of(loop.duration) / low_of(loop.sample_period)

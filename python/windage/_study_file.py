@@ -1,0 +1,93 @@
+"""Study files: TOML that mirrors the Python arguments one to one."""
+
+from __future__ import annotations
+
+import os
+import tempfile
+import tomllib
+from pathlib import Path
+from typing import Any
+
+from ._errors import DescriptionError, StudyFileError
+from ._study import Study
+from ._study_text import from_data, to_data
+
+LARGEST_FILE = 5_000_000
+
+
+def save(study: Study, path: str | os.PathLike[str]) -> None:
+    """Write a study to a TOML file, which `load` turns into an equal study with the same digest.
+
+    The file is written beside its place and moved there, so that an interruption leaves the old one.
+
+    Raises
+    ------
+    DescriptionError
+        If it is no study, or too large for a study file.
+    """
+    if not isinstance(study, Study):
+        raise DescriptionError("study", study, "a Study")
+    text = to_toml(study)
+    if len(text.encode()) > LARGEST_FILE:
+        mend = "Keep long tables in a file of their own and give them to Study(table=...)."
+        raise DescriptionError("study", f"{len(text.encode())} bytes", f"at most {LARGEST_FILE} bytes", mend)
+    target = Path(path)
+    handle, name = tempfile.mkstemp(dir=target.parent, prefix=f".{target.name}.", suffix=".part")
+    try:
+        with os.fdopen(handle, "w", encoding="utf-8", newline="\n") as file:
+            file.write(text)
+        Path(name).chmod(0o666 & ~_umask())
+        Path(name).replace(target)
+    except BaseException:
+        Path(name).unlink(missing_ok=True)
+        raise
+
+
+def load(path: str | os.PathLike[str]) -> Study:
+    """Read a study from a TOML file. Nothing in the file is ever executed.
+
+    Raises
+    ------
+    StudyFileError
+        If the file is too large, is not UTF-8 or not TOML, has unknown or missing keys, or describes what is
+        not allowed; the message names the dotted path.
+    """
+    file = Path(path)
+    try:
+        with file.open("rb") as stream:
+            content = stream.read(LARGEST_FILE + 1)
+    except OSError as error:
+        raise StudyFileError(
+            "study file", str(path), "a file that can be read", f"{error.strerror}."
+        ) from error
+    if len(content) > LARGEST_FILE:
+        raise StudyFileError("study file", f"more than {LARGEST_FILE} bytes", f"at most {LARGEST_FILE} bytes")
+    try:
+        text = content.decode("utf-8")
+    except UnicodeDecodeError as error:
+        place = f"byte {content[error.start]:#04x} at position {error.start}"
+        raise StudyFileError("study file", place, "text in UTF-8", "Save it as UTF-8.") from None
+    return from_toml(text)
+
+
+def to_toml(study: Study) -> str:
+    """Return a study as the text of a study file."""
+    import tomli_w
+
+    return tomli_w.dumps(to_data(study))
+
+
+def from_toml(text: str) -> Study:
+    """Return the study that the text of a study file describes; errors as for `load`."""
+    try:
+        data: dict[str, Any] = tomllib.loads(text)
+    except (tomllib.TOMLDecodeError, RecursionError, ValueError) as error:
+        reason = str(error) or type(error).__name__
+        raise StudyFileError("study file", reason, "a file in TOML", "See toml.io for its rules.") from None
+    return from_data(data)
+
+
+def _umask() -> int:
+    mask = os.umask(0)
+    os.umask(mask)
+    return mask

@@ -1,0 +1,352 @@
+"""Studies as plain data and back, without a line for any single class.
+
+Every object is a table whose key "kind" is the function or class that makes it, with the arguments of that
+function by the same names. Spreads have the key "spread" instead (a column "column", a shared one "shared"
+besides), requirements and measures the key "measure". Arguments that have their default are left out. Reading
+calls the same public functions that a person would call, so every check is made; nothing is ever executed.
+"""
+
+from __future__ import annotations
+
+import hashlib
+import inspect
+import json
+import math
+from collections.abc import Callable, Mapping
+from typing import TYPE_CHECKING, Any
+
+from . import _measures, _spreads
+from ._controllers import ErrorADRC, OutputADRC
+from ._descriptions import Description, FrozenMapping, arguments, kind_of
+from ._errors import DescriptionError, StudyFileError, suggestion
+from ._loop import Loop
+from ._measures import Measure, Requirement
+from ._numbers import Spread, is_plain_number
+from ._plants import Plant
+from ._sensor_actuator import Actuator, Sensor
+from ._shared_numbers import Column, Shared
+from ._stock_plants import (
+    DCDrive,
+    FirstOrder,
+    IntegratorChain,
+    SecondOrder,
+    StateSpace,
+    TransferFunction,
+    TwoMassDrive,
+)
+from ._time_functions import (
+    Constant,
+    Gust,
+    JerkLimited,
+    Pulse,
+    Quintic,
+    Ramp,
+    Sine,
+    Step,
+    Table,
+    WhiteNoise,
+)
+
+if TYPE_CHECKING:
+    from ._study import Study
+
+#: Version of the format of study files, and of the meaning of what they say.
+FORMAT = 1
+
+Maker = Callable[..., Any]
+SPREADS: Mapping[str, Maker] = {
+    f.__name__: f
+    for f in (
+        _spreads.normal,
+        _spreads.uniform,
+        _spreads.triangular,
+        _spreads.lognormal,
+        _spreads.beta,
+        _spreads.tolerance,
+        _spreads.choice,
+        _spreads.samples,
+    )
+}
+MEASURES: Mapping[str, Maker] = {
+    f.__name__: f
+    for f in (
+        _measures.peak,
+        _measures.minimum,
+        _measures.maximum,
+        _measures.mean,
+        _measures.rms,
+        _measures.standard_deviation,
+        _measures.final,
+        _measures.integral_absolute,
+        _measures.integral_square,
+        _measures.integral_time_absolute,
+        _measures.total_variation,
+        _measures.rms_change,
+        _measures.time_outside,
+        _measures.overshoot,
+        _measures.undershoot,
+        _measures.rise_time,
+        _measures.settling_time,
+        _measures.time_in_saturation,
+        _measures.ise,
+        _measures.iae,
+        _measures.itae,
+    )
+}
+PLANTS: Mapping[str, Maker] = {
+    c.__name__: c
+    for c in (
+        Plant,
+        IntegratorChain,
+        FirstOrder,
+        SecondOrder,
+        TransferFunction,
+        StateSpace,
+        DCDrive,
+        TwoMassDrive,
+    )
+}
+CONTROLLERS: Mapping[str, Maker] = {c.__name__: c for c in (OutputADRC, ErrorADRC)}
+TIME_FUNCTIONS: Mapping[str, Maker] = {
+    c.__name__: c for c in (Constant, Step, Ramp, Sine, Pulse, Quintic, JerkLimited, Table)
+}
+DISTURBANCES: Mapping[str, Maker] = {**TIME_FUNCTIONS, **{c.__name__: c for c in (Gust, WhiteNoise)}}
+
+#: Parts that are made by one class only and need no kind.
+_ONLY: Mapping[str, Maker] = {"loop": Loop, "sensor": Sensor, "actuator": Actuator}
+_KINDS: Mapping[str, Mapping[str, Maker]] = {
+    "plant": PLANTS,
+    "controller": CONTROLLERS,
+    "reference": TIME_FUNCTIONS,
+}
+
+
+def to_data(study: Study) -> dict[str, Any]:
+    """Return a study as nested dictionaries, lists, texts, numbers and truth values."""
+    data: dict[str, Any] = {"windage_study": FORMAT, "seed": study.seed}
+    if study.correlations:
+        pairs = sorted((*sorted(pair), rho) for pair, rho in study.correlations.items())
+        data["correlations"] = [{"between": [a, b], "rank_correlation": rho} for a, b, rho in pairs]
+    data["loop"] = _encoded(study.loop)
+    data["requirements"] = [_encoded(requirement) for requirement in study.requirements]
+    data["measures"] = [_encoded(measure) for measure in study.measures]
+    if study.table is not None:
+        data["table"] = {name: list(rows) for name, rows in study.table.items()}
+    return {key: value for key, value in data.items() if value != []}
+
+
+def digest_of(study: Study) -> str:
+    """Return the SHA-256 of a study's data, with names in sorted order."""
+    text = json.dumps(to_data(study), sort_keys=True, separators=(",", ":"), allow_nan=False)
+    return hashlib.sha256(text.encode()).hexdigest()
+
+
+def _encoded(value: Any) -> Any:
+    if isinstance(value, Shared):
+        return {**_encoded(value.spread), "shared": value.name}
+    if isinstance(value, Column):
+        return {"column": value.name}
+    if isinstance(value, Requirement):
+        inside = {name: _encoded(part) for name, part in arguments(value).items() if name != "measure"}
+        return {**_encoded(value.measure), **inside}
+    if isinstance(value, Description):
+        key = "spread" if isinstance(value, Spread) else "measure" if isinstance(value, Measure) else "kind"
+        kind = {} if type(value) in _ONLY.values() else {key: kind_of(value)}
+        return {**kind, **{name: _encoded(part) for name, part in _arguments(value).items()}}
+    if isinstance(value, FrozenMapping):
+        return {name: _encoded(part) for name, part in value.items()}
+    return [_encoded(part) for part in value] if isinstance(value, tuple) else value
+
+
+def _arguments(value: Description) -> dict[str, Any]:
+    found = arguments(value)
+    if isinstance(value, Measure):
+        # Its signal is no argument of a function that has only one.
+        known = inspect.signature(MEASURES[value.kind]).parameters
+        found = {name: part for name, part in found.items() if name in known}
+    return found
+
+
+def from_data(data: Any) -> Study:
+    """Return the study that nested dictionaries describe.
+
+    Raises
+    ------
+    StudyFileError
+        With the dotted path of what is wrong.
+    """
+    from ._study import Study
+
+    _check_version(data)
+    known = ["windage_study", "seed", "loop", "requirements", "measures", "table", "correlations"]
+    _check_keys(data, known, ["loop"], "the study")
+    made: dict[str, Any] = {"loop": _made_loop(_table(data["loop"], "loop"))}
+    for key, decode in (("requirements", _requirement), ("measures", _measure)):
+        items = _list(data.get(key, []), key)
+        made[key] = [decode(item, f"{key}[{i}]") for i, item in enumerate(items)]
+    if "seed" in data:
+        made["seed"] = data["seed"]
+    if "table" in data:
+        made["table"] = _table(data["table"], "table")
+    if "correlations" in data:
+        made["correlations"] = _correlations(_list(data["correlations"], "correlations"))
+    study: Study = _call(Study, made, "the study")
+    return study
+
+
+def _check_version(data: Mapping[str, Any]) -> None:
+    if "windage_study" not in data:
+        mend = f"Put windage_study = {FORMAT} into the first line."
+        raise StudyFileError("windage_study", "nothing", "the version of the study format", mend)
+    version = data["windage_study"]
+    if isinstance(version, bool) or version != FORMAT:
+        mend = "The file may come from another release of windage."
+        raise StudyFileError("windage_study", version, f"the version {FORMAT}", mend)
+
+
+def _made_loop(data: Mapping[str, Any]) -> Any:
+    values: dict[str, Any] = {}
+    for key, item in data.items():
+        place = f"loop.{key}"
+        if key in _KINDS:
+            values[key] = _of_kind(item, _KINDS[key], place)
+        elif key in ("sensor", "actuator"):
+            values[key] = _made(_ONLY[key], _table(item, place), place)
+        elif key == "disturbances":
+            parts = _table(item, place)
+            values[key] = {
+                name: _of_kind(part, DISTURBANCES, f"{place}.{name}") for name, part in parts.items()
+            }
+        else:
+            values[key] = _value(item, place)
+    return _call(Loop, values, "loop")
+
+
+def _of_kind(item: Any, kinds: Mapping[str, Maker], place: str) -> Any:
+    if is_plain_number(item) and kinds is not PLANTS and kinds is not CONTROLLERS:
+        return item
+    data = _table(item, place)
+    kind = _word(data, "kind", kinds, place)
+    return _made(kinds[kind], {key: part for key, part in data.items() if key != "kind"}, place)
+
+
+def _made(maker: Maker, data: Mapping[str, Any], place: str) -> Any:
+    return _call(maker, {key: _value(part, f"{place}.{key}") for key, part in data.items()}, place)
+
+
+def _value(item: Any, place: str) -> Any:
+    """Return a plain value, or the spread that a table describes."""
+    if isinstance(item, list):
+        return [_value(part, f"{place}[{i}]") for i, part in enumerate(item)]
+    if isinstance(item, float) and not math.isfinite(item):
+        raise StudyFileError(place, item, "a finite number", "Leave it out where nothing is limited.")
+    if not isinstance(item, dict):
+        return item
+    if "spread" in item or "shared" in item:
+        return _spread(item, place)
+    if "column" in item:
+        _check_keys(item, ["column"], ["column"], place)
+        return _call(Column, {"name": item["column"]}, place)
+    return {name: _value(part, f"{place}.{name}") for name, part in item.items()}
+
+
+def _spread(item: Mapping[str, Any], place: str) -> Any:
+    kind = _word(item, "spread", SPREADS, place)
+    inside = {key: part for key, part in item.items() if key not in ("spread", "shared")}
+    spread = _call(
+        SPREADS[kind], {key: _value(part, f"{place}.{key}") for key, part in inside.items()}, place
+    )
+    if "shared" not in item:
+        return spread
+    return _call(Shared, {"name": item["shared"], "spread": spread}, place)
+
+
+def _measure(item: Any, place: str) -> Any:
+    data = _table(item, place)
+    kind = _word(data, "measure", MEASURES, place)
+    return _made(MEASURES[kind], {key: part for key, part in data.items() if key != "measure"}, place)
+
+
+def _requirement(item: Any, place: str) -> Any:
+    data = _table(item, place)
+    sides = ("at_most", "at_least", "name")
+    measure = _measure({key: part for key, part in data.items() if key not in sides}, place)
+    values = {key: _value(data[key], f"{place}.{key}") for key in sides if key in data}
+    return _call(Requirement, {"measure": measure, **values}, place)
+
+
+def _correlations(items: list[Any]) -> dict[tuple[Any, ...], Any]:
+    pairs: dict[tuple[Any, ...], Any] = {}
+    for i, item in enumerate(items):
+        place = f"correlations[{i}]"
+        data = _table(item, place)
+        both = ["between", "rank_correlation"]
+        _check_keys(data, both, both, place)
+        pair = tuple(_list(data["between"], f"{place}.between"))
+        if len(pair) != 2 or not all(isinstance(name, str) for name in pair):
+            raise StudyFileError(f"{place}.between", list(pair), "two names of drawn parameters")
+        if pair in pairs:
+            raise StudyFileError(f"{place}.between", list(pair), "each pair of two parameters once")
+        pairs[pair] = data["rank_correlation"]
+    return pairs
+
+
+def _call(maker: Maker, values: Mapping[str, Any], place: str) -> Any:
+    """Call a public function or class, with errors that name the place in the file."""
+    signature = inspect.signature(maker)
+    required = [n for n, p in signature.parameters.items() if p.default is inspect.Parameter.empty]
+    _check_keys(values, list(signature.parameters), required, place)
+    try:
+        return maker(**values)
+    except StudyFileError:
+        raise
+    except DescriptionError as error:
+        text = str(error).removeprefix(f"{error.field}: ")
+        raise _placed(error, place, text) from error
+
+
+def _placed(error: DescriptionError, place: str, text: str) -> StudyFileError:
+    """Return the error with the dotted path of the file instead of the argument's own."""
+    inner = error.field
+    for head in ("study.", "loop.", "plant.", "controller.", "sensor.", "actuator.", "requirement."):
+        inner = inner.removeprefix(head) if inner.startswith(head) else inner
+    del text
+    path = inner if place == "the study" else f"{place}.{inner}"
+    placed = StudyFileError.__new__(StudyFileError)
+    placed.field, placed.found, placed.expected = path, error.found, error.expected
+    placed.args = (str(error).replace(error.field, path, 1),)
+    return placed
+
+
+def _check_keys(data: Mapping[str, Any], known: list[str], required: list[str], place: str) -> None:
+    for key in data:
+        if key not in known:
+            raise StudyFileError(
+                f"{place}.{key}", "an unknown key", "one of its keys", suggestion(str(key), known)
+            )
+    for key in required:
+        if key not in data:
+            raise StudyFileError(f"{place}.{key}", "nothing", f"the key {key!r}", "It has no default.")
+
+
+def _word(data: Mapping[str, Any], key: str, known: Mapping[str, Maker], place: str) -> str:
+    words = ", ".join(known)
+    if key not in data:
+        raise StudyFileError(f"{place}.{key}", "nothing", f"one of {words}")
+    word = data[key]
+    if not isinstance(word, str) or word not in known:
+        mend = suggestion(word, known) if isinstance(word, str) else ""
+        raise StudyFileError(f"{place}.{key}", word, f"one of {words}", mend)
+    return word
+
+
+def _table(value: Any, place: str) -> dict[str, Any]:
+    if not isinstance(value, dict):
+        raise StudyFileError(place, value, "a table")
+    return value
+
+
+def _list(value: Any, place: str) -> list[Any]:
+    if not isinstance(value, list):
+        raise StudyFileError(place, value, "a list")
+    return value

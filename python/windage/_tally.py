@@ -1,0 +1,100 @@
+"""Counting very many trials in flat memory."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+from typing import TYPE_CHECKING
+
+import numpy as np
+from numpy.typing import NDArray
+
+from ._outcome import Outcome, joint_requirement
+
+if TYPE_CHECKING:
+    from ._study import Study
+    from ._verdict import Verdict, VerdictTable
+
+
+@dataclass(frozen=True, repr=False)
+class Tally:
+    """Counts of failed trials, without the columns. Made by `Study.count`.
+
+    Attributes
+    ----------
+    study : Study
+        What was run.
+    trials, failures, diverged : int
+        Counts; diverged trials are among the failures.
+    requirement_failures : mapping of str to int
+        Trials that missed each requirement.
+    first_failures : ndarray of int64
+        Indices of the first failing trials, as many as were asked to be kept.
+    requested : int
+        Trials asked for.
+    """
+
+    study: Study
+    trials: int
+    failures: int
+    diverged: int
+    requirement_failures: Mapping[str, int]
+    first_failures: NDArray[np.int64]
+    requested: int
+
+    def verdict(self, at_least: float, confidence: float = 0.95) -> Verdict:
+        """Judge the claim that at least a fraction of all trials passes; see `Outcome.verdict`."""
+        from windage._verdict import judge
+
+        return judge(
+            self.failures,
+            self.trials,
+            self.diverged,
+            at_least,
+            confidence,
+            requirement=joint_requirement(tuple(self.requirement_failures)),
+            **self.study.cautions(),
+        )
+
+    def verdicts(self, at_least: float | Mapping[str, float], confidence: float = 0.95) -> VerdictTable:
+        """Judge each requirement by itself; see `Outcome.verdicts`."""
+        from windage._verdict import judge_many
+
+        counts = dict(self.requirement_failures)
+        return judge_many(counts, self.trials, self.diverged, at_least, confidence, **self.study.cautions())
+
+    def __repr__(self) -> str:
+        asked = f" (stopped; {self.requested:,} asked for)" if self.trials < self.requested else ""
+        head = f"Tally of {self.trials:,} trials{asked}: {self.failures:,} failed, {self.diverged:,} of them diverged"
+        return "\n".join(
+            [head, *(f"  {n:,} missed: {label}" for label, n in self.requirement_failures.items())]
+        )
+
+
+class Counter:
+    """Adds up outcomes into a tally."""
+
+    def __init__(self, study: Study, keep_failures: int) -> None:
+        self._study = study
+        self._keep = keep_failures
+        self._trials = self._failures = self._diverged = 0
+        self._missed = np.zeros(len(study.requirements), dtype=np.int64)
+        self._first: list[NDArray[np.int64]] = []
+        self._kept = 0
+
+    def add(self, outcome: Outcome) -> None:
+        """Count one more outcome."""
+        self._trials += outcome.trials
+        self._failures += len(outcome.failures)
+        self._diverged += len(outcome.diverged)
+        self._missed += (~outcome.met).sum(axis=0)
+        if self._kept < self._keep:
+            self._first.append(outcome.failures[: self._keep - self._kept].copy())
+            self._kept += len(self._first[-1])
+
+    def tally(self, requested: int) -> Tally:
+        """Return what was counted."""
+        labels = [requirement.label for requirement in self._study.requirements]
+        first = np.concatenate(self._first) if self._first else np.empty(0, dtype=np.int64)
+        missed = dict(zip(labels, self._missed.tolist(), strict=True))
+        return Tally(self._study, self._trials, self._failures, self._diverged, missed, first, requested)
