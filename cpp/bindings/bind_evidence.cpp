@@ -87,15 +87,16 @@ void bind_trial_counts(py::module_& m) {
 
 void bind_order_statistics(py::module_& m) {
     const auto content = py::arg("content"), confidence = py::arg("confidence");
-    m.def("tolerance_rank",
-          [](std::int64_t trials, double part, double sure) -> std::optional<std::pair<std::int64_t, double>> {
-              const auto limit = ev::tolerance_rank(trials, part, sure);
-              if (!limit) return std::nullopt;
-              return std::pair(limit->rank, limit->attained_confidence);
-          },
-          py::arg("trials"), content, confidence,
-          "(rank, attained confidence) of the upper tolerance bound, rank 1 being the smallest value; None if the "
-          "trials are too few (Wilks 1941).");
+    m.def(
+        "tolerance_rank",
+        [](std::int64_t trials, double part, double sure) -> std::optional<std::pair<std::int64_t, double>> {
+            const auto limit = ev::tolerance_rank(trials, part, sure);
+            if (!limit) return std::nullopt;
+            return std::pair(limit->rank, limit->attained_confidence);
+        },
+        py::arg("trials"), content, confidence,
+        "(rank, attained confidence) of the upper tolerance bound, rank 1 being the smallest value; None if the "
+        "trials are too few (Wilks 1941).");
     m.def("wilks_one_sided", ev::wilks_one_sided, content, confidence, py::arg("order") = 1,
           "Smallest number of trials whose order-th largest value is an upper tolerance bound (Wilks 1941).");
     m.def("wilks_two_sided", ev::wilks_two_sided, content, confidence,

@@ -89,13 +89,13 @@ def default_threads() -> int:
 
 def show_config() -> dict[str, str]:
     """Return what this installation is made of: version, instruction set and why, compiler, oneTBB, threads."""
-    from importlib.metadata import version
+    from windage import __version__
 
     name, reason = choice()
     module = engine()
     built = [s for s in instruction_sets() if _is_built(s)]
     return {
-        "windage": version("windage"),
+        "windage": __version__,
         "instruction set": f"{name} ({reason})",
         "instruction sets built": ", ".join(built),
         "lanes": str(module.lanes),

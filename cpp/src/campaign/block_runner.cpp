@@ -9,8 +9,7 @@ class block_runner::reference_targets final : public target_source {
 public:
     explicit reference_targets(const loop& l) : loop_(l) {}
     void target(constant_signal time, signal out) const override {
-        signal outs[1] = {out};
-        loop_.reference().evaluate(time, outs, 0);
+        loop_.reference().evaluate_at_own_times(time, out);
     }
 
 private:

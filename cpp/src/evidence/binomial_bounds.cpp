@@ -32,8 +32,8 @@ template <class Condition> double first_true(Condition holds) {
     }
 }
 
-// Quantiles of the beta distribution with the risk in the lower or in the upper tail. The first guess of Boost's inverse
-// gives up for some counts above 10^10 (Boost 1.85: "series evaluation exceeded"); the tails themselves do not.
+// Quantiles of the beta distribution with the risk in the lower or in the upper tail. The first guess of Boost's
+// inverse gives up for some counts above 10^10 (Boost 1.85: "series evaluation exceeded"); the tails themselves do not.
 double lower_quantile(double a, double b, double risk) {
     try {
         return boost::math::ibeta_inv(a, b, risk);
@@ -76,7 +76,7 @@ struct wilson {
     static double lower(counts n, double risk) { return root(n, -normal_quantile(risk)); }
     static double upper(counts n, double risk) { return root(n, normal_quantile(risk)); }
 
-  private:
+private:
     /// Exceeded by a standard normal number with probability `risk`; negative for a risk above one half.
     static double normal_quantile(double risk) { return std::numbers::sqrt2 * boost::math::erfc_inv(2.0 * risk); }
 

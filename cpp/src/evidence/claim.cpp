@@ -56,8 +56,7 @@ struct observed {
 
 /// Smallest number of further failures, 1 to most, at which `decided` is true. Near its first true value `decided`
 /// flickers with the rounding to whole trials, so small numbers are tried one by one; the others are bisected.
-template <class Decided>
-std::optional<std::int64_t> first_decided(std::int64_t most, Decided decided) {
+template <class Decided> std::optional<std::int64_t> first_decided(std::int64_t most, Decided decided) {
     if (most < 1) return std::nullopt;
     std::int64_t low = 0, high = 1;
     while (!decided(high)) {
@@ -118,8 +117,8 @@ std::optional<std::int64_t> further_trials(std::int64_t failures, std::int64_t t
         const double excess = static_cast<double>(failures) - at_limit;
         if (std::abs(excess) <= tie_tolerance * at_limit) return std::nullopt;
         const auto most_failures = static_cast<std::int64_t>(wide_count(most_further_trials) * failures / trials);
-        found = excess < 0.0 ? until_demonstrated(stated, seen, most_failures)
-                             : until_refuted(stated, seen, most_failures);
+        found =
+            excess < 0.0 ? until_demonstrated(stated, seen, most_failures) : until_refuted(stated, seen, most_failures);
     }
     if (found && *found > most_further_trials) return std::nullopt;
     return found;

@@ -1,8 +1,8 @@
 // Incomplete beta function and inverse; see the header for sources and guarantees.
-#include "windage/lanes/beta.hpp"
+#include <windage/lanes/beta.hpp>
 
-#include "windage/lanes/exponential.hpp"
-#include "windage/lanes/pack.hpp"
+#include <windage/lanes/exponential.hpp>
+#include <windage/lanes/pack.hpp>
 
 namespace windage {
 

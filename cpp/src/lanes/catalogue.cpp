@@ -1,10 +1,10 @@
 // Lane functions by name, with the wide pack of this build.
-#include "windage/lanes/catalogue.hpp"
+#include <windage/lanes/catalogue.hpp>
 
 #include <stdexcept>
 #include <string>
 
-#include "windage/lanes/catalogue_loops.hpp"
+#include <windage/lanes/catalogue_loops.hpp>
 
 namespace windage {
 

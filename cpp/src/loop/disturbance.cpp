@@ -17,7 +17,7 @@ disturbance::disturbance(const disturbance_description& d, bool time_is_uniform,
 }
 
 void disturbance::begin(const trial_block& block, const sample_clock& clock) {
-    if (function_) return function_->begin(block);
+    if (function_) return function_->begin(block, clock.period().data());
     for (lane_value& n : numbers_) n.begin(block);
     noise_->begin(block);
     if (kind_ == disturbance_kind::gauss_markov) return begin_gauss_markov(block, clock);
@@ -52,9 +52,9 @@ void disturbance::sample(std::int64_t k, const sample_clock& clock) {
     });
 }
 
-void disturbance::evaluate(constant_signal time, signal out) const {
+void disturbance::evaluate(constant_signal time, jump_side side, signal out) const {
     signal outs[1] = {out};
-    function_->evaluate(time, outs, 0);
+    function_->evaluate(time, outs, 0, side);
 }
 
 } // namespace windage

@@ -27,9 +27,9 @@ public:
         return true;
     }
     constant_signal now(int which) const override { return all_[which].now(); }
-    void evaluate(int which, constant_signal time, signal out) const override {
+    void evaluate(int which, constant_signal time, bool ends_a_step, signal out) const override {
         const disturbance& w = all_[which];
-        if (!w.is_held()) return w.evaluate(time, out);
+        if (!w.is_held()) return w.evaluate(time, ends_a_step ? jump_side::before : jump_side::after, out);
         for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP { wide::load(w.now() + i).store(out + i); });
     }
 
@@ -65,7 +65,7 @@ loop::~loop() = default;
 void loop::begin(const trial_block& block) {
     clock_.begin(block);
     disturbances_->begin(block, clock_);
-    reference_.begin(block);
+    reference_.begin(block, clock_.period().data());
     sensor_.begin(block, clock_);
     limiter_.begin(block, clock_);
     delay_.begin(block, clock_, limiter_.initial());

@@ -53,10 +53,11 @@ inline profile_plan plan_profile(wide amplitude, wide speed, wide acceleration, 
 }
 
 /// Position, speed, acceleration and jerk on the way up, `s` after the start and before the middle.
-inline void accelerate(const profile_plan& p, wide s, wide* motion) {
+inline void accelerate(const profile_plan& p, wide s, wide sided, wide* motion) {
     const wide peak = p.jerk * p.jerk_time, speed = peak * (p.accelerating - p.jerk_time);
     const wide left = p.accelerating - s;
-    const auto rising = s < p.jerk_time, constant = s < p.accelerating - p.jerk_time, falling = s < p.accelerating;
+    const auto rising = sided < p.jerk_time, constant = sided < p.accelerating - p.jerk_time,
+               falling = sided < p.accelerating;
     const wide half_way = 0.5 * speed * p.accelerating;
     motion[0] = select(rising, p.jerk * s * s * s / 6.0,
                 select(constant, peak / 6.0 * (3.0 * s * (s - p.jerk_time) + p.jerk_time * p.jerk_time),
@@ -68,11 +69,12 @@ inline void accelerate(const profile_plan& p, wide s, wide* motion) {
     motion[3] = select(rising, p.jerk, select(constant, wide(0.0), select(falling, -p.jerk, 0.0)));
 }
 
-/// Position, speed, acceleration and jerk `s` after the start of the motion (any s).
-inline void follow_profile(const profile_plan& p, wide s, wide* motion) {
-    const auto first_half = s < 0.5 * p.total;
-    accelerate(p, select(first_half, s, p.total - s), motion);
-    const auto before = s <= 0.0, after = s >= p.total;
+/// Position, speed, acceleration and jerk `s` after the start of the motion (any s); `sided` is the same time moved to
+/// one side of the jumps of the jerk.
+inline void follow_profile(const profile_plan& p, wide s, wide sided, wide* motion) {
+    const auto first_half = sided < 0.5 * p.total;
+    accelerate(p, select(first_half, s, p.total - s), select(first_half, sided, p.total - sided), motion);
+    const auto before = sided <= 0.0, after = sided >= p.total;
     motion[0] = select(before, wide(0.0), select(after, p.distance, select(first_half, motion[0], p.distance - motion[0])));
     motion[1] = select(before | after, wide(0.0), motion[1]);
     motion[2] = select(before | after, wide(0.0), select(first_half, motion[2], -motion[2]));

@@ -20,67 +20,85 @@ bool all_constant(const std::vector<number>& numbers) {
 } // namespace
 
 time_function::time_function(const time_function_description& d, bool time_is_uniform, signal_arena& arena)
-    : kind_(d.kind), size_(arena.block_size()), uniform_(time_is_uniform && all_constant(d.numbers)) {
+    : kind_(d.kind), size_(arena.block_size()), uniform_(time_is_uniform && all_constant(d.numbers)),
+      allowance_(arena.take()) {
     for (const number& n : d.numbers) numbers_.emplace_back(n, arena);
     const int derived = kind_ == time_function_kind::sine ? 1 : kind_ == time_function_kind::jerk_limited ? 5 : 0;
     for (int i = 0; i < derived; ++i) derived_.push_back(arena.take());
 }
 
-void time_function::begin(const trial_block& block) {
+void time_function::begin(const trial_block& block, constant_signal period) {
     for (lane_value& n : numbers_) n.begin(block);
     for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP {
+        (1e-9 * wide::load(period + i)).store(allowance_ + i);
         if (kind_ == time_function_kind::sine) (wide(two_pi) / number_at(1, i)).store(derived_[0] + i);
         if (kind_ == time_function_kind::jerk_limited)
             plan_profile(number_at(0, i), number_at(2, i), number_at(3, i), number_at(4, i)).store(derived_.data(), i);
     });
 }
 
-void time_function::evaluate(constant_signal time, signal* out, int derivatives) const {
+time_function::instant time_function::instant_at(constant_signal time, std::size_t i, jump_side side) const {
+    const wide t = wide::load(time + i), allowance = wide::load(allowance_ + i);
+    return {t, side == jump_side::after ? t + allowance : t - allowance};
+}
+
+void time_function::evaluate(constant_signal time, signal* out, int derivatives, jump_side side) const {
     wide values[max_order + 1];
     if (!uniform_) {
         for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP {
-            evaluate_pack(i, wide::load(time + i), values, derivatives);
+            evaluate_pack(i, instant_at(time, i, side), values, derivatives);
             for (int d = 0; d <= derivatives; ++d) values[d].store(out[d] + i);
         });
         return;
     }
-    evaluate_pack(0, wide::load(time), values, derivatives);
-    for (int d = 0; d <= derivatives; ++d) for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP { values[d].store(out[d] + i); });
+    const instant at = instant_at(time, 0, side);
+    const bool is_table = kind_ == time_function_kind::table_linear || kind_ == time_function_kind::table_hold;
+    for (int d = 1; d <= derivatives; ++d) values[d] = 0.0;
+    is_table ? table_uniform(at.t[0], at.sided[0], values, derivatives) : evaluate_pack(0, at, values, derivatives);
+    for (int d = 0; d <= derivatives; ++d)
+        for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP { values[d].store(out[d] + i); });
 }
 
-void time_function::evaluate_pack(std::size_t i, wide t, wide* out, int derivatives) const {
+void time_function::evaluate_at_own_times(constant_signal time, signal out) const {
+    for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP {
+        wide value;
+        evaluate_pack(i, instant_at(time, i, jump_side::after), &value, 0);
+        value.store(out + i);
+    });
+}
+
+void time_function::evaluate_pack(std::size_t i, instant at, wide* out, int derivatives) const {
     for (int d = 1; d <= derivatives; ++d) out[d] = 0.0;
     switch (kind_) {
     case time_function_kind::constant: out[0] = number_at(0, i); return;
     case time_function_kind::step:
-        out[0] = number_at(2, i) + select(t >= number_at(1, i), number_at(0, i), 0.0);
+        out[0] = number_at(2, i) + select(at.sided >= number_at(1, i), number_at(0, i), 0.0);
         return;
     case time_function_kind::ramp: {
         const wide slope = number_at(0, i), start = number_at(1, i), stop = number_at(2, i);
-        out[0] = number_at(3, i) + slope * (clip(t, start, stop) - start);
-        if (derivatives > 0) out[1] = select((t >= start) & (t < stop), slope, 0.0);
+        out[0] = number_at(3, i) + slope * (clip(at.t, start, stop) - start);
+        if (derivatives > 0) out[1] = select((at.sided >= start) & (at.sided < stop), slope, 0.0);
         return;
     }
     case time_function_kind::pulse: {
         const wide start = number_at(1, i);
-        out[0] = select((t >= start) & (t < start + number_at(2, i)), number_at(0, i), 0.0);
+        out[0] = select((at.sided >= start) & (at.sided < start + number_at(2, i)), number_at(0, i), 0.0);
         return;
     }
-    case time_function_kind::sine: return sine_pack(i, t, out, derivatives);
-    case time_function_kind::quintic: return quintic_pack(i, t, out, derivatives);
-    case time_function_kind::jerk_limited: return jerk_limited_pack(i, t, out, derivatives);
+    case time_function_kind::sine: return sine_pack(i, at, out, derivatives);
+    case time_function_kind::quintic: return quintic_pack(i, at, out, derivatives);
+    case time_function_kind::jerk_limited: return jerk_limited_pack(i, at, out, derivatives);
     case time_function_kind::table_linear:
-    case time_function_kind::table_hold:
-        return uniform_ ? table_uniform(t[0], out, derivatives) : table_pack(i, t, out, derivatives);
+    case time_function_kind::table_hold: return table_pack(i, at, out, derivatives);
     }
 }
 
-void time_function::sine_pack(std::size_t i, wide t, wide* out, int derivatives) const {
+void time_function::sine_pack(std::size_t i, instant at, wide* out, int derivatives) const {
     const wide amplitude = number_at(0, i), phase = number_at(2, i), offset = number_at(3, i), start = number_at(4, i);
     const wide omega = wide::load(derived_[0] + i);
-    const auto [s, c] = sine_cosine(omega * (t - start) + phase);
+    const auto [s, c] = sine_cosine(omega * (at.t - start) + phase);
     const wide turned[4] = {s, c, -s, -c};  // the derivatives of a sine turn by a quarter each
-    const auto started = t >= start;
+    const auto started = at.sided >= start;
     wide scale = amplitude;
     out[0] = offset + select(started, scale * s, 0.0);
     for (int d = 1; d <= derivatives; ++d) {
@@ -89,10 +107,10 @@ void time_function::sine_pack(std::size_t i, wide t, wide* out, int derivatives)
     }
 }
 
-void time_function::quintic_pack(std::size_t i, wide t, wide* out, int derivatives) const {
+void time_function::quintic_pack(std::size_t i, instant at, wide* out, int derivatives) const {
     const wide amplitude = number_at(0, i), start = number_at(1, i), duration = number_at(2, i);
-    const wide s = clip((t - start) / duration, wide(0.0), wide(1.0));
-    const auto moving = (t > start) & (t < start + duration);
+    const wide s = clip((at.t - start) / duration, wide(0.0), wide(1.0));
+    const auto moving = (at.sided > start) & (at.sided < start + duration);
     out[0] = number_at(3, i) + amplitude * (s * s * s * (s * (s * 6.0 - 15.0) + 10.0));
     wide scale = amplitude;
     for (int d = 1; d <= derivatives; ++d) {
@@ -107,27 +125,27 @@ void time_function::quintic_pack(std::size_t i, wide t, wide* out, int derivativ
     }
 }
 
-void time_function::jerk_limited_pack(std::size_t i, wide t, wide* out, int derivatives) const {
+void time_function::jerk_limited_pack(std::size_t i, instant at, wide* out, int derivatives) const {
     const profile_plan plan = profile_plan::load(derived_.data(), i);
     wide motion[4];
-    follow_profile(plan, t - number_at(1, i), motion);
+    follow_profile(plan, at.t - number_at(1, i), at.sided - number_at(1, i), motion);
     const wide direction = copy_sign(wide(1.0), number_at(0, i));
     out[0] = number_at(5, i) + direction * motion[0];
     for (int d = 1; d <= std::min(derivatives, 3); ++d) out[d] = direction * motion[d];
 }
 
 // Walks over the whole table, since each lane may be elsewhere in it.
-void time_function::table_pack(std::size_t i, wide t, wide* out, int derivatives) const {
+void time_function::table_pack(std::size_t i, instant at, wide* out, int derivatives) const {
     const std::size_t n = numbers_.size() / 2;
     wide value = number_at(n, i), slope = 0.0;
     for (std::size_t k = 0; k < n; ++k) {
         const wide t0 = number_at(k, i), v0 = number_at(n + k, i);
-        const auto reached = t >= t0;
+        const auto reached = at.sided >= t0;
         wide here = v0, rate = 0.0;
         if (kind_ == time_function_kind::table_linear && k + 1 < n) {
             const wide span = number_at(k + 1, i) - t0;
             rate = select(span > 0.0, (number_at(n + k + 1, i) - v0) / select(span > 0.0, span, 1.0), 0.0);
-            here = v0 + rate * (t - t0);
+            here = v0 + rate * (at.t - t0);
         }
         value = select(reached, here, value);
         slope = select(reached, rate, slope);
@@ -136,17 +154,17 @@ void time_function::table_pack(std::size_t i, wide t, wide* out, int derivatives
     if (derivatives > 0) out[1] = slope;
 }
 
-void time_function::table_uniform(double t, wide* out, int derivatives) const {
+void time_function::table_uniform(double t, double sided, wide* out, int derivatives) const {
     const std::size_t n = numbers_.size() / 2;
     auto time = [&](std::size_t k) { return numbers_[k][0]; };
     auto value = [&](std::size_t k) { return numbers_[n + k][0]; };
-    std::size_t low = 0, high = n;  // time(low) <= t < time(high)
+    std::size_t low = 0, high = n;  // time(low) <= sided < time(high)
     while (high - low > 1) {
         const std::size_t middle = (low + high) / 2;
-        (t >= time(middle) ? low : high) = middle;
+        (sided >= time(middle) ? low : high) = middle;
     }
     double rate = 0.0, here = value(low);
-    if (kind_ == time_function_kind::table_linear && low + 1 < n && t >= time(low)) {
+    if (kind_ == time_function_kind::table_linear && low + 1 < n && sided >= time(low)) {
         const double span = time(low + 1) - time(low);
         rate = span > 0.0 ? (value(low + 1) - here) / span : 0.0;
         here = here + rate * (t - time(low));

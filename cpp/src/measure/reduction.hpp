@@ -59,12 +59,15 @@ private:
             reducer_.add(v, at, i);
         else
             reducer_.add(v, at);
+        // x - x is zero, or undefined where x is not finite: one such sample leaves the whole measure undefined, because
+        // comparisons would skip it and a trial would pass on what is left.
+        const wide counted = seen + (1.0 + (at.x - at.x));
         if constexpr (Masked) {
             const auto inside = window_.inside(t, i);
             for (int k = 0; k < Reducer::values; ++k) v[k] = select(inside, v[k], before[k]);
-            select(inside, seen + 1.0, seen).store(seen_ + i);
+            select(inside, counted, seen).store(seen_ + i);
         } else {
-            (seen + 1.0).store(seen_ + i);
+            counted.store(seen_ + i);
         }
         for (int k = 0; k < Reducer::values; ++k) v[k].store(running_ + k * size_ + i);
     }

@@ -133,7 +133,7 @@ void linear_plant::advance(const sample_interval& interval) {
             (wide::load(interval.time + i) + 0.5 * wide::load(interval.period + i)).store(middle_ + i);
         });
     for (int k = 0; k < w_.count(); ++k) {
-        if (!w_.are_held()) w_.evaluate(k, middle_, w_middle_[k]);
+        if (!w_.are_held()) w_.evaluate(k, middle_, false, w_middle_[k]);
         w.push_back(w_.are_held() ? w_.now(k) : w_middle_[k]);
     }
     const int n = order_, count = int(w.size());

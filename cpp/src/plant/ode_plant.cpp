@@ -78,7 +78,8 @@ void ode_plant::prepare_stages() {
             for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP {
                 (wide::load(plan_.start() + i) + fraction * wide::load(plan_.step() + i)).store(stage_time_[c] + i);
             });
-            for (int k = 0; k < w_.count(); ++k) w_.evaluate(k, stage_time_[c], stage_values_[c][k]);
+            for (int k = 0; k < w_.count(); ++k)
+                w_.evaluate(k, stage_time_[c], fraction == 1.0, stage_values_[c][k]);
         }
     for (std::size_t s = 0; s < stages_.size(); ++s) {
         stage& here = stages_[s];
@@ -135,7 +136,7 @@ void ode_plant::integrate_reference(constant_signal start, constant_signal lengt
             });
             here.time = stage_time_[0];
             for (int k = 0; k < w_.count(); ++k) {
-                w_.evaluate(k, stage_time_[0], stage_values_[0][k]);
+                w_.evaluate(k, stage_time_[0], tau == 1.0, stage_values_[0][k]);
                 here.disturbances[k] = stage_values_[0][k];
             }
         }

@@ -9,7 +9,7 @@
 #include <string_view>
 #include <vector>
 
-#include "windage/lanes/philox.hpp"
+#include <windage/lanes/philox.hpp>
 
 namespace windage {
 

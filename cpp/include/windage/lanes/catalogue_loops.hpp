@@ -7,10 +7,10 @@
 #include <cstdint>
 #include <string_view>
 
-#include "windage/lanes/catalogue.hpp"
-#include "windage/lanes/elementary.hpp"
-#include "windage/lanes/normal.hpp"
-#include "windage/lanes/pack.hpp"
+#include <windage/lanes/catalogue.hpp>
+#include <windage/lanes/elementary.hpp>
+#include <windage/lanes/normal.hpp>
+#include <windage/lanes/pack.hpp>
 
 namespace windage::detail {
 

@@ -6,8 +6,8 @@
 // Elementary Functions, Prentice-Hall 1980, chapters 5 and 6.
 #pragma once
 
-#include "windage/lanes/pack.hpp"
-#include "windage/lanes/polynomial.hpp"
+#include <windage/lanes/pack.hpp>
+#include <windage/lanes/polynomial.hpp>
 
 namespace windage {
 
@@ -91,7 +91,8 @@ template <int W> WINDAGE_INLINE pack<W> logarithm_kernel(binary_parts<W> x, pack
 }
 } // namespace detail
 
-/// e^x. Domain: all x; +infinity above 709.78, 0 below -708 (no subnormal results). Error at most 1.01 ULP (measured).
+/// e^x. Domain: all x; +infinity above 709.78, 0 below -708 (no subnormal results). Error at most 1.1 ULP
+/// (measured: 1.01).
 template <int W> WINDAGE_INLINE pack<W> exponential(pack<W> x) {
     const auto reduced = detail::reduce_exponential(x);
     const pack<W> y = detail::scale_normal(detail::exponential_kernel(reduced.remainder), reduced.shifted);
@@ -100,7 +101,7 @@ template <int W> WINDAGE_INLINE pack<W> exponential(pack<W> x) {
     return select(x < -708.0, 0.0, upper);
 }
 
-/// e^x - 1 without cancellation near 0. Domain: all x. Error at most 1.2 ULP (measured).
+/// e^x - 1 without cancellation near 0. Domain: all x. Error at most 1.4 ULP (measured: 1.24).
 template <int W> WINDAGE_INLINE pack<W> exponential_minus_one(pack<W> x) {
     const auto reduced = detail::reduce_exponential(clip(x, pack<W>(-40.0), pack<W>(710.0)));
     const pack<W> r = reduced.remainder;
@@ -115,7 +116,8 @@ template <int W> WINDAGE_INLINE pack<W> exponential_minus_one(pack<W> x) {
     return select(absolute(x) < 0x1p-54, x, half + half);
 }
 
-/// ln x. Domain: x >= 0, subnormal numbers included; ln 0 = -infinity, NaN for x < 0. Error at most 1.0 ULP (measured).
+/// ln x. Domain: x >= 0, subnormal numbers included; ln 0 = -infinity, NaN for x < 0. Error at most 1.1 ULP
+/// (measured: 0.96).
 template <int W> WINDAGE_INLINE pack<W> logarithm(pack<W> x) {
     const mask<W> subnormal = x < 0x1p-1022;
     detail::binary_parts<W> parts = detail::split_binary(select(subnormal, x * 0x1p54, x));
@@ -130,7 +132,7 @@ template <int W> WINDAGE_INLINE pack<W> logarithm_normal(pack<W> x) {
     return detail::logarithm_kernel(detail::split_binary(x), pack<W>(0.0));
 }
 
-/// ln(1 + x) without cancellation near 0. Domain: x >= -1. Error at most 1.5 ULP (measured).
+/// ln(1 + x) without cancellation near 0. Domain: x >= -1. Error at most 1.1 ULP (measured: 0.95).
 template <int W> WINDAGE_INLINE pack<W> logarithm_one_plus(pack<W> x) {
     const pack<W> u = x + 1.0;
     // What the rounding of 1 + x dropped; the larger term is subtracted first, so that it is exact.

@@ -4,9 +4,9 @@
 // function, tails included, measured against multiple precision.
 #pragma once
 
-#include "windage/lanes/exponential.hpp"
-#include "windage/lanes/pack.hpp"
-#include "windage/lanes/polynomial.hpp"
+#include <windage/lanes/exponential.hpp>
+#include <windage/lanes/pack.hpp>
+#include <windage/lanes/polynomial.hpp>
 
 namespace windage {
 
@@ -77,7 +77,8 @@ template <int W> WINDAGE_INLINE pack<W> normal_bell(pack<W> x) {
 }
 } // namespace detail
 
-/// Probability that a standard normal number exceeds x >= 0. Relative error at most 1e-15 up to 37.5, then 0.
+/// Probability that a standard normal number exceeds x >= 0. Error at most 9 ULP (measured: 6.9,
+/// 1e-15 of the value) up to 37.5; 0 from 37.7 on.
 template <int W> WINDAGE_INLINE pack<W> normal_upper_tail(pack<W> x) {
     const pack<W> limited = minimum(x, pack<W>(38.0));
     const pack<W> inverse = 1.0 / (limited + 5.0);
@@ -86,14 +87,14 @@ template <int W> WINDAGE_INLINE pack<W> normal_upper_tail(pack<W> x) {
 }
 
 /// Probability that a standard normal number is at most x. Domain: all x; 0 below -37.6.
-/// Relative error at most 1e-15 in both tails (measured).
+/// Error at most 9 ULP (measured: 6.9, 1e-15 of the value) in both tails.
 template <int W> WINDAGE_INLINE pack<W> normal_cdf(pack<W> x) {
     const pack<W> tail = normal_upper_tail(absolute(x));
     return select(x > 0.0, 1.0 - tail, tail);
 }
 
 /// The x with normal_cdf(x) = p. Domain: 0 <= p <= 1, infinite at the ends, NaN beyond.
-/// Relative error at most 1e-15 (measured).
+/// Error at most 8 ULP (measured: 5.1, 7e-16 of the value).
 template <int W> WINDAGE_INLINE pack<W> normal_quantile(pack<W> p) {
     const pack<W> q = p - 0.5;
     const mask<W> central = absolute(q) <= 0.425;

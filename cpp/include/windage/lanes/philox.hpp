@@ -9,10 +9,10 @@
 #include <array>
 #include <cstdint>
 
-#include "windage/lanes/exponential.hpp"
-#include "windage/lanes/pack.hpp"
-#include "windage/lanes/polynomial.hpp"
-#include "windage/lanes/trigonometric.hpp"
+#include <windage/lanes/exponential.hpp>
+#include <windage/lanes/pack.hpp>
+#include <windage/lanes/polynomial.hpp>
+#include <windage/lanes/trigonometric.hpp>
 
 namespace windage {
 
@@ -57,8 +57,8 @@ template <int W> WINDAGE_INLINE integer_pack<W> multiply_low_words(integer_pack<
     return a;
 }
 
-/// The high 32 bits of each lane in the low half; what the high half holds afterwards does not matter. On x86 a shuffle,
-/// because shifts and products compete for the same execution ports (10 to 20 % faster, measured).
+/// The high 32 bits of each lane in the low half; what the high half holds afterwards does not matter. On x86 by a
+/// shuffle, because shifts and products compete for the same execution ports (5 to 10 % faster, measured).
 template <class Integer> WINDAGE_INLINE Integer high_words(Integer a) {
 #if defined(__AVX512F__)
     if constexpr (sizeof(Integer) == 64) return (Integer)_mm512_maskz_shuffle_epi32(0xffff, (__m512i)a, _MM_PERM_DDBB);

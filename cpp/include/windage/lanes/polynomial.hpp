@@ -7,7 +7,7 @@
 #include <cstddef>
 #include <cstdint>
 
-#include "windage/lanes/pack.hpp"
+#include <windage/lanes/pack.hpp>
 
 namespace windage::detail {
 

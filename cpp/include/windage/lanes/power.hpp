@@ -6,9 +6,9 @@
 // precision, Numerische Mathematik 18 (1971) 224-242.
 #pragma once
 
-#include "windage/lanes/exponential.hpp"
-#include "windage/lanes/pack.hpp"
-#include "windage/lanes/polynomial.hpp"
+#include <windage/lanes/exponential.hpp>
+#include <windage/lanes/pack.hpp>
+#include <windage/lanes/polynomial.hpp>
 
 namespace windage {
 
@@ -90,7 +90,7 @@ template <int W> WINDAGE_INLINE mask<W> is_whole(pack<W> magnitude) {
 }
 } // namespace detail
 
-/// x^y. Domain: all x and y; subnormal results included. Error at most 1.2 ULP (measured).
+/// x^y. Domain: all x and y; subnormal results included. Error at most 1.4 ULP (measured: 1.27).
 /// 1 if y = 0 or x = 1; NaN for x < 0 unless y is an integer; odd integers keep the sign of x.
 template <int W> WINDAGE_INLINE pack<W> power(pack<W> x, pack<W> y) {
     const pack<W> magnitude = absolute(x), size = absolute(y), half = 0.5 * size;

@@ -1,13 +1,13 @@
 // sine, cosine, sine_cosine, tangent on packs, and the sine and cosine of a fraction of a turn.
 //
 // Guarantee: the same bits for every W and instruction set; sine and cosine alone give the bits of sine_cosine; odd
-// functions are odd to the bit. Accurate for |x| <= 2e5; then the error of the reduction grows (absolute error about
-// 2^-37 at 1e6, 2^-23 at 2^30) and above 2^30 the result is NaN: such an angle means that a trial has diverged.
+// functions are odd to the bit. Accurate for |x| <= 2e5. From there to 2^30 the error is at most what half a unit in
+// the last place of x would cause; above 2^30 the result is NaN: such an angle means that a trial has diverged.
 // Reduction: W. J. Cody and W. Waite, Software Manual for the Elementary Functions, Prentice-Hall 1980, chapter 8.
 #pragma once
 
-#include "windage/lanes/pack.hpp"
-#include "windage/lanes/polynomial.hpp"
+#include <windage/lanes/pack.hpp>
+#include <windage/lanes/polynomial.hpp>
 
 namespace windage {
 
@@ -109,7 +109,8 @@ WINDAGE_INLINE sine_cosine_pair<W> place_in_quadrant(pack<W> sine, pack<W> cosin
 }
 } // namespace detail
 
-/// sin x and cos x. Domain: |x| <= 2e5, degrading up to 2^30, NaN beyond. Error at most 1.5 ULP (measured).
+/// sin x and cos x. Domain: |x| <= 2e5, degrading up to 2^30, NaN beyond. Error at most 1.7 ULP
+/// (measured: 1.57; at the doubles next to every multiple of pi/2 up to 2e5: 0.5).
 template <int W> WINDAGE_INLINE sine_cosine_pair<W> sine_cosine(pack<W> x) {
     const auto reduced = detail::reduce_angle(absolute(x));
     const pack<W> r = reduced.remainder;
@@ -127,7 +128,7 @@ template <int W> WINDAGE_INLINE pack<W> sine(pack<W> x) { return sine_cosine(x).
 template <int W> WINDAGE_INLINE pack<W> cosine(pack<W> x) { return sine_cosine(x).cosine; }
 
 /// sin and cos of 2 pi u: no reduction error, since 4 u minus the nearest integer is exact.
-/// Domain: |u| <= 2^40. Error at most 1.5 ULP (measured).
+/// Domain: |u| <= 2^40. Error at most 1.7 ULP (measured: 1.63).
 template <int W> WINDAGE_INLINE sine_cosine_pair<W> sine_cosine_turn(pack<W> u) {
     const pack<W> quarters = 4.0 * u;
     const pack<W> shifted = quarters + detail::integer_shifter;
@@ -139,7 +140,8 @@ template <int W> WINDAGE_INLINE sine_cosine_pair<W> sine_cosine_turn(pack<W> u) 
     return detail::place_in_quadrant(sine, cosine, bits_of(shifted));
 }
 
-/// tan x. Domain: |x| <= 2e5, degrading up to 2^30, NaN beyond. Error at most 2 ULP (measured).
+/// tan x. Domain: |x| <= 2e5, degrading up to 2^30, NaN beyond. Error at most 1.7 ULP
+/// (measured: 1.47; at the doubles next to every multiple of pi/2 up to 2e5: 1.0).
 template <int W> WINDAGE_INLINE pack<W> tangent(pack<W> x) {
     const auto reduced = detail::reduce_angle(absolute(x));
     const pack<W> r = reduced.remainder;

@@ -20,7 +20,7 @@ public:
     /// Value at the sample instant, into `now`; noises move on to sample k.
     void sample(std::int64_t k, const sample_clock& clock);
     /// Value at any other time of this sample interval.
-    void evaluate(constant_signal time, signal out) const;
+    void evaluate(constant_signal time, jump_side side, signal out) const;
 
     /// Does not change between two samples.
     bool is_held() const { return !function_ || function_->is_constant(); }

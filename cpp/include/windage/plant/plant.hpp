@@ -15,7 +15,8 @@ public:
     /// All of them keep their value between two samples.
     virtual bool are_held() const = 0;
     virtual constant_signal now(int which) const = 0;
-    virtual void evaluate(int which, constant_signal time, signal out) const = 0;
+    /// Value at a time within the sample interval; at the end of a step a jump at that very time is still to come.
+    virtual void evaluate(int which, constant_signal time, bool ends_a_step, signal out) const = 0;
 };
 
 /// The interval between two sample instants; the command changes `fraction` seconds after its start where it is split.
