@@ -1,5 +1,5 @@
 // Largest order of a controller. The observer gains come from powers of a Pascal-like matrix whose condition grows
-// quickly; above this order double precision no longer places the poles (tests/external/test_gains.py).
+// quickly; above this order double precision no longer places the poles (tests/external/test_adrc_gains.py).
 #pragma once
 
 namespace windage {

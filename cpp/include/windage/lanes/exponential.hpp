@@ -73,10 +73,11 @@ template <int W> struct binary_parts {
 /// that it stays positive. x = 3: field 0x4008... becomes 1024 + 2, hence k = 2 and m = 0.75.
 template <int W> WINDAGE_INLINE binary_parts<W> split_binary(pack<W> x) {
     constexpr std::int64_t half_root = 0x3fe6a09e667f3bcd, offset = std::int64_t(1024) << 52;
-    const integer_pack<W> moved = bits_of(x) + (offset - half_root);
+    const integer_pack<W> moved = add_bits(bits_of(x), integer_pack<W>(offset - half_root));
     const integer_pack<W> field = shift_right(moved, 52);
     const pack<W> exponent = from_bits(field | bits_of(pack<W>(0x1p52))) - (0x1p52 + 1024.0);
-    const pack<W> fraction = from_bits((bits_of(x) + offset) - (moved & std::int64_t(0xfff0000000000000ull)));
+    const integer_pack<W> field_bits = moved & std::int64_t(0xfff0000000000000ull);
+    const pack<W> fraction = from_bits(subtract_bits(add_bits(bits_of(x), integer_pack<W>(offset)), field_bits));
     return {fraction, exponent};
 }
 

@@ -63,7 +63,7 @@ template <int W> WINDAGE_INLINE pack<W> hyperbolic_tangent(pack<W> x) {
     const pack<W> v = select(near, magnitude, h);
     const pack<W> z = v * v;
     const pack<W> t = v + (v * z) * detail::polynomial(z, detail::hyperbolic_tangent_rest);
-    const pack<W> s = from_bits(bits_of(pack<W>(1.0)) - detail::shift_left(bits_of(shifted), 52));
+    const pack<W> s = from_bits(detail::subtract_bits(bits_of(pack<W>(1.0)), detail::shift_left(bits_of(shifted), 52)));
     const pack<W> st = s * t; // exact: s is a power of two
     const pack<W> far = 1.0 + 2.0 * (st - s) / ((1.0 + s) + (t - st));
     return copy_sign(select(near, t, far), x);

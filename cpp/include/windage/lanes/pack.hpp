@@ -10,9 +10,7 @@
 #pragma once
 
 #include <algorithm>
-#include <bit>
 #include <cstdint>
-#include <cstring>
 #include <type_traits>
 
 #if defined(__SSE2__)
@@ -47,6 +45,8 @@ namespace detail {
 template <int N> struct register_types {
     typedef double real __attribute__((vector_size(8 * N)));
     typedef std::int64_t integer __attribute__((vector_size(8 * N)));
+    /// The same register as it lies in memory, at any multiple of eight bytes.
+    typedef double stored __attribute__((vector_size(8 * N), aligned(8), may_alias));
 };
 
 template <class Real> WINDAGE_INLINE Real register_square_root(Real x) {
@@ -74,6 +74,7 @@ template <int W> struct pack_layout {
     static_assert(W % register_width == 0, "a pack fills whole registers");
     using real = typename detail::register_types<register_width>::real;
     using integer = typename detail::register_types<register_width>::integer;
+    using stored = typename detail::register_types<register_width>::stored;
 };
 
 /// W 64-bit integers; the raw bits of a pack, or lane masks (all bits set where true).
@@ -100,12 +101,17 @@ template <int W> struct pack : pack_layout<W> {
         for (auto& p : part) p = scalar - typename layout::real{};
     }
 
+    // Register by register: a copy of the whole array would go through the stack (g++ 12, measured).
     static WINDAGE_INLINE pack load(const double* from) {
         pack x;
-        std::memcpy(x.part, from, sizeof(x.part));
+        for (int i = 0; i < layout::registers; ++i)
+            x.part[i] = *reinterpret_cast<const typename layout::stored*>(from + i * layout::register_width);
         return x;
     }
-    WINDAGE_INLINE void store(double* to) const { std::memcpy(to, part, sizeof(part)); }
+    WINDAGE_INLINE void store(double* to) const {
+        for (int i = 0; i < layout::registers; ++i)
+            *reinterpret_cast<typename layout::stored*>(to + i * layout::register_width) = part[i];
+    }
 
     WINDAGE_INLINE double operator[](int lane) const {
         return part[lane / layout::register_width][lane % layout::register_width];
@@ -194,8 +200,16 @@ template <int W> WINDAGE_INLINE bool any(mask<W> m) {
 }
 template <int W> WINDAGE_INLINE bool all(mask<W> m) { return !any(!m); }
 
-template <int W> WINDAGE_INLINE integer_pack<W> bits_of(pack<W> x) { return std::bit_cast<integer_pack<W>>(x); }
-template <int W> WINDAGE_INLINE pack<W> from_bits(integer_pack<W> bits) { return std::bit_cast<pack<W>>(bits); }
+template <int W> WINDAGE_INLINE integer_pack<W> bits_of(pack<W> x) {
+    integer_pack<W> bits;
+    for (int i = 0; i < pack<W>::registers; ++i) bits.part[i] = (typename pack_layout<W>::integer)x.part[i];
+    return bits;
+}
+template <int W> WINDAGE_INLINE pack<W> from_bits(integer_pack<W> bits) {
+    pack<W> x;
+    for (int i = 0; i < pack<W>::registers; ++i) x.part[i] = (typename pack_layout<W>::real)bits.part[i];
+    return x;
+}
 
 /// 1 where true, 0 where false.
 template <int W> WINDAGE_INLINE pack<W> as_number(mask<W> m) { return from_bits(m.bits & bits_of(pack<W>(1.0))); }

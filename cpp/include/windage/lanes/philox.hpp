@@ -6,6 +6,7 @@
 // Guarantee: distinct (seed, stream, draw, trial) use distinct counters or keys. Not meant for secrets.
 #pragma once
 
+#include <cstring>
 #include <array>
 #include <cstdint>
 
@@ -120,7 +121,7 @@ template <int W> WINDAGE_INLINE integer_pack<W> consecutive(std::uint64_t first)
         for (int lane = 0; lane < layout::register_width; ++lane) step[lane] = i * layout::register_width + lane;
         x.part[i] = step;
     }
-    return x + std::int64_t(first);
+    return add_bits(x, integer_pack<W>(std::int64_t(first)));
 }
 
 template <int W>

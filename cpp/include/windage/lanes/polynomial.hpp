@@ -49,22 +49,38 @@ inline constexpr std::int64_t sign_bit = std::int64_t(0x8000000000000000ull);
 inline constexpr double infinity = __builtin_inf();
 inline constexpr double undefined = __builtin_nan("");
 
+/// Registers seen as unsigned: sums of bit patterns wrap around, which signed integers may not.
+template <int W> struct bit_registers {
+    typedef std::uint64_t type __attribute__((vector_size(8 * pack_layout<W>::register_width)));
+};
+template <int W> WINDAGE_INLINE integer_pack<W> add_bits(integer_pack<W> a, integer_pack<W> b) {
+    using bits = typename bit_registers<W>::type;
+    for (int i = 0; i < pack_layout<W>::registers; ++i)
+        a.part[i] = (typename pack_layout<W>::integer)((bits)a.part[i] + (bits)b.part[i]);
+    return a;
+}
+template <int W> WINDAGE_INLINE integer_pack<W> subtract_bits(integer_pack<W> a, integer_pack<W> b) {
+    using bits = typename bit_registers<W>::type;
+    for (int i = 0; i < pack_layout<W>::registers; ++i)
+        a.part[i] = (typename pack_layout<W>::integer)((bits)a.part[i] - (bits)b.part[i]);
+    return a;
+}
 /// Shift to the right with zeros coming in (the sign-keeping shift of 64 bits is missing before AVX-512).
 template <int W> WINDAGE_INLINE integer_pack<W> shift_right(integer_pack<W> a, int count) {
-    typedef std::uint64_t unsigned_register __attribute__((vector_size(8 * pack_layout<W>::register_width)));
-    using integer_register = typename pack_layout<W>::integer;
-    for (auto& p : a.part) p = (integer_register)((unsigned_register)p >> count);
+    using bits = typename bit_registers<W>::type;
+    for (auto& p : a.part) p = (typename pack_layout<W>::integer)((bits)p >> count);
     return a;
 }
 template <int W> WINDAGE_INLINE integer_pack<W> shift_left(integer_pack<W> a, int count) {
-    for (auto& p : a.part) p = p << count;
+    using bits = typename bit_registers<W>::type;
+    for (auto& p : a.part) p = (typename pack_layout<W>::integer)((bits)p << count);
     return a;
 }
 
 /// x * 2^k where k sits in the low bits of `shifted` = k + integer_shifter; x and the result must be normal numbers.
 /// Adding k to the exponent field: 1.5 = 0x3ff8..., k = 2 adds 0x0020..., giving 0x4018... = 6.
 template <int W> WINDAGE_INLINE pack<W> scale_normal(pack<W> x, pack<W> shifted) {
-    return from_bits(bits_of(x) + shift_left(bits_of(shifted), 52));
+    return from_bits(add_bits(bits_of(x), shift_left(bits_of(shifted), 52)));
 }
 
 /// All bits set in the lanes whose lowest bit is set.

@@ -63,9 +63,12 @@ template <int W> WINDAGE_INLINE split_number<W> logarithm2_split(binary_parts<W>
 
 /// x * 2^k, subnormal and overflowing results included; |k| <= 1100. Two factors 2^(k/2), the first product exact.
 template <int W> WINDAGE_INLINE pack<W> scale_any(pack<W> x, pack<W> shifted) {
-    const integer_pack<W> moved = bits_of(shifted) - (integer_shifter_bits - 2048); // k + 2048
+    const integer_pack<W> moved = // k + 2048
+        subtract_bits(bits_of(shifted), integer_pack<W>(integer_shifter_bits - 2048));
     const integer_pack<W> half = shift_right(moved, 1);
-    return (x * from_bits(shift_left(half - 1, 52))) * from_bits(shift_left(moved - half - 1, 52));
+    const integer_pack<W> one(1), other = subtract_bits(moved, half);
+    return (x * from_bits(shift_left(subtract_bits(half, one), 52))) *
+           from_bits(shift_left(subtract_bits(other, one), 52));
 }
 
 /// |x|^y for 0 < |x| < infinity.

@@ -105,7 +105,7 @@ template <int W>
 WINDAGE_INLINE sine_cosine_pair<W> place_in_quadrant(pack<W> sine, pack<W> cosine, integer_pack<W> quadrant) {
     const mask<W> odd = lowest_bit(quadrant);
     return {flip_sign(select(odd, cosine, sine), shift_left(quadrant, 62)),
-            flip_sign(select(odd, sine, cosine), shift_left(quadrant + 1, 62))};
+            flip_sign(select(odd, sine, cosine), shift_left(add_bits(quadrant, integer_pack<W>(1)), 62))};
 }
 } // namespace detail
 

@@ -88,7 +88,7 @@ private:
 /// Time from the window's start until the deviation stays within the band; infinite if it is outside at the end.
 class settling_time {
 public:
-    static constexpr int values = 4;  // initial value, settled since, last deviation, last time
+    static constexpr int values = 4;  // initial value, settled since, last signed deviation, last time
 
     /// `relative`: the deviation is from the reference at the window's end, and the band a fraction of the change;
     /// otherwise the deviation is the signal itself and the band in its unit.
@@ -106,9 +106,9 @@ public:
         v[0] = select(at.is_first, at.x, v[0]);
         const wide target = relative_ ? span_.final_value(i) : wide(0.0);
         const wide band = relative_ ? band_.pack_at(i) * absolute(target - v[0]) : band_.pack_at(i);
-        const wide deviation = absolute(at.x - target);
-        const auto outside = !(deviation <= band), was_outside = v[1] == reducers::infinite;
-        const wide instant = v[3] + (at.t - v[3]) * ((v[2] - band) / (v[2] - deviation));
+        const wide deviation = at.x - target;
+        const auto outside = !(absolute(deviation) <= band), was_outside = v[1] == reducers::infinite;
+        const wide instant = v[3] + (at.t - v[3]) * ((absolute(v[2]) - band) / absolute(v[2] - deviation));
         v[1] = select(outside, wide(reducers::infinite), select(was_outside, instant, v[1]));
         v[2] = deviation;
         v[3] = at.t;
