@@ -5,6 +5,7 @@
 #include <pybind11/pybind11.h>
 #include <pybind11/stl.h>
 
+#include <windage/lanes/beta.hpp>
 #include <windage/lanes/catalogue.hpp>
 #include <windage/lanes/philox.hpp>
 #include <windage/lanes/signal.hpp>
@@ -61,6 +62,8 @@ void bind_lanes(py::module_& m) {
     }, py::arg("counter"), py::arg("key"));
     m.def("lane_uniforms", lane_uniforms, py::arg("seed"), py::arg("stream"), py::arg("draw"), py::arg("first_trial"),
           py::arg("count"));
+    m.def("incomplete_beta", incomplete_beta, py::arg("a"), py::arg("b"), py::arg("x"));
+    m.def("incomplete_beta_inverse", incomplete_beta_inverse, py::arg("a"), py::arg("b"), py::arg("p"));
     m.def("lane_normals", lane_normals, py::arg("seed"), py::arg("stream"), py::arg("draw"), py::arg("first_trial"),
           py::arg("count"));
 }

@@ -1,7 +1,7 @@
-"""windage: does an active disturbance rejection control tuning still hold on every unit that leaves the factory?
+"""windage: does an active disturbance rejection control tuning hold on every unit that leaves the factory?
 
-Describe plant, loop, spreads and requirements once; run 10^4 to 10^8 trials in parallel; read a verdict with an exact
-bound, replay any trial to the last digit, and see which spread breaks the tuning.
+Describe plant, loop, spreads and requirements once; run 10^4 to 10^8 trials in parallel; read a verdict with an
+exact bound, replay any trial to the last digit, and see which spread breaks the tuning.
 """
 
 from ._controllers import ErrorADRC, OutputADRC

@@ -1,12 +1,14 @@
 """How many integration steps a study needs: chosen by comparison with a tightly controlled reference.
 
-Eight pilot trials are run with 1, 2, 4, ... steps in a sample period and once with step control to a relative
-tolerance of 1e-10. The smallest number of steps is taken with which no measure differs from the reference by
-more than a millionth of its size or a thousandth of its limit.
+Eight pilot trials are run with 1, 2, 4, ... steps in a sample period, and once with step control to a
+relative tolerance of 1e-10 or, where the equations may jump, with 512 steps. The smallest number of steps is
+taken with which no measure differs from the reference by more than a millionth of its size or a thousandth of
+its limit.
 """
 
 from __future__ import annotations
 
+import time
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 
@@ -22,8 +24,12 @@ from ._runner import Columns, make_campaign, run_columns
 
 PILOT_TRIALS = 8
 CANDIDATES = (1, 2, 4, 8, 16, 32, 64, 128, 256)
+#: Steps of the reference for equations that may jump.
+FIXED_STEPS = 512
 OF_SIZE = 1e-6
 OF_LIMIT = 1e-3
+#: Longest time that the pilot trials may take.
+REFERENCE_SECONDS = 600.0
 
 _TIMES = ("rise_time", "settling_time", "time_outside", "time_in_saturation")
 _FRACTIONS = ("overshoot", "undershoot")
@@ -74,14 +80,14 @@ def chosen_steps(
     worst = ""
     for steps in CANDIDATES:
         described = describe(*parts, steps)
-        columns = _checked_run(described, 0, pilot.columns.trials)
+        columns = _checked_run(described, pilot.columns.trials)
         worst = _complaint(pilot, columns)
         if not worst:
             return steps
     expected = f"at most {CANDIDATES[-1]} steps in a sample period to be enough"
     mend = (
-        f"With {CANDIDATES[-1]} steps {worst}. Jumps in the equations may be the reason (write tanh for sign); or "
-        "set steps_per_sample to a number of your own."
+        f"With {CANDIDATES[-1]} steps {worst}. Jumps in the equations may be the reason (write tanh for "
+        "sign); or set steps_per_sample to a number of your own."
     )
     raise DescriptionError("loop.steps_per_sample", "auto", expected, mend)
 
@@ -94,17 +100,14 @@ def _reference(
     seed: int,
 ) -> _Pilot:
     described = describe(loop, requirements, measures, correlations, seed, 1)
-    described.study["loop"]["integrator"] = "reference"
+    if loop.plant.may_jump:
+        # Step control creeps through every jump, and along a line on which a sign changes it never arrives.
+        described.study["loop"] |= {"integrator": "cash_karp5", "steps_per_sample": FIXED_STEPS}
+    else:
+        described.study["loop"]["integrator"] = "reference"
     available = int(make_campaign(described.study).trials_available)
     trials = min(PILOT_TRIALS, available)
-    # The reference steers its steps by one trial, so each is run by itself.
-    runs = [_checked_run(described, trial, 1) for trial in range(trials)]
-    columns = Columns(
-        np.concatenate([run.parameters for run in runs], axis=1),
-        np.concatenate([run.measures for run in runs], axis=1),
-        np.concatenate([run.status for run in runs]),
-        trials,
-    )
+    columns = _checked_run(described, trials)
     senses = tuple(1.0 if r.at_most is not None else -1.0 for r in requirements)
     limits = _limits(described, columns)
     return _Pilot(
@@ -116,11 +119,24 @@ def _reference(
     )
 
 
-def _checked_run(described: Described, first: int, count: int) -> Columns:
-    columns = run_columns(make_campaign(described.study), first, count)
-    if columns.trials < count:
+def _checked_run(described: Described, count: int) -> Columns:
+    """Run trials of the comparison; give up on equations that no step control gets through.
+
+    The budget decides only whether there is an error, never which number of steps is chosen.
+    """
+    deadline = time.perf_counter() + REFERENCE_SECONDS
+    columns = run_columns(
+        make_campaign(described.study), 0, count, 0, lambda *_: time.perf_counter() < deadline
+    )
+    if columns.trials == count:
+        return columns
+    if time.perf_counter() < deadline:
         raise KeyboardInterrupt
-    return columns
+    expected = f"pilot trials that end within {REFERENCE_SECONDS:g} s with control of the step"
+    mend = (
+        "Something in them chatters (write tanh for sign), or set steps_per_sample to a number of your own."
+    )
+    raise DescriptionError("loop.steps_per_sample", "auto", expected, mend)
 
 
 def _limits(described: Described, columns: Columns) -> list[Values]:

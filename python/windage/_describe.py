@@ -1,8 +1,8 @@
 """From objects to the plain study that the engine takes.
 
 Every number passes through `Numbers`: a plain one stays itself, a spread becomes the column of a drawn
-parameter. A column's random stream is a function of the place's name alone, so that a further sensor, spread or
-requirement leaves all other draws as they are.
+parameter. A column's random stream is a function of the place's name alone, so that a further sensor, spread
+or requirement leaves all other draws as they are.
 """
 
 from __future__ import annotations
@@ -71,7 +71,7 @@ class Numbers:
 
     def columns(self) -> tuple[DrawnColumn, ...]:
         """Return the drawn parameters under their names, in column order."""
-        short = [_short_name(key, path, spread) for key, path, spread in self._spreads]
+        short = [_short_name(path, spread) for _, path, spread in self._spreads]
         named = [(spread.name, path) for _, path, spread in self._spreads if spread.name is not None]
         _refuse_equal_names(named)
         columns = []
@@ -108,6 +108,17 @@ class Described:
     measures: tuple[Measure, ...]
     requirement_rows: tuple[int, ...]
     limits: tuple[Taken, ...]
+
+    @property
+    def measure_names(self) -> list[str]:
+        """A name for each measure: its words, with a number where they are the same."""
+        names: list[str] = []
+        for measure in self.measures:
+            label, count = measure.label, 2
+            while label in names:
+                label, count = f"{measure.label} [{count}]", count + 1
+            names.append(label)
+        return names
 
 
 def describe(
@@ -161,7 +172,7 @@ def requirement_path(index: int, requirement: Requirement) -> str:
 
 
 def fnv1a(text: str) -> int:
-    """Return the 32-bit FNV-1a hash of a text in UTF-8 (Fowler, Noll, Vo; RFC 9923)."""
+    """Return the 32-bit FNV-1a hash of a text in UTF-8 (Fowler, Noll, Vo; from memory)."""
     value = 0x811C9DC5
     for byte in text.encode():
         value = ((value ^ byte) * 0x01000193) & 0xFFFFFFFF
@@ -202,7 +213,7 @@ def _key(spread: Spread, path: str) -> str:
     return f"column.{spread.name}" if isinstance(spread, Column) else path
 
 
-def _short_name(key: str, path: str, spread: Spread) -> str:
+def _short_name(path: str, spread: Spread) -> str:
     if spread.name is not None:
         return spread.name
     is_plant_number = path.startswith("plant.") and path.count(".") == 1 and "[" not in path

@@ -9,7 +9,7 @@ from __future__ import annotations
 import dataclasses
 import math
 from collections.abc import Callable, Iterator, Mapping
-from typing import Any, NoReturn, Self, TypeVar
+from typing import Any, ClassVar, NoReturn, Self, TypeVar
 
 from ._errors import DescriptionError, suggestion
 
@@ -20,6 +20,8 @@ class Description:
     """Root of the frozen dataclasses that describe plants, loops, spreads, measures and studies."""
 
     __slots__ = ()
+    #: NumPy numbers leave comparisons with a description to the description.
+    __array_ufunc__: ClassVar[None] = None
 
     def __repr__(self) -> str:
         inside = ", ".join(f"{name}={value!r}" for name, value in arguments(self).items())
@@ -56,7 +58,7 @@ class FrozenMapping(dict[str, Value]):
     def _refuse(self, *_: Any, **__: Any) -> NoReturn:
         raise TypeError("a description cannot be changed; make a copy with .with_(...)")
 
-    __setitem__ = __delitem__ = update = pop = clear = setdefault = popitem = __ior__ = _refuse  # type: ignore[assignment]
+    __setitem__ = __delitem__ = update = pop = clear = setdefault = popitem = __ior__ = _refuse
 
 
 def unknown_name(place: str, name: str, known: list[str]) -> DescriptionError:

@@ -146,6 +146,6 @@ def _note(outcome: Outcome) -> str:
     if failures >= FEW_FAILURES:
         return ""
     return (
-        f"Too few failures ({failures}) to rank causes of failing; {FEW_FAILURES} or more are needed. The slacks "
-        "use all trials."
+        f"Too few failures ({failures}) to rank causes of failing; {FEW_FAILURES} or more are needed. "
+        "The slacks use all trials."
     )

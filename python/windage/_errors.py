@@ -20,6 +20,7 @@ class DescriptionError(WindageError, ValueError):
         self.field = field
         self.found = found
         self.expected = expected
+        self.mend = mend
         text = f"{field}: found {shorten(found)}; expected {expected}."
         super().__init__(f"{text} {mend}".rstrip())
 

@@ -1,7 +1,7 @@
 """Chooses the engine module for this processor, once.
 
-The engine is compiled as one whole extension module per instruction set; the results are the same to the last bit,
-only the speed differs. `WINDAGE_INSTRUCTION_SET` (v2, v3 or v4 on x86-64, neon on Arm) overrides the choice.
+The engine is compiled as one whole extension module per instruction set; the results are the same to the last
+bit, only the speed differs. `WINDAGE_INSTRUCTION_SET` (v2, v3 or v4 on x86-64, neon on Arm) overrides the choice.
 """
 
 from __future__ import annotations
@@ -45,7 +45,7 @@ def choice() -> tuple[str, str]:
     if wanted:
         if wanted not in known:
             raise EngineError(
-                f"{_OVERRIDE}: found {wanted!r}; expected one of {', '.join(known)} on this kind of processor."
+                f"{_OVERRIDE}: found {wanted!r}; expected one of {', '.join(known)} on this processor."
             )
         lacks = missing_features(wanted)
         if lacks:
@@ -77,7 +77,7 @@ def engine() -> Any:
 
 
 def default_threads() -> int:
-    """Threads that a run uses unless told otherwise: `WINDAGE_THREADS`, or every core this process may use."""
+    """Threads that a run uses unless told: `WINDAGE_THREADS`, or every core this process may use."""
     text = os.environ.get("WINDAGE_THREADS", "").strip()
     if text:
         if not text.isdecimal() or not 1 <= int(text) <= 4096:
@@ -88,7 +88,7 @@ def default_threads() -> int:
 
 
 def show_config() -> dict[str, str]:
-    """Return what this installation is made of: version, instruction set and why, compiler, oneTBB, threads."""
+    """Return what this installation is made of: version, instruction set and why, compiler, threads."""
     from windage import __version__
 
     name, reason = choice()

@@ -73,8 +73,9 @@ def _advice_on_observer(loop: Loop) -> list[str]:
         product = high_of(observer) * high_of(loop.sample_period)
         if product > 1.0:
             found.append(
-                f"controller: observer_bandwidth * sample_period = {product:.3g}: the sampled observer is far from "
-                "its continuous design; sample faster or lower the bandwidth (0.3 or less is common practice)"
+                f"controller: observer_bandwidth * sample_period = {product:.3g}: the sampled observer is "
+                "far from its continuous design; sample faster or lower the bandwidth (0.3 or less is common "
+                "practice)"
             )
     if observer is not None and controller is not None and low_of(observer) < high_of(controller):
         found.append(
@@ -90,8 +91,8 @@ def _advice_on_delay(loop: Loop) -> list[str]:
     if observer is None or not high_of(observer) * delay > 1.0:
         return []
     return [
-        f"controller: observer_bandwidth * delay = {high_of(observer) * delay:.3g}: the observer is not told of the "
-        "delay, and above about 1 little margin is left"
+        f"controller: observer_bandwidth * delay = {high_of(observer) * delay:.3g}: the observer is not told "
+        "of the delay, and above about 1 little margin is left"
     ]
 
 

@@ -214,7 +214,7 @@ class Requirement(Description):
         return Requirement(self.measure, at_most=self.at_most, at_least=self.at_least, name=name)
 
     def __bool__(self) -> NoReturn:
-        mend = "A chain such as a <= measure <= b is two requirements: write measure >= a and measure <= b apart."
+        mend = "A chain a <= measure <= b is two requirements: write measure >= a and measure <= b apart."
         raise DescriptionError(
             "requirement", self.words, "a requirement used as such, not as true or false", mend
         )
@@ -305,7 +305,7 @@ def undershoot(signal: str = "output", after: Any = 0.0, before: Any = math.inf)
 def rise_time(
     low: Any = 0.1, high: Any = 0.9, signal: str = "output", after: Any = 0.0, before: Any = math.inf
 ) -> Measure:
-    """Measure the time from fraction `low` to fraction `high` of the change (IEC 60050-351:2013, 351-45-36)."""
+    """Measure the time from fraction `low` to `high` of the change (IEC 60050-351:2013, 351-45-36)."""
     low = checked_number(low, "rise_time.low", _FRACTION)
     high = checked_number(high, "rise_time.high", _FRACTION)
     check_order(low, high, "rise_time.low")

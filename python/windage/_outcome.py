@@ -69,7 +69,7 @@ class Outcome:
     @cached_property
     def measures(self) -> Mapping[str, Values]:
         """Measures by their words, each an array of shape (trials,); NaN where a trial diverged."""
-        named = zip(measure_names(self._described), self._columns.measures, strict=True)
+        named = zip(self._described.measure_names, self._columns.measures, strict=True)
         return MappingProxyType(dict(named))
 
     @cached_property
@@ -245,17 +245,6 @@ class Outcome:
         """Count this judgement: at a number of trials judged before it is no further look."""
         self._judged.add(self.trials)
         return len(self._judged)
-
-
-def measure_names(described: Described) -> list[str]:
-    """Return a name for each measure: its words, with a number where they are the same."""
-    names: list[str] = []
-    for measure in described.measures:
-        label, count = measure.label, 2
-        while label in names:
-            label, count = f"{measure.label} [{count}]", count + 1
-        names.append(label)
-    return names
 
 
 def joint_requirement(labels: tuple[str, ...]) -> str:

@@ -20,6 +20,10 @@ if TYPE_CHECKING:
 #: Names of signals that every loop has.
 LOOP_SIGNALS = ("time", "reference", "error", "output", "measured", "command", "input")
 MOST_STATES = 100
+#: Operations whose result can jump.
+_JUMPS = frozenset(
+    ("sign", "less", "less_equal", "equal", "not_equal", "logical_and", "logical_or", "logical_not", "select")
+)
 
 
 class AnyPlant(Description, ABC):
@@ -58,6 +62,11 @@ class AnyPlant(Description, ABC):
     def named_expressions(self) -> Mapping[str, str]:
         """Expressions over states, input, disturbances and numbers that are signals too."""
         return {}
+
+    @property
+    def may_jump(self) -> bool:
+        """Whether the derivatives of the states can jump at some value of a state."""
+        return False
 
     @abstractmethod
     def _describe(self, numbers: Numbers) -> dict[str, Any]:
@@ -182,6 +191,11 @@ class Plant(AnyPlant):
             mend = "Leave the direct path out, or put a state (a lag) into it."
             raise DescriptionError("plant.output", self.output, f"an output without {self.input!r}", mend)
         return derivatives, output
+
+    @property
+    def may_jump(self) -> bool:
+        """Whether the equations hold a sign, a step, a comparison or a choice."""
+        return any(step.op in _JUMPS for step in self._programs[0].code)
 
     def unused(self) -> list[str]:
         """Return the names of parameters and disturbances that no equation reads."""

@@ -18,6 +18,7 @@ from ._slack import slack_of
 
 if TYPE_CHECKING:
     from ._loop import Loop
+    from ._study import Study
 
 Values = NDArray[np.float64]
 
@@ -41,12 +42,16 @@ class Replay:
         Which requirements are met.
     diverged : bool
         Whether a state of the plant left the finite range.
+    seed : int
+        Of the study.
+    digest : str
+        Of the study; see `Study.digest`.
     """
 
     def __init__(
         self,
+        study: Study,
         loop: Loop,
-        requirements: tuple[Requirement, ...],
         described: Described,
         run: tuple[Values, Values, NDArray[np.uint8]],
         signals: Mapping[str, Values],
@@ -54,13 +59,14 @@ class Replay:
     ) -> None:
         parameters, measures, status = run
         self.trial = trial
-        self.requirements = requirements
+        self.requirements: tuple[Requirement, ...] = tuple(study.requirements)
+        self.seed, self.digest = study.seed, study.digest
         self._loop = loop
         self._signals = dict(signals)
         self._described = described
         self.parameters = {c.name: float(v) for c, v in zip(described.columns, parameters[:, 0], strict=True)}
-        self.measures = {m.label: float(v) for m, v in zip(described.measures, measures[:, 0], strict=True)}
-        self.slack: Values = slack_of(described, requirements, parameters, measures, status)[0]
+        self.measures = dict(zip(described.measure_names, measures[:, 0].tolist(), strict=True))
+        self.slack: Values = slack_of(described, self.requirements, parameters, measures, status)[0]
         self.met: NDArray[np.bool_] = self.slack >= 0.0
         self.diverged = bool(status[0])
 
@@ -107,7 +113,7 @@ class Replay:
         n = self._loop.controller.order
         period, b0 = self._value(self._loop.sample_period, "sample_period"), self._b0()
         derivative = central_difference(self["output"], n, period)
-        return derivative - b0 * _averaged(self._mean_input(period), n)
+        return derivative - b0 * self._mean_input(n, period)
 
     @property
     def estimated_disturbance(self) -> Values:
@@ -157,22 +163,18 @@ class Replay:
                 return self.parameters[column.name]
         raise KeyError(path)
 
-    def _mean_input(self, period: float) -> Values:
-        """Return the mean of the plant's input over each sample interval."""
+    def _mean_input(self, order: int, period: float) -> Values:
+        """Return the mean of the plant's input with the weights of a central difference."""
         u = self["input"]
         if self._loop.actuator.time_constant != 0.0:
-            share = 0.5
-        else:
-            delay = self._value(self._loop.actuator.delay, "actuator.delay")
-            delay += self._value(self._loop.plant.dead_time, "plant.dead_time")
-            samples = delay / period
-            # As the engine: the command changes this part of a period after the sample instant.
-            share = 0.0 if abs(samples - round(samples)) <= 1e-9 else samples - math.floor(samples)
-        if share == 0.0:
-            return u[:-1]
-        # Before the change the command is the sampled one, after it that of the next sample; with a lag, the
-        # trapezium rule.
-        return share * u[:-1] + (1.0 - share) * u[1:]
+            # Straight lines between the samples: half of each end.
+            return spline_mean(0.5 * (u[:-1] + u[1:]), 0.5 * (u[:-1] + u[1:]), order, 0.0)
+        delay = self._value(self._loop.actuator.delay, "actuator.delay")
+        samples = (delay + self._value(self._loop.plant.dead_time, "plant.dead_time")) / period
+        # As the engine: the command changes this part of a period after the sample instant. Before the change
+        # it is that seen at the sample, after it that seen at the next one.
+        part = 0.0 if abs(samples - round(samples)) <= 1e-9 else samples - math.floor(samples)
+        return spline_mean(u[:-1], u[1:] if part > 0.0 else u[:-1], order, part)
 
 
 def central_difference(values: Values, order: int, period: float) -> Values:
@@ -180,15 +182,46 @@ def central_difference(values: Values, order: int, period: float) -> Values:
 
     For odd orders it is the mean of the two differences that lie half a period to either side.
     """
-    differences: Values = np.diff(values, n=order) / period**order
+    with np.errstate(invalid="ignore", over="ignore"):  # a diverged trial
+        differences: Values = np.diff(values, n=order) / period**order
     return _centred(differences, order, len(values))
 
 
-def _averaged(intervals: Values, order: int) -> Values:
-    """Return the B-spline mean that a central difference takes, of something constant in each interval."""
-    weights = np.asarray(eulerian(order), dtype=np.float64) / math.factorial(order)
-    means = np.convolve(intervals, weights, mode="valid") if len(intervals) >= order else np.empty(0)
-    return _centred(means, order, len(intervals) + 1)
+def spline_mean(before: Values, after: Values, order: int, part: float) -> Values:
+    """Return the B-spline mean that a central difference takes of a derivative.
+
+    Parameters
+    ----------
+    before, after : ndarray, shape (intervals,)
+        The derivative in the first `part` of each interval and in the rest of it.
+    order : int
+        Order of the difference.
+    part : float
+        0 up to but not including 1.
+
+    Returns
+    -------
+    ndarray, shape (intervals + 1,)
+        At each sample, NaN where the spline would reach beyond the ends.
+    """
+    if len(before) < order:
+        return np.full(len(before) + 1, np.nan)
+    ends = [spline_integral(order, j) for j in range(order + 1)]
+    change = [spline_integral(order, j + part) for j in range(order)]
+    first = np.array([change[j] - ends[j] for j in range(order)])
+    second = np.array([ends[j + 1] - change[j] for j in range(order)])
+    # A convolution turns the weights round.
+    means = np.convolve(before, first[::-1], mode="valid") + np.convolve(after, second[::-1], mode="valid")
+    return _centred(means, order, len(before) + 1)
+
+
+def spline_integral(order: int, x: float) -> float:
+    """Return the integral of the cardinal B-spline on [0, order] from 0 to x (truncated powers)."""
+    terms = (
+        (-1) ** i * math.comb(order, i) * max(x - i, 0.0) ** order / math.factorial(order)
+        for i in range(order + 1)
+    )
+    return math.fsum(terms)
 
 
 def _centred(differences: Values, order: int, samples: int) -> Values:
@@ -200,14 +233,3 @@ def _centred(differences: Values, order: int, samples: int) -> Values:
     if len(differences):
         result[margin : margin + len(differences)] = differences
     return result
-
-
-def eulerian(order: int) -> list[int]:
-    """Return the Eulerian numbers of an order: its factorial times the B-spline's integrals over intervals."""
-    row = [1]
-    for n in range(2, order + 1):
-        row = [
-            (n - k) * (row[k - 1] if k > 0 else 0) + (k + 1) * (row[k] if k < len(row) else 0)
-            for k in range(n)
-        ]
-    return row

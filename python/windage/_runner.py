@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 import sys
-import time
 from collections.abc import Callable
 from dataclasses import dataclass
 from typing import Any
@@ -12,7 +11,9 @@ import numpy as np
 from numpy.typing import NDArray
 
 from ._errors import DescriptionError, EngineError
+from ._loader import default_threads, engine
 from ._numbers import checked_integer
+from ._progress import ProgressBar
 
 MOST_THREADS = 1024
 #: Called with the trials done and the trials asked for; returning False stops the run and keeps what is done.
@@ -51,8 +52,6 @@ def make_campaign(study: dict[str, Any]) -> Any:
     EngineError
         If the engine refuses the study although every check here passed.
     """
-    from ._loader import engine
-
     try:
         return engine().Campaign(study)
     except (ValueError, KeyError) as error:
@@ -71,7 +70,7 @@ def run_columns(
     first, count : int
         Range of trials.
     threads : int
-        0: every core.
+        0: `WINDAGE_THREADS` if that is set, otherwise every core this process may use.
     progress : bool or callable or None
         True: a bar on the terminal; None: the same if there is one; False: none; a callable gets the trials
         done and asked for, about ten times a second, and stops the run by returning False.
@@ -81,14 +80,14 @@ def run_columns(
     Columns
         All trials, or after Ctrl-C or a stop those that were finished, from the first one on without a gap.
     """
-    threads = checked_integer(threads, "threads", 0, MOST_THREADS)
+    threads = checked_integer(threads, "threads", 0, MOST_THREADS) or default_threads()
     available = int(campaign.trials_available)
     if first + count > available:
         mend = "Ask for fewer trials, or give a table with more rows."
         raise DescriptionError(
             "trials", first + count, f"at most {available}, the rows of the study's table", mend
         )
-    report = _reporter(progress)
+    report = reporter(progress)
 
     def step(done: int) -> bool:
         return report is None or report(done, count) is not False
@@ -103,35 +102,8 @@ def run_columns(
     return Columns(parameters, measures, status, count)
 
 
-class ProgressBar:
-    """One line on the standard error stream, redrawn in place."""
-
-    WIDTH = 30
-
-    def __init__(self) -> None:
-        self._started = time.perf_counter()
-
-    def __call__(self, done: int, total: int) -> bool:
-        sys.stderr.write("\r" + self.line(done, total, time.perf_counter() - self._started))
-        sys.stderr.flush()
-        return True
-
-    def line(self, done: int, total: int, seconds: float) -> str:
-        """Return the line for a number of trials done in some seconds."""
-        share = done / total if total else 1.0
-        filled = int(self.WIDTH * share)
-        bar = "#" * filled + "." * (self.WIDTH - filled)
-        rate = done / seconds if seconds > 0.0 else 0.0
-        left = f", {(total - done) / rate:.0f} s left" if rate > 0.0 and done < total else ""
-        return f"[{bar}] {done:,} of {total:,} trials, {rate:,.0f} a second{left}".ljust(100)
-
-    def close(self, done: int, total: int) -> None:
-        """Draw the last state and end the line."""
-        self(done, total)
-        sys.stderr.write("\n" if done == total else "  stopped; what is done is kept\n")
-
-
-def _reporter(progress: object) -> Report | None:
+def reporter(progress: object) -> Report | None:
+    """Return what is to be told of progress: a bar, the caller's function, or nothing."""
     if progress is True or (progress is None and sys.stderr is not None and sys.stderr.isatty()):
         return ProgressBar()
     if progress is None or progress is False:

@@ -114,7 +114,10 @@ def shared(name: str, spread: Any) -> Shared:
 
     Examples
     --------
-    >>> mass = shared("mass", uniform(10.0, 14.0))  # doctest: +SKIP
+    >>> from windage import shared, uniform
+    >>> mass = shared("mass", uniform(10.0, 14.0))
+    >>> mass.nominal
+    12.0
     """
     return Shared(name, spread)
 

@@ -1,85 +1,35 @@
-"""Stock plants: linear ones, sampled exactly by the matrix exponential, and two drives with friction.
+"""Stock plants: linear ones, sampled exactly by the matrix exponential, and the drives of `_drives`.
 
 All but `StateSpace` have one disturbance, called "load"; what it acts on is said at each plant.
 """
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Sequence
 from dataclasses import dataclass, field
 from typing import TYPE_CHECKING, Any, ClassVar
 
-from ._descriptions import parts
+from ._drives import DCDrive, TwoMassDrive
 from ._errors import DescriptionError
 from ._numbers import (
     ANY,
-    NON_NEGATIVE,
     NONZERO,
     POSITIVE,
     Number,
     Rule,
-    checked_choice,
     checked_integer,
     checked_number,
     checked_numbers,
     checked_sequence,
     takes,
 )
-from ._plants import AnyPlant
+from ._stock_plant import StockPlant
 
 if TYPE_CHECKING:
     from ._describe import Numbers
 
 HIGHEST_ORDER = 20
 _DEAD_TIME = Rule("a dead time of at least 0 s or a spread of such times", low=0.0, bounded=True)
-
-
-class StockPlant(AnyPlant):
-    """Root of the stock plants."""
-
-    engine_kind: ClassVar[str]
-    #: Arguments that are the engine's numbers, in its order.
-    engine_order: ClassVar[tuple[str, ...]] = ()
-
-    def __post_init__(self) -> None:
-        for f, value in parts(self):
-            if "rule" in f.metadata and value is not None:
-                checked = checked_number(value, f"plant.{f.name}", f.metadata["rule"])
-                object.__setattr__(self, f.name, checked)
-
-    @property
-    def state_names(self) -> tuple[str, ...]:
-        """Names of the states: state_1, state_2, ..."""
-        return tuple(f"state_{i + 1}" for i in range(self._states()))
-
-    @property
-    def disturbance_names(self) -> tuple[str, ...]:
-        """Names of the disturbances."""
-        return ("load",)
-
-    @property
-    def named_numbers(self) -> Mapping[str, Number]:
-        """The numbers under the names of their arguments."""
-        return {f.name: value for f, value in parts(self) if "rule" in f.metadata and value is not None}
-
-    def _states(self) -> int:
-        return len(self.state_names)
-
-    def _initial(self) -> Sequence[Number]:
-        return (0.0,) * self._states()
-
-    def _engine_numbers(self, numbers: Numbers) -> list[Any]:
-        return [numbers.take(getattr(self, name), f"plant.{name}") for name in self.engine_order]
-
-    def _describe(self, numbers: Numbers) -> dict[str, Any]:
-        return {
-            "kind": self.engine_kind,
-            "states": list(self.state_names),
-            "initial_state": numbers.take_all(self._initial(), "plant.initial"),
-            "numbers": self._engine_numbers(numbers),
-            "disturbances": len(self.disturbance_names),
-            "dead_time": numbers.take(self.dead_time, "plant.dead_time"),
-        }
 
 
 class LinearPlant(StockPlant):
@@ -286,147 +236,6 @@ class StateSpace(LinearPlant):
         return taken + numbers.take_all(self.c, "plant.c")
 
 
-@dataclass(frozen=True, repr=False)
-class DCDrive(StockPlant):
-    """Permanent-magnet DC drive with friction: voltage in, angle or speed out; the load is a torque.
-
-    Parameters
-    ----------
-    resistance : float or spread, Ohm
-    inductance : float or spread, H
-    torque_constant : float or spread, N m/A and V s
-    inertia : float or spread, kg m^2
-    viscous_friction : float or spread, N m s
-    coulomb_friction : float or spread, N m
-        Its torque is coulomb_friction * tanh(speed / friction_speed).
-    friction_speed : float or spread, rad/s
-        Speed below which Coulomb friction fades; smaller is sharper and needs more integration steps.
-    output : {"angle", "speed"}
-        What the sensor measures, in rad or rad/s.
-
-    Notes
-    -----
-    The load torque (N m) acts against the motor. States: angle, speed, current, all 0 at time 0.
-    """
-
-    engine_kind: ClassVar[str] = "dc_drive"
-    engine_order: ClassVar[tuple[str, ...]] = (
-        "resistance",
-        "inductance",
-        "torque_constant",
-        "inertia",
-        "viscous_friction",
-        "coulomb_friction",
-        "friction_speed",
-    )
-
-    resistance: Number = field(metadata=takes(POSITIVE))
-    inductance: Number = field(metadata=takes(POSITIVE))
-    torque_constant: Number = field(metadata=takes(POSITIVE))
-    inertia: Number = field(metadata=takes(POSITIVE))
-    viscous_friction: Number = field(default=0.0, metadata=takes(NON_NEGATIVE))
-    coulomb_friction: Number = field(default=0.0, metadata=takes(NON_NEGATIVE))
-    friction_speed: Number = field(default=0.1, metadata=takes(POSITIVE))
-    output: str = "angle"
-
-    def __post_init__(self) -> None:
-        super().__post_init__()
-        checked_choice(self.output, "plant.output", ("angle", "speed"))
-
-    @property
-    def state_names(self) -> tuple[str, ...]:
-        """Angle, speed, current."""
-        return ("angle", "speed", "current")
-
-    @property
-    def input_name(self) -> str:
-        """Voltage."""
-        return "voltage"
-
-    def _describe(self, numbers: Numbers) -> dict[str, Any]:
-        return {**super()._describe(numbers), "output_state": self.state_names.index(self.output)}
-
-
-@dataclass(frozen=True, repr=False)
-class TwoMassDrive(StockPlant):
-    """Motor and load on an elastic shaft: motor torque in; the load is a torque against the load side.
-
-    Parameters
-    ----------
-    motor_inertia, load_inertia : float or spread, kg m^2
-    stiffness : float or spread, N m/rad
-    damping : float or spread, N m s/rad
-        Of the shaft.
-    coulomb_friction : float or spread, N m
-        On the load side.
-    breakaway_friction : float or spread, N m, optional
-        Friction at standstill; by default equal to `coulomb_friction`.
-    stribeck_speed : float or spread, rad/s
-        Speed over which friction falls from breakaway to Coulomb friction.
-    friction_speed : float or spread, rad/s
-        Speed below which friction fades; smaller is sharper and needs more integration steps.
-    viscous_friction : float or spread, N m s/rad
-        On the load side.
-    output : {"motor_angle", "load_angle", "motor_speed", "load_speed"}
-        What the sensor measures.
-
-    Notes
-    -----
-    Friction torque: (Fc + (Fs - Fc) exp(-(w/ws)^2)) tanh(w/w0) + B w (Stribeck friction after
-    Armstrong-Helouvry, Dupont, Canudas de Wit 1994, Automatica 30(7), equation form from memory). States:
-    motor_angle, motor_speed, load_angle, load_speed, all 0 at time 0.
-    """
-
-    engine_kind: ClassVar[str] = "two_mass_drive"
-    engine_order: ClassVar[tuple[str, ...]] = (
-        "motor_inertia",
-        "load_inertia",
-        "stiffness",
-        "damping",
-        "coulomb_friction",
-        "breakaway_friction",
-        "stribeck_speed",
-        "friction_speed",
-        "viscous_friction",
-    )
-
-    motor_inertia: Number = field(metadata=takes(POSITIVE))
-    load_inertia: Number = field(metadata=takes(POSITIVE))
-    stiffness: Number = field(metadata=takes(POSITIVE))
-    damping: Number = field(metadata=takes(NON_NEGATIVE))
-    coulomb_friction: Number = field(default=0.0, metadata=takes(NON_NEGATIVE))
-    breakaway_friction: Number | None = field(default=None, metadata=takes(NON_NEGATIVE))
-    stribeck_speed: Number = field(default=1.0, metadata=takes(POSITIVE))
-    friction_speed: Number = field(default=0.1, metadata=takes(POSITIVE))
-    viscous_friction: Number = field(default=0.0, metadata=takes(NON_NEGATIVE))
-    output: str = "motor_angle"
-
-    def __post_init__(self) -> None:
-        super().__post_init__()
-        checked_choice(self.output, "plant.output", self.state_names)
-
-    @property
-    def state_names(self) -> tuple[str, ...]:
-        """Angle and speed of motor and load."""
-        return ("motor_angle", "motor_speed", "load_angle", "load_speed")
-
-    @property
-    def input_name(self) -> str:
-        """Torque."""
-        return "torque"
-
-    def _engine_numbers(self, numbers: Numbers) -> list[Any]:
-        taken = []
-        for name in self.engine_order:
-            is_coulomb = name == "breakaway_friction" and self.breakaway_friction is None
-            source = "coulomb_friction" if is_coulomb else name
-            taken.append(numbers.take(getattr(self, source), f"plant.{source}"))
-        return taken
-
-    def _describe(self, numbers: Numbers) -> dict[str, Any]:
-        return {**super()._describe(numbers), "output_state": self.state_names.index(self.output)}
-
-
 def _filled(initial: Any, count: int) -> tuple[Number, ...]:
     """Return one initial value a state: a single one is that of the output."""
     return initial if isinstance(initial, tuple) else (initial, *([0.0] * (count - 1)))
@@ -465,3 +274,15 @@ def _vector(value: object, place: str, count: int) -> tuple[Number, ...]:
         is_row = isinstance(item, list | tuple) or (hasattr(item, "ndim") and item.ndim > 0)
         flat += list(item) if is_row else [item]
     return checked_numbers(flat, place, ANY, count)
+
+
+__all__ = [
+    "DCDrive",
+    "FirstOrder",
+    "IntegratorChain",
+    "LinearPlant",
+    "SecondOrder",
+    "StateSpace",
+    "TransferFunction",
+    "TwoMassDrive",
+]

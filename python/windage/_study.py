@@ -20,8 +20,9 @@ from ._measures import Measure, Requirement
 from ._not_varied import Cautions, not_varied
 from ._numbers import Spread, checked_integer, high_of, low_of, nominal_of
 from ._outcome import Outcome
+from ._progress import ProgressBar
 from ._replay import Replay
-from ._runner import Columns, Report, make_campaign, run_columns
+from ._runner import Columns, Report, make_campaign, reporter, run_columns
 from ._study_checks import (
     check_positive_definite,
     check_windows,
@@ -34,8 +35,9 @@ from ._study_checks import (
 from ._tally import Counter, Tally
 
 MOST_TRIALS = 1 << 40
-#: Largest replay, bytes.
+#: Largest replay and largest outcome held in memory, bytes.
 LARGEST_REPLAY = 4_000_000_000
+LARGEST_OUTCOME = 64_000_000_000
 
 
 @dataclass(frozen=True, repr=False, eq=False)
@@ -107,6 +109,11 @@ class Study(Description):
             After Ctrl-C or a stop: of the trials finished so far.
         """
         count = checked_integer(trials, "trials", 1, MOST_TRIALS)
+        size = 8.0 * count * (len(self.parameters) + len(self.measures) + 2 * len(self.requirements))
+        if size > LARGEST_OUTCOME:
+            mend = "Use study.count(...) or study.batches(...), whose memory does not grow."
+            expected = f"an outcome of at most {LARGEST_OUTCOME / 1e9:g} GB"
+            raise DescriptionError("trials", trials, expected, mend)
         columns = self._columns(0, count, threads, progress)
         return Outcome(self, self._run_description, columns)
 
@@ -123,9 +130,17 @@ class Study(Description):
         """
         count = checked_integer(trials, "trials", 1, MOST_TRIALS)
         size = checked_integer(size, "size", 1, MOST_TRIALS)
-        for first in range(0, count, size):
-            columns = self._columns(first, min(size, count - first), threads, progress)
-            outcome = Outcome(self, self._run_description, columns, first)
+        report, done = reporter(progress), 0
+
+        def of_all(in_batch: int, _: int) -> object:
+            return report is None or report(done + in_batch, count)
+
+        while done < count:
+            columns = self._columns(done, min(size, count - done), threads, of_all)
+            outcome = Outcome(self, self._run_description, columns, done)
+            done += outcome.trials
+            if isinstance(report, ProgressBar) and (outcome.interrupted or done == count):
+                report.close(done, count)
             yield outcome
             if outcome.interrupted:
                 return
@@ -157,18 +172,20 @@ class Study(Description):
     def replay(self, trial: int) -> Replay:
         """Run one trial again and return every signal, with the same digits as in `run`."""
         trial = checked_integer(trial, "trial", 0, MOST_TRIALS)
+        _check_memory(self._bound[0])
         described = self._describe(self.resolved_steps(), every_signal=True)
-        return _replay(self._bound[0], self.requirements, described, trial, trial)
+        return _replay(self, self._bound[0], described, trial, trial)
 
     def nominal(self) -> Replay:
         """Run the nominal unit: every spread at its nominal value, noise as in trial 0."""
         loop, requirements, measures = rebuilt(
             self._bound, lambda x: nominal_of(x) if isinstance(x, Spread) else None
         )
+        _check_memory(loop)
         described = describe(
             loop, requirements, measures, {}, self.seed, self.resolved_steps(), every_signal=True
         )
-        return _replay(loop, requirements, described, 0, None)
+        return _replay(self, loop, described, 0, None)
 
     def resolved_steps(self) -> int:
         """Return the integration steps in a sample period, chosen once if the loop says "auto".
@@ -277,24 +294,21 @@ class Study(Description):
         return run_columns(self._campaign, first, count, threads, progress)
 
 
-def _replay(
-    loop: Loop, requirements: Sequence[Requirement], described: Described, index: int, trial: int | None
-) -> Replay:
+def _check_memory(loop: Loop) -> None:
+    samples = high_of(loop.duration) / low_of(loop.sample_period)
+    if 8.0 * len(loop.signal_names) * samples > LARGEST_REPLAY:
+        found = f"{len(loop.signal_names)} signals of {samples:.3g} samples"
+        raise DescriptionError("replay", found, f"at most {LARGEST_REPLAY / 1e9:g} GB", "Shorten the trial.")
+
+
+def _replay(study: Study, loop: Loop, described: Described, index: int, trial: int | None) -> Replay:
     campaign = make_campaign(described.study)
     columns = run_columns(campaign, index, 1, 1, False)
     if columns.trials < 1:
         raise KeyboardInterrupt
     names = campaign.signal_names()
-    samples = _longest(loop)
-    if 8.0 * len(names) * samples > LARGEST_REPLAY:
-        found = f"{len(names)} signals of {samples:.3g} samples"
-        raise DescriptionError("replay", found, f"at most {LARGEST_REPLAY / 1e9:g} GB", "Shorten the trial.")
     values = campaign.replay(index)
     values.flags.writeable = False
     run = (columns.parameters, columns.measures, columns.status)
     signals = dict(zip(names, np.asarray(values), strict=True))
-    return Replay(loop, tuple(requirements), described, run, signals, trial)
-
-
-def _longest(loop: Loop) -> float:
-    return high_of(loop.duration) / low_of(loop.sample_period)
+    return Replay(study, loop, described, run, signals, trial)

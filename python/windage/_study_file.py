@@ -11,6 +11,7 @@ from typing import Any
 from ._errors import DescriptionError, StudyFileError
 from ._study import Study
 from ._study_text import from_data, to_data
+from ._toml_text import toml_text
 
 LARGEST_FILE = 5_000_000
 
@@ -72,9 +73,7 @@ def load(path: str | os.PathLike[str]) -> Study:
 
 def to_toml(study: Study) -> str:
     """Return a study as the text of a study file."""
-    import tomli_w
-
-    return tomli_w.dumps(to_data(study))
+    return toml_text(to_data(study))
 
 
 def from_toml(text: str) -> Study:

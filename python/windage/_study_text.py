@@ -121,6 +121,10 @@ _KINDS: Mapping[str, Mapping[str, Maker]] = {
 }
 
 
+#: Mappings from names to expressions.
+_TEXTS = ("equations", "auxiliaries", "signals")
+
+
 def to_data(study: Study) -> dict[str, Any]:
     """Return a study as nested dictionaries, lists, texts, numbers and truth values."""
     data: dict[str, Any] = {"windage_study": FORMAT, "seed": study.seed}
@@ -179,7 +183,7 @@ def from_data(data: Any) -> Study:
 
     _check_version(data)
     known = ["windage_study", "seed", "loop", "requirements", "measures", "table", "correlations"]
-    _check_keys(data, known, ["loop"], "the study")
+    _check_keys(data, known, ["loop"], "")
     made: dict[str, Any] = {"loop": _made_loop(_table(data["loop"], "loop"))}
     for key, decode in (("requirements", _requirement), ("measures", _measure)):
         items = _list(data.get(key, []), key)
@@ -190,7 +194,7 @@ def from_data(data: Any) -> Study:
         made["table"] = _table(data["table"], "table")
     if "correlations" in data:
         made["correlations"] = _correlations(_list(data["correlations"], "correlations"))
-    study: Study = _call(Study, made, "the study")
+    study: Study = _call(Study, made, "")
     return study
 
 
@@ -218,7 +222,7 @@ def _made_loop(data: Mapping[str, Any]) -> Any:
                 name: _of_kind(part, DISTURBANCES, f"{place}.{name}") for name, part in parts.items()
             }
         else:
-            values[key] = _value(item, place)
+            values[key] = item if key in _TEXTS else _value(item, place)
     return _call(Loop, values, "loop")
 
 
@@ -231,7 +235,8 @@ def _of_kind(item: Any, kinds: Mapping[str, Maker], place: str) -> Any:
 
 
 def _made(maker: Maker, data: Mapping[str, Any], place: str) -> Any:
-    return _call(maker, {key: _value(part, f"{place}.{key}") for key, part in data.items()}, place)
+    values = {key: part if key in _TEXTS else _value(part, f"{place}.{key}") for key, part in data.items()}
+    return _call(maker, values, place)
 
 
 def _value(item: Any, place: str) -> Any:
@@ -242,9 +247,10 @@ def _value(item: Any, place: str) -> Any:
         raise StudyFileError(place, item, "a finite number", "Leave it out where nothing is limited.")
     if not isinstance(item, dict):
         return item
-    if "spread" in item or "shared" in item:
+    # A parameter may be called "spread" or "column" itself; its value is no text.
+    if isinstance(item.get("spread"), str) or isinstance(item.get("shared"), str):
         return _spread(item, place)
-    if "column" in item:
+    if isinstance(item.get("column"), str):
         _check_keys(item, ["column"], ["column"], place)
         return _call(Column, {"name": item["column"]}, place)
     return {name: _value(part, f"{place}.{name}") for name, part in item.items()}
@@ -298,35 +304,33 @@ def _call(maker: Maker, values: Mapping[str, Any], place: str) -> Any:
     _check_keys(values, list(signature.parameters), required, place)
     try:
         return maker(**values)
-    except StudyFileError:
-        raise
     except DescriptionError as error:
-        text = str(error).removeprefix(f"{error.field}: ")
-        raise _placed(error, place, text) from error
+        raise _placed(error, place, maker.__name__) from error
 
 
-def _placed(error: DescriptionError, place: str, text: str) -> StudyFileError:
+def _placed(error: DescriptionError, place: str, maker: str) -> StudyFileError:
     """Return the error with the dotted path of the file instead of the argument's own."""
-    inner = error.field
-    for head in ("study.", "loop.", "plant.", "controller.", "sensor.", "actuator.", "requirement."):
-        inner = inner.removeprefix(head) if inner.startswith(head) else inner
-    del text
-    path = inner if place == "the study" else f"{place}.{inner}"
+    head, _, rest = error.field.partition(".")
+    is_own = head in (place.split(".")[-1], maker, maker.lower())
+    path = _at(place, rest if is_own else error.field)
     placed = StudyFileError.__new__(StudyFileError)
     placed.field, placed.found, placed.expected = path, error.found, error.expected
     placed.args = (str(error).replace(error.field, path, 1),)
     return placed
 
 
+def _at(place: str, key: str) -> str:
+    return f"{place}.{key}" if place and key else place or key
+
+
 def _check_keys(data: Mapping[str, Any], known: list[str], required: list[str], place: str) -> None:
     for key in data:
         if key not in known:
-            raise StudyFileError(
-                f"{place}.{key}", "an unknown key", "one of its keys", suggestion(str(key), known)
-            )
+            mend = suggestion(str(key), known)
+            raise StudyFileError(_at(place, str(key)), "an unknown key", "one of its keys", mend)
     for key in required:
         if key not in data:
-            raise StudyFileError(f"{place}.{key}", "nothing", f"the key {key!r}", "It has no default.")
+            raise StudyFileError(_at(place, key), "nothing", f"the key {key!r}", "It has no default.")
 
 
 def _word(data: Mapping[str, Any], key: str, known: Mapping[str, Maker], place: str) -> str:

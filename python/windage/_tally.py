@@ -65,7 +65,8 @@ class Tally:
 
     def __repr__(self) -> str:
         asked = f" (stopped; {self.requested:,} asked for)" if self.trials < self.requested else ""
-        head = f"Tally of {self.trials:,} trials{asked}: {self.failures:,} failed, {self.diverged:,} of them diverged"
+        counts = f"{self.failures:,} failed, {self.diverged:,} of them diverged"
+        head = f"Tally of {self.trials:,} trials{asked}: {counts}"
         return "\n".join(
             [head, *(f"  {n:,} missed: {label}" for label, n in self.requirement_failures.items())]
         )

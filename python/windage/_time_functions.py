@@ -135,7 +135,7 @@ class Quintic(TimeFunction):
 
 @dataclass(frozen=True, repr=False)
 class JerkLimited(TimeFunction):
-    """The fastest symmetric move from rest to rest by `amplitude` within limits of speed, acceleration and jerk."""
+    """The fastest move from rest to rest by `amplitude` within limits of speed, acceleration and jerk."""
 
     engine_kind: ClassVar[str] = "jerk_limited"
     engine_order: ClassVar[tuple[str, ...]] = (

@@ -19,8 +19,8 @@
 #include <string_view>
 #include <vector>
 
-#include "windage/lanes/beta.hpp"
-#include "windage/lanes/catalogue_loops.hpp"
+#include <windage/lanes/beta.hpp>
+#include <windage/lanes/catalogue_loops.hpp>
 
 namespace {
 

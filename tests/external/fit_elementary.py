@@ -1,11 +1,11 @@
-"""Fit the polynomials of cpp/include/windage/lanes by the Remez exchange and print them as C++ hexadecimal literals.
+"""Fit the polynomials of cpp/include/windage/lanes by the Remez exchange, printed as hexadecimal literals.
 
-Each table approximates a smooth function g on an interval so that the largest weighted error |w (p - g)| is smallest
-(E. Ya. Remez, 1934; see W. J. Cody and W. Waite, Software Manual for the Elementary Functions, 1980, for the argument
-reductions that lead to the intervals).  Leading coefficients that are exact numbers are held fixed.
+Each table approximates a smooth function g on an interval so that the largest weighted error |w (p - g)| is
+smallest (E. Ya. Remez, 1934; see W. J. Cody and W. Waite, Software Manual for the Elementary Functions, 1980,
+for the argument reductions that lead to the intervals).  Leading coefficients that are exact are held fixed.
 
     python fit_elementary.py            print every table with its error in bits
-    python fit_elementary.py --check    also compare with the numbers in the headers; exit status 1 if one is missing
+    python fit_elementary.py --check    also look for the numbers in the headers; status 1 if one is absent
 """
 
 from __future__ import annotations
@@ -56,7 +56,8 @@ def remez(target: Real, weight: Real, low: mpf, high: mpf, count: int) -> tuple[
         for i in range(count + 1)
     ]
     grid = [
-        (low + high) / 2 - (high - low) / 2 * mpmath.cos(mpmath.pi * i / (30 * count)) for i in range(30 * count + 1)
+        (low + high) / 2 - (high - low) / 2 * mpmath.cos(mpmath.pi * i / (30 * count))
+        for i in range(30 * count + 1)
     ]
     known = [(target(x), weight(x)) for x in grid]
     coefficients: list[mpf] = []
@@ -71,7 +72,9 @@ def remez(target: Real, weight: Real, low: mpf, high: mpf, count: int) -> tuple[
             right[row] = target(x)
         solution = mpmath.lu_solve(matrix, right)
         coefficients = [solution[i] for i in range(count)]
-        errors = [w * (mpmath.polyval(coefficients[::-1], x) - g) for x, (g, w) in zip(grid, known, strict=True)]
+        errors = [
+            w * (mpmath.polyval(coefficients[::-1], x) - g) for x, (g, w) in zip(grid, known, strict=True)
+        ]
         worst = max(abs(e) for e in errors)
         nodes = extrema(grid, errors, count + 1)
         if worst <= abs(solution[count]) * mpf("1.001"):
@@ -80,7 +83,7 @@ def remez(target: Real, weight: Real, low: mpf, high: mpf, count: int) -> tuple[
 
 
 def extrema(grid: list[mpf], errors: list[mpf], wanted: int) -> list[mpf]:
-    """The largest error of every run of equal signs, sharpened by a parabola; the smallest runs are dropped."""
+    """The largest error of every run of equal signs, sharpened by a parabola; surplus runs are dropped."""
     runs: list[int] = [0]
     for i in range(1, len(errors)):
         if errors[i] * errors[runs[-1]] < 0:
@@ -90,7 +93,9 @@ def extrema(grid: list[mpf], errors: list[mpf], wanted: int) -> list[mpf]:
     while len(runs) > wanted:
         runs.pop(0 if abs(errors[runs[0]]) < abs(errors[runs[-1]]) else -1)
     if len(runs) < wanted:
-        raise ArithmeticError(f"error curve has {len(runs)} extrema, {wanted} needed: raise mp.dps or lower the degree")
+        raise ArithmeticError(
+            f"error curve has {len(runs)} extrema, {wanted} needed: raise mp.dps or lower the degree"
+        )
     points = []
     for i in runs:
         x = grid[i]
@@ -170,34 +175,121 @@ def tables() -> list[Table]:
 
     sine_terms = factorial_series(3, 2, -1)
     return [
-        Table("exponential_rest", "exponential.hpp", series_safe(exponential_rest, factorial_series(3, 1)),
-              lambda x: abs(x) ** 3 / mpmath.exp(x) + mpf(10) ** -12, -half_log, half_log, 9),
-        Table("logarithm_rest", "exponential.hpp", series_safe(logarithm_rest, lambda n: mpf(2) / (2 * n + 3)),
-              lambda z: z + mpf(10) ** -12, mpf(0), s_max, 7),
-        Table("power_rest", "power.hpp", series_safe(power_rest, lambda n: mpf(3) / (2 * n + 5)),
-              lambda z: z**2 + mpf(10) ** -12, mpf(0), s_max, 7),
-        Table("sine_rest", "trigonometric.hpp", odd_tail(mpmath.sin, lambda n: -sine_terms(n)),
-              lambda z: z + mpf(10) ** -12, mpf(0), eighth, 6),
-        Table("cosine_rest", "trigonometric.hpp", series_safe(cosine_rest, factorial_series(4, 2, -1)),
-              lambda z: z**2 + mpf(10) ** -12, mpf(0), eighth, 6),
-        Table("turn_sine_rest", "trigonometric.hpp",
-              series_safe(turn_sine, lambda n: -((-1) ** n) * half_pi ** (2 * n + 3) / mpmath.factorial(2 * n + 3)),
-              lambda z: z + mpf(10) ** -12, mpf(0), half_turn, 6),
-        Table("turn_cosine", "trigonometric.hpp",
-              series_safe(turn_cosine, lambda n: -((-1) ** n) * half_pi ** (2 * n + 2) / mpmath.factorial(2 * n + 2)),
-              lambda z: z + mpf(10) ** -12, mpf(0), half_turn, 7),
-        Table("tangent_rest", "trigonometric.hpp", odd_tail(mpmath.tan, taylor_tail(mpmath.tan, 24)),
-              relative_odd(mpmath.tan), mpf(0), eighth, 14),
-        Table("arc_tangent_rest", "inverse_trigonometric.hpp",
-              odd_tail(mpmath.atan, lambda n: mpf(-1) ** (n + 1) / (2 * n + 3)),
-              relative_odd(mpmath.atan), mpf(0), mpf("0.25") * mpf("1.0001"), 12),
-        Table("arc_sine_rest", "inverse_trigonometric.hpp", odd_tail(mpmath.asin, taylor_tail(mpmath.asin, 24)),
-              relative_odd(mpmath.asin), mpf(0), mpf("0.25") * mpf("1.0001"), 13),
-        Table("hyperbolic_tangent_rest", "hyperbolic.hpp", odd_tail(mpmath.tanh, taylor_tail(mpmath.tanh, 24)),
-              relative_odd(mpmath.tanh), mpf(0), mpf("0.551") ** 2, 10),
-        Table("hyperbolic_sine_rest", "hyperbolic.hpp", odd_tail(mpmath.sinh, factorial_series(3, 2)),
-              relative_odd(mpmath.sinh), mpf(0), mpf("1.0001"), 7),
-        Table("normal_tail", "normal.hpp", tail_ratio, lambda t: 1 / tail_ratio(t), mpf(-1), mpf(33) / 43, 22),
+        Table(
+            "exponential_rest",
+            "exponential.hpp",
+            series_safe(exponential_rest, factorial_series(3, 1)),
+            lambda x: abs(x) ** 3 / mpmath.exp(x) + mpf(10) ** -12,
+            -half_log,
+            half_log,
+            9,
+        ),
+        Table(
+            "logarithm_rest",
+            "exponential.hpp",
+            series_safe(logarithm_rest, lambda n: mpf(2) / (2 * n + 3)),
+            lambda z: z + mpf(10) ** -12,
+            mpf(0),
+            s_max,
+            7,
+        ),
+        Table(
+            "power_rest",
+            "power.hpp",
+            series_safe(power_rest, lambda n: mpf(3) / (2 * n + 5)),
+            lambda z: z**2 + mpf(10) ** -12,
+            mpf(0),
+            s_max,
+            7,
+        ),
+        Table(
+            "sine_rest",
+            "trigonometric.hpp",
+            odd_tail(mpmath.sin, lambda n: -sine_terms(n)),
+            lambda z: z + mpf(10) ** -12,
+            mpf(0),
+            eighth,
+            6,
+        ),
+        Table(
+            "cosine_rest",
+            "trigonometric.hpp",
+            series_safe(cosine_rest, factorial_series(4, 2, -1)),
+            lambda z: z**2 + mpf(10) ** -12,
+            mpf(0),
+            eighth,
+            6,
+        ),
+        Table(
+            "turn_sine_rest",
+            "trigonometric.hpp",
+            series_safe(
+                turn_sine, lambda n: -((-1) ** n) * half_pi ** (2 * n + 3) / mpmath.factorial(2 * n + 3)
+            ),
+            lambda z: z + mpf(10) ** -12,
+            mpf(0),
+            half_turn,
+            6,
+        ),
+        Table(
+            "turn_cosine",
+            "trigonometric.hpp",
+            series_safe(
+                turn_cosine, lambda n: -((-1) ** n) * half_pi ** (2 * n + 2) / mpmath.factorial(2 * n + 2)
+            ),
+            lambda z: z + mpf(10) ** -12,
+            mpf(0),
+            half_turn,
+            7,
+        ),
+        Table(
+            "tangent_rest",
+            "trigonometric.hpp",
+            odd_tail(mpmath.tan, taylor_tail(mpmath.tan, 24)),
+            relative_odd(mpmath.tan),
+            mpf(0),
+            eighth,
+            14,
+        ),
+        Table(
+            "arc_tangent_rest",
+            "inverse_trigonometric.hpp",
+            odd_tail(mpmath.atan, lambda n: mpf(-1) ** (n + 1) / (2 * n + 3)),
+            relative_odd(mpmath.atan),
+            mpf(0),
+            mpf("0.25") * mpf("1.0001"),
+            12,
+        ),
+        Table(
+            "arc_sine_rest",
+            "inverse_trigonometric.hpp",
+            odd_tail(mpmath.asin, taylor_tail(mpmath.asin, 24)),
+            relative_odd(mpmath.asin),
+            mpf(0),
+            mpf("0.25") * mpf("1.0001"),
+            13,
+        ),
+        Table(
+            "hyperbolic_tangent_rest",
+            "hyperbolic.hpp",
+            odd_tail(mpmath.tanh, taylor_tail(mpmath.tanh, 24)),
+            relative_odd(mpmath.tanh),
+            mpf(0),
+            mpf("0.551") ** 2,
+            10,
+        ),
+        Table(
+            "hyperbolic_sine_rest",
+            "hyperbolic.hpp",
+            odd_tail(mpmath.sinh, factorial_series(3, 2)),
+            relative_odd(mpmath.sinh),
+            mpf(0),
+            mpf("1.0001"),
+            7,
+        ),
+        Table(
+            "normal_tail", "normal.hpp", tail_ratio, lambda t: 1 / tail_ratio(t), mpf(-1), mpf(33) / 43, 22
+        ),
     ]
 
 
@@ -213,7 +305,8 @@ def main() -> int:
             continue
         coefficients, worst = remez(table.target, table.weight, table.low, table.high, table.count)
         literals = [float(c).hex() for c in coefficients]
-        print(f"// {table.name}: {table.count} coefficients, weighted error 2^{mpmath.nstr(mpmath.log(worst, 2), 4)}")
+        bits = mpmath.nstr(mpmath.log(worst, 2), 4)
+        print(f"// {table.name}: {table.count} coefficients, weighted error 2^{bits}")
         print("    " + ",\n    ".join(literals))
         if options.check:
             text = (HEADERS / table.header).read_text()

@@ -13,7 +13,6 @@ from typing import Literal
 import numpy as np
 import pytest
 from scipy import stats
-
 from windage import _statistics
 from windage._errors import DescriptionError
 from windage._evidence import (
@@ -332,6 +331,22 @@ def test_bounds_solve_their_defining_equation_for_ten_thousand_million_trials(
     found = pass_probability_bounds(failures, trials, 0.95)
     assert stats.binom.cdf(failures, trials, found.failure_upper) == pytest.approx(0.05, rel=1e-9)
     assert found.lower == pytest.approx(1 - found.failure_upper, rel=1e-15)
+
+
+@pytest.mark.parametrize(
+    ("failures", "trials"), [(78363001786, 7652915875277), (89420908457450, 96716466780313), (2**52, 2**53)]
+)
+@pytest.mark.parametrize("confidence", [0.6, 0.95, 0.999999])
+def test_bounds_hold_for_counts_that_the_library_cannot_invert_at_once(
+    failures: int, trials: int, confidence: float
+) -> None:
+    # For the first two the inverse of Boost 1.85 raises "series evaluation exceeded". Reference: the normal
+    # approximation, whose error at such counts is far below the standard deviation in which the bound is
+    # measured.
+    found = pass_probability_bounds(failures, trials, confidence, side="lower")
+    mean = 1 - failures / trials
+    spread = math.sqrt(mean * (1 - mean) / trials)
+    assert (mean - found.lower) / spread == pytest.approx(stats.norm.ppf(confidence), abs=1e-3)
 
 
 @pytest.mark.parametrize(("trials", "confidence"), [(1, 0.9), (59, 0.95), (4000, 0.9), (10**10, 0.999)])

@@ -15,7 +15,6 @@ import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
 from scipy import stats
-
 from windage import _statistics
 from windage._cautions import percent, percent_above, percent_below, standing_cautions
 from windage._errors import DescriptionError
@@ -300,8 +299,9 @@ class _Tags(html.parser.HTMLParser):
         self.open: list[str] = []
         self.seen: set[str] = set()
 
-    def handle_starttag(self, tag: str, attrs: Any) -> None:
+    def handle_starttag(self, tag: str, attrs: list[tuple[str, str | None]]) -> None:
         self.open.append(tag)
+        assert all(name == "style" for name, _ in attrs)
         self.seen.add(tag)
 
     def handle_endtag(self, tag: str) -> None:

@@ -59,7 +59,8 @@ std::uint64_t campaign::run(std::uint64_t first, std::uint64_t count, const resu
     const bool one_by_one = study_.loop.integrator == integrator_kind::reference;  // its steps follow one trial
     const std::size_t block_size = one_by_one ? lanes : block_size_for(options, count, threads);
     const std::size_t trials_per_block = one_by_one ? 1 : block_size;
-    work_queue queue((count + trials_per_block - 1) / trials_per_block, options.progress);
+    const std::uint64_t blocks = (count + trials_per_block - 1) / trials_per_block;
+    work_queue queue(blocks, options.progress);
 
     const auto work = [&](int) {
         queue.guard([&] {
@@ -73,11 +74,13 @@ std::uint64_t campaign::run(std::uint64_t first, std::uint64_t count, const resu
             }
         });
     };
-    // The arena bounds the threads of this run; the global limit lets it have more than the machine has cores.
+    // The arena bounds the threads of this run; the global limit lets it have more than the machine has cores. A thread
+    // without a block would do nothing, and if it were this one, nobody would report progress.
+    const int workers = int(std::min<std::uint64_t>(std::uint64_t(threads), blocks));
     const oneapi::tbb::global_control limit(oneapi::tbb::global_control::max_allowed_parallelism,
-                                            std::size_t(threads));
-    oneapi::tbb::task_arena arena(threads);
-    arena.execute([&] { oneapi::tbb::parallel_for(0, threads, work, oneapi::tbb::simple_partitioner()); });
+                                            std::size_t(workers));
+    oneapi::tbb::task_arena arena(workers);
+    arena.execute([&] { oneapi::tbb::parallel_for(0, workers, work, oneapi::tbb::simple_partitioner()); });
     queue.rethrow();
     return std::min(count, queue.finished_prefix() * trials_per_block);
 }

@@ -4,7 +4,7 @@ namespace windage {
 
 command_limiter::command_limiter(const actuator_description& d, signal_arena& arena)
     : low_(d.low, arena), high_(d.high, arena), rate_limit_(d.rate_limit, arena), resolution_(d.resolution, arena),
-      initial_(d.initial, arena), has_limits_(d.has_limits), largest_change_(arena.take()), command_(arena.take()),
+      initial_(d.initial, arena), has_limits_(d.has_limits), largest_change_(arena.take()), unrounded_(arena.take()), command_(arena.take()),
       size_(arena.block_size()) {}
 
 void command_limiter::begin(const trial_block& block, const sample_clock& clock) {
@@ -13,6 +13,7 @@ void command_limiter::begin(const trial_block& block, const sample_clock& clock)
     for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP {
         const wide rate = rate_limit_.pack_at(i);
         select(rate > 0.0, rate * clock.period().pack_at(i), unlimited).store(largest_change_ + i);
+        initial_.pack_at(i).store(unrounded_ + i);
         initial_.pack_at(i).store(command_ + i);
     });
 }
@@ -23,8 +24,9 @@ void command_limiter::sample(constant_signal wanted) {
         wide u = wide::load(wanted + i);
         if (has_limits_) u = clip(u, low_.pack_at(i), high_.pack_at(i));
         if (limits_rate) {
-            const wide before = wide::load(command_ + i), change = wide::load(largest_change_ + i);
+            const wide before = wide::load(unrounded_ + i), change = wide::load(largest_change_ + i);
             u = clip(u, before - change, before + change);
+            u.store(unrounded_ + i);
         }
         if (rounds) u = quantise(u, resolution_.pack_at(i));
         u.store(command_ + i);

@@ -143,7 +143,8 @@ void ode_plant::integrate_reference(constant_signal start, constant_signal lengt
         full_derivative(x, dx, here);
     };
     block_state next(x_.signals(), size_), error(x_.signals(), size_);
-    constexpr int finest = 24;  // steps of 2^-24 of the interval and below mean a trial that runs away
+    // Steps below 2^-14 of the interval mean a right-hand side that chatters: no step is small enough for it.
+    constexpr int finest = 14;
     std::int64_t done = 0, whole = std::int64_t(1) << finest, step = whole;
     while (done < whole) {
         const double scale = 1.0 / double(whole);

@@ -77,7 +77,7 @@ template <int W> WINDAGE_INLINE pack<W> normal_bell(pack<W> x) {
 }
 } // namespace detail
 
-/// Probability that a standard normal number exceeds x >= 0. Error at most 9 ULP (measured: 6.9,
+/// Probability that a standard normal number exceeds x >= 0. Error at most 9 ULP (measured: 6.8,
 /// 1e-15 of the value) up to 37.5; 0 from 37.7 on.
 template <int W> WINDAGE_INLINE pack<W> normal_upper_tail(pack<W> x) {
     const pack<W> limited = minimum(x, pack<W>(38.0));
@@ -87,7 +87,7 @@ template <int W> WINDAGE_INLINE pack<W> normal_upper_tail(pack<W> x) {
 }
 
 /// Probability that a standard normal number is at most x. Domain: all x; 0 below -37.6.
-/// Error at most 9 ULP (measured: 6.9, 1e-15 of the value) in both tails.
+/// Error at most 9 ULP (measured: 6.8, 1e-15 of the value) in both tails.
 template <int W> WINDAGE_INLINE pack<W> normal_cdf(pack<W> x) {
     const pack<W> tail = normal_upper_tail(absolute(x));
     return select(x > 0.0, 1.0 - tail, tail);

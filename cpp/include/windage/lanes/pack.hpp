@@ -238,9 +238,9 @@ template <int W> WINDAGE_INLINE pack<W> sign(pack<W> x) { return select(x > 0.0,
 template <int W> WINDAGE_INLINE pack<W> round_small(pack<W> x) { return (x + 0x1.8p52) - 0x1.8p52; }
 /// Largest integer not above x, for every x.
 template <int W> WINDAGE_INLINE pack<W> floor(pack<W> x) {
-    const pack<W> nearest = round_small(x);
+    const pack<W> nearest = copy_sign((absolute(x) + 0x1p52) - 0x1p52, x);
     const pack<W> lowered = select(nearest > x, nearest - 1.0, nearest);
-    return select(absolute(x) < 0x1p51, lowered, x);
+    return select(absolute(x) < 0x1p52, lowered, x);
 }
 
 /// True where x is neither infinite nor undefined.

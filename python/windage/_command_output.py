@@ -1,0 +1,227 @@
+"""What the command line prints and writes: verdicts, hints, errors in one block, files in one piece."""
+
+from __future__ import annotations
+
+import json
+import os
+from collections.abc import Iterator, Mapping
+from contextlib import contextmanager, suppress
+from pathlib import Path
+from typing import TYPE_CHECKING, Any
+
+from rich.console import Console
+from rich.text import Text
+
+from ._drivers import FAILING, FEW_FAILURES
+from ._errors import DescriptionError, WindageError, shorten
+from ._plots import HOW_TO_INSTALL, has_matplotlib
+
+if TYPE_CHECKING:
+    from ._outcome import Outcome
+    from ._replay import Replay
+    from ._study import Study
+    from ._verdict import Verdict
+
+PICTURES = (".png", ".pdf", ".svg")
+TABLES = (".parquet", ".csv")
+HINTS = 3
+MOST_INDICES = 1_000
+_STYLES = {"pass": "bold green", "fail": "bold red", "inconclusive": "bold yellow"}
+
+
+def out() -> Console:
+    """Return the console of the standard output: nothing is wrapped, marked up or coloured by itself."""
+    return Console(soft_wrap=True, highlight=False, markup=False, emoji=False)
+
+
+def say(text: str = "") -> None:
+    """Print a text as it is."""
+    out().print(text)
+
+
+def print_verdict(outcome: Outcome, verdict: Verdict) -> None:
+    """Print a verdict; that of a stopped run is marked as interim."""
+    head, _, body = str(verdict).partition("\n")
+    if outcome.interrupted:
+        asked = f"{outcome.trials:,} of {outcome.requested:,} trials"
+        say(f"Stopped after {asked}. What follows is interim and no verdict: the number of trials was")
+        say("not fixed beforehand. Run the study again to its end.")
+        head = f"INTERIM {head}"
+    out().print(Text(head, style=_STYLES[verdict.decision]))
+    say(body)
+
+
+def print_hints(outcome: Outcome) -> None:
+    """Print the drawn parameters that go most strongly along with failing, or with slack."""
+    drivers = outcome.drivers()
+    against = [FAILING] if len(outcome.failures) >= FEW_FAILURES else list(outcome.requirements)
+    for result in against:
+        rows = [row for row in drivers.of(result) if row.is_clear][:HINTS]
+        if not rows:
+            continue
+        name = "failing" if result == FAILING else f"the slack of: {result}"
+        say(f"First hint, rank correlation of drawn parameters with {name}")
+        for row in rows:
+            say(f"  {row.correlation:+.2f}  ({row.low:+.2f} .. {row.high:+.2f})  {row.parameter}")
+    if drivers.note and outcome.trials:
+        say(drivers.note)
+
+
+def print_advice(study: Study) -> None:
+    """Print what looks wrong with a study but is allowed."""
+    for line in study.warnings():
+        say(f"Advice: {line}.")
+
+
+def print_failure(error: BaseException) -> None:
+    """Print an error in one block on the standard error stream."""
+    console = Console(stderr=True, soft_wrap=True, highlight=False, markup=False, emoji=False)
+    title, rows = error_block(error)
+    console.print(Text(f"Error: {title}", style="bold red"))
+    for label, text in rows:
+        console.print(f"  {label:<9} {text}")
+
+
+def error_block(error: BaseException) -> tuple[str, list[tuple[str, str]]]:
+    """Return the title of an error and its labelled lines."""
+    if isinstance(error, DescriptionError):
+        found = shorten(error.found)
+        rows = [("found", found), ("expected", error.expected)]
+        return error.field, rows + ([("mend", error.mend)] if error.mend else [])
+    if isinstance(error, WindageError):
+        return str(error), []
+    if isinstance(error, OSError):
+        return error.strerror or str(error), [("found", str(error.filename))] if error.filename else []
+    if isinstance(error, MemoryError):
+        return "not enough memory", [
+            ("mend", "ask for fewer trials, or count failures in flat memory with Study.count in Python")
+        ]
+    trace, place = error.__traceback__, ""
+    while trace is not None:
+        place = f"{Path(trace.tb_frame.f_code.co_filename).name}, line {trace.tb_lineno}"
+        trace = trace.tb_next
+    return "a defect in windage", [
+        ("found", f"{type(error).__name__}: {str(error)[:300]}"),
+        ("place", place),
+        ("mend", "please report it with the command and the study file"),
+    ]
+
+
+def check_target(option: str, path: Path | None, suffixes: tuple[str, ...]) -> None:
+    """Refuse a file that could not be written, before any trial is run."""
+    if path is None:
+        return
+    if path.suffix.lower() not in suffixes:
+        raise DescriptionError(option, str(path), "a file name that ends in " + " or ".join(suffixes))
+    if path.is_dir():
+        raise DescriptionError(option, str(path), "a file", "It is a folder.")
+    if not path.parent.is_dir():
+        raise DescriptionError(option, str(path), "a file in a folder that exists", f"Make {path.parent}.")
+    if not os.access(path.parent, os.W_OK):
+        raise DescriptionError(option, str(path), "a folder that can be written to")
+    if suffixes == PICTURES and not has_matplotlib():
+        raise WindageError(HOW_TO_INSTALL)
+
+
+@contextmanager
+def in_one_piece(path: Path) -> Iterator[Path]:
+    """Give a file beside the wanted one, which takes its place only when it is complete."""
+    part = path.with_name(f".{path.name}.{os.getpid()}.part")
+    try:
+        yield part
+        part.replace(path)
+    except BaseException:
+        with suppress(OSError):
+            part.unlink(missing_ok=True)
+        raise
+    say(f"Wrote {path}")
+
+
+def write_picture(plotted: Outcome | Replay, path: Path, **options: Any) -> None:
+    """Write the plot of an outcome or a replay."""
+    figure = plotted.plot(**options)
+    with in_one_piece(path) as part:
+        figure.savefig(part, format=path.suffix[1:].lower(), dpi=120)
+
+
+def write_table(table: Any, path: Path, kind: str) -> None:
+    """Write an Arrow table as Parquet or CSV."""
+    import pyarrow as pa  # type: ignore[import-untyped]
+    import pyarrow.csv  # type: ignore[import-untyped]
+    import pyarrow.parquet  # type: ignore[import-untyped]
+
+    with in_one_piece(path) as part:
+        if kind == ".parquet":
+            pa.parquet.write_table(table, part)
+        else:
+            plain = [c.cast(pa.string()) if pa.types.is_dictionary(c.type) else c for c in table.columns]
+            pa.csv.write_csv(pa.table(plain, names=table.column_names), part)
+
+
+def outcome_table(outcome: Outcome) -> Any:
+    """Return the table of an outcome, with the study in its metadata: it says by itself what it came from."""
+    from ._study_file import to_toml
+
+    study = outcome.study
+    about = {"windage.study": to_toml(study), "windage.digest": study.digest, "windage.version": version()}
+    return outcome.table().replace_schema_metadata(about)
+
+
+def replay_table(replay: Replay) -> Any:
+    """Return every signal of a replay, one row a sample instant."""
+    import pyarrow as pa
+
+    columns: dict[str, Any] = {name: replay[name] for name in replay.signals}
+    columns.setdefault("total_disturbance", replay.total_disturbance)
+    columns.setdefault("estimated_disturbance", replay.estimated_disturbance)
+    return pa.table(columns)
+
+
+def write_json(report: Mapping[str, Any], path: Path) -> None:
+    """Write a report as JSON in its strict form: no infinities, no NaN."""
+    text = json.dumps(report, indent=2, ensure_ascii=False, allow_nan=False)
+    with in_one_piece(path) as part:
+        part.write_text(text + "\n", encoding="utf-8")
+
+
+def run_report(outcome: Outcome, verdict: Verdict, source: Path, code: int) -> dict[str, Any]:
+    """Return what `windage run --json` writes."""
+    missed = (~outcome.met).sum(axis=0).tolist()
+    worst = outcome.slack.argmin(axis=0) + outcome.first
+    return {
+        "windage": version(),
+        "study": {"file": source.name, "digest": outcome.study.digest, "seed": outcome.study.seed},
+        "exit_code": code,
+        "interim": outcome.interrupted,
+        "trials": {
+            "asked_for": outcome.requested,
+            "run": outcome.trials,
+            "failed": len(outcome.failures),
+            "diverged": len(outcome.diverged),
+        },
+        "verdict": None if outcome.interrupted else verdict.to_dict(),
+        "interim_verdict": verdict.to_dict() if outcome.interrupted else None,
+        "requirements": [
+            {"requirement": label, "missed": count, "worst_trial": int(trial)}
+            for label, count, trial in zip(outcome.requirements, missed, worst, strict=True)
+        ],
+        "first_failures": outcome.failures[:MOST_INDICES].tolist(),
+        "drivers": [
+            {
+                "parameter": row.parameter,
+                "against": row.against,
+                "rank_correlation": row.correlation,
+                "low": row.low,
+                "high": row.high,
+            }
+            for row in outcome.drivers()
+        ],
+        "advice": outcome.study.warnings(),
+    }
+
+
+def version() -> str:
+    """Return the version of windage."""
+    import windage
+
+    return windage.__version__

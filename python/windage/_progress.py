@@ -1,0 +1,81 @@
+"""A progress bar on the standard error stream, drawn by rich."""
+
+from __future__ import annotations
+
+from typing import TYPE_CHECKING
+
+if TYPE_CHECKING:
+    from rich.console import Console
+    from rich.progress import Progress, TaskID
+
+
+class ProgressBar:
+    """A bar of trials done: a function of the trials done and asked for, as `Study.run(progress=...)` takes.
+
+    It has no influence on any result and never stops a run. Nothing is drawn before the first call, and each
+    call draws at once: there is no thread behind it.
+
+    Parameters
+    ----------
+    console : rich.console.Console, optional
+        Where to draw; by default the standard error stream.
+    """
+
+    def __init__(self, console: Console | None = None) -> None:
+        self._console = console
+        self._progress: Progress | None = None
+        self._task: TaskID | None = None
+        self._is_closed = False
+
+    def __call__(self, done: int, total: int) -> bool:
+        """Draw `done` of `total` trials. Always returns True: go on."""
+        self._is_closed = False
+        progress, task = self._begun(total)
+        progress.update(task, completed=done, refresh=True)
+        return True
+
+    def close(self, done: int, total: int) -> None:
+        """Draw the last state and end the line; a second call does nothing."""
+        if self._is_closed:
+            return
+        progress, task = self._begun(total)
+        progress.update(task, completed=done, description="trials" if done == total else "trials, stopped")
+        progress.stop()
+        self._progress, self._is_closed = None, True
+
+    def _begun(self, total: int) -> tuple[Progress, TaskID]:
+        if self._progress is None or self._task is None:
+            self._progress = _new_progress(self._console)
+            self._task = self._progress.add_task("trials", total=total)
+            self._progress.start()
+        return self._progress, self._task
+
+
+def _new_progress(console: Console | None) -> Progress:
+    from rich.console import Console as RichConsole
+    from rich.progress import (
+        BarColumn,
+        Progress,
+        ProgressColumn,
+        Task,
+        TaskProgressColumn,
+        TimeRemainingColumn,
+    )
+    from rich.text import Text
+
+    class Counts(ProgressColumn):
+        """Trials done and asked for, and how many a second."""
+
+        def render(self, task: Task) -> Text:
+            speed = task.finished_speed or task.speed
+            rate = f", {speed:,.0f} a second" if speed else ""
+            return Text(f"{int(task.completed):,} of {int(task.total or 0):,} {task.description}{rate}")
+
+    return Progress(
+        BarColumn(bar_width=30),
+        TaskProgressColumn(),
+        Counts(),
+        TimeRemainingColumn(),
+        console=console or RichConsole(stderr=True),
+        auto_refresh=False,
+    )
