@@ -176,7 +176,7 @@ def _limit(replay: Replay, requirement: Requirement) -> float:
     if isinstance(requirement.limit, float):
         return requirement.limit
     slack = float(replay.slack[replay.requirements.index(requirement)])
-    value = replay.measures[requirement.measure.label]
+    value = float(replay.measures[requirement.measure.label])
     return value + slack if requirement.at_most is not None else value - slack
 
 

@@ -15,8 +15,9 @@ from pathlib import Path
 import mpmath
 import numpy as np
 import pytest
-import windage as wd
 from scipy.special import comb
+
+import windage as wd
 from windage._loader import engine
 
 sys.path.insert(0, str(Path(__file__).parent))

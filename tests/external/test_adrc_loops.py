@@ -12,8 +12,9 @@ from typing import Any
 
 import numpy as np
 import pytest
-import windage as wd
 from scipy.signal import TransferFunction, step
+
+import windage as wd
 
 sys.path.insert(0, str(Path(__file__).parent))
 from reference_loop import Values

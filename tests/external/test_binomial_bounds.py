@@ -13,6 +13,7 @@ from typing import Literal
 import numpy as np
 import pytest
 from scipy import stats
+
 from windage import _statistics
 from windage._errors import DescriptionError
 from windage._evidence import (

@@ -11,6 +11,7 @@ import sys
 from pathlib import Path
 
 import numpy as np
+
 import windage as wd
 
 sys.path.insert(0, str(Path(__file__).parent))

@@ -14,6 +14,7 @@ import numpy as np
 import pytest
 from mpmath import mpf
 from scipy import stats
+
 from windage._loader import engine
 
 sys.path.insert(0, str(Path(__file__).parent))

@@ -8,6 +8,7 @@ import numpy as np
 import pytest
 from numpy.typing import NDArray
 from scipy import special, stats
+
 from windage._loader import engine
 
 INF, NAN = math.inf, math.nan

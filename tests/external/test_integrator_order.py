@@ -15,8 +15,9 @@ from typing import Any
 
 import numpy as np
 import pytest
-import windage as wd
 from scipy.integrate import solve_ivp
+
+import windage as wd
 from windage._loader import engine
 
 sys.path.insert(0, str(Path(__file__).parent))

@@ -17,6 +17,7 @@ from typing import Any
 
 import numpy as np
 import pytest
+
 import windage as wd
 
 sys.path.insert(0, str(Path(__file__).parent))

@@ -11,6 +11,7 @@ from typing import Any
 
 import numpy as np
 import pytest
+
 import windage as wd
 
 # Standard deviation of the command over that of the sensor noise, plant b/s^n with b = b0, omega_c = 1 rad/s,

@@ -12,9 +12,10 @@ from typing import Any
 
 import numpy as np
 import pytest
-import windage as wd
 from numpy.typing import NDArray
 from scipy import stats
+
+import windage as wd
 from windage._describe import fnv1a
 from windage._loader import engine
 

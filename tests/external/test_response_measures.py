@@ -12,8 +12,9 @@ from typing import Any
 
 import numpy as np
 import pytest
-import windage as wd
 from numpy.typing import NDArray
+
+import windage as wd
 from windage._loader import engine
 
 Values = NDArray[np.float64]

@@ -113,9 +113,9 @@ def test_nominal_unit_passes_or_fails_as_listed(file: str, name: str) -> None:
     assert SCRIPT.nominal_passes(CASES[file], tuning) is tuning.nominal_passes
 
 
-# Median and 95 % quantile of measures of the good tunings, in the unit of the requirement, from the independent
-# program with the error taken at the sample instant itself; trials behind them. Settling times are left out:
-# that program counts samples, this one interpolates between them.
+# Median and 95 % quantile of measures of the good tunings, in the unit of the requirement, from the
+# independent program with the error taken at the sample instant itself; trials behind them. Settling times are
+# left out: that program counts samples, this one interpolates between them.
 QUANTILES = [
     (SERVO, "following error", 2.092e-3, 3.730e-3, 12_000),
     (SERVO, "load step deviation", 17.01e-3, 23.41e-3, 12_000),

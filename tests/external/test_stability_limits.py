@@ -7,6 +7,7 @@ from typing import Any
 
 import numpy as np
 import pytest
+
 import windage as wd
 
 # Upper limits of the gain ratio lambda = b/b0 of the plant b/s^n: bandwidth tuning, omega_o = 5 omega_c,

@@ -13,8 +13,9 @@ from typing import Any
 
 import numpy as np
 import pytest
-import windage as wd
 from numpy.typing import NDArray
+
+import windage as wd
 
 Values = NDArray[np.float64]
 Response = Callable[[Values], Values]

@@ -11,6 +11,7 @@ from pathlib import Path
 
 import numpy as np
 import pytest
+
 from windage import _evidence
 from windage._loader import engine
 

@@ -1,4 +1,4 @@
-"""One engine module per instruction set: the right one is chosen, the others are refused, and none leaks into another."""
+"""One engine module per instruction set: the right one is chosen, others are refused, none leaks into another."""
 
 from __future__ import annotations
 
@@ -11,6 +11,7 @@ import sys
 from pathlib import Path
 
 import pytest
+
 import windage as wd
 from windage import _loader
 

@@ -11,6 +11,7 @@ import json
 import sys
 
 import numpy as np
+
 import windage as wd
 
 TRIALS = 72

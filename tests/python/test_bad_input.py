@@ -12,6 +12,7 @@ from typing import Any
 
 import numpy as np
 import pytest
+
 import windage as wd
 from windage._study_file import LARGEST_FILE, from_toml, to_toml
 

@@ -14,8 +14,9 @@ import numpy as np
 import pyarrow.csv
 import pyarrow.parquet
 import pytest
-import windage as wd
 from rich.console import Console
+
+import windage as wd
 from windage import _command_line, _command_output
 from windage._command_line import main
 from windage._demo import DEMO_TRIALS, demo_study

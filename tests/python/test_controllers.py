@@ -7,6 +7,7 @@ from typing import Any
 
 import numpy as np
 import pytest
+
 import windage as wd
 from windage._loader import engine
 

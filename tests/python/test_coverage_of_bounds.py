@@ -10,6 +10,7 @@ import numpy as np
 import numpy.typing as npt
 import pytest
 from scipy import stats
+
 from windage._evidence import (
     Method,
     Side,

@@ -14,6 +14,7 @@ from pathlib import Path
 
 import numpy as np
 import pytest
+
 import windage as wd
 from windage._loader import instruction_sets, missing_features
 

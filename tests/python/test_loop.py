@@ -8,6 +8,7 @@ from typing import Any
 
 import numpy as np
 import pytest
+
 import windage as wd
 
 TUNING: dict[str, Any] = {"controller_bandwidth": 5.0, "observer_bandwidth": 30.0, "b0": 2.0}

@@ -6,6 +6,7 @@ from typing import Any
 
 import numpy as np
 import pytest
+
 import windage as wd
 from windage._describe import Numbers
 

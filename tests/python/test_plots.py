@@ -11,7 +11,6 @@ from typing import Any
 import matplotlib as mpl
 import numpy as np
 import pytest
-import windage as wd
 from hypothesis import given
 from hypothesis import strategies as st
 from hypothesis.extra import numpy as arrays
@@ -19,6 +18,8 @@ from matplotlib.axes import Axes
 from matplotlib.collections import PathCollection
 from matplotlib.figure import Figure
 from scipy import stats
+
+import windage as wd
 from windage import _plots
 from windage._plot_outcome import MOST_DOTS, MOST_MARKS
 from windage._plot_style import MOST_POINTS, StudyFigure, thinned, wrapped

@@ -7,8 +7,9 @@ from typing import Any
 
 import numpy as np
 import pytest
-import windage as wd
 from numpy.typing import NDArray
+
+import windage as wd
 
 TRIALS = 300
 Result = tuple[NDArray[np.float64], NDArray[np.float64], NDArray[np.uint8]]

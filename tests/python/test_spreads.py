@@ -8,6 +8,7 @@ from typing import Any
 
 import numpy as np
 import pytest
+
 import windage as wd
 from windage._describe import fnv1a
 from windage._loader import engine

@@ -9,9 +9,10 @@ from pathlib import Path
 from typing import Any
 
 import pytest
-import windage as wd
 from hypothesis import given, settings
 from hypothesis import strategies as st
+
+import windage as wd
 from windage._study_file import LARGEST_FILE, from_toml, to_toml
 from windage._study_text import CONTROLLERS, DISTURBANCES, MEASURES, PLANTS, SPREADS
 from windage._toml_text import toml_text

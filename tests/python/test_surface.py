@@ -9,6 +9,7 @@ from typing import Any
 import numpy as np
 import pyarrow as pa
 import pytest
+
 import windage as wd
 from windage._demo import DEMO_TRIALS, demo_study
 from windage._plot_style import StudyFigure

@@ -7,6 +7,7 @@ from typing import Any
 
 import numpy as np
 import pytest
+
 import windage as wd
 
 PERIOD = 0.01

@@ -15,6 +15,7 @@ import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
 from scipy import stats
+
 from windage import _statistics
 from windage._cautions import percent, percent_above, percent_below, standing_cautions
 from windage._errors import DescriptionError
