@@ -313,10 +313,7 @@ def _placed(error: DescriptionError, place: str, maker: str) -> StudyFileError:
     head, _, rest = error.field.partition(".")
     is_own = head in (place.split(".")[-1], maker, maker.lower())
     path = _at(place, rest if is_own else error.field)
-    placed = StudyFileError.__new__(StudyFileError)
-    placed.field, placed.found, placed.expected = path, error.found, error.expected
-    placed.args = (str(error).replace(error.field, path, 1),)
-    return placed
+    return StudyFileError(path, error.found, error.expected, error.mend)
 
 
 def _at(place: str, key: str) -> str:
