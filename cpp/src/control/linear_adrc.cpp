@@ -67,19 +67,20 @@ void linear_adrc::place_gains(std::size_t i, wide sample_period) {
     }
 }
 
-void linear_adrc::sample(std::int64_t k, const signal* reference, constant_signal measured, constant_signal applied) {
-    const constant_signal fed = d_.observer_input == observer_input_kind::limited ? applied : output_;
-    switch (d_.order) {
-    case 1: return sample_order<1>(k, reference, measured, fed);
-    case 2: return sample_order<2>(k, reference, measured, fed);
-    case 3: return sample_order<3>(k, reference, measured, fed);
-    case 4: return sample_order<4>(k, reference, measured, fed);
-    case 5: return sample_order<5>(k, reference, measured, fed);
-    case 6: return sample_order<6>(k, reference, measured, fed);
-    case 7: return sample_order<7>(k, reference, measured, fed);
-    case 8: return sample_order<8>(k, reference, measured, fed);
+// Output form: u = (k_1 (r - x_1) + ... + k_n (r^(n-1) - x_n) + r^(n) - x_{n+1}) / b0.
+// Error form:  u = (k_1 x_1 + ... + k_n x_n + x_{n+1}) / b0.
+template <int Order> WINDAGE_INLINE wide linear_adrc::command(const wide* x, const signal* reference, std::size_t i) const {
+    const bool error_form = d_.form == adrc_form::error;
+    const bool fed = d_.reference_derivatives;
+    wide sum = 0.0;
+    for (int s = 0; s < Order; ++s) {
+        wide deviation = error_form ? x[s] : -x[s];
+        if (!error_form && (s == 0 || fed)) deviation += wide::load(reference[s] + i);
+        sum += wide::load(controller_gains_ + s * size_ + i) * deviation;
     }
-    static_assert(max_order == 8);
+    if (!error_form && fed) sum += wide::load(reference[Order] + i);
+    if (d_.cancel_disturbance) sum = error_form ? sum + x[Order] : sum - x[Order];
+    return sum * wide::load(inverse_b0_ + i);
 }
 
 template <int Order>
@@ -111,20 +112,19 @@ void linear_adrc::sample_order(std::int64_t k, const signal* reference, constant
     });
 }
 
-// Output form: u = (k_1 (r - x_1) + ... + k_n (r^(n-1) - x_n) + r^(n) - x_{n+1}) / b0.
-// Error form:  u = (k_1 x_1 + ... + k_n x_n + x_{n+1}) / b0.
-template <int Order> wide linear_adrc::command(const wide* x, const signal* reference, std::size_t i) const {
-    const bool error_form = d_.form == adrc_form::error;
-    const bool fed = d_.reference_derivatives;
-    wide sum = 0.0;
-    for (int s = 0; s < Order; ++s) {
-        wide deviation = error_form ? x[s] : -x[s];
-        if (!error_form && (s == 0 || fed)) deviation += wide::load(reference[s] + i);
-        sum += wide::load(controller_gains_ + s * size_ + i) * deviation;
+void linear_adrc::sample(std::int64_t k, const signal* reference, constant_signal measured, constant_signal applied) {
+    const constant_signal fed = d_.observer_input == observer_input_kind::limited ? applied : output_;
+    switch (d_.order) {
+    case 1: return sample_order<1>(k, reference, measured, fed);
+    case 2: return sample_order<2>(k, reference, measured, fed);
+    case 3: return sample_order<3>(k, reference, measured, fed);
+    case 4: return sample_order<4>(k, reference, measured, fed);
+    case 5: return sample_order<5>(k, reference, measured, fed);
+    case 6: return sample_order<6>(k, reference, measured, fed);
+    case 7: return sample_order<7>(k, reference, measured, fed);
+    case 8: return sample_order<8>(k, reference, measured, fed);
     }
-    if (!error_form && fed) sum += wide::load(reference[Order] + i);
-    if (d_.cancel_disturbance) sum = error_form ? sum + x[Order] : sum - x[Order];
-    return sum * wide::load(inverse_b0_ + i);
+    static_assert(max_order == 8);
 }
 
 } // namespace windage

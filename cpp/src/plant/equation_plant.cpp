@@ -16,6 +16,15 @@ void check_inputs(const program& p, const plant_description& d) {
     }
 }
 
+// Inputs that keep their value during an integration step: the command where no lag follows it, and held disturbances.
+std::vector<bool> held_inputs(const program& p, bool has_lag, const plant_disturbances& w) {
+    std::vector<bool> held;
+    for (const program_input& input : p.inputs)
+        held.push_back((input.kind == source_kind::plant_input && !has_lag) ||
+                       (input.kind == source_kind::disturbance && w.are_held()));
+    return held;
+}
+
 const plant_description& checked(const plant_description& d, const plant_disturbances& w) {
     check_inputs(d.derivatives, d);
     check_inputs(d.output, d);
@@ -32,7 +41,7 @@ equation_plant::equation_plant(const plant_description& d, const integration_set
                                const plant_disturbances& w, signal_arena& arena)
     : ode_plant(checked(d, w), settings, w, d.derivatives.reads(source_kind::time), arena),
       derivative_inputs_(d.derivatives.inputs), output_inputs_(d.output.inputs),
-      derivatives_(d.derivatives, arena, tape::outputs::scaled), output_tape_(d.output, arena, tape::outputs::as_written),
+      derivatives_(d.derivatives, arena, tape::outputs::scaled, held_inputs(d.derivatives, has_lag_, w)), output_tape_(d.output, arena, tape::outputs::as_written),
       disturbances_(w), output_(arena.take()) {
     output_tape_.bind_output(0, output_);
 }
@@ -53,10 +62,15 @@ void equation_plant::bind(tape& t, const std::vector<program_input>& inputs, con
     }
 }
 
+void equation_plant::begin_step(const block_state& x, const stage& s) {
+    bind(derivatives_, derivative_inputs_, x, s.time, s.command, s.disturbances.data());
+    derivatives_.bind_scale(s.step);
+    derivatives_.begin_step();
+}
+
 void equation_plant::derivative(const block_state& x, block_state& dx, const stage& s) {
     bind(derivatives_, derivative_inputs_, x, s.time, s.command, s.disturbances.data());
     for (int i = 0; i < states_; ++i) derivatives_.bind_output(i, dx[i]);
-    derivatives_.bind_scale(s.step);
     derivatives_.run();
 }
 

@@ -101,6 +101,7 @@ void ode_plant::full_derivative(const block_state& x, block_state& dx, const sta
 }
 
 void ode_plant::take_step(const std::vector<stage>& stages) {
+    begin_step(x_, stages.front());
     std::size_t next = 0;  // odeint asks for the stages in their order
     auto system = [&](const block_state& x, block_state& dx, double) { full_derivative(x, dx, stages[next++]); };
     if (integrator_ == integrator_kind::euler) euler_.do_step(system, x_, 0.0, 1.0);
@@ -127,9 +128,9 @@ void ode_plant::integrate_reference(constant_signal start, constant_signal lengt
     stage here;
     here.step = length;
     here.command = command;
-    here.disturbances.resize(w_.count());
+    for (int k = 0; k < w_.count(); ++k) here.disturbances.push_back(w_.now(k));
+    begin_step(x_, here);
     auto system = [&](const block_state& x, block_state& dx, double tau) {
-        for (int k = 0; k < w_.count(); ++k) here.disturbances[k] = w_.now(k);
         if (evaluates_stages_) {
             for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP {
                 (wide::load(start + i) + tau * wide::load(length + i)).store(stage_time_[0] + i);

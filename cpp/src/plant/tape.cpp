@@ -6,9 +6,10 @@
 
 namespace windage {
 
-tape::tape(const program& source, signal_arena& arena, outputs mode) : size_(arena.block_size()) {
+tape::tape(const program& source, signal_arena& arena, outputs mode, const std::vector<bool>& held)
+    : size_(arena.block_size()) {
     check(source);
-    tape_builder(source, arena, *this).build(mode == outputs::scaled);
+    tape_builder(source, held, arena, *this).build(mode == outputs::scaled);
 }
 
 void tape::begin(const trial_block& block) {

@@ -1,16 +1,22 @@
 #include "tape_builder.hpp"
 
+#include <algorithm>
+#include <map>
+
 namespace windage {
 
 void tape_builder::build(bool scaled) {
-    mark_invariants();
+    find_levels();
     replace_divisions();
+    if (scaled) scale_outputs();
     count_uses();
     join_products();
     place_leaves();
-    emit_prologue();
-    emit_body();
-    emit_outputs(scaled);
+    find_last_uses();
+    emit(block_level, tape_.prologue_);
+    emit(step_level, tape_.once_a_step_);
+    emit(stage_level, tape_.body_);
+    emit_outputs();
 }
 
 template <class F> void tape_builder::for_operands(const instruction& in, F&& f) const {
@@ -18,32 +24,58 @@ template <class F> void tape_builder::for_operands(const instruction& in, F&& f)
     for (int k = 0; k < operand_count(in.op); ++k) f(operands[k]);
 }
 
-void tape_builder::mark_invariants() {
-    invariant_.assign(code_.size(), false);
-    for (std::size_t i = 0; i < code_.size(); ++i) {
-        const instruction& in = code_[i];
-        bool fixed = true;
-        if (in.op == operation::load) fixed = inputs_[in.a].kind == source_kind::value;
-        for_operands(in, [&](int v) { fixed = fixed && invariant_[v]; });
-        invariant_[i] = fixed;
+tape_builder::level tape_builder::level_of(const instruction& in) const {
+    if (in.op == operation::load) {
+        if (inputs_[in.a].kind == source_kind::value) return block_level;
+        return held_[in.a] ? step_level : stage_level;
     }
+    level highest = block_level;
+    for_operands(in, [&](int v) { highest = std::max(highest, level_[v]); });
+    return highest;
+}
+
+void tape_builder::find_levels() {
+    held_.resize(inputs_.size(), false);
+    for (const instruction& in : code_) level_.push_back(level_of(in));
+}
+
+int tape_builder::append(const instruction& in) {
+    level_.push_back(level_of(in));
+    code_.push_back(in);
+    return int(code_.size()) - 1;
 }
 
 // Dividing costs some sixteen times a multiplication, and the divisor of an equation is mostly a parameter.
 void tape_builder::replace_divisions() {
     std::map<int, int> reciprocal_of;
-    const std::size_t written = code_.size();
-    for (std::size_t i = 0; i < written; ++i) {
-        if (code_[i].op != operation::div || invariant_[i] || !invariant_[code_[i].b]) continue;
-        auto [found, is_new] = reciprocal_of.try_emplace(code_[i].b, int(code_.size()));
-        if (is_new) {
-            code_.push_back({operation::reciprocal, code_[i].b});
-            invariant_.push_back(true);
-        }
+    for (int i = 0; i < written_; ++i) {
+        const int divisor = code_[i].b;
+        if (code_[i].op != operation::div || level_[i] == level_[divisor]) continue;
+        auto found = reciprocal_of.find(divisor);
+        if (found == reciprocal_of.end())
+            found = reciprocal_of.emplace(divisor, append({operation::reciprocal, divisor})).first;
         code_[i].op = operation::mul;
         code_[i].b = found->second;
     }
-    for (std::size_t i = written; i < code_.size(); ++i) appended_.push_back(int(i));
+}
+
+// The step length joins a factor that is known before the stages where there is one: x * c * h is x * (c h).
+void tape_builder::scale_outputs() {
+    program_input step;
+    step.kind = source_kind::time;  // any kind that is bound from outside
+    inputs_.push_back(step);
+    held_.push_back(true);
+    const int h = append({operation::load, int(inputs_.size()) - 1});
+    for (int& v : outputs_) {
+        const instruction in = code_[v];
+        const bool is_product = in.op == operation::mul && level_[v] == stage_level;
+        if (is_product && level_[in.b] < stage_level)
+            v = append({operation::mul, in.a, append({operation::mul, in.b, h})});
+        else if (is_product && level_[in.a] < stage_level)
+            v = append({operation::mul, in.b, append({operation::mul, in.a, h})});
+        else
+            v = append({operation::mul, v, h});
+    }
 }
 
 // Counts uses from the outputs backwards, so that what nothing needs has no uses and is left out.
@@ -58,20 +90,19 @@ void tape_builder::count_uses() {
 }
 
 bool tape_builder::is_product_used_once(int v) const {
-    return code_[v].op == operation::mul && uses_[v] == 1 && !invariant_[v];
+    return code_[v].op == operation::mul && uses_[v] == 1 && level_[v] == stage_level;
 }
 
 // a*b + c in one step saves a store and a load; the product is still rounded before the sum.
 void tape_builder::join_products() {
     for (std::size_t i = 0; i < code_.size(); ++i) {
         instruction& in = code_[i];
-        if (uses_[i] == 0 || invariant_[i]) continue;
+        if (uses_[i] == 0 || level_[i] != stage_level) continue;
         const bool is_sum = in.op == operation::add, is_difference = in.op == operation::sub;
-        if (!is_sum && !is_difference) continue;
+        if ((!is_sum && !is_difference) || in.a == in.b) continue;
         const bool left = is_product_used_once(in.a);
         if (!left && !is_product_used_once(in.b)) continue;
         const int product = left ? in.a : in.b, other = left ? in.b : in.a;
-        if (product == other) continue;
         uses_[product] = 0;
         const operation joined = is_sum ? operation::mul_add : left ? operation::mul_sub : operation::sub_mul;
         in = {joined, code_[product].a, code_[product].b, other};
@@ -81,6 +112,10 @@ void tape_builder::join_products() {
 int tape_builder::new_slot(signal memory) {
     tape_.slots_.push_back(memory);
     return int(tape_.slots_.size()) - 1;
+}
+
+bool tape_builder::is_leaf(int v) const {
+    return code_[v].op == operation::load || code_[v].op == operation::constant;
 }
 
 void tape_builder::place_leaves() {
@@ -101,61 +136,52 @@ void tape_builder::place_leaves() {
     }
 }
 
-tape::step tape_builder::make_step(const instruction& in, int to) const {
-    const int n = operand_count(in.op);
-    return {tape::kernel_of(in.op), to, n > 0 ? slot_[in.a] : -1, n > 1 ? slot_[in.b] : -1, n > 2 ? slot_[in.c] : -1};
+// Only values of the stages share memory: the others are read by every stage.
+void tape_builder::find_last_uses() {
+    last_use_.assign(code_.size(), -1);
+    for (int i = 0; i < int(code_.size()); ++i)
+        if (uses_[i] > 0 && level_[i] == stage_level)
+            for_operands(code_[i], [&](int v) { last_use_[v] = i; });
+    for (int v : outputs_) last_use_[v] = int(code_.size());
 }
 
-void tape_builder::emit_prologue() {
-    auto emit = [&](int i) {
-        if (uses_[i] == 0 || !invariant_[i] || slot_[i] >= 0) return;
-        slot_[i] = new_slot(arena_.take());
-        tape_.prologue_.push_back(make_step(code_[i], slot_[i]));
-    };
-    const int written = int(code_.size() - appended_.size());
-    for (int i = 0; i < written; ++i) emit(i);
-    for (int i : appended_) emit(i);
+void tape_builder::release_after_last_use(int v, int position) {
+    if (level_[v] != stage_level || is_leaf(v) || last_use_[v] != position) return;
+    free_.push_back(slot_[v]);
+    last_use_[v] = -1;  // a value read twice by one instruction is released once
 }
 
-int tape_builder::take_temporary() {
-    if (free_.empty()) return new_slot(arena_.take());
+// An output that nothing else reads goes straight to its signal.
+int tape_builder::slot_for(int v) {
+    if (level_[v] == stage_level && uses_[v] == 1 && last_use_[v] == int(code_.size())) return new_slot(nullptr);
+    if (level_[v] != stage_level || free_.empty()) return new_slot(arena_.take());
     const int s = free_.back();
     free_.pop_back();
     return s;
 }
 
-void tape_builder::release_after_last_use(int v, int position) {
-    const bool is_temporary = !invariant_[v] && code_[v].op != operation::load;
-    if (is_temporary && last_use_[v] == position) {
-        free_.push_back(slot_[v]);
-        last_use_[v] = -1;  // a value read twice by one instruction is released once
-    }
+tape::step tape_builder::make_step(const instruction& in, int to) const {
+    const int n = operand_count(in.op);
+    return {tape::kernel_of(in.op), to, n > 0 ? slot_[in.a] : -1, n > 1 ? slot_[in.b] : -1, n > 2 ? slot_[in.c] : -1};
 }
 
-void tape_builder::emit_body() {
-    const int written = int(code_.size() - appended_.size());
-    last_use_.assign(code_.size(), -1);
-    for (int i = 0; i < written; ++i)
-        if (uses_[i] > 0 && !invariant_[i]) for_operands(code_[i], [&](int v) { last_use_[v] = i; });
-    for (int v : outputs_) last_use_[v] = written;
-    for (int i = 0; i < written; ++i) {
-        if (uses_[i] == 0 || invariant_[i] || slot_[i] >= 0) continue;
+// Values are in an order in which operands come first, but for the reciprocals, which the block's own values do not
+// read: those follow the written ones of their level.
+void tape_builder::emit(level which, std::vector<tape::step>& steps) {
+    for (int i = 0; i < int(code_.size()); ++i) {
+        if (uses_[i] == 0 || level_[i] != which || is_leaf(i)) continue;
         // Operands are released first: a step reads a pack before it writes it, so it may write over its operand.
         for_operands(code_[i], [&](int v) { release_after_last_use(v, i); });
-        slot_[i] = take_temporary();
-        tape_.body_.push_back(make_step(code_[i], slot_[i]));
+        slot_[i] = slot_for(i);
+        steps.push_back(make_step(code_[i], slot_[i]));
     }
 }
 
-void tape_builder::emit_outputs(bool scaled) {
-    if (scaled) tape_.scale_slot_ = new_slot(nullptr);
+void tape_builder::emit_outputs() {
     for (int v : outputs_) {
-        const int s = new_slot(nullptr);
-        tape_.output_slot_.push_back(s);
-        if (scaled)
-            tape_.body_.push_back({tape::kernel_of(operation::mul), s, slot_[v], tape_.scale_slot_, -1});
-        else
-            tape_.body_.push_back({tape::kernel_of(operation::load), s, slot_[v], -1, -1});
+        const bool is_direct = tape_.slots_[slot_[v]] == nullptr && !is_leaf(v);
+        tape_.output_slot_.push_back(is_direct ? slot_[v] : new_slot(nullptr));
+        if (!is_direct) tape_.body_.push_back({tape::kernel_of(operation::load), tape_.output_slot_.back(), slot_[v], -1, -1});
     }
 }
 

@@ -15,6 +15,7 @@ public:
     constant_signal output() const override { return output_; }
 
 private:
+    void begin_step(const block_state& x, const stage& s) override;
     void derivative(const block_state& x, block_state& dx, const stage& s) override;
     void begin_plant(const trial_block& block) override;
     void bind(tape& t, const std::vector<program_input>& inputs, const block_state& x, constant_signal time,

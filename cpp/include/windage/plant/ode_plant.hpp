@@ -46,6 +46,8 @@ protected:
         std::vector<constant_signal> disturbances;
     };
 
+    /// A step is about to be taken: its length, command and held disturbances are those of `s`.
+    virtual void begin_step(const block_state&, const stage&) {}
     /// dx = h f(t, x, u, w) of the plant's own states.
     virtual void derivative(const block_state& x, block_state& dx, const stage& s) = 0;
     /// One step of every lane; `stages` as many as the integrator has.
