@@ -5,8 +5,7 @@ from __future__ import annotations
 from collections.abc import Sequence
 
 EXIT_CODES = (
-    "Exit codes: 0 pass, 1 fail, 2 inconclusive, 3 wrong description or usage, 4 interrupted, "
-    "5 a defect in windage."
+    "Exit codes: 0 pass, 1 fail, 2 inconclusive, 3 wrong description or usage, 4 interrupted, 5 a defect in windage."
 )
 REPLAY_CODES = "Exit codes: 0 replayed, 3 wrong description or usage, 4 interrupted, 5 a defect in windage."
 CONFIG_CODES = "Exit codes: 0 shown, 3 an environment variable is wrong."

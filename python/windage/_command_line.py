@@ -18,7 +18,6 @@ from ._errors import DescriptionError, WindageError
 from ._loader import show_config
 from ._outcome import Outcome
 from ._plots import HOW_TO_INSTALL, has_matplotlib
-from ._progress import ProgressBar
 from ._study import Study
 from ._study_file import load, save
 from ._verdict import Verdict, judge
@@ -40,12 +39,8 @@ app = typer.Typer(
 
 StudyFile = Annotated[Path, typer.Argument(metavar="STUDY.toml", help="The study file.", show_default=False)]
 Trials = Annotated[int, typer.Option("--trials", metavar="N", help="How many trials to run.")]
-Threads = Annotated[
-    int, typer.Option("--threads", metavar="N", help="0: every core. Digits do not depend on it.")
-]
-Plot = Annotated[
-    Path | None, typer.Option("--plot", metavar="FILE", help="Draw a picture: .png, .pdf or .svg.")
-]
+Threads = Annotated[int, typer.Option("--threads", metavar="N", help="0: every core. Digits do not depend on it.")]
+Plot = Annotated[Path | None, typer.Option("--plot", metavar="FILE", help="Draw a picture: .png, .pdf or .svg.")]
 
 
 @app.callback(invoke_without_command=True, help=teach.WINDAGE)
@@ -71,13 +66,11 @@ def demo(
     """Run the demonstration study, write it and its picture."""
     study, file, picture = demo_study(), folder / DEMO_FILE, folder / DEMO_PICTURE
     _check_demo_folder(study, folder, file)
-    output.say(
-        "Demonstration: the azimuth drive of a dish antenna in gusting wind. All numbers are invented."
-    )
+    output.say("Demonstration: the azimuth drive of a dish antenna in gusting wind. All numbers are invented.")
     output.say(repr(study))
     output.print_advice(study)
     save(study, file)
-    outcome = _run(study, trials, threads)
+    outcome = study.run(trials, threads)
     if not outcome.trials:
         return INTERRUPTED
     _, code = _report(outcome, DEMO_AT_LEAST, DEMO_CONFIDENCE)
@@ -118,7 +111,7 @@ def run(
     judge(0, 0, 0, at_least, confidence)
     study = load(study_file)
     output.print_advice(study)
-    outcome = _run(study, trials, threads)
+    outcome = study.run(trials, threads)
     if not outcome.trials:
         return INTERRUPTED
     verdict, code = _report(outcome, at_least, confidence)
@@ -216,16 +209,6 @@ def main(arguments: Sequence[str] | None = None) -> int:
     return code if isinstance(code, int) else 0
 
 
-def _run(study: Study, trials: int, threads: int) -> Outcome:
-    """Run the trials, with a bar where the standard error stream is a terminal."""
-    if not sys.stderr.isatty():
-        return study.run(trials, threads, progress=False)
-    bar = ProgressBar()
-    outcome = study.run(trials, threads, progress=bar)
-    bar.close(outcome.trials, outcome.requested)
-    return outcome
-
-
 def _report(outcome: Outcome, at_least: float, confidence: float) -> tuple[Verdict, int]:
     """Print verdict and hints; return the verdict and the exit code."""
     verdict = outcome.verdict(at_least, confidence)
@@ -256,9 +239,7 @@ def _print_next_steps(outcome: Outcome, file: Path) -> None:
         trial = outcome.failures[0]
         picture = file.with_name(f"trial-{trial}.png")
         names = [shlex.quote(str(name)) for name in (file, picture)]
-        steps.insert(
-            0, (f"windage replay {names[0]} --trial {trial} --plot {names[1]}", "see a failing trial")
-        )
+        steps.insert(0, (f"windage replay {names[0]} --trial {trial} --plot {names[1]}", "see a failing trial"))
     width = max(len(command) for command, _ in steps)
     output.say("\nNext:")
     for command, reason in steps:

@@ -85,9 +85,9 @@ def print_failure(error: BaseException) -> None:
 def error_block(error: BaseException) -> tuple[str, list[tuple[str, str]]]:
     """Return the title of an error and its labelled lines."""
     if isinstance(error, DescriptionError):
-        found = shorten(error.found)
-        rows = [("found", found), ("expected", error.expected)]
-        return error.field, rows + ([("mend", error.mend)] if error.mend else [])
+        rows = [("found", shorten(error.found)), ("expected", error.expected)]
+        rows += [("mend", error.mend)] if error.mend else []
+        return error.field, rows
     if isinstance(error, WindageError):
         return str(error), []
     if isinstance(error, OSError):

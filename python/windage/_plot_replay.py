@@ -70,14 +70,12 @@ def draw_replay(replay: Replay, after: float, before: float | None) -> StudyFigu
             _draw_limits(axes, replay, line, shown)
         if "command" in title:
             _draw_actuator_limits(axes, replay)
-        axes.legend(
-            fontsize=8, loc="lower left", bbox_to_anchor=(0.0, 1.0), ncols=4, frameon=False, borderpad=0
-        )
+        axes.legend(fontsize=8, loc="lower left", bbox_to_anchor=(0.0, 1.0), ncols=4, frameon=False, borderpad=0)
         axes.margins(x=0.01)
     figure.align_ylabels()
     _write_facts(figure.add_subplot(grid[:, 1]), replay)
     name = "Nominal unit" if replay.trial is None else f"Trial {replay.trial:,}"
-    title_lines(figure, f"{name} {_fate(replay)}", _origin(replay))
+    title_lines(figure, f"{name} {_fate(replay)}", f"study {replay.digest[:12]}, seed {replay.seed}")
     return figure
 
 
@@ -107,9 +105,7 @@ def _panels(replay: Replay) -> Iterator[tuple[str, list[_Line]]]:
         "command, input",
         [
             _Line("command", replay["command"], SKY, ("command",), width=2.2),
-            _Line(
-                f"input{'' if drive == 'input' else f' ({drive})'}", replay["input"], INK, ("input", drive)
-            ),
+            _Line(f"input{'' if drive == 'input' else f' ({drive})'}", replay["input"], INK, ("input", drive)),
         ],
     )
     yield (
@@ -139,11 +135,7 @@ def _draw_limits(axes: Axes, replay: Replay, line: _Line, shown: Flags) -> None:
         if measure.signal not in line.signals or measure.kind not in LIMITED:
             continue
         limit = _limit(replay, requirement)
-        if (
-            isinstance(measure.after, Spread)
-            or isinstance(measure.before, Spread)
-            or not math.isfinite(limit)
-        ):
+        if isinstance(measure.after, Spread) or isinstance(measure.before, Spread) or not math.isfinite(limit):
             continue
         inside = shown & (replay.time >= measure.after) & (replay.time <= measure.before)
         if not inside.any():
@@ -248,7 +240,3 @@ def _fate(replay: Replay) -> str:
     if not replay.requirements:
         return "finished"
     return "passed" if replay.passed else "failed"
-
-
-def _origin(replay: Replay) -> str:
-    return f"study {replay.digest[:12]}, seed {replay.seed}"

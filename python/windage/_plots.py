@@ -13,9 +13,7 @@ if TYPE_CHECKING:
     from ._plot_style import StudyFigure
     from ._replay import Replay
 
-HOW_TO_INSTALL = (
-    "Plots need Matplotlib, which is not installed here. Install it with: pip install 'windage[plots]'"
-)
+HOW_TO_INSTALL = "Plots need Matplotlib, which is not installed here. Install it with: pip install 'windage[plots]'"
 
 
 def has_matplotlib() -> bool:

@@ -17,7 +17,7 @@ import pytest
 from rich.console import Console
 
 import windage as wd
-from windage import _command_line, _command_output
+from windage import _command_line, _command_output, _runner
 from windage._command_line import main
 from windage._demo import DEMO_TRIALS, demo_study
 from windage._progress import ProgressBar
@@ -31,9 +31,7 @@ def servo(limit: float, observer_bandwidth: float = 40.0) -> wd.Study:
     """A quick study whose error grows with the gain that is drawn."""
     loop = wd.Loop(
         plant=wd.FirstOrder(gain=wd.uniform(0.7, 1.3), time_constant=1.0),
-        controller=wd.OutputADRC(
-            order=1, controller_bandwidth=4.0, observer_bandwidth=observer_bandwidth, b0=1.0
-        ),
+        controller=wd.OutputADRC(order=1, controller_bandwidth=4.0, observer_bandwidth=observer_bandwidth, b0=1.0),
         sample_period=0.01,
         duration=1.0,
         reference=wd.Step(1.0),
@@ -165,9 +163,7 @@ def test_advice_and_the_next_command_are_printed(
 
 
 def test_replay_writes_the_signals_to_the_last_digit(study: wd.Study, study_file: str) -> None:
-    assert (
-        main(["replay", study_file, "--trial", "7", "--csv", "seven.csv", "--parquet", "seven.parquet"]) == 0
-    )
+    assert main(["replay", study_file, "--trial", "7", "--csv", "seven.csv", "--parquet", "seven.parquet"]) == 0
     expected = study.replay(7)
     for table in (pyarrow.csv.read_csv("seven.csv"), pyarrow.parquet.read_table("seven.parquet")):
         assert table.column_names[: len(expected)] == list(expected.signals)
@@ -257,9 +253,7 @@ def test_demo_study_tells_its_story() -> None:
 
 def test_cancelling_the_disturbance_is_worth_a_factor_of_ten() -> None:
     # Common practice: without the cancellation the tracking error grows about tenfold.
-    study = demo_study().with_(
-        requirements=(), measures=[wd.rms("error", after=5.0), wd.peak("error", after=5.0)]
-    )
+    study = demo_study().with_(requirements=(), measures=[wd.rms("error", after=5.0), wd.peak("error", after=5.0)])
     without = study.with_controller(study.loop.controller.with_(cancel_disturbance=False))
     for name, values in study.run(300, progress=False).measures.items():
         ratio = np.median(without.run(300, progress=False).measures[name] / values)
@@ -365,7 +359,7 @@ def test_interrupted_run_is_judged_as_interim(
                 raise KeyboardInterrupt
             return True
 
-    monkeypatch.setattr(_command_line, "ProgressBar", Interrupted)
+    monkeypatch.setattr(_runner, "ProgressBar", Interrupted)
     monkeypatch.setattr(sys.stderr, "isatty", lambda: True)
     trials = 3_000_000
     code = main(["run", study_file, "--trials", str(trials), "--at-least", "0.8", "--json", "interim.json"])
@@ -387,9 +381,7 @@ def test_ctrl_c_ends_the_process_with_what_is_done(tmp_path: Path) -> None:
     wd.save(servo(0.1, observer_bandwidth=150.0), tmp_path / "servo.toml")
     command = [sys.executable, "-u", "-c", "from windage._command_line import main; raise SystemExit(main())"]
     arguments = ["run", str(tmp_path / "servo.toml"), "--trials", "100000000"]
-    with subprocess.Popen(
-        [*command, *arguments], stdout=subprocess.PIPE, stderr=subprocess.PIPE, text=True
-    ) as process:
+    with subprocess.Popen([*command, *arguments], stdout=subprocess.PIPE, stderr=subprocess.PIPE, text=True) as process:
         assert process.stdout is not None
         assert process.stdout.readline().startswith("Advice:")
         with pytest.raises(subprocess.TimeoutExpired):
@@ -450,9 +442,7 @@ def test_progress_bar_is_what_a_run_takes(study: wd.Study) -> None:
 
 
 @pytest.mark.parametrize("command", COMMANDS)
-def test_help_teaches(
-    command: str, capsys: pytest.CaptureFixture[str], monkeypatch: pytest.MonkeyPatch
-) -> None:
+def test_help_teaches(command: str, capsys: pytest.CaptureFixture[str], monkeypatch: pytest.MonkeyPatch) -> None:
     monkeypatch.setenv("COLUMNS", "100")
     assert main([command, "--help"]) == 0
     printed = capsys.readouterr().out

@@ -279,7 +279,9 @@ def test_limits_are_drawn_where_they_hold_and_the_worst_sample_is_marked(outcome
     trial = int(outcome.failed(0)[0])
     replay = outcome.study.replay(trial)
     figure = replay.plot()
-    assert f"Trial {trial:,} failed" in figure.get_suptitle()
+    title = figure.get_suptitle()
+    for word in (f"Trial {trial:,} failed", outcome.study.digest[:12], f"seed {outcome.study.seed}"):
+        assert word in title
     axes = figure.get_axes()[1]
     limits = [line for line in axes.lines if "limit" in str(line.get_label())]
     assert sorted(float(line.get_ydata()[0]) for line in limits) == [-0.2, 0.2]
@@ -377,9 +379,7 @@ def test_pyplot_is_never_imported() -> None:
     assert done.stdout == "False\n"
 
 
-def test_without_matplotlib_the_error_says_how_to_get_it(
-    outcome: wd.Outcome, monkeypatch: pytest.MonkeyPatch
-) -> None:
+def test_without_matplotlib_the_error_says_how_to_get_it(outcome: wd.Outcome, monkeypatch: pytest.MonkeyPatch) -> None:
     monkeypatch.setattr(_plots, "has_matplotlib", lambda: False)
     for plotted in (outcome, outcome.study.nominal()):
         with pytest.raises(wd.WindageError, match=r"pip install 'windage\[plots\]'"):
