@@ -61,19 +61,24 @@ def onetbb_prefix() -> list[str]:
 
 
 @pytest.fixture(scope="module")
-def consumer(tmp_path_factory: pytest.TempPathFactory) -> Path:
+def built(tmp_path_factory: pytest.TempPathFactory) -> Path:
     work = tmp_path_factory.mktemp("library")
     cmake, common = tool("cmake"), ["-G", "Ninja", f"-DCMAKE_MAKE_PROGRAM={tool('ninja')}", *onetbb_prefix()]
-    run(cmake, "-S", ROOT, "-B", work / "build", *common, f"-DPython_EXECUTABLE={sys.executable}")
+    run(cmake, "-S", ROOT, "-B", work / "build", *common, f"-DPython_EXECUTABLE={sys.executable}", "-DWINDAGE_TESTS=ON")
     run(cmake, "--build", work / "build")
     run(cmake, "--install", work / "build", "--prefix", work / "installed")
     run(cmake, "-S", CONSUMER, "-B", work / "consumer", *common, f"-DCMAKE_PREFIX_PATH={work / 'installed'}")
     run(cmake, "--build", work / "consumer")
-    return work / "consumer" / "consumer"
+    return work
 
 
-def test_installed_library_gives_the_digits_of_the_python_package(consumer: Path) -> None:
-    printed = [float(line) for line in run(consumer).split()]
+def test_elementary_functions_have_the_same_bits_in_one_lane_and_in_a_pack(built: Path) -> None:
+    program = next((built / "build").rglob("lanes_check"))
+    assert run(program, "hash", "1") == run(program, "hash", "wide")
+
+
+def test_installed_library_gives_the_digits_of_the_python_package(built: Path) -> None:
+    printed = [float(line) for line in run(built / "consumer" / "consumer").split()]
     _, measures, _, completed = engine().Campaign(STUDY).run(0, 40)
     assert completed == 40
     np.testing.assert_array_equal(printed[:40], measures[0])

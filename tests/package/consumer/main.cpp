@@ -32,5 +32,5 @@ int main() {
         std::printf("%.17g\n", peak);
         failures += peak > 0.03;
     }
-    std::printf("%.17g\n", windage::clopper_pearson_lower(failures, trials, 0.95));
+    std::printf("%.17g\n", windage::evidence::clopper_pearson_lower(failures, trials, 0.95));
 }
