@@ -47,7 +47,7 @@ py::tuple run(const campaign& c, std::uint64_t first, std::uint64_t count, int t
     };
     std::uint64_t completed = 0;
     {
-        const py::gil_scoped_release unlock;  // workers touch no Python object
+        const py::gil_scoped_release unlock; // workers touch no Python object
         completed = c.run(first, count, to, options);
     }
     if (!failure.is_none()) {
@@ -103,27 +103,37 @@ void bind_campaign(py::module_& m) {
         .def(py::init([](const py::dict& study) { return campaign(read_study(study)); }), py::arg("study"))
         .def("signal_names", &campaign::signals, "Names of the signals in the order of a replay.")
         .def_property_readonly("trials_available", &campaign::trials_available)
-        .def("run", run, py::arg("first"), py::arg("count"), py::arg("threads") = 0, py::arg("block_size") = 0,
-             py::arg("progress") = py::none(),
-             "Run trials; returns parameters (n, count), measures (n, count), status (count,) and the trials completed.")
+        .def(
+            "run", run, py::arg("first"), py::arg("count"), py::arg("threads") = 0, py::arg("block_size") = 0,
+            py::arg("progress") = py::none(),
+            "Run trials; returns parameters (n, count), measures (n, count), status (count,) and the trials completed.")
         .def("replay", replay, py::arg("trial"), "Every signal of one trial at every sample: (signals, samples).");
     m.def("evaluate_measure", measure_recording, py::arg("measure"), py::arg("time"), py::arg("values"),
           py::arg("target"), py::arg("sample_period"), "One measure over a recorded signal.");
     m.def("spread_quantiles", quantiles, py::arg("spread"), py::arg("probabilities"));
-    m.def("controller_gains", [](int order, double bandwidth) {
-        check_order(order);
-        return gains(order, [&](wide* to) { controller_gains(order, bandwidth, to); });
-    }, py::arg("order"), py::arg("controller_bandwidth"));
-    m.def("continuous_observer_gains", [](int order, double bandwidth) {
-        check_order(order);
-        return gains(order + 1, [&](wide* to) { continuous_observer_gains(order, bandwidth, to); });
-    }, py::arg("order"), py::arg("observer_bandwidth"));
-    m.def("observer_gains", [](int order, double bandwidth, double sample_period, const std::string& discretisation) {
-        check_order(order);
-        const auto kind = read_discretisation(discretisation);
-        return gains(order + 1, [&](wide* to) { observer_gains(order, kind, bandwidth, sample_period, to); });
-    }, py::arg("order"), py::arg("observer_bandwidth"), py::arg("sample_period"),
-       py::arg("discretisation") = "zero_order_hold");
+    m.def(
+        "controller_gains",
+        [](int order, double bandwidth) {
+            check_order(order);
+            return gains(order, [&](wide* to) { controller_gains(order, bandwidth, to); });
+        },
+        py::arg("order"), py::arg("controller_bandwidth"));
+    m.def(
+        "continuous_observer_gains",
+        [](int order, double bandwidth) {
+            check_order(order);
+            return gains(order + 1, [&](wide* to) { continuous_observer_gains(order, bandwidth, to); });
+        },
+        py::arg("order"), py::arg("observer_bandwidth"));
+    m.def(
+        "observer_gains",
+        [](int order, double bandwidth, double sample_period, const std::string& discretisation) {
+            check_order(order);
+            const auto kind = read_discretisation(discretisation);
+            return gains(order + 1, [&](wide* to) { observer_gains(order, kind, bandwidth, sample_period, to); });
+        },
+        py::arg("order"), py::arg("observer_bandwidth"), py::arg("sample_period"),
+        py::arg("discretisation") = "zero_order_hold");
 }
 
 } // namespace windage::bindings

@@ -57,9 +57,12 @@ column lane_normals(std::uint64_t seed, std::uint32_t stream, std::uint32_t draw
 
 void bind_lanes(py::module_& m) {
     m.def("lane_function", lane_function, py::arg("name"), py::arg("x"), py::arg("y") = py::none());
-    m.def("lane_philox", [](std::array<std::uint32_t, 4> counter, std::array<std::uint32_t, 2> key) {
-        return philox4x32_10(counter, key);
-    }, py::arg("counter"), py::arg("key"));
+    m.def(
+        "lane_philox",
+        [](std::array<std::uint32_t, 4> counter, std::array<std::uint32_t, 2> key) {
+            return philox4x32_10(counter, key);
+        },
+        py::arg("counter"), py::arg("key"));
     m.def("lane_uniforms", lane_uniforms, py::arg("seed"), py::arg("stream"), py::arg("draw"), py::arg("first_trial"),
           py::arg("count"));
     m.def("incomplete_beta", incomplete_beta, py::arg("a"), py::arg("b"), py::arg("x"));

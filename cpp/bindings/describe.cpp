@@ -7,8 +7,8 @@
 namespace windage::bindings {
 
 template <> std::vector<std::string> enumerators<plant_kind>() {
-    return {"equations", "integrator_chain", "first_order", "second_order", "transfer_function", "state_space",
-            "dc_drive", "two_mass_drive"};
+    return {"equations",         "integrator_chain", "first_order", "second_order",
+            "transfer_function", "state_space",      "dc_drive",    "two_mass_drive"};
 }
 template <> std::vector<std::string> enumerators<integrator_kind>() {
     return {"euler", "rk4", "cash_karp5", "reference"};
@@ -30,9 +30,25 @@ template <> std::vector<std::string> enumerators<source_kind>() {
     return {"time", "state", "plant_input", "disturbance", "value", "signal"};
 }
 template <> std::vector<std::string> enumerators<measure_kind>() {
-    return {"peak", "minimum", "maximum", "mean", "rms", "standard_deviation", "final_value", "integral_absolute",
-            "integral_square", "integral_time_absolute", "total_variation", "rms_change", "time_outside",
-            "time_at_limits", "overshoot", "undershoot", "rise_time", "settling_time", "settling_time_absolute"};
+    return {"peak",
+            "minimum",
+            "maximum",
+            "mean",
+            "rms",
+            "standard_deviation",
+            "final_value",
+            "integral_absolute",
+            "integral_square",
+            "integral_time_absolute",
+            "total_variation",
+            "rms_change",
+            "time_outside",
+            "time_at_limits",
+            "overshoot",
+            "undershoot",
+            "rise_time",
+            "settling_time",
+            "settling_time_absolute"};
 }
 
 namespace {

@@ -59,9 +59,7 @@ public:
         });
     }
     dict_reader& number_field(const char* name, number& to) { return field(name, to, read_number); }
-    dict_reader& numbers(const char* name, std::vector<number>& to) {
-        return list(name, to, read_number);
-    }
+    dict_reader& numbers(const char* name, std::vector<number>& to) { return list(name, to, read_number); }
 
     template <class E> dict_reader& choice(const char* name, E& to) {
         return field(name, to, [](py::handle value, const std::string& path) {

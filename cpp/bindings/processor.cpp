@@ -44,7 +44,7 @@ std::vector<std::string> missing(const std::string& instruction_set) {
     need(__builtin_cpu_supports("avx512dq") != 0, "avx512dq");
     need(__builtin_cpu_supports("avx512vl") != 0, "avx512vl");
 #else
-    (void)instruction_set;  // the one Arm build needs nothing beyond the architecture
+    (void)instruction_set; // the one Arm build needs nothing beyond the architecture
 #endif
     return lacks;
 }
@@ -73,8 +73,8 @@ PyObject* missing_in_python(PyObject*, PyObject* name) {
 PyMethodDef methods[] = {{"missing", missing_in_python, METH_O,
                           "Features of an instruction set that this processor lacks; empty where it can run it."},
                          {nullptr, nullptr, 0, nullptr}};
-PyModuleDef definition = {PyModuleDef_HEAD_INIT, "_processor", "What this processor can do.", 0, methods,
-                          nullptr, nullptr, nullptr, nullptr};
+PyModuleDef definition = {
+    PyModuleDef_HEAD_INIT, "_processor", "What this processor can do.", 0, methods, nullptr, nullptr, nullptr, nullptr};
 
 } // namespace
 

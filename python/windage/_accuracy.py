@@ -72,9 +72,7 @@ def chosen_steps(
         return loop.steps_per_sample
     if loop.plant.is_linear:
         return 1
-    smooth = loop.with_(
-        sensor=loop.sensor.with_(resolution=0.0), actuator=loop.actuator.with_(resolution=0.0)
-    )
+    smooth = loop.with_(sensor=loop.sensor.with_(resolution=0.0), actuator=loop.actuator.with_(resolution=0.0))
     parts = (smooth, requirements, measures, correlations, seed)
     pilot = _reference(*parts)
     worst = ""
@@ -125,17 +123,13 @@ def _checked_run(described: Described, count: int) -> Columns:
     The budget decides only whether there is an error, never which number of steps is chosen.
     """
     deadline = time.perf_counter() + REFERENCE_SECONDS
-    columns = run_columns(
-        make_campaign(described.study), 0, count, 0, lambda *_: time.perf_counter() < deadline
-    )
+    columns = run_columns(make_campaign(described.study), 0, count, 0, lambda *_: time.perf_counter() < deadline)
     if columns.trials == count:
         return columns
     if time.perf_counter() < deadline:
         raise KeyboardInterrupt
     expected = f"pilot trials that end within {REFERENCE_SECONDS:g} s with control of the step"
-    mend = (
-        "Something in them chatters (write tanh for sign), or set steps_per_sample to a number of your own."
-    )
+    mend = "Something in them chatters (write tanh for sign), or set steps_per_sample to a number of your own."
     raise DescriptionError("loop.steps_per_sample", "auto", expected, mend)
 
 

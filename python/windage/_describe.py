@@ -148,8 +148,7 @@ def describe(
     described_loop = loop._describe(numbers, loop.expressions_for(signals))
     described_loop["steps_per_sample"] = steps
     described_measures = [
-        measure._describe(numbers, path, loop.actuator.limits)
-        for measure, path in zip(distinct, paths, strict=True)
+        measure._describe(numbers, path, loop.actuator.limits) for measure, path in zip(distinct, paths, strict=True)
     ]
     limits = tuple(
         numbers.take(requirement.limit, f"{requirement_path(i, requirement)}.limit")

@@ -91,9 +91,7 @@ class Triangular(Spread):
         low, mode, high = (plain_number(getattr(self, n), f"triangular.{n}") for n in ("low", "mode", "high"))
         _check_bounds("triangular", low, high)
         if not low <= mode <= high:
-            raise DescriptionError(
-                "triangular.mode", self.mode, f"a number from low = {low:g} to high = {high:g}"
-            )
+            raise DescriptionError("triangular.mode", self.mode, f"a number from low = {low:g} to high = {high:g}")
         _set(self, low=low, mode=mode, high=high, name=_name(self))
 
     @property
@@ -307,9 +305,7 @@ def _non_negative(value: object, place: str) -> float:
 
 def _check_bounds(kind: str, low: float, high: float) -> None:
     if low > high:
-        raise DescriptionError(
-            f"{kind}.low", low, f"a number not above high = {high:g}", "Swap low and high."
-        )
+        raise DescriptionError(f"{kind}.low", low, f"a number not above high = {high:g}", "Swap low and high.")
     if not math.isfinite(high - low):
         raise DescriptionError(f"{kind}.high", high, "bounds whose distance double precision can hold")
 
@@ -355,6 +351,4 @@ def _check_probabilities(probabilities: tuple[float, ...], count: int) -> None:
         if p < 0.0:
             raise DescriptionError(f"{place}[{i}]", p, "a number of at least 0")
     if abs(math.fsum(probabilities) - 1.0) > 1e-9:
-        raise DescriptionError(
-            place, math.fsum(probabilities), "numbers that add up to 1", "This is their sum."
-        )
+        raise DescriptionError(place, math.fsum(probabilities), "numbers that add up to 1", "This is their sum.")

@@ -87,9 +87,7 @@ def evaluate_reference(program: Program, values: Mapping[str, ArrayLike]) -> lis
     return [results[output] for output in program.outputs]
 
 
-def _step(
-    instruction: Instruction, program: Program, values: Mapping[str, ArrayLike], results: list[Values]
-) -> Values:
+def _step(instruction: Instruction, program: Program, values: Mapping[str, ArrayLike], results: list[Values]) -> Values:
     if instruction.op == "constant":
         return _number(instruction.constant)
     if instruction.op == "load":

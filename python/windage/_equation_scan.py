@@ -237,9 +237,7 @@ class _Scan:
     def _missing_operator(self, token: str, start: int) -> EquationError:
         end = start + len(token)
         if self.previous in FUNCTIONS:
-            return self.source.error(
-                self.previous_start, end, f"{FUNCTIONS[self.previous][0]}, with brackets"
-            )
+            return self.source.error(self.previous_start, end, f"{FUNCTIONS[self.previous][0]}, with brackets")
         mend = "Join two conditions with 'and' or 'or'." if token == "not" else "Write * for a product."
         return self.source.error(self.previous_start, end, "an operator between the two", mend)
 

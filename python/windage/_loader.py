@@ -44,9 +44,7 @@ def choice() -> tuple[str, str]:
     known = instruction_sets()
     if wanted:
         if wanted not in known:
-            raise EngineError(
-                f"{_OVERRIDE}: found {wanted!r}; expected one of {', '.join(known)} on this processor."
-            )
+            raise EngineError(f"{_OVERRIDE}: found {wanted!r}; expected one of {', '.join(known)} on this processor.")
         lacks = missing_features(wanted)
         if lacks:
             raise EngineError(

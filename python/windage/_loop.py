@@ -115,16 +115,12 @@ class Loop(Description):
                 raise DescriptionError(f"loop.{name}", value, expected)
 
     def _checked_disturbances(self) -> FrozenMapping[Disturbance]:
-        given = frozen(
-            self.disturbances, "loop.disturbances", "a mapping from names to time functions or noises"
-        )
+        given = frozen(self.disturbances, "loop.disturbances", "a mapping from names to time functions or noises")
         names = self.plant.disturbance_names
         for name in given:
             if name not in names:
                 mend = suggestion(name, names) if names else "This plant has no disturbance."
-                raise DescriptionError(
-                    "loop.disturbances", name, "the name of a disturbance of the plant", mend
-                )
+                raise DescriptionError("loop.disturbances", name, "the name of a disturbance of the plant", mend)
         for name in names:
             if name not in given:
                 mend = f"Add {name!r}; if nothing acts there, as Constant(0)."

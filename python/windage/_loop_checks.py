@@ -60,9 +60,7 @@ def advice(loop: Loop) -> list[str]:
     found += _advice_on_observer(loop)
     found += _advice_on_delay(loop)
     if isinstance(loop.plant, Plant):
-        found += [
-            f"plant: no equation reads {name!r}" for name in loop.plant.unused() if not _is_read(loop, name)
-        ]
+        found += [f"plant: no equation reads {name!r}" for name in loop.plant.unused() if not _is_read(loop, name)]
     return found
 
 

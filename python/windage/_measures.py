@@ -215,9 +215,7 @@ class Requirement(Description):
 
     def __bool__(self) -> NoReturn:
         mend = "A chain a <= measure <= b is two requirements: write measure >= a and measure <= b apart."
-        raise DescriptionError(
-            "requirement", self.words, "a requirement used as such, not as true or false", mend
-        )
+        raise DescriptionError("requirement", self.words, "a requirement used as such, not as true or false", mend)
 
 
 def peak(signal: str, after: Any = 0.0, before: Any = math.inf) -> Measure:

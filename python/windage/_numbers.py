@@ -177,9 +177,7 @@ def _can_be_zero(spread: Spread, low: float) -> bool:
     return not (low == 0.0 and spread._excludes_low())
 
 
-def checked_numbers(
-    value: object, place: str, rule: Rule = ANY, count: int | None = None
-) -> tuple[Number, ...]:
+def checked_numbers(value: object, place: str, rule: Rule = ANY, count: int | None = None) -> tuple[Number, ...]:
     """Return a sequence of numbers or spreads as a tuple.
 
     Raises

@@ -79,9 +79,7 @@ class Outcome:
         It is -infinity where the trial diverged or the measure is undefined.
         """
         columns = self._columns
-        return slack_of(
-            self._described, self.study.requirements, columns.parameters, columns.measures, columns.status
-        )
+        return slack_of(self._described, self.study.requirements, columns.parameters, columns.measures, columns.status)
 
     @property
     def met(self) -> NDArray[np.bool_]:

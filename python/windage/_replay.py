@@ -145,9 +145,7 @@ class Replay:
             fate = "finished"
         lines = [f"Replay of {name}: {fate}, {len(self.time)} samples of {len(self._signals)} signals"]
         for requirement, slack in zip(self.requirements, self.slack, strict=True):
-            lines.append(
-                f"  {'met   ' if slack >= 0.0 else 'MISSED'}  {requirement.label}  (slack {slack:.4g})"
-            )
+            lines.append(f"  {'met   ' if slack >= 0.0 else 'MISSED'}  {requirement.label}  (slack {slack:.4g})")
         return "\n".join(lines)
 
     def _b0(self) -> float:
@@ -218,8 +216,7 @@ def spline_mean(before: Values, after: Values, order: int, part: float) -> Value
 def spline_integral(order: int, x: float) -> float:
     """Return the integral of the cardinal B-spline on [0, order] from 0 to x (truncated powers)."""
     terms = (
-        (-1) ** i * math.comb(order, i) * max(x - i, 0.0) ** order / math.factorial(order)
-        for i in range(order + 1)
+        (-1) ** i * math.comb(order, i) * max(x - i, 0.0) ** order / math.factorial(order) for i in range(order + 1)
     )
     return math.fsum(terms)
 

@@ -84,9 +84,7 @@ def run_columns(
     available = int(campaign.trials_available)
     if first + count > available:
         mend = "Ask for fewer trials, or give a table with more rows."
-        raise DescriptionError(
-            "trials", first + count, f"at most {available}, the rows of the study's table", mend
-        )
+        raise DescriptionError("trials", first + count, f"at most {available}, the rows of the study's table", mend)
     report = reporter(progress)
 
     def step(done: int) -> bool:
@@ -109,7 +107,5 @@ def reporter(progress: object) -> Report | None:
     if progress is None or progress is False:
         return None
     if not callable(progress):
-        raise DescriptionError(
-            "progress", progress, "True, False, None or a function of trials done and asked for"
-        )
+        raise DescriptionError("progress", progress, "True, False, None or a function of trials done and asked for")
     return progress

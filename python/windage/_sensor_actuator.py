@@ -98,11 +98,7 @@ class Actuator(Description):
     initial: Number = field(default=0.0, metadata=takes(ANY))
 
     def __post_init__(self) -> None:
-        if (
-            isinstance(self.rate_limit, int | float)
-            and not isinstance(self.rate_limit, bool)
-            and self.rate_limit == 0
-        ):
+        if isinstance(self.rate_limit, int | float) and not isinstance(self.rate_limit, bool) and self.rate_limit == 0:
             object.__setattr__(self, "rate_limit", None)
         _check_fields(self, "actuator")
         limits = _pair(self.limits, "actuator.limits")

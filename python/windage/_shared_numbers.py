@@ -24,9 +24,7 @@ class Shared(Spread):
             mend = "Write for example shared('mass', normal(12.0, 0.5))."
             raise DescriptionError("shared.spread", self.spread, "a spread", mend)
         if isinstance(self.spread, Shared | Column):
-            mend = (
-                "A column is shared already wherever it is used." if isinstance(self.spread, Column) else ""
-            )
+            mend = "A column is shared already wherever it is used." if isinstance(self.spread, Column) else ""
             raise DescriptionError("shared.spread", self.spread, "a spread that is not shared itself", mend)
         if self.spread.name is not None:
             mend = "The shared name is the name of the drawn parameter."
@@ -96,9 +94,7 @@ class Column(Spread):
 
     def _engine_form(self) -> tuple[str, list[float]]:
         if self.rows is None:
-            raise DescriptionError(
-                "column", self.name, "a column of the study's table", "Give it to Study(table=...)."
-            )
+            raise DescriptionError("column", self.name, "a column of the study's table", "Give it to Study(table=...).")
         return "rows", list(self.rows)
 
 

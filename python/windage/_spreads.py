@@ -76,9 +76,7 @@ def beta(a: float, b: float, low: float = 0.0, high: float = 1.0, *, name: str |
     return Beta(a, b, low, high, name=name)
 
 
-def tolerance(
-    nominal: float, percent: float, shape: str = "uniform", *, name: str | None = None
-) -> Tolerance:
+def tolerance(nominal: float, percent: float, shape: str = "uniform", *, name: str | None = None) -> Tolerance:
     """Spread a number around its nominal value by a tolerance.
 
     Parameters

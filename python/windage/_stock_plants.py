@@ -245,16 +245,12 @@ def _check_initial(plant: IntegratorChain | SecondOrder, count: int) -> None:
     value: Any = plant.initial
     is_list = isinstance(value, list | tuple) or (hasattr(value, "ndim") and value.ndim > 0)
     checked: Any = (
-        checked_numbers(value, "plant.initial", ANY, count)
-        if is_list
-        else checked_number(value, "plant.initial", ANY)
+        checked_numbers(value, "plant.initial", ANY, count) if is_list else checked_number(value, "plant.initial", ANY)
     )
     object.__setattr__(plant, "initial", checked)
 
 
-def _matrix(
-    value: object, place: str, rows: int | None, columns: int | None
-) -> tuple[tuple[Number, ...], ...]:
+def _matrix(value: object, place: str, rows: int | None, columns: int | None) -> tuple[tuple[Number, ...], ...]:
     items = checked_sequence(value, place, "a matrix, written as a list of rows")
     if not items or (rows is not None and len(items) != rows):
         expected = "at least one row" if rows is None else f"{rows} rows, one a state"

@@ -178,13 +178,9 @@ class Study(Description):
 
     def nominal(self) -> Replay:
         """Run the nominal unit: every spread at its nominal value, noise as in trial 0."""
-        loop, requirements, measures = rebuilt(
-            self._bound, lambda x: nominal_of(x) if isinstance(x, Spread) else None
-        )
+        loop, requirements, measures = rebuilt(self._bound, lambda x: nominal_of(x) if isinstance(x, Spread) else None)
         _check_memory(loop)
-        described = describe(
-            loop, requirements, measures, {}, self.seed, self.resolved_steps(), every_signal=True
-        )
+        described = describe(loop, requirements, measures, {}, self.seed, self.resolved_steps(), every_signal=True)
         return _replay(self, loop, described, 0, None)
 
     def resolved_steps(self) -> int:

@@ -36,9 +36,7 @@ def checked_requirements(value: object) -> tuple[Requirement, ...]:
     for i, item in enumerate(items):
         if item.label in labels:
             mend = f"Number {labels[item.label]} reads the same; leave one out or use .named('...')."
-            raise DescriptionError(
-                f"{place}[{i}]", item.label, "a label of its own for each requirement", mend
-            )
+            raise DescriptionError(f"{place}[{i}]", item.label, "a label of its own for each requirement", mend)
         labels[item.label] = i
     return tuple(items)
 
@@ -124,14 +122,10 @@ def check_windows(loop: Loop, requirements: Sequence[Requirement], measures: Seq
     for place, measure in places:
         if measure.signal not in loop.signal_names:
             mend = suggestion(measure.signal, loop.signal_names)
-            raise DescriptionError(
-                f"{place}.signal", measure.signal, "the name of a signal of the loop", mend
-            )
+            raise DescriptionError(f"{place}.signal", measure.signal, "the name of a signal of the loop", mend)
         if measure.kind == "time_in_saturation" and loop.actuator.limits is None:
             mend = "Add Actuator(limits=(low, high))."
-            raise DescriptionError(
-                place, "an actuator without limits", "limits for the time in saturation", mend
-            )
+            raise DescriptionError(place, "an actuator without limits", "limits for the time in saturation", mend)
         if high_of(measure.after) >= shortest:
             expected = f"a time before the end of the trial ({shortest:g} s)"
             raise DescriptionError(f"{place}.after", measure.after, expected)
@@ -143,9 +137,7 @@ def check_windows(loop: Loop, requirements: Sequence[Requirement], measures: Seq
 
 
 def _check_holds_sample(place: str, measure: Measure, loop: Loop) -> None:
-    if measure.before != math.inf and low_of(measure.before) - high_of(measure.after) < high_of(
-        loop.sample_period
-    ):
+    if measure.before != math.inf and low_of(measure.before) - high_of(measure.after) < high_of(loop.sample_period):
         found = f"{high_of(measure.after):g} s to {low_of(measure.before):g} s"
         expected = f"at least one sample period ({high_of(loop.sample_period):g} s)"
         raise DescriptionError(f"{place}.before", found, expected, "Widen the window.")

@@ -58,9 +58,7 @@ def load(path: str | os.PathLike[str]) -> Study:
         with file.open("rb") as stream:
             content = stream.read(LARGEST_FILE + 1)
     except OSError as error:
-        raise StudyFileError(
-            "study file", str(path), "a file that can be read", f"{error.strerror}."
-        ) from error
+        raise StudyFileError("study file", str(path), "a file that can be read", f"{error.strerror}.") from error
     if len(content) > LARGEST_FILE:
         raise StudyFileError("study file", f"more than {LARGEST_FILE} bytes", f"at most {LARGEST_FILE} bytes")
     try:

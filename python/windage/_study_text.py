@@ -218,9 +218,7 @@ def _made_loop(data: Mapping[str, Any]) -> Any:
             values[key] = _made(_ONLY[key], _table(item, place), place)
         elif key == "disturbances":
             parts = _table(item, place)
-            values[key] = {
-                name: _of_kind(part, DISTURBANCES, f"{place}.{name}") for name, part in parts.items()
-            }
+            values[key] = {name: _of_kind(part, DISTURBANCES, f"{place}.{name}") for name, part in parts.items()}
         else:
             values[key] = item if key in _TEXTS else _value(item, place)
     return _call(Loop, values, "loop")
@@ -259,9 +257,7 @@ def _value(item: Any, place: str) -> Any:
 def _spread(item: Mapping[str, Any], place: str) -> Any:
     kind = _word(item, "spread", SPREADS, place)
     inside = {key: part for key, part in item.items() if key not in ("spread", "shared")}
-    spread = _call(
-        SPREADS[kind], {key: _value(part, f"{place}.{key}") for key, part in inside.items()}, place
-    )
+    spread = _call(SPREADS[kind], {key: _value(part, f"{place}.{key}") for key, part in inside.items()}, place)
     if "shared" not in item:
         return spread
     return _call(Shared, {"name": item["shared"], "spread": spread}, place)

@@ -67,9 +67,7 @@ class Tally:
         asked = f" (stopped; {self.requested:,} asked for)" if self.trials < self.requested else ""
         counts = f"{self.failures:,} failed, {self.diverged:,} of them diverged"
         head = f"Tally of {self.trials:,} trials{asked}: {counts}"
-        return "\n".join(
-            [head, *(f"  {n:,} missed: {label}" for label, n in self.requirement_failures.items())]
-        )
+        return "\n".join([head, *(f"  {n:,} missed: {label}" for label, n in self.requirement_failures.items())])
 
 
 class Counter:

@@ -45,9 +45,7 @@ class TimeFunction(Description):
         place = type(self).__name__
         for f, value in parts(self):
             if "rule" in f.metadata:
-                object.__setattr__(
-                    self, f.name, checked_number(value, f"{place}.{f.name}", f.metadata["rule"])
-                )
+                object.__setattr__(self, f.name, checked_number(value, f"{place}.{f.name}", f.metadata["rule"]))
 
     def _describe(self, numbers: Numbers, path: str) -> dict[str, Any]:
         taken = [numbers.take(getattr(self, name), f"{path}.{name}") for name in self.engine_order]
@@ -185,9 +183,7 @@ class Table(TimeFunction):
         object.__setattr__(self, "values", values)
 
     def _describe(self, numbers: Numbers, path: str) -> dict[str, Any]:
-        taken = numbers.take_all(self.times, f"{path}.times") + numbers.take_all(
-            self.values, f"{path}.values"
-        )
+        taken = numbers.take_all(self.times, f"{path}.times") + numbers.take_all(self.values, f"{path}.values")
         return {"kind": f"table_{self.interpolation}", "numbers": taken}
 
 

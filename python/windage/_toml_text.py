@@ -97,7 +97,5 @@ def _key(key: str) -> str:
 
 def _quoted(text: str) -> str:
     # Control characters must be written as escapes in TOML.
-    escaped = "".join(
-        _ESCAPES.get(c) or (f"\\u{ord(c):04x}" if ord(c) < 0x20 or ord(c) == 0x7F else c) for c in text
-    )
+    escaped = "".join(_ESCAPES.get(c) or (f"\\u{ord(c):04x}" if ord(c) < 0x20 or ord(c) == 0x7F else c) for c in text)
     return f'"{escaped}"'

@@ -528,9 +528,7 @@ def _table_cells(table: VerdictTable, shortened: bool = True) -> list[tuple[str,
 
 
 def _wrapped(text: str, indent: int, first: str = "") -> list[str]:
-    return textwrap.wrap(
-        text, WIDTH, initial_indent=first, subsequent_indent=" " * indent, break_on_hyphens=False
-    )
+    return textwrap.wrap(text, WIDTH, initial_indent=first, subsequent_indent=" " * indent, break_on_hyphens=False)
 
 
 def _labelled(label: str, text: str) -> list[str]:

@@ -201,12 +201,10 @@ int print_times() {
         std::printf("%-24.*s %6.2f ns\n", int(entry.name.size()), entry.name.data(),
                     nanoseconds([&] { entry.apply(x, y, out, n); }, n));
     const stream_key key{2026, 1};
-    std::printf("%-24s %6.2f ns\n", "uniform", nanoseconds([&] {
-                    apply_draws<windage::lanes, draw_kind::uniform>(key, 3, 0, x, y, n);
-                }, 2 * n));
-    std::printf("%-24s %6.2f ns\n", "normal", nanoseconds([&] {
-                    apply_draws<windage::lanes, draw_kind::normal>(key, 3, 0, x, y, n);
-                }, 2 * n));
+    std::printf("%-24s %6.2f ns\n", "uniform",
+                nanoseconds([&] { apply_draws<windage::lanes, draw_kind::uniform>(key, 3, 0, x, y, n); }, 2 * n));
+    std::printf("%-24s %6.2f ns\n", "normal",
+                nanoseconds([&] { apply_draws<windage::lanes, draw_kind::normal>(key, 3, 0, x, y, n); }, 2 * n));
     return 0;
 }
 
@@ -216,8 +214,8 @@ int main(int count, char** words) {
     const std::string_view mode = count > 1 ? words[1] : "";
     const bool scalar = count > 2 && std::string_view(words[count - 1]) == "1";
     if (mode == "names") {
-        for (const auto& entry : catalogue<1>) std::printf("%.*s %d\n", int(entry.name.size()), entry.name.data(),
-                                                           entry.arguments);
+        for (const auto& entry : catalogue<1>)
+            std::printf("%.*s %d\n", int(entry.name.size()), entry.name.data(), entry.arguments);
         return 0;
     }
     if (mode == "apply" && count == 4) return scalar ? apply<1>(words[2]) : apply<windage::lanes>(words[2]);

@@ -87,9 +87,7 @@ def neighbours(points: Sequence[float], steps: int = 2) -> Array:
 
 def near_quarter_turns() -> Array:
     """Doubles next to k pi/2 for small k, powers of two and a stride up to the largest accurate angle."""
-    ks = sorted(
-        {*range(1, 200), *(2**n for n in range(17)), *range(201, int(LARGEST_ANGLE * 2 / math.pi), 97)}
-    )
+    ks = sorted({*range(1, 200), *(2**n for n in range(17)), *range(201, int(LARGEST_ANGLE * 2 / math.pi), 97)})
     points = neighbours([float(k * mpmath.pi / 2) for k in ks], 1)
     return points[np.abs(points) <= LARGEST_ANGLE]
 
@@ -141,9 +139,7 @@ def cases() -> dict[str, Case]:
         "cosine_of_turn": Case(lambda u: mpmath.cospi(2 * u), 1.7, turns, turn_hard),
         "arc_sine": Case(mpmath.asin, 1.8, unit, np.concatenate([below_one, -below_one])),
         "arc_cosine": Case(mpmath.acos, 1.3, unit, np.concatenate([below_one, -below_one])),
-        "arc_tangent": Case(
-            mpmath.atan, 1.7, [Range(-3.0, 3.0), tiny, every], neighbours([0.5, 1.0, 2.0, -2.0])
-        ),
+        "arc_tangent": Case(mpmath.atan, 1.7, [Range(-3.0, 3.0), tiny, every], neighbours([0.5, 1.0, 2.0, -2.0])),
         "exponential": Case(
             mpmath.exp,
             1.1,
@@ -181,9 +177,7 @@ def cases() -> dict[str, Case]:
             [Range(-3.0, 3.0), Range(-HYPERBOLIC_TOP, HYPERBOLIC_TOP), tiny],
             neighbours([1.0, -1.0]),
         ),
-        "hyperbolic_cosine": Case(
-            mpmath.cosh, 1.6, [Range(-3.0, 3.0), Range(-HYPERBOLIC_TOP, HYPERBOLIC_TOP), tiny]
-        ),
+        "hyperbolic_cosine": Case(mpmath.cosh, 1.6, [Range(-3.0, 3.0), Range(-HYPERBOLIC_TOP, HYPERBOLIC_TOP), tiny]),
         "hyperbolic_tangent": Case(
             mpmath.tanh,
             1.8,
@@ -197,9 +191,7 @@ def cases() -> dict[str, Case]:
             exact_quantile,
             8.0,
             [Range(0.001, 0.999), Range(1e-300, 0.4, by_bits=True), Range(0.4, 0.6)],
-            np.concatenate(
-                [neighbours([0.075, 0.925, 1.388e-11, 1 - 1.388e-11]), 0.5 + 0.5 ** np.arange(2.0, 50.0)]
-            ),
+            np.concatenate([neighbours([0.075, 0.925, 1.388e-11, 1 - 1.388e-11]), 0.5 + 0.5 ** np.arange(2.0, 50.0)]),
         ),
         "arc_tangent2": Case(
             mpmath.atan2,
@@ -231,11 +223,7 @@ def ulp_error(computed: float, exact: mpf) -> float:
     _, exponent = mpmath.frexp(exact)
     unit = mpf(2) ** (max(int(exponent), -1021) - 53)
     if math.isinf(computed):
-        return (
-            0.0
-            if abs(exact) >= mpf(2) ** 1024 * (1 - mpf(2) ** -54) and (computed > 0) == (exact > 0)
-            else math.inf
-        )
+        return 0.0 if abs(exact) >= mpf(2) ** 1024 * (1 - mpf(2) ** -54) and (computed > 0) == (exact > 0) else math.inf
     return float(abs(mpf(computed) - exact) / unit)
 
 

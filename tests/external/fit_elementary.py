@@ -56,8 +56,7 @@ def remez(target: Real, weight: Real, low: mpf, high: mpf, count: int) -> tuple[
         for i in range(count + 1)
     ]
     grid = [
-        (low + high) / 2 - (high - low) / 2 * mpmath.cos(mpmath.pi * i / (30 * count))
-        for i in range(30 * count + 1)
+        (low + high) / 2 - (high - low) / 2 * mpmath.cos(mpmath.pi * i / (30 * count)) for i in range(30 * count + 1)
     ]
     known = [(target(x), weight(x)) for x in grid]
     coefficients: list[mpf] = []
@@ -72,9 +71,7 @@ def remez(target: Real, weight: Real, low: mpf, high: mpf, count: int) -> tuple[
             right[row] = target(x)
         solution = mpmath.lu_solve(matrix, right)
         coefficients = [solution[i] for i in range(count)]
-        errors = [
-            w * (mpmath.polyval(coefficients[::-1], x) - g) for x, (g, w) in zip(grid, known, strict=True)
-        ]
+        errors = [w * (mpmath.polyval(coefficients[::-1], x) - g) for x, (g, w) in zip(grid, known, strict=True)]
         worst = max(abs(e) for e in errors)
         nodes = extrema(grid, errors, count + 1)
         if worst <= abs(solution[count]) * mpf("1.001"):
@@ -93,9 +90,7 @@ def extrema(grid: list[mpf], errors: list[mpf], wanted: int) -> list[mpf]:
     while len(runs) > wanted:
         runs.pop(0 if abs(errors[runs[0]]) < abs(errors[runs[-1]]) else -1)
     if len(runs) < wanted:
-        raise ArithmeticError(
-            f"error curve has {len(runs)} extrema, {wanted} needed: raise mp.dps or lower the degree"
-        )
+        raise ArithmeticError(f"error curve has {len(runs)} extrema, {wanted} needed: raise mp.dps or lower the degree")
     points = []
     for i in runs:
         x = grid[i]
@@ -223,9 +218,7 @@ def tables() -> list[Table]:
         Table(
             "turn_sine_rest",
             "trigonometric.hpp",
-            series_safe(
-                turn_sine, lambda n: -((-1) ** n) * half_pi ** (2 * n + 3) / mpmath.factorial(2 * n + 3)
-            ),
+            series_safe(turn_sine, lambda n: -((-1) ** n) * half_pi ** (2 * n + 3) / mpmath.factorial(2 * n + 3)),
             lambda z: z + mpf(10) ** -12,
             mpf(0),
             half_turn,
@@ -234,9 +227,7 @@ def tables() -> list[Table]:
         Table(
             "turn_cosine",
             "trigonometric.hpp",
-            series_safe(
-                turn_cosine, lambda n: -((-1) ** n) * half_pi ** (2 * n + 2) / mpmath.factorial(2 * n + 2)
-            ),
+            series_safe(turn_cosine, lambda n: -((-1) ** n) * half_pi ** (2 * n + 2) / mpmath.factorial(2 * n + 2)),
             lambda z: z + mpf(10) ** -12,
             mpf(0),
             half_turn,
@@ -287,9 +278,7 @@ def tables() -> list[Table]:
             mpf("1.0001"),
             7,
         ),
-        Table(
-            "normal_tail", "normal.hpp", tail_ratio, lambda t: 1 / tail_ratio(t), mpf(-1), mpf(33) / 43, 22
-        ),
+        Table("normal_tail", "normal.hpp", tail_ratio, lambda t: 1 / tail_ratio(t), mpf(-1), mpf(33) / 43, 22),
     ]
 
 

@@ -85,9 +85,7 @@ def test_discrete_gains_match_the_closed_forms(order: int, kind: str, product: f
     z = math.exp(-product)
     np.testing.assert_allclose(gains, closed_form(order, kind, z, period), rtol=3e-13)
     # The gains of the predictive observer are A times those of the current one.
-    np.testing.assert_allclose(
-        model(order, kind, period) @ gains, predictive_form(order, kind, z, period), rtol=3e-13
-    )
+    np.testing.assert_allclose(model(order, kind, period) @ gains, predictive_form(order, kind, z, period), rtol=3e-13)
 
 
 def test_discrete_gains_match_the_computed_numbers() -> None:

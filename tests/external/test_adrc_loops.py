@@ -115,16 +115,12 @@ def test_error_form_is_pid_with_a_measurement_filter(order: int) -> None:
         filter_ = [ts**2 / (36.0 * q), ts * (3.0 * g + 2.0) / (6.0 * q), 1.0]
     denominator = np.polymul(np.polymul(filter_, [1.0, 0.0]), bottom)
     numerator = np.polymul(pid, top)
-    _, expected = step(
-        TransferFunction(numerator, np.polyadd(denominator, numerator)), T=0.01 * np.arange(301)
-    )
+    _, expected = step(TransferFunction(numerator, np.polyadd(denominator, numerator)), T=0.01 * np.arange(301))
     coarse, fine = (response(plant, order, b0, "error", ts) for ts in (5e-4, 2.5e-4))
     assert np.max(np.abs(extrapolated(coarse, fine) - expected)) < 5e-5
 
 
-@pytest.mark.parametrize(
-    "actuator", [wd.Actuator(), wd.Actuator(limits=(-0.6, 0.5), delay=2.3e-3, rate_limit=20.0)]
-)
+@pytest.mark.parametrize("actuator", [wd.Actuator(), wd.Actuator(limits=(-0.6, 0.5), delay=2.3e-3, rate_limit=20.0)])
 @pytest.mark.parametrize("order", [1, 2, 3])
 def test_both_forms_have_the_same_feedback_path(order: int, actuator: wd.Actuator) -> None:
     """With r = 0 both forms give the same command and output, and estimates of opposite sign.
@@ -179,9 +175,7 @@ def first_order_measures(period: float) -> tuple[Values, Values]:
         disturbances={"load": 0.0},
     )
     table = {"K": FIRST_ORDER[:, 0], "T": FIRST_ORDER[:, 1]}
-    outcome = wd.Study(loop, measures=[wd.settling_time(), wd.overshoot()], table=table).run(
-        6, progress=False
-    )
+    outcome = wd.Study(loop, measures=[wd.settling_time(), wd.overshoot()], table=table).run(6, progress=False)
     settling, overshoot = outcome.measures.values()
     return settling, overshoot
 
@@ -190,9 +184,7 @@ def test_first_order_example_settles_as_computed() -> None:
     (coarse, coarse_over), (fine, fine_over) = first_order_measures(5e-4), first_order_measures(2.5e-4)
     # To the printed precision: half a unit of the last digit, and what the extrapolation leaves.
     np.testing.assert_allclose(extrapolated(coarse, fine), FIRST_ORDER[:, 2], rtol=0.0, atol=0.7e-4)
-    np.testing.assert_allclose(
-        100.0 * extrapolated(coarse_over, fine_over), FIRST_ORDER[:, 3], rtol=0.0, atol=0.6e-3
-    )
+    np.testing.assert_allclose(100.0 * extrapolated(coarse_over, fine_over), FIRST_ORDER[:, 3], rtol=0.0, atol=0.6e-3)
 
 
 def test_poles_of_the_first_order_example() -> None:
@@ -230,9 +222,7 @@ def test_settling_rules(order: int, rule: float, exact: float) -> None:
     for period in (5e-4, 2.5e-4):
         loop = wd.Loop(
             plant=wd.IntegratorChain(order, gain=1.0),
-            controller=wd.OutputADRC(
-                order=order, controller_bandwidth=rule, observer_bandwidth=10.0 * rule, b0=1.0
-            ),
+            controller=wd.OutputADRC(order=order, controller_bandwidth=rule, observer_bandwidth=10.0 * rule, b0=1.0),
             sample_period=period,
             duration=3.0,
             reference=1.0,

@@ -40,9 +40,7 @@ HANSON_BEARD = [
 
 
 @pytest.mark.parametrize(("at_least", "confidence", "numbers"), HANSON_BEARD)
-def test_trials_needed_match_the_launch_vehicle_table(
-    at_least: float, confidence: float, numbers: list[int]
-) -> None:
+def test_trials_needed_match_the_launch_vehicle_table(at_least: float, confidence: float, numbers: list[int]) -> None:
     assert [trials_needed(at_least, confidence, k) for k in range(len(numbers))] == numbers
 
 
@@ -62,9 +60,7 @@ PLANNING_TABLE = [
 
 
 @pytest.mark.parametrize(("at_least", "confidence", "numbers"), PLANNING_TABLE)
-def test_trials_needed_match_the_planning_table(
-    at_least: float, confidence: float, numbers: list[int]
-) -> None:
+def test_trials_needed_match_the_planning_table(at_least: float, confidence: float, numbers: list[int]) -> None:
     assert [trials_needed(at_least, confidence, k) for k in (0, 1, 2, 3, 5, 10)] == numbers
 
 
@@ -146,9 +142,7 @@ BOOST_LIMITS = [
 HALF_OF_FIVE_DECIMALS = 0.5e-5 * (1 + 1e-9)
 
 
-@pytest.mark.parametrize(
-    ("passes", "trials", "confidence", "cp_low", "cp_high", "j_low", "j_high"), BOOST_LIMITS
-)
+@pytest.mark.parametrize(("passes", "trials", "confidence", "cp_low", "cp_high", "j_low", "j_high"), BOOST_LIMITS)
 def test_clopper_pearson_and_jeffreys_intervals_match_the_printed_table(
     passes: int, trials: int, confidence: float, cp_low: float, cp_high: float, j_low: float, j_high: float
 ) -> None:
@@ -190,9 +184,7 @@ NEWCOMBE = [
 
 
 @pytest.mark.parametrize(("method", "passes", "trials", "low", "high", "tolerance"), NEWCOMBE)
-def test_newcombe_cases(
-    method: Method, passes: int, trials: int, low: float, high: float, tolerance: float
-) -> None:
+def test_newcombe_cases(method: Method, passes: int, trials: int, low: float, high: float, tolerance: float) -> None:
     found = pass_probability_bounds(trials - passes, trials, 0.95, method, "two-sided")
     assert (found.lower, found.upper) == pytest.approx((low, high), abs=tolerance * (1 + 1e-6))
 
@@ -288,9 +280,7 @@ def test_trials_needed_is_the_smallest_number_in_sixty_digit_arithmetic(
         assert _exact_tail_at_most(allowed, found - 1, limit) > risk
 
 
-CASES = [
-    (k, n) for n in (1, 2, 7, 40, 1000, 10**6, 10**10) for k in (0, 1, 2, n // 3, n - 1, n) if 0 <= k <= n
-]
+CASES = [(k, n) for n in (1, 2, 7, 40, 1000, 10**6, 10**10) for k in (0, 1, 2, n // 3, n - 1, n) if 0 <= k <= n]
 
 
 @pytest.mark.parametrize(("failures", "trials"), CASES)
@@ -325,9 +315,7 @@ def test_two_sided_intervals_agree_with_scipy_binomtest(failures: int, trials: i
 
 
 @pytest.mark.parametrize(("failures", "trials"), [(0, 10**10), (3, 10**10), (1000, 10**10), (10**6, 10**10)])
-def test_bounds_solve_their_defining_equation_for_ten_thousand_million_trials(
-    failures: int, trials: int
-) -> None:
+def test_bounds_solve_their_defining_equation_for_ten_thousand_million_trials(failures: int, trials: int) -> None:
     # Clopper & Pearson 1934: at the bound the tail equals the risk. The tail is SciPy's.
     found = pass_probability_bounds(failures, trials, 0.95)
     assert stats.binom.cdf(failures, trials, found.failure_upper) == pytest.approx(0.05, rel=1e-9)
@@ -374,9 +362,7 @@ def test_two_thousand_runs_for_three_sigma_is_two_failures_at_90_percent() -> No
 
 @pytest.mark.parametrize("trials", [1, 22, 59, 500, 3941])
 @pytest.mark.parametrize("at_least", [0.5, 0.9, 0.99865])
-def test_failures_allowed_agrees_with_scipy_and_is_the_inverse_of_trials_needed(
-    trials: int, at_least: float
-) -> None:
+def test_failures_allowed_agrees_with_scipy_and_is_the_inverse_of_trials_needed(trials: int, at_least: float) -> None:
     limit = _statistics.complement(at_least)
     passing = [k for k in range(trials + 1) if stats.binom.cdf(k, trials, limit) <= 0.10 + 1e-12]
     found = failures_allowed(trials, at_least, 0.90)
@@ -386,8 +372,6 @@ def test_failures_allowed_agrees_with_scipy_and_is_the_inverse_of_trials_needed(
 
 
 def test_chance_of_pass_agrees_with_scipy() -> None:
-    assert chance_of_pass(1970, 0.9973, 0.90, 0.9995) == pytest.approx(
-        stats.binom.cdf(2, 1970, 0.0005), rel=1e-12
-    )
+    assert chance_of_pass(1970, 0.9973, 0.90, 0.9995) == pytest.approx(stats.binom.cdf(2, 1970, 0.0005), rel=1e-12)
     assert chance_of_pass(58, 0.95, 0.95, 1.0) == 0.0
     assert chance_of_pass(59, 0.95, 0.95, 1.0) == 1.0

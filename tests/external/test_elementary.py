@@ -117,9 +117,7 @@ def test_error_at_huge_angles_is_that_of_half_a_unit_of_the_angle(name: str) -> 
 @pytest.mark.parametrize("name", CASES)
 def test_undefined_number_stays_undefined_for_every_payload(name: str) -> None:
     # Payloads that would spoil an exponent field if it were computed from them.
-    patterns = np.array(
-        [0x7FF8000000000000, 0x7FF8000000000FFF, 0xFFF80000000007FF, 0x7FFFFFFFFFFFFFFF], np.uint64
-    )
+    patterns = np.array([0x7FF8000000000000, 0x7FF8000000000FFF, 0xFFF80000000007FF, 0x7FFFFFFFFFFFFFFF], np.uint64)
     x = patterns.view(np.float64)
     if CASES[name].arguments == 1:
         assert np.isnan(lane(name, x)).all()
@@ -149,9 +147,9 @@ def test_pairs_of_extreme_arguments_agree_with_the_c_library(name: str, referenc
             odd = abs(b) < 2**53 and b % 2 == 1
             expected = (math.copysign(INF, a) if odd else INF) if a == 0 else NAN
         close = math.isfinite(expected) and math.isclose(value, expected, rel_tol=4e-16, abs_tol=5e-324)
-        assert same_number(value, expected) or (
-            close and math.copysign(1, value) == math.copysign(1, expected)
-        ), f"{name}({a!r}, {b!r}) = {value!r}, expected {expected!r}"
+        assert same_number(value, expected) or (close and math.copysign(1, value) == math.copysign(1, expected)), (
+            f"{name}({a!r}, {b!r}) = {value!r}, expected {expected!r}"
+        )
 
 
 def test_power_is_one_for_zero_exponent_and_for_base_one() -> None:
@@ -193,9 +191,7 @@ def test_unknown_name_and_wrong_number_of_arguments_are_refused() -> None:
 
 def test_coefficients_in_the_headers_are_the_fitted_ones() -> None:
     script = Path(__file__).with_name("fit_elementary.py")
-    done = subprocess.run(
-        [sys.executable, str(script), "--check"], capture_output=True, text=True, check=False
-    )
+    done = subprocess.run([sys.executable, str(script), "--check"], capture_output=True, text=True, check=False)
     assert done.returncode == 0, done.stderr
 
 
@@ -223,9 +219,7 @@ def test_uniforms_are_the_philox_words_of_their_trial() -> None:
         trial = first + i
         words = engine().lane_philox([trial % 2**32, trial >> 32, stream, draw], [seed % 2**32, seed >> 32])
         low0, high0, low1, high1 = (int(w) for w in words)
-        assert pair == [
-            (((high << 32 | low) >> 12) + 0.5) * 2.0**-52 for low, high in ((low0, high0), (low1, high1))
-        ]
+        assert pair == [(((high << 32 | low) >> 12) + 0.5) * 2.0**-52 for low, high in ((low0, high0), (low1, high1))]
 
 
 def test_normals_are_box_muller_of_the_uniforms() -> None:

@@ -33,9 +33,7 @@ ORDERS = {
 
 def idle() -> wd.OutputADRC:
     """Return a controller whose command is the derivative of the reference and nothing else."""
-    return wd.OutputADRC(
-        order=1, controller_gains=[0.0], observer_gains=[0.0, 0.0], b0=1.0, cancel_disturbance=False
-    )
+    return wd.OutputADRC(order=1, controller_gains=[0.0], observer_gains=[0.0, 0.0], b0=1.0, cancel_disturbance=False)
 
 
 def pendulum(integrator: str, steps: int, delay: float, load: Any) -> wd.Study:
@@ -144,9 +142,7 @@ def test_lag_of_the_actuator_keeps_the_order_of_the_method() -> None:
 @pytest.mark.parametrize("delay", [0.0, 3e-3])
 @pytest.mark.parametrize("steps", [1, 2, 8])
 @pytest.mark.parametrize("integrator", ORDERS)
-def test_a_load_that_jumps_between_two_steps_costs_no_order(
-    integrator: str, steps: int, delay: float
-) -> None:
+def test_a_load_that_jumps_between_two_steps_costs_no_order(integrator: str, steps: int, delay: float) -> None:
     """x' = w is exact for any method, if no stage of the step before the jump sees what comes after it.
 
     Some of the instants are no exact multiples of the sample period in binary.

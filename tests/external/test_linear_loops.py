@@ -102,9 +102,7 @@ def both(
             b0,
             controller.get("controller_gain_factor", 1.0) * controller_gains(order, wc),
             controller.get("observer_gain_factor", 1.0)
-            * np.array(
-                observer_gains(order, wo, PERIOD, controller.get("discretisation", "zero_order_hold"))
-            ),
+            * np.array(observer_gains(order, wo, PERIOD, controller.get("discretisation", "zero_order_hold"))),
             **{key: value for key, value in controller.items() if not key.endswith("_factor")},
         ),
         period=PERIOD,
@@ -152,9 +150,7 @@ def test_integrator_chain_under_adrc_of_every_order_form_and_discretisation(
     assert largest < 10.0  # a stable loop, so that the comparison means something
     # The observer differentiates the rounding of y; the scale of y^(i) in a loop of bandwidth omega_c is
     # omega_c^i y.
-    scales = {f"estimate_{i + 1}": 2.0**i * largest for i in range(order + 1)} | {
-        "command": 2.0**order * largest
-    }
+    scales = {f"estimate_{i + 1}": 2.0**i * largest for i in range(order + 1)} | {"command": 2.0**order * largest}
     assert_same_signals(found, expected, TOLERANCE, scales)
 
 

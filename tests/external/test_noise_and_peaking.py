@@ -23,9 +23,7 @@ def noise_ratio(order: int, k: int, **tuning: Any) -> float:
     period = 0.2 / k
     loop = wd.Loop(
         plant=wd.IntegratorChain(order, gain=1.0),
-        controller=wd.OutputADRC(
-            order=order, controller_bandwidth=1.0, observer_bandwidth=float(k), b0=1.0, **tuning
-        ),
+        controller=wd.OutputADRC(order=order, controller_bandwidth=1.0, observer_bandwidth=float(k), b0=1.0, **tuning),
         sample_period=period,
         duration=3000 * period,
         reference=0.0,

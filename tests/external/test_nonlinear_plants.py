@@ -194,9 +194,7 @@ def dc_rate(t: float, x: Values, u: float, w: Sequence[float]) -> list[float]:  
 def two_mass_rate(t: float, x: Values, u: float, w: Sequence[float]) -> list[float]:  # noqa: ARG001
     p = TWO_MASS
     shaft = p["stiffness"] * (x[0] - x[2]) + p["damping"] * (x[1] - x[3])
-    excess = (p["breakaway_friction"] - p["coulomb_friction"]) * math.exp(
-        -((x[3] / p["stribeck_speed"]) ** 2)
-    )
+    excess = (p["breakaway_friction"] - p["coulomb_friction"]) * math.exp(-((x[3] / p["stribeck_speed"]) ** 2))
     friction = (p["coulomb_friction"] + excess) * math.tanh(x[3] / p["friction_speed"])
     load = shaft - friction - p["viscous_friction"] * x[3] - w[0]
     return [x[1], (u - shaft) / p["motor_inertia"], x[3], load / p["load_inertia"]]
@@ -279,12 +277,8 @@ def test_quadruple_tank_rests_at_the_equilibrium_of_its_published_parameters() -
         output="0.5*h1",
         parameters=TANKS,
     )
-    idle = wd.OutputADRC(
-        order=1, controller_gains=[0.0], observer_gains=[0.0, 0.0], b0=1.0, cancel_disturbance=False
-    )
-    loop = wd.Loop(
-        plant=plant, controller=idle, sample_period=1.0, duration=600.0, reference=0.0, steps_per_sample=2
-    )
+    idle = wd.OutputADRC(order=1, controller_gains=[0.0], observer_gains=[0.0, 0.0], b0=1.0, cancel_disturbance=False)
+    loop = wd.Loop(plant=plant, controller=idle, sample_period=1.0, duration=600.0, reference=0.0, steps_per_sample=2)
     replay = wd.Study(loop, measures=[wd.peak("error")]).replay(0)
     for i, level in enumerate(LEVELS):
         assert abs(replay[f"h{i + 1}"][-1] - level) < 1e-7

@@ -88,9 +88,7 @@ def test_this_files_own_generator_gives_the_known_answers() -> None:
 @pytest.mark.parametrize("seed", [0, 2026, 2**64 - 1, 0x0123456789ABCDEF])
 @pytest.mark.parametrize(("stream", "draw"), [(0, 0), (2**32 - 1, 7), (12345, 2**32 - 1)])
 @pytest.mark.parametrize("first", [0, 2**32 - 5, 2**40 + 3])
-def test_lane_draws_are_functions_of_seed_stream_draw_and_trial(
-    seed: int, stream: int, draw: int, first: int
-) -> None:
+def test_lane_draws_are_functions_of_seed_stream_draw_and_trial(seed: int, stream: int, draw: int, first: int) -> None:
     trials = np.uint64(first) + np.arange(37, dtype=np.uint64)
     np.testing.assert_array_equal(
         engine().lane_uniforms(seed, stream, draw, first, 37), uniforms(seed, stream, draw, trials)
@@ -139,9 +137,7 @@ def test_noise_and_parameters_of_a_trial_come_from_their_named_streams() -> None
     trial = np.array([123], dtype=np.uint64)
 
     def noise(purpose: str) -> Values:
-        return np.array(
-            [normals(77, fnv1a(purpose), k // 2, trial)[k % 2, 0] for k in range(len(replay.time))]
-        )
+        return np.array([normals(77, fnv1a(purpose), k // 2, trial)[k % 2, 0] for k in range(len(replay.time))])
 
     added = (replay["measured"] - replay["output"]) / 0.03
     np.testing.assert_allclose(added, noise("noise:sensor"), rtol=0, atol=1e-12)

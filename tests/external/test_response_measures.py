@@ -103,13 +103,9 @@ def test_undershoot_of_a_non_minimum_phase_response() -> None:
 def test_response_measures_count_from_the_start_of_their_window() -> None:
     """A second step at t = 20 from 1 to 3; the window starts there."""
     time = STEP * np.arange(int(50.0 / STEP))
-    y = step_response(0.5, time) + 2.0 * np.where(
-        time >= 20.0, step_response(0.5, np.maximum(time - 20.0, 0.0)), 0.0
-    )
+    y = step_response(0.5, time) + 2.0 * np.where(time >= 20.0, step_response(0.5, np.maximum(time - 20.0, 0.0)), 0.0)
     options = {"after": 20.0, "before": 45.0}
-    assert (
-        abs(100.0 * measured("overshoot", time, y, 3.0, **options) - 16.3034) < 2e-2
-    )  # the first step rings on
+    assert abs(100.0 * measured("overshoot", time, y, 3.0, **options) - 16.3034) < 2e-2  # the first step rings on
     assert abs(measured("settling_time", time, y, 3.0, a=0.02, **options) - 8.07635) < 2e-3
     assert abs(measured("rise_time", time, y, 3.0, a=0.1, b=0.9, **options) - 1.63757) < 1e-3
 

@@ -30,9 +30,7 @@ def quantiles(kind: str, numbers: list[float], p: Values = PROBABILITIES) -> Val
 
 def test_normal() -> None:
     expected = stats.norm(2.0, 3.0).ppf(PROBABILITIES)
-    np.testing.assert_allclose(
-        quantiles("normal", [2.0, 3.0, -math.inf, math.inf]), expected, rtol=2e-15, atol=5e-15
-    )
+    np.testing.assert_allclose(quantiles("normal", [2.0, 3.0, -math.inf, math.inf]), expected, rtol=2e-15, atol=5e-15)
 
 
 @pytest.mark.parametrize(
@@ -79,22 +77,16 @@ def test_lognormal(sd: float) -> None:
     np.testing.assert_allclose(quantiles("lognormal", [2.0, sd]), expected, rtol=3e-14)
 
 
-@pytest.mark.parametrize(
-    ("a", "b"), [(2.0, 3.0), (0.5, 0.5), (1.0, 1.0), (0.1, 20.0), (50.0, 50.0), (300.0, 2.0)]
-)
+@pytest.mark.parametrize(("a", "b"), [(2.0, 3.0), (0.5, 0.5), (1.0, 1.0), (0.1, 20.0), (50.0, 50.0), (300.0, 2.0)])
 def test_beta(a: float, b: float) -> None:
     expected = stats.beta(a, b).ppf(PROBABILITIES)
     np.testing.assert_allclose(quantiles("beta", [a, b, 0.0, 1.0]), expected, rtol=1e-12)
-    np.testing.assert_allclose(
-        quantiles("beta", [a, b, -2.0, 6.0]), -2.0 + 8.0 * expected, rtol=0.0, atol=1e-13
-    )
+    np.testing.assert_allclose(quantiles("beta", [a, b, -2.0, 6.0]), -2.0 + 8.0 * expected, rtol=0.0, atol=1e-13)
 
 
 def test_choice_and_samples_are_step_functions() -> None:
     p = np.array([1e-9, 0.2499, 0.2501, 0.4999, 0.5001, 1.0 - 1e-9])
-    np.testing.assert_array_equal(
-        quantiles("choice", [7.0, 8.0, 9.0, 0.25, 0.25, 0.5], p), [7, 7, 8, 8, 9, 9]
-    )
+    np.testing.assert_array_equal(quantiles("choice", [7.0, 8.0, 9.0, 0.25, 0.25, 0.5], p), [7, 7, 8, 8, 9, 9])
     np.testing.assert_array_equal(quantiles("samples", [4.0, 3.0, 1.0, 2.0], p), [4, 4, 3, 3, 1, 2])
 
 
@@ -201,9 +193,7 @@ def test_three_correlated_parameters_keep_every_pair() -> None:
 def test_adding_a_correlation_or_a_spread_leaves_other_draws_as_they_are() -> None:
     one = parameters(trials=50, a=wd.uniform(0, 1), b=wd.normal(0, 1))
     more = parameters(trials=50, z=wd.uniform(0, 1), a=wd.uniform(0, 1), b=wd.normal(0, 1), c=wd.beta(2, 2))
-    tied = parameters(
-        trials=50, correlations={("b", "c"): 0.5}, a=wd.uniform(0, 1), b=wd.normal(0, 1), c=wd.beta(2, 2)
-    )
+    tied = parameters(trials=50, correlations={("b", "c"): 0.5}, a=wd.uniform(0, 1), b=wd.normal(0, 1), c=wd.beta(2, 2))
     for name in ("a", "b"):
         np.testing.assert_array_equal(one[name], more[name])
     np.testing.assert_array_equal(one["a"], tied["a"])
@@ -212,9 +202,7 @@ def test_adding_a_correlation_or_a_spread_leaves_other_draws_as_they_are() -> No
 
 def test_a_shared_parameter_has_one_value_at_all_its_places() -> None:
     mass = wd.shared("mass", wd.uniform(1.0, 3.0))
-    plant = wd.Plant(
-        states={"x": mass}, equations={"x": "0*u + 0*m"}, input="u", output="x", parameters={"m": mass}
-    )
+    plant = wd.Plant(states={"x": mass}, equations={"x": "0*u + 0*m"}, input="u", output="x", parameters={"m": mass})
     loop = wd.Loop(
         plant=plant,
         controller=wd.OutputADRC(order=1, controller_bandwidth=1.0, observer_bandwidth=5.0, b0=mass),

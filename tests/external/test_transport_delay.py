@@ -53,9 +53,7 @@ def study(
     seed: int = 5,
 ) -> wd.Study:
     """A loop whose controller sends the derivative of a sine, whatever the plant does."""
-    known = wd.OutputADRC(
-        order=1, controller_gains=[0.0], observer_gains=[0.0, 0.0], b0=1.0, cancel_disturbance=False
-    )
+    known = wd.OutputADRC(order=1, controller_gains=[0.0], observer_gains=[0.0, 0.0], b0=1.0, cancel_disturbance=False)
     own = plant(name, dead_time, written)
     loop = wd.Loop(
         plant=own,
@@ -142,9 +140,7 @@ def test_delay_drawn_for_each_trial(name: str, delay: Any, whole: bool) -> None:
 
 def test_sample_period_and_delay_drawn_together() -> None:
     """Each trial has its own number of samples, whole delay and fraction."""
-    outcome = study("two_integrators", wd.uniform(0.0, 0.1), period=wd.uniform(0.015, 0.031)).run(
-        60, progress=False
-    )
+    outcome = study("two_integrators", wd.uniform(0.0, 0.1), period=wd.uniform(0.015, 0.031)).run(60, progress=False)
     for trial in range(60):
         period = float(outcome.parameters["sample_period"][trial])
         delay = float(outcome.parameters["actuator.delay"][trial])

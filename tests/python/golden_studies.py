@@ -136,9 +136,7 @@ def stock_plants() -> dict[str, wd.Study]:
             for integrator in ("euler", "rk4", "cash_karp5")
         },
         "two-mass drive": measured(
-            loop_of(
-                shaft, servo, disturbances={"load": wd.Ramp(1.0, 0.02, 0.06)}, reference=wd.Constant(0.2), **drive
-            )
+            loop_of(shaft, servo, disturbances={"load": wd.Ramp(1.0, 0.02, 0.06)}, reference=wd.Constant(0.2), **drive)
         ),
     }
 
@@ -200,8 +198,9 @@ def equations() -> dict[str, wd.Study]:
     return {
         "every function": study,
         "diverging": measured(loop_of(runaway, first)),
-        "drawn period": measured(loop_of(wd.FirstOrder(1.0, 0.3), first, sample_period=period,
-                                         disturbances={"load": wd.Step(0.2, at=0.3)})),
+        "drawn period": measured(
+            loop_of(wd.FirstOrder(1.0, 0.3), first, sample_period=period, disturbances={"load": wd.Step(0.2, at=0.3)})
+        ),
     }
 
 

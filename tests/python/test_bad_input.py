@@ -347,9 +347,7 @@ STUDIES: list[Case] = [
 ALL = [*SPREADS, *PLANTS, *CONTROLLERS, *PARTS, *LOOPS, *MEASURES, *STUDIES]
 
 
-@pytest.mark.parametrize(
-    ("make", "field", "shown"), ALL, ids=[f"{i}-{case[1]}" for i, case in enumerate(ALL)]
-)
+@pytest.mark.parametrize(("make", "field", "shown"), ALL, ids=[f"{i}-{case[1]}" for i, case in enumerate(ALL)])
 def test_mistakes_are_explained_at_once(make: Callable[[], object], field: str, shown: str) -> None:
     started = time.perf_counter()
     with pytest.raises(wd.DescriptionError) as caught:
@@ -438,9 +436,7 @@ FILES: list[tuple[Callable[[], str], str, str]] = [
 ]
 
 
-@pytest.mark.parametrize(
-    ("text", "field", "shown"), FILES, ids=[f"{i}-{case[1]}" for i, case in enumerate(FILES)]
-)
+@pytest.mark.parametrize(("text", "field", "shown"), FILES, ids=[f"{i}-{case[1]}" for i, case in enumerate(FILES)])
 def test_malformed_files_are_explained_at_once(text: Callable[[], str], field: str, shown: str) -> None:
     content = text()
     started = time.perf_counter()

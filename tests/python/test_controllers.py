@@ -40,9 +40,7 @@ def test_gains_by_hand_equal_those_of_the_bandwidth(form: Any, order: int) -> No
 
 def test_gain_factor_is_a_factor_on_the_gains() -> None:
     gains = 0.5 * np.asarray(engine().observer_gains(2, 20.0, 0.01))
-    half = wd.OutputADRC(
-        2, b0=1.0, controller_bandwidth=4.0, observer_bandwidth=20.0, observer_gain_factor=0.5
-    )
+    half = wd.OutputADRC(2, b0=1.0, controller_bandwidth=4.0, observer_bandwidth=20.0, observer_gain_factor=0.5)
     given = wd.OutputADRC(2, b0=1.0, controller_bandwidth=4.0, observer_gains=gains)
     assert np.array_equal(replay(half)["output"], replay(given)["output"])
 

@@ -39,9 +39,7 @@ def _coverage(trials: int, lower: Array, upper: Array) -> Array:
     """
     ends = np.concatenate([lower, upper])
     ends = ends[(ends > 0) & (ends < 1)]
-    grid = np.concatenate(
-        [np.linspace(0.001, 0.999, 199), ends, np.nextafter(ends, 0), np.nextafter(ends, 1)]
-    )
+    grid = np.concatenate([np.linspace(0.001, 0.999, 199), ends, np.nextafter(ends, 0), np.nextafter(ends, 1)])
     chance = stats.binom.pmf(np.arange(trials + 1), trials, 1 - grid[:, None])
     covered = (lower <= grid[:, None]) & (grid[:, None] <= upper)
     return np.asarray(np.sum(chance * covered, axis=1), dtype=np.float64)
@@ -61,9 +59,7 @@ def test_one_sided_clopper_pearson_covers_exactly_the_nominal_confidence_at_wors
 
 @pytest.mark.parametrize("trials", [1, 5, 20, 59, 200])
 @pytest.mark.parametrize("confidence", [0.8, 0.9, 0.95, 0.99])
-def test_two_sided_clopper_pearson_covers_at_least_the_nominal_confidence(
-    trials: int, confidence: float
-) -> None:
+def test_two_sided_clopper_pearson_covers_at_least_the_nominal_confidence(trials: int, confidence: float) -> None:
     coverage = _coverage(trials, *_bounds(trials, confidence, "clopper-pearson", "two-sided"))
     assert coverage.min() >= confidence - ROUNDING
 
@@ -90,9 +86,7 @@ CLAIMS = [
 
 
 @pytest.mark.parametrize(("trials", "at_least", "confidence"), CLAIMS)
-def test_a_verdict_is_wrong_with_at_most_the_stated_risk(
-    trials: int, at_least: float, confidence: float
-) -> None:
+def test_a_verdict_is_wrong_with_at_most_the_stated_risk(trials: int, at_least: float, confidence: float) -> None:
     verdicts = [judge(k, trials, 0, at_least, confidence).decision for k in range(trials + 1)]
     failures = np.arange(trials + 1)
     passed = np.array([decision == "pass" for decision in verdicts])

@@ -301,9 +301,7 @@ def test_functions_of_the_mathematical_library_are_never_folded(text: str) -> No
     assert operations(program_of(text))[-1] not in ("constant", "load")
 
 
-@pytest.mark.parametrize(
-    "text", ["x*1", "1*x", "x/1", "x - 0", "x**1", "pow(x, 1)", "--x", "x*(2 - 1)", "x*2**0"]
-)
+@pytest.mark.parametrize("text", ["x*1", "1*x", "x/1", "x - 0", "x**1", "pow(x, 1)", "--x", "x*(2 - 1)", "x*2**0"])
 def test_exact_identities_leave_the_value_itself(text: str) -> None:
     assert program_of(text).code == (Instruction("load", 0),)
 
@@ -584,9 +582,7 @@ MALFORMED: list[tuple[str, str, int, str]] = [
 ]
 
 
-@pytest.mark.parametrize(
-    ("text", "part", "column", "advice"), MALFORMED, ids=[repr(row[0]) for row in MALFORMED]
-)
+@pytest.mark.parametrize(("text", "part", "column", "advice"), MALFORMED, ids=[repr(row[0]) for row in MALFORMED])
 def test_malformed_text(text: str, part: str, column: int, advice: str) -> None:
     start = time.perf_counter()
     with warnings.catch_warnings():
@@ -644,9 +640,7 @@ def test_hostile_text(text: str, part: str, expected: str) -> None:
 
 @pytest.mark.parametrize("text", ["", " ", "\t", "\r\n"])
 def test_empty_text(text: str) -> None:
-    with pytest.raises(
-        EquationError, match=r"found .*; expected an expression\. Write 0 if nothing acts here"
-    ):
+    with pytest.raises(EquationError, match=r"found .*; expected an expression\. Write 0 if nothing acts here"):
         program_of(text)
 
 
@@ -659,9 +653,7 @@ def test_what_is_not_text(text: object) -> None:
 
 
 def test_place_in_a_text_of_several_lines() -> None:
-    with pytest.raises(
-        EquationError, match=r"found 'inertai' at line 3, column 5; .*Did you mean 'inertia'\?"
-    ):
+    with pytest.raises(EquationError, match=r"found 'inertai' at line 3, column 5; .*Did you mean 'inertia'\?"):
         program_of("x\n+ y\n  / inertai")
     with pytest.raises(EquationError, match=r"found '\^' at line 2, column 2"):
         program_of("x +\ny^2")

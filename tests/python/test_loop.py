@@ -112,9 +112,7 @@ def test_progress_is_reported_and_can_stop_the_run() -> None:
     assert outcome.requested == 200_000
     assert 0 <= outcome.trials < 200_000
     assert seen[0][1] == 200_000
-    assert np.array_equal(
-        outcome.slack, study.run(max(outcome.trials, 1), progress=False).slack[: outcome.trials]
-    )
+    assert np.array_equal(outcome.slack, study.run(max(outcome.trials, 1), progress=False).slack[: outcome.trials])
     assert "stopped; 200,000 asked for" in repr(outcome)
 
 
@@ -208,9 +206,7 @@ def test_steps_are_chosen_by_comparison_with_the_reference() -> None:
     study = wd.Study(loop, [wd.peak("error") <= 2.0, wd.rms("error") <= 0.4])
     assert study.resolved_steps() in (2, 4, 8, 16)
     assert f"steps per sample auto ({study.resolved_steps()})" in repr(study)
-    few, many = (
-        study.with_(steps_per_sample=n).run(8, progress=False) for n in (study.resolved_steps(), 256)
-    )
+    few, many = (study.with_(steps_per_sample=n).run(8, progress=False) for n in (study.resolved_steps(), 256))
     difference = np.abs(few.measures["rms of error"] - many.measures["rms of error"])
     assert difference.max() <= 0.4e-3
     assert wd.Study(loop.with_(steps_per_sample=3), [wd.peak("error") <= 2.0]).resolved_steps() == 3
@@ -223,13 +219,9 @@ def test_linear_plants_need_one_step() -> None:
 
 def test_steps_that_never_suffice_are_an_error() -> None:
     # A jump inside a sample interval, which a method of order 1 meets to 1/256 of it at best.
-    rough = wd.Plant(
-        {"x": 0.0, "v": 0.0}, {"x": "v", "v": "u + 5000*step(t - 0.50377)"}, input="u", output="x"
-    )
+    rough = wd.Plant({"x": 0.0, "v": 0.0}, {"x": "v", "v": "u + 5000*step(t - 0.50377)"}, input="u", output="x")
     loop = crane(plant=rough, disturbances={}, integrator="euler", steps_per_sample="auto")
-    with pytest.raises(
-        wd.DescriptionError, match=r"loop\.steps_per_sample: found 'auto'.*With 256 steps .*tanh"
-    ):
+    with pytest.raises(wd.DescriptionError, match=r"loop\.steps_per_sample: found 'auto'.*With 256 steps .*tanh"):
         wd.Study(loop, measures=[wd.rms("v")]).resolved_steps()
 
 
@@ -254,9 +246,7 @@ def test_a_comparison_that_takes_too_long_is_given_up(monkeypatch: pytest.Monkey
 def test_diverged_trials_fail_every_requirement() -> None:
     loop = crane(actuator=wd.Actuator(delay=wd.choice([0.0, 0.15])), duration=60.0, sensor=wd.Sensor())
     loop = loop.with_(controller=wd.ErrorADRC(2, controller_bandwidth=20.0, observer_bandwidth=100.0, b0=2.0))
-    outcome = wd.Study(loop, [wd.minimum("position") >= -1e300, wd.peak("error") <= 1e300]).run(
-        32, progress=False
-    )
+    outcome = wd.Study(loop, [wd.minimum("position") >= -1e300, wd.peak("error") <= 1e300]).run(32, progress=False)
     late = outcome.parameters["actuator.delay"] > 0.0
     assert 0 < late.sum() < 32
     assert np.array_equal(outcome.diverged, np.flatnonzero(late))
@@ -305,9 +295,7 @@ def test_total_disturbance_of_an_integrator_chain_is_exact() -> None:
         for delay, weights, extra in ((0.02, whole[order], None), (0.013, whole[order], first.get(order))):
             if delay == 0.013 and extra is None:
                 continue
-            replay = wd.Study(
-                loop.with_(actuator=wd.Actuator(delay=delay)), [wd.peak("error") <= 1.0]
-            ).replay(0)
+            replay = wd.Study(loop.with_(actuator=wd.Actuator(delay=delay)), [wd.peak("error") <= 1.0]).replay(0)
             u, f = replay["input"], replay.total_disturbance
             expected = np.convolve(u[:-1], weights[::-1], mode="valid")
             if extra is not None:
@@ -339,9 +327,7 @@ def test_estimated_disturbance_approaches_the_true_one(form: Any) -> None:
 
 def test_warnings_speak_of_the_loop() -> None:
     assert crane().warnings() == []
-    fast = crane(
-        controller=wd.ErrorADRC(2, b0=2.0, controller_bandwidth=200.0, observer_bandwidth=130.0)
-    ).warnings()
+    fast = crane(controller=wd.ErrorADRC(2, b0=2.0, controller_bandwidth=200.0, observer_bandwidth=130.0)).warnings()
     assert [text.split(":")[0] for text in fast] == ["controller"] * 3
     assert "observer_bandwidth * sample_period = 1.3" in fast[0]
     assert "slower than the controller" in fast[1]
@@ -395,9 +381,7 @@ def test_drivers_find_the_parameter_that_matters() -> None:
 
 def test_trials_of_another_tuning_meet_the_same_units() -> None:
     study = crane_study()
-    slower = study.with_controller(
-        wd.OutputADRC(2, b0=2.0, controller_bandwidth=3.0, observer_bandwidth=15.0)
-    )
+    slower = study.with_controller(wd.OutputADRC(2, b0=2.0, controller_bandwidth=3.0, observer_bandwidth=15.0))
     a, b = study.run(10, progress=False), slower.run(10, progress=False)
     assert all(np.array_equal(a.parameters[name], b.parameters[name]) for name in a.parameters)
     assert np.array_equal(study.replay(4)["wind"], slower.replay(4)["wind"])

@@ -70,9 +70,7 @@ def test_linear_stock_plants_of_one_transfer_function_agree() -> None:
     second = outputs(wd.SecondOrder(gain=2.0, time_constant=0.5, damping=0.3))
     transfer = outputs(wd.TransferFunction([2.0], [0.25, 0.3, 1.0]))
     state = outputs(wd.StateSpace(a, b, c, e=[[0.0], [8.0]]))
-    column = outputs(
-        wd.StateSpace(np.array(a), np.array(b).reshape(2, 1), np.array(c).reshape(1, 2), e=[[0.0], [8.0]])
-    )
+    column = outputs(wd.StateSpace(np.array(a), np.array(b).reshape(2, 1), np.array(c).reshape(1, 2), e=[[0.0], [8.0]]))
     np.testing.assert_allclose(transfer, second, rtol=0, atol=1e-12)
     np.testing.assert_allclose(state, second, rtol=0, atol=1e-12)
     assert np.array_equal(column, state)
@@ -137,8 +135,7 @@ def test_two_mass_drive_equals_its_equations() -> None:
         auxiliaries={
             "shaft": "stiffness*(motor_angle - load_angle) + damping*(motor_speed - load_speed)",
             "friction": "level*tanh(load_speed/friction_speed) + viscous_friction*load_speed",
-            "level": "coulomb_friction + (breakaway_friction - coulomb_friction)"
-            "*exp(-(load_speed/stribeck_speed)**2)",
+            "level": "coulomb_friction + (breakaway_friction - coulomb_friction)*exp(-(load_speed/stribeck_speed)**2)",
         },
         input="torque",
         output="load_angle",
@@ -178,9 +175,7 @@ def test_auxiliaries_parameters_and_output_are_signals() -> None:
     rate = replay.parameters["rate"]
     np.testing.assert_allclose(replay["loss"], rate * replay["x"], rtol=1e-15)
     assert np.array_equal(replay["level"], replay["output"])
-    np.testing.assert_allclose(
-        replay["late"], 2 * replay["loss"] + replay["level"] - replay["error"] + replay.time
-    )
+    np.testing.assert_allclose(replay["late"], 2 * replay["loss"] + replay["level"] - replay["error"] + replay.time)
     assert study.run(4, progress=False).measures["final of loss"][3] == replay["loss"][-1]
 
 

@@ -32,9 +32,7 @@ def equations(**loop: Any) -> wd.Study:
     )
     settings: dict[str, Any] = {
         "plant": plant,
-        "controller": wd.ErrorADRC(
-            order=2, controller_bandwidth=wd.uniform(4.0, 6.0), observer_bandwidth=30.0, b0=1.5
-        ),
+        "controller": wd.ErrorADRC(order=2, controller_bandwidth=wd.uniform(4.0, 6.0), observer_bandwidth=30.0, b0=1.5),
         "sample_period": 5e-3,
         "duration": 2.0,
         "reference": wd.Sine(0.5, period=wd.uniform(1.0, 2.0)),
@@ -133,17 +131,13 @@ def assert_same_bits(found: Result, expected: Result) -> None:
 def case(request: pytest.FixtureRequest) -> tuple[wd.Study, Result]:
     study = STUDIES[request.param]()
     expected = run(study, 0, TRIALS, 1, 128)
-    assert (
-        len(np.unique(expected[1][0])) > TRIALS * 0.9
-    )  # the trials differ, so that mixing them up would show
+    assert len(np.unique(expected[1][0])) > TRIALS * 0.9  # the trials differ, so that mixing them up would show
     return study, expected
 
 
 @pytest.mark.parametrize("threads", [1, 2, 5])
 @pytest.mark.parametrize("block", [1, 16, 64, 100, 128, 256])
-def test_threads_and_block_size_have_no_influence(
-    case: tuple[wd.Study, Result], threads: int, block: int
-) -> None:
+def test_threads_and_block_size_have_no_influence(case: tuple[wd.Study, Result], threads: int, block: int) -> None:
     study, expected = case
     assert_same_bits(run(study, 0, TRIALS, threads, block), expected)
 
@@ -167,11 +161,7 @@ def test_every_trial_alone(case: tuple[wd.Study, Result]) -> None:
 
 def test_extending_equals_one_longer_run(case: tuple[wd.Study, Result]) -> None:
     study, expected = case
-    outcome = (
-        study.run(101, threads=2, progress=False)
-        .extend(150, progress=False)
-        .extend(TRIALS - 251, progress=False)
-    )
+    outcome = study.run(101, threads=2, progress=False).extend(150, progress=False).extend(TRIALS - 251, progress=False)
     columns = outcome._columns
     assert_same_bits((columns.parameters, columns.measures, columns.status), expected)
 
@@ -262,9 +252,7 @@ def test_a_diverging_trial_does_not_disturb_its_lane_mates(written: str) -> None
         assert_same_bits(run(study, trial, 1), part)  # type: ignore[arg-type]
 
 
-@pytest.mark.parametrize(
-    "reference", [wd.Ramp(1.0), wd.Table([0, 1, 2], [0, 1, 0]), wd.Sine(1.0, period=4.0)]
-)
+@pytest.mark.parametrize("reference", [wd.Ramp(1.0), wd.Table([0, 1, 2], [0, 1, 0]), wd.Sine(1.0, period=4.0)])
 @pytest.mark.parametrize("what", ["before", "duration"])
 def test_targets_of_windows_that_end_at_drawn_times(reference: Any, what: str) -> None:
     """The final value of a response is the reference at each trial's own end of the window."""

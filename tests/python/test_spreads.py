@@ -132,9 +132,7 @@ def test_places_draw_apart_unless_shared() -> None:
 
 def test_shared_name_with_two_spreads_is_refused() -> None:
     a, b = wd.shared("mass", wd.uniform(0.0, 1.0)), wd.shared("mass", wd.uniform(0.0, 2.0))
-    with pytest.raises(
-        wd.DescriptionError, match=r"plant\.b: found .*same spread under the same shared name"
-    ):
+    with pytest.raises(wd.DescriptionError, match=r"plant\.b: found .*same spread under the same shared name"):
         study(a=a, b=b)
 
 
@@ -227,10 +225,7 @@ def test_spreads_print_as_the_call_that_makes_them() -> None:
         wd.column("mass"),
         wd.choice([1, 2], [0.5, 0.5], name="gear"),
     ):
-        calls = {
-            name: getattr(wd, name)
-            for name in ("normal", "tolerance", "shared", "uniform", "column", "choice")
-        }
+        calls = {name: getattr(wd, name) for name in ("normal", "tolerance", "shared", "uniform", "column", "choice")}
         assert eval(repr(spread), {"__builtins__": {}}, calls) == spread
 
 

@@ -52,9 +52,7 @@ EVERY_PLANT = [
     wd.FirstOrder(2.0, SPREAD, dead_time=wd.uniform(0.0, 0.01)),
     wd.SecondOrder(2.0, 0.5, damping=SPREAD, initial=[0.0, 1.0]),
     wd.TransferFunction([1.0, SPREAD], [1.0, 2.0, 3.0]),
-    wd.StateSpace(
-        [[0.0, 1.0], [-1.0, SPREAD]], [0.0, 1.0], [1.0, 0.0], e=[[0.0, 1.0], [1.0, 0.0]], initial=[1, 2]
-    ),
+    wd.StateSpace([[0.0, 1.0], [-1.0, SPREAD]], [0.0, 1.0], [1.0, 0.0], e=[[0.0, 1.0], [1.0, 0.0]], initial=[1, 2]),
     wd.DCDrive(0.5, 1e-3, 0.05, 1e-4, coulomb_friction=SPREAD, output="speed"),
     wd.TwoMassDrive(0.01, 0.04, 300.0, 0.1, breakaway_friction=SPREAD, output="load_angle"),
 ]
@@ -104,19 +102,13 @@ CONTROLLER = wd.OutputADRC(
 def study_of(plant: Any = EVERY_PLANT[1], disturbance: Any = 0.0, **options: Any) -> wd.Study:
     loop = wd.Loop(
         plant=plant,
-        controller=options.pop(
-            "controller", wd.ErrorADRC(2, b0=2.0, controller_bandwidth=3.0, observer_bandwidth=9.0)
-        ),
+        controller=options.pop("controller", wd.ErrorADRC(2, b0=2.0, controller_bandwidth=3.0, observer_bandwidth=9.0)),
         sample_period=options.pop("sample_period", 0.01),
         duration=1.0,
         reference=options.pop("reference", 1.0),
         disturbances=dict.fromkeys(plant.disturbance_names, disturbance),
         actuator=options.pop("actuator", wd.Actuator(limits=(-5.0, 5.0))),
-        **{
-            key: options.pop(key)
-            for key in ("sensor", "integrator", "steps_per_sample", "signals")
-            if key in options
-        },
+        **{key: options.pop(key) for key in ("sensor", "integrator", "steps_per_sample", "signals") if key in options},
     )
     return wd.Study(loop, **{"requirements": [wd.peak("error") <= 1.0], **options})
 
@@ -131,9 +123,7 @@ EVERY_STUDY = [
         controller=CONTROLLER,
         sample_period=wd.uniform(0.01, 0.02),
         reference=wd.Sine(1.0, 2.0),
-        sensor=wd.Sensor(
-            gain=1.1, bias=SPREAD, noise=0.1, filter_frequency=20.0, resolution=0.01, range=(-9, 9)
-        ),
+        sensor=wd.Sensor(gain=1.1, bias=SPREAD, noise=0.1, filter_frequency=20.0, resolution=0.01, range=(-9, 9)),
         actuator=wd.Actuator(
             (-1.0, SPREAD), rate_limit=9.0, resolution=0.1, delay=SPREAD, time_constant=1, initial=0.1
         ),

@@ -79,15 +79,11 @@ def test_jerk_limited_move_keeps_its_limits() -> None:
     assert np.abs(acceleration).max() == pytest.approx(8.0, rel=1e-6)
     assert np.abs(jerk).max() <= 60.0 * (1.0 + 1e-6)
     # Distance / speed + speed / acceleration + acceleration / jerk: all limits are reached.
-    assert time[np.flatnonzero(values > -2.0 + 1e-9)[-1]] == pytest.approx(
-        0.2 + 1.5 + 0.25 + 8.0 / 60.0, abs=0.02
-    )
+    assert time[np.flatnonzero(values > -2.0 + 1e-9)[-1]] == pytest.approx(0.2 + 1.5 + 0.25 + 8.0 / 60.0, abs=0.02)
 
 
 def test_numbers_of_functions_may_be_spread() -> None:
-    study = wd.Study(
-        loop_of(wd.Step(wd.uniform(1.0, 2.0), at=wd.uniform(1.0, 2.0))), [wd.peak("error") <= 9.0]
-    )
+    study = wd.Study(loop_of(wd.Step(wd.uniform(1.0, 2.0), at=wd.uniform(1.0, 2.0))), [wd.peak("error") <= 9.0])
     replay = study.replay(5)
     amplitude, at = replay.parameters["reference.amplitude"], replay.parameters["reference.at"]
     assert np.array_equal(replay["reference"], np.where(replay.time >= at, amplitude, 0.0))

@@ -66,9 +66,7 @@ def test_decision(failures: int, trials: int, at_least: float, confidence: float
     confidence=st.floats(0.5, 0.9999),
 )
 @settings(max_examples=300, deadline=None, derandomize=True)
-def test_decision_is_that_of_the_reported_bounds(
-    trials: int, share: float, at_least: float, confidence: float
-) -> None:
+def test_decision_is_that_of_the_reported_bounds(trials: int, share: float, at_least: float, confidence: float) -> None:
     verdict = judge(round(share * trials), trials, 0, at_least, confidence)
     assert 0.0 <= verdict.lower_bound <= verdict.upper_bound <= 1.0
     assert (verdict.decision == "pass") == (verdict.lower_bound >= at_least)
@@ -81,9 +79,7 @@ def test_decision_is_that_of_the_reported_bounds(
     ("trials", "at_least", "confidence"),
     [(2, 0.5, 0.75), (2, 0.7, 0.51), (2, 0.6, 0.64), (7, 0.9, 0.5217031), (3, 0.99, 0.029701)],
 )
-def test_a_claim_that_holds_with_equality_in_decimals_is_shown(
-    trials: int, at_least: float, confidence: float
-) -> None:
+def test_a_claim_that_holds_with_equality_in_decimals_is_shown(trials: int, at_least: float, confidence: float) -> None:
     # For example 0.9^7 = 0.4782969 = 1 - 0.5217031: rounding to doubles must not cost a trial.
     assert trials_needed(at_least, confidence) == trials
     if confidence >= 0.5:
@@ -126,9 +122,7 @@ def test_estimate_and_bounds_are_those_of_the_evidence() -> None:
 # -------------------------------------------------------------------------------------------
 
 
-def _further_by_search(
-    failures: int, trials: int, at_least: float, confidence: float, most: int
-) -> int | None:
+def _further_by_search(failures: int, trials: int, at_least: float, confidence: float, most: int) -> int | None:
     """The definition, tried number by number: expected failures rounded up for a pass, down for a fail."""
     limit, risk = _statistics.complement(at_least), _statistics.complement(confidence)
     more = np.arange(most + 1)
@@ -274,9 +268,7 @@ def test_several_looks_are_named_in_the_headline_and_warned_of_once() -> None:
     assert text.count("Deciding again and again") == 1
 
 
-@pytest.mark.parametrize(
-    "probability", [0.5, 0.9499999, 0.95, 0.98765432, 0.9999994, 1 - 1e-9, 1e-7, 0.0, 1.0]
-)
+@pytest.mark.parametrize("probability", [0.5, 0.9499999, 0.95, 0.98765432, 0.9999994, 1 - 1e-9, 1e-7, 0.0, 1.0])
 def test_printed_bounds_never_promise_more_than_the_number(probability: float) -> None:
     def number(text: str) -> float:
         return float(text.removesuffix("\u00a0%")) / 100
@@ -314,9 +306,7 @@ def test_html_escapes_every_text_and_closes_every_tag() -> None:
     verdict = judge(
         1, 40, 0, 0.9, 0.9, requirement=hostile, not_varied=[hostile], spreads=[hostile], truncated=[hostile]
     )
-    table = judge_many(
-        {hostile: 0, "rms <= 1": 3}, 40, 0, 0.9, 0.9, not_varied=[hostile], truncated=[hostile]
-    )
+    table = judge_many({hostile: 0, "rms <= 1": 3}, 40, 0, 0.9, 0.9, not_varied=[hostile], truncated=[hostile])
     for page in (verdict._repr_html_(), table._repr_html_()):
         tags = _Tags()
         tags.feed(page)

@@ -8,9 +8,7 @@ namespace windage {
 class block_runner::reference_targets final : public target_source {
 public:
     explicit reference_targets(const loop& l) : loop_(l) {}
-    void target(constant_signal time, signal out) const override {
-        loop_.reference().evaluate_at_own_times(time, out);
-    }
+    void target(constant_signal time, signal out) const override { loop_.reference().evaluate_at_own_times(time, out); }
 
 private:
     const loop& loop_;

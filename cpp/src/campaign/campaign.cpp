@@ -38,8 +38,9 @@ std::size_t block_size_for(const run_options& options, std::uint64_t count, int 
 } // namespace
 
 campaign::campaign(study_description study)
-    : study_(std::move(study)), signals_(signal_names(study_.loop)), source_(std::make_unique<parameter_source>(study_)) {
-    block_runner(study_, *source_, lanes);  // builds every stage once, so that a bad description is refused here
+    : study_(std::move(study)), signals_(signal_names(study_.loop)),
+      source_(std::make_unique<parameter_source>(study_)) {
+    block_runner(study_, *source_, lanes); // builds every stage once, so that a bad description is refused here
 }
 
 campaign::~campaign() = default;
@@ -52,11 +53,13 @@ std::uint64_t campaign::run(std::uint64_t first, std::uint64_t count, const resu
                             const run_options& options) const {
     const std::uint64_t available = trials_available();
     if (first > available || count > available - first)
-        throw std::invalid_argument("run: trials up to " + std::to_string(first + count) + " asked for; the table of "
-                                    "parameter values has " + std::to_string(available) + " rows");
+        throw std::invalid_argument("run: trials up to " + std::to_string(first + count) +
+                                    " asked for; the table of "
+                                    "parameter values has " +
+                                    std::to_string(available) + " rows");
     if (count == 0) return 0;
     const int threads = threads_for(options);
-    const bool one_by_one = study_.loop.integrator == integrator_kind::reference;  // its steps follow one trial
+    const bool one_by_one = study_.loop.integrator == integrator_kind::reference; // its steps follow one trial
     const std::size_t block_size = one_by_one ? lanes : block_size_for(options, count, threads);
     const std::size_t trials_per_block = one_by_one ? 1 : block_size;
     const std::uint64_t blocks = (count + trials_per_block - 1) / trials_per_block;
@@ -77,8 +80,7 @@ std::uint64_t campaign::run(std::uint64_t first, std::uint64_t count, const resu
     // The arena bounds the threads of this run; the global limit lets it have more than the machine has cores. A thread
     // without a block would do nothing, and if it were this one, nobody would report progress.
     const int workers = int(std::min<std::uint64_t>(std::uint64_t(threads), blocks));
-    const oneapi::tbb::global_control limit(oneapi::tbb::global_control::max_allowed_parallelism,
-                                            std::size_t(workers));
+    const oneapi::tbb::global_control limit(oneapi::tbb::global_control::max_allowed_parallelism, std::size_t(workers));
     oneapi::tbb::task_arena arena(workers);
     arena.execute([&] { oneapi::tbb::parallel_for(0, workers, work, oneapi::tbb::simple_partitioner()); });
     queue.rethrow();

@@ -20,15 +20,17 @@ private:
 
 } // namespace
 
-double evaluate_measure(const measure_description& d, const std::vector<double>& time, const std::vector<double>& values,
-                        double target, double sample_period) {
+double evaluate_measure(const measure_description& d, const std::vector<double>& time,
+                        const std::vector<double>& values, double target, double sample_period) {
     if (time.size() != values.size() || time.empty())
         throw std::invalid_argument("measure: time and values need the same length, at least 1");
     if (!d.after.is_constant() || !d.before.is_constant() || !d.a.is_constant() || !d.b.is_constant())
         throw std::invalid_argument("measure: a recorded signal has no drawn parameters");
     signal_arena arena(lanes);
     const signal now = arena.take(), x = arena.take(), period = arena.take(), end = arena.take(), result = arena.take();
-    const auto fill = [](signal s, double v) { for (int i = 0; i < lanes; ++i) s[i] = v; };
+    const auto fill = [](signal s, double v) {
+        for (int i = 0; i < lanes; ++i) s[i] = v;
+    };
     fill(period, sample_period);
     fill(end, time.back());
     const std::vector<std::uint64_t> trials(lanes, 0);

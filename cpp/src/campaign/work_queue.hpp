@@ -70,7 +70,7 @@ private:
     static constexpr std::chrono::milliseconds interval{100};
 
     std::uint64_t blocks_;
-    std::vector<char> finished_;  // one writer each
+    std::vector<char> finished_; // one writer each
     std::function<bool(std::uint64_t)> progress_;
     std::thread::id caller_;
     clock::time_point last_report_;

@@ -66,10 +66,10 @@ void observer_gains(int order, discretisation_kind kind, wide bandwidth, wide sa
     const int n = order + 1;
     const matrix a = unit_state_matrix(n, kind);
     const vector start = observability(a).partialPivLu().solve(vector::Unit(n, n - 1));
-    const wide decay = -exponential_minus_one(-bandwidth * sample_period);  // 1 - z without cancellation
+    const wide decay = -exponential_minus_one(-bandwidth * sample_period); // 1 - z without cancellation
     for (int i = 0; i < n; ++i) gains[i] = start[i];
     for (int power = 0; power < n; ++power)
-        for (int i = 0; i < n; ++i) {  // (A - z I) = (1 - z) I + strictly upper part: in place, top row first
+        for (int i = 0; i < n; ++i) { // (A - z I) = (1 - z) I + strictly upper part: in place, top row first
             wide sum = decay * gains[i];
             for (int j = i + 1; j < n; ++j) sum += a(i, j) * gains[j];
             gains[i] = sum;

@@ -69,7 +69,8 @@ void linear_adrc::place_gains(std::size_t i, wide sample_period) {
 
 // Output form: u = (k_1 (r - x_1) + ... + k_n (r^(n-1) - x_n) + r^(n) - x_{n+1}) / b0.
 // Error form:  u = (k_1 x_1 + ... + k_n x_n + x_{n+1}) / b0.
-template <int Order> WINDAGE_INLINE wide linear_adrc::command(const wide* x, const signal* reference, std::size_t i) const {
+template <int Order>
+WINDAGE_INLINE wide linear_adrc::command(const wide* x, const signal* reference, std::size_t i) const {
     const bool error_form = d_.form == adrc_form::error;
     const bool fed = d_.reference_derivatives;
     wide sum = 0.0;
@@ -95,12 +96,12 @@ void linear_adrc::sample_order(std::int64_t k, const signal* reference, constant
             gains[s] = wide::load(observer_gains_ + s * size_ + i);
         }
         // In the error form the observer follows e = r - y, which the command drives with the opposite sign.
-        const wide followed = error_form ? wide::load(reference[0] + i) - wide::load(measured + i)
-                                         : wide::load(measured + i);
+        const wide followed =
+            error_form ? wide::load(reference[0] + i) - wide::load(measured + i) : wide::load(measured + i);
         const wide drive = b0_.pack_at(i) * wide::load(fed + i);
         if (starts_measured) {
             x[0] = followed;
-            x[Order] = error_form ? drive : -drive;  // at rest under the initial command
+            x[Order] = error_form ? drive : -drive; // at rest under the initial command
         } else {
             const wide top = error_form ? x[Order] - drive : x[Order] + drive;
             const wide period = wide::load(period_ + i);

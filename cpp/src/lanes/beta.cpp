@@ -20,8 +20,8 @@ double root(double x) { return square_root(pack<1>(x))[0]; }
 /// What Stirling's formula (z - 1/2) ln z - z + ln(2 pi)/2 lacks to ln Gamma(z); z >= 12, error below 1e-17.
 double stirling_rest_large(double z) {
     // B_2k / (2k (2k - 1)), Abramowitz and Stegun 6.1.41
-    constexpr double coefficient[] = {1.0 / 12, -1.0 / 360, 1.0 / 1260, -1.0 / 1680,
-                                      1.0 / 1188, -691.0 / 360360, 1.0 / 156, -3617.0 / 122400};
+    constexpr double coefficient[] = {1.0 / 12,   -1.0 / 360,      1.0 / 1260, -1.0 / 1680,
+                                      1.0 / 1188, -691.0 / 360360, 1.0 / 156,  -3617.0 / 122400};
     const double w = 1.0 / (z * z);
     double sum = 0.0;
     for (int k = 7; k >= 0; --k) sum = sum * w + coefficient[k];

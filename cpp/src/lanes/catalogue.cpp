@@ -36,8 +36,7 @@ void apply_uniforms(stream_key key, std::uint32_t draw, std::uint64_t first_tria
     detail::apply_draws<lanes, detail::draw_kind::uniform>(key, draw, first_trial, a, b, n);
 }
 
-void apply_normals(stream_key key, std::uint32_t draw, std::uint64_t first_trial, double* a, double* b,
-                   std::size_t n) {
+void apply_normals(stream_key key, std::uint32_t draw, std::uint64_t first_trial, double* a, double* b, std::size_t n) {
     detail::apply_draws<lanes, detail::draw_kind::normal>(key, draw, first_trial, a, b, n);
 }
 

@@ -4,8 +4,8 @@ namespace windage {
 
 command_limiter::command_limiter(const actuator_description& d, signal_arena& arena)
     : low_(d.low, arena), high_(d.high, arena), rate_limit_(d.rate_limit, arena), resolution_(d.resolution, arena),
-      initial_(d.initial, arena), has_limits_(d.has_limits), largest_change_(arena.take()), unrounded_(arena.take()), command_(arena.take()),
-      size_(arena.block_size()) {}
+      initial_(d.initial, arena), has_limits_(d.has_limits), largest_change_(arena.take()), unrounded_(arena.take()),
+      command_(arena.take()), size_(arena.block_size()) {}
 
 void command_limiter::begin(const trial_block& block, const sample_clock& clock) {
     for (lane_value* n : {&low_, &high_, &rate_limit_, &resolution_, &initial_}) n->begin(block);

@@ -23,8 +23,8 @@ bool delay_line::needs_split(const loop_description& d) {
 
 delay_line::delay_line(const loop_description& d, signal_arena& arena)
     : delay_(d.actuator.delay, arena), dead_time_(d.plant.dead_time, arena), size_(arena.block_size()),
-      split_(needs_split(d)), same_for_all_(d.actuator.delay.is_constant() && d.plant.dead_time.is_constant() &&
-                                            d.sample_period.is_constant()),
+      split_(needs_split(d)),
+      same_for_all_(d.actuator.delay.is_constant() && d.plant.dead_time.is_constant() && d.sample_period.is_constant()),
       whole_(size_), fraction_(arena.take()), before_(arena.take()), after_(arena.take()), acting_(arena.take()) {}
 
 void delay_line::begin(const trial_block& block, const sample_clock& clock, const lane_value& initial_command) {
@@ -43,7 +43,7 @@ void delay_line::begin(const trial_block& block, const sample_clock& clock, cons
             longest = std::max(longest, whole_[i + lane]);
         }
     }
-    depth_ = std::int64_t(std::bit_ceil(std::uint64_t(longest + 2)));  // a power of two wraps without a division
+    depth_ = std::int64_t(std::bit_ceil(std::uint64_t(longest + 2))); // a power of two wraps without a division
     history_.resize(std::size_t(depth_) * size_);
     for (std::int64_t k = 0; k < depth_; ++k)
         std::copy_n(initial_command.data(), size_, history_.data() + std::size_t(k) * size_);

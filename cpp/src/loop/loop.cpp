@@ -10,8 +10,7 @@ namespace windage {
 
 class loop::disturbance_bank final : public plant_disturbances {
 public:
-    disturbance_bank(const loop_description& d, bool time_is_uniform, signal_arena& arena)
-        : size_(arena.block_size()) {
+    disturbance_bank(const loop_description& d, bool time_is_uniform, signal_arena& arena) : size_(arena.block_size()) {
         for (const disturbance_description& w : d.disturbances) all_.emplace_back(w, time_is_uniform, arena);
     }
     void begin(const trial_block& block, const sample_clock& clock) {
@@ -130,7 +129,8 @@ void loop::name_signals(const loop_description& d) {
     signals_["command"] = limiter_.command();
     signals_["input"] = input_;
     for (std::size_t i = 0; i < d.plant.states.size(); ++i) signals_[d.plant.states[i]] = plant_->state(int(i));
-    for (std::size_t i = 0; i < d.disturbances.size(); ++i) signals_[d.disturbances[i].name] = disturbances_->now(int(i));
+    for (std::size_t i = 0; i < d.disturbances.size(); ++i)
+        signals_[d.disturbances[i].name] = disturbances_->now(int(i));
     for (int i = 0; i < controller_->estimates(); ++i)
         signals_["estimate_" + std::to_string(i + 1)] = controller_->estimate(i);
     if (!d.input_name.empty()) signals_.try_emplace(d.input_name, input_);
@@ -138,12 +138,15 @@ void loop::name_signals(const loop_description& d) {
 }
 
 void loop::add_expression(const expression_description& e, signal_arena& arena) {
-    if (e.formula.outputs.size() != 1) throw std::invalid_argument("expression '" + e.name + "': one output is expected");
+    if (e.formula.outputs.size() != 1)
+        throw std::invalid_argument("expression '" + e.name + "': one output is expected");
     named_expression made{tape(e.formula, arena, tape::outputs::as_written), arena.take()};
     for (std::size_t i = 0; i < e.formula.inputs.size(); ++i) {
         const program_input& input = e.formula.inputs[i];
-        if (input.kind == source_kind::signal) made.formula.bind_input(i, find(input.signal));
-        else if (input.kind == source_kind::time) made.formula.bind_input(i, clock_.time());
+        if (input.kind == source_kind::signal)
+            made.formula.bind_input(i, find(input.signal));
+        else if (input.kind == source_kind::time)
+            made.formula.bind_input(i, clock_.time());
         else if (input.kind != source_kind::value)
             throw std::invalid_argument("expression '" + e.name + "' may read signals, numbers and time only");
     }

@@ -10,11 +10,11 @@ namespace windage {
 
 /// Times and rates of a profile.
 struct profile_plan {
-    wide distance;      ///< >= 0
-    wide jerk;          ///< highest
-    wide jerk_time;     ///< length of a phase of constant jerk
-    wide accelerating;  ///< length of the whole acceleration
-    wide total;         ///< length of the motion
+    wide distance;     ///< >= 0
+    wide jerk;         ///< highest
+    wide jerk_time;    ///< length of a phase of constant jerk
+    wide accelerating; ///< length of the whole acceleration
+    wide total;        ///< length of the motion
 
     void store(const signal* to, std::size_t i) const {
         const wide parts[5] = {distance, jerk, jerk_time, accelerating, total};
@@ -59,12 +59,13 @@ inline void accelerate(const profile_plan& p, wide s, wide sided, wide* motion) 
     const auto rising = sided < p.jerk_time, constant = sided < p.accelerating - p.jerk_time,
                falling = sided < p.accelerating;
     const wide half_way = 0.5 * speed * p.accelerating;
-    motion[0] = select(rising, p.jerk * s * s * s / 6.0,
-                select(constant, peak / 6.0 * (3.0 * s * (s - p.jerk_time) + p.jerk_time * p.jerk_time),
-                select(falling, speed * s - half_way + p.jerk * left * left * left / 6.0, speed * s - half_way)));
-    motion[1] = select(rising, 0.5 * p.jerk * s * s,
-                select(constant, peak * (s - 0.5 * p.jerk_time),
-                select(falling, speed - 0.5 * p.jerk * left * left, speed)));
+    motion[0] =
+        select(rising, p.jerk * s * s * s / 6.0,
+               select(constant, peak / 6.0 * (3.0 * s * (s - p.jerk_time) + p.jerk_time * p.jerk_time),
+                      select(falling, speed * s - half_way + p.jerk * left * left * left / 6.0, speed * s - half_way)));
+    motion[1] = select(
+        rising, 0.5 * p.jerk * s * s,
+        select(constant, peak * (s - 0.5 * p.jerk_time), select(falling, speed - 0.5 * p.jerk * left * left, speed)));
     motion[2] = select(rising, p.jerk * s, select(constant, peak, select(falling, p.jerk * left, 0.0)));
     motion[3] = select(rising, p.jerk, select(constant, wide(0.0), select(falling, -p.jerk, 0.0)));
 }
@@ -75,7 +76,8 @@ inline void follow_profile(const profile_plan& p, wide s, wide sided, wide* moti
     const auto first_half = sided < 0.5 * p.total;
     accelerate(p, select(first_half, s, p.total - s), select(first_half, sided, p.total - sided), motion);
     const auto before = sided <= 0.0, after = sided >= p.total;
-    motion[0] = select(before, wide(0.0), select(after, p.distance, select(first_half, motion[0], p.distance - motion[0])));
+    motion[0] =
+        select(before, wide(0.0), select(after, p.distance, select(first_half, motion[0], p.distance - motion[0])));
     motion[1] = select(before | after, wide(0.0), motion[1]);
     motion[2] = select(before | after, wide(0.0), select(first_half, motion[2], -motion[2]));
     motion[3] = select(before | after, wide(0.0), motion[3]);

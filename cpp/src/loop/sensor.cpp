@@ -30,7 +30,7 @@ void sensor::sample(std::int64_t k, constant_signal output) {
         wide y = gain_.pack_at(i) * wide::load(output + i) + bias_.pack_at(i);
         if (noise) y += noise_level_.pack_at(i) * wide::load(noise + i);
         if (filters) {
-            const wide before = k == 0 ? y : wide::load(filtered_ + i);  // starts settled on the first reading
+            const wide before = k == 0 ? y : wide::load(filtered_ + i); // starts settled on the first reading
             y = before + wide::load(filter_gain_ + i) * (y - before);
             y.store(filtered_ + i);
         }

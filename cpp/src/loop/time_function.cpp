@@ -97,7 +97,7 @@ void time_function::sine_pack(std::size_t i, instant at, wide* out, int derivati
     const wide amplitude = number_at(0, i), phase = number_at(2, i), offset = number_at(3, i), start = number_at(4, i);
     const wide omega = wide::load(derived_[0] + i);
     const auto [s, c] = sine_cosine(omega * (at.t - start) + phase);
-    const wide turned[4] = {s, c, -s, -c};  // the derivatives of a sine turn by a quarter each
+    const wide turned[4] = {s, c, -s, -c}; // the derivatives of a sine turn by a quarter each
     const auto started = at.sided >= start;
     wide scale = amplitude;
     out[0] = offset + select(started, scale * s, 0.0);
@@ -158,7 +158,7 @@ void time_function::table_uniform(double t, double sided, wide* out, int derivat
     const std::size_t n = numbers_.size() / 2;
     auto time = [&](std::size_t k) { return numbers_[k][0]; };
     auto value = [&](std::size_t k) { return numbers_[n + k][0]; };
-    std::size_t low = 0, high = n;  // time(low) <= sided < time(high)
+    std::size_t low = 0, high = n; // time(low) <= sided < time(high)
     while (high - low > 1) {
         const std::size_t middle = (low + high) / 2;
         (sided >= time(middle) ? low : high) = middle;

@@ -59,8 +59,8 @@ private:
             reducer_.add(v, at, i);
         else
             reducer_.add(v, at);
-        // x - x is zero, or undefined where x is not finite: one such sample leaves the whole measure undefined, because
-        // comparisons would skip it and a trial would pass on what is left.
+        // x - x is zero, or undefined where x is not finite: one such sample leaves the whole measure undefined,
+        // because comparisons would skip it and a trial would pass on what is left.
         const wide counted = seen + (1.0 + (at.x - at.x));
         if constexpr (Masked) {
             const auto inside = window_.inside(t, i);

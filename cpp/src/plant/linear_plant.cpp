@@ -45,12 +45,12 @@ Eigen::MatrixXd transition(const linear_model& m, double h) {
 
 linear_plant::linear_plant(const plant_description& d, number lag, bool split, const plant_disturbances& w,
                            signal_arena& arena)
-    : d_(d), w_(w), size_(arena.block_size()), states_(int(d.states.size())), order_(states_), has_lag_(!lag.is_constant(0.0)),
-      split_(split), lag_(lag, arena) {
+    : d_(d), w_(w), size_(arena.block_size()), states_(int(d.states.size())), order_(states_),
+      has_lag_(!lag.is_constant(0.0)), split_(split), lag_(lag, arena) {
     if (has_lag_) ++order_;
     if (d.kind != plant_kind::state_space && w.count() > 1)
         throw std::invalid_argument("plant: this stock plant has one disturbance; use a state-space plant for more");
-    realise(d, std::vector<double>(d.numbers.size(), 1.0));  // refuses wrong counts now rather than in a campaign
+    realise(d, std::vector<double>(d.numbers.size(), 1.0)); // refuses wrong counts now rather than in a campaign
     if (d.initial_state.size() != d.states.size())
         throw std::invalid_argument("plant: one initial state a state is expected");
     for (const number& n : d.numbers) numbers_.emplace_back(n, arena);

@@ -3,8 +3,8 @@
 namespace windage {
 
 Eigen::MatrixXd matrix_exponential(const Eigen::MatrixXd& a) {
-    constexpr int degree = 16;          // remainder below 2^-53 for a norm of 1/2
-    constexpr int most_squarings = 60;  // beyond, the result is not finite in any case
+    constexpr int degree = 16;         // remainder below 2^-53 for a norm of 1/2
+    constexpr int most_squarings = 60; // beyond, the result is not finite in any case
     int squarings = 0;
     double scale = 1.0;
     for (double norm = a.cwiseAbs().rowwise().sum().maxCoeff(); norm > 0.5 && squarings < most_squarings; norm *= 0.5) {

@@ -10,10 +10,16 @@ namespace {
 // Distinct abscissae of the stages, and which of them each stage uses.
 void tableau(integrator_kind kind, std::vector<double>& abscissae, std::vector<int>& stages) {
     switch (kind) {
-    case integrator_kind::euler: abscissae = {0.0}; stages = {0}; return;
-    case integrator_kind::rk4: abscissae = {0.0, 0.5, 1.0}; stages = {0, 1, 1, 2}; return;
+    case integrator_kind::euler:
+        abscissae = {0.0};
+        stages = {0};
+        return;
+    case integrator_kind::rk4:
+        abscissae = {0.0, 0.5, 1.0};
+        stages = {0, 1, 1, 2};
+        return;
     case integrator_kind::cash_karp5:
-    case integrator_kind::reference:  // Cash & Karp 1990, ACM TOMS 16(3) 201-222
+    case integrator_kind::reference: // Cash & Karp 1990, ACM TOMS 16(3) 201-222
         abscissae = {0.0, 1.0 / 5.0, 3.0 / 10.0, 3.0 / 5.0, 1.0, 7.0 / 8.0};
         stages = {0, 1, 2, 3, 4, 5};
         return;
@@ -78,8 +84,7 @@ void ode_plant::prepare_stages() {
             for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP {
                 (wide::load(plan_.start() + i) + fraction * wide::load(plan_.step() + i)).store(stage_time_[c] + i);
             });
-            for (int k = 0; k < w_.count(); ++k)
-                w_.evaluate(k, stage_time_[c], fraction == 1.0, stage_values_[c][k]);
+            for (int k = 0; k < w_.count(); ++k) w_.evaluate(k, stage_time_[c], fraction == 1.0, stage_values_[c][k]);
         }
     for (std::size_t s = 0; s < stages_.size(); ++s) {
         stage& here = stages_[s];
@@ -102,7 +107,7 @@ void ode_plant::full_derivative(const block_state& x, block_state& dx, const sta
 
 void ode_plant::take_step(const std::vector<stage>& stages) {
     begin_step(x_, stages.front());
-    std::size_t next = 0;  // odeint asks for the stages in their order
+    std::size_t next = 0; // odeint asks for the stages in their order
     auto system = [&](const block_state& x, block_state& dx, double) { full_derivative(x, dx, stages[next++]); };
     if (integrator_ == integrator_kind::euler) euler_.do_step(system, x_, 0.0, 1.0);
     if (integrator_ == integrator_kind::rk4) rk4_.do_step(system, x_, 0.0, 1.0);

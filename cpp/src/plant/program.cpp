@@ -80,7 +80,7 @@ operation operation_named(const std::string& name) {
 int operand_count(operation op) {
     for (const entry& e : table)
         if (op == e.op) return e.operands;
-    return 1;  // reciprocal
+    return 1; // reciprocal
 }
 
 bool program::reads(source_kind kind) const {

@@ -62,7 +62,7 @@ void tape_builder::replace_divisions() {
 // The step length joins a factor that is known before the stages where there is one: x * c * h is x * (c h).
 void tape_builder::scale_outputs() {
     program_input step;
-    step.kind = source_kind::time;  // any kind that is bound from outside
+    step.kind = source_kind::time; // any kind that is bound from outside
     inputs_.push_back(step);
     held_.push_back(true);
     const int h = append({operation::load, int(inputs_.size()) - 1});
@@ -114,9 +114,7 @@ int tape_builder::new_slot(signal memory) {
     return int(tape_.slots_.size()) - 1;
 }
 
-bool tape_builder::is_leaf(int v) const {
-    return code_[v].op == operation::load || code_[v].op == operation::constant;
-}
+bool tape_builder::is_leaf(int v) const { return code_[v].op == operation::load || code_[v].op == operation::constant; }
 
 void tape_builder::place_leaves() {
     slot_.assign(code_.size(), -1);
@@ -140,15 +138,14 @@ void tape_builder::place_leaves() {
 void tape_builder::find_last_uses() {
     last_use_.assign(code_.size(), -1);
     for (int i = 0; i < int(code_.size()); ++i)
-        if (uses_[i] > 0 && level_[i] == stage_level)
-            for_operands(code_[i], [&](int v) { last_use_[v] = i; });
+        if (uses_[i] > 0 && level_[i] == stage_level) for_operands(code_[i], [&](int v) { last_use_[v] = i; });
     for (int v : outputs_) last_use_[v] = int(code_.size());
 }
 
 void tape_builder::release_after_last_use(int v, int position) {
     if (level_[v] != stage_level || is_leaf(v) || last_use_[v] != position) return;
     free_.push_back(slot_[v]);
-    last_use_[v] = -1;  // a value read twice by one instruction is released once
+    last_use_[v] = -1; // a value read twice by one instruction is released once
 }
 
 // An output that nothing else reads goes straight to its signal.
@@ -181,7 +178,8 @@ void tape_builder::emit_outputs() {
     for (int v : outputs_) {
         const bool is_direct = tape_.slots_[slot_[v]] == nullptr && !is_leaf(v);
         tape_.output_slot_.push_back(is_direct ? slot_[v] : new_slot(nullptr));
-        if (!is_direct) tape_.body_.push_back({tape::kernel_of(operation::load), tape_.output_slot_.back(), slot_[v], -1, -1});
+        if (!is_direct)
+            tape_.body_.push_back({tape::kernel_of(operation::load), tape_.output_slot_.back(), slot_[v], -1, -1});
     }
 }
 

@@ -1,4 +1,5 @@
-// Turns a program into the steps of a tape (see tape.hpp for what is done and why the digits do not depend on the block).
+// Turns a program into the steps of a tape (see tape.hpp for what is done and why the digits do not depend on the
+// block).
 #pragma once
 
 #include <vector>
@@ -42,16 +43,16 @@ private:
     std::vector<instruction> code_;
     std::vector<int> outputs_;
     std::vector<program_input> inputs_;
-    std::vector<bool> held_;  // which inputs keep their value during a step
+    std::vector<bool> held_; // which inputs keep their value during a step
     signal_arena& arena_;
     tape& tape_;
-    int written_;  // values of the program; later ones are the builder's own
+    int written_; // values of the program; later ones are the builder's own
 
     std::vector<level> level_;
-    std::vector<int> uses_;      // of a value by reachable instructions and outputs
-    std::vector<int> last_use_;  // position of the last instruction of its level that reads it
-    std::vector<int> slot_;      // of each value, -1 while it has none
-    std::vector<int> free_;      // temporaries whose value is no longer needed
+    std::vector<int> uses_;     // of a value by reachable instructions and outputs
+    std::vector<int> last_use_; // position of the last instruction of its level that reads it
+    std::vector<int> slot_;     // of each value, -1 while it has none
+    std::vector<int> free_;     // temporaries whose value is no longer needed
 };
 
 } // namespace windage

@@ -16,8 +16,8 @@ class block_runner {
 public:
     block_runner(const study_description& study, const parameter_source& source, std::size_t block_size);
 
-    /// Runs `count` <= block size trials from `first` on and writes them at `offset`. `keep_going` is asked now and then;
-    /// returns false, with nothing written, once it says no.
+    /// Runs `count` <= block size trials from `first` on and writes them at `offset`. `keep_going` is asked now and
+    /// then; returns false, with nothing written, once it says no.
     bool run(std::uint64_t first, std::size_t count, const result_columns& to, std::size_t offset,
              const std::function<bool()>& keep_going);
 

@@ -26,8 +26,8 @@ struct result_columns {
 };
 
 struct run_options {
-    int threads = 0;              ///< 0: as many as the machine offers
-    std::size_t block_size = 0;   ///< trials simulated together; 0: chosen
+    int threads = 0;            ///< 0: as many as the machine offers
+    std::size_t block_size = 0; ///< trials simulated together; 0: chosen
     /// Called about ten times a second on the calling thread with the trials done so far; false cancels.
     std::function<bool(std::uint64_t)> progress;
 };
@@ -35,7 +35,7 @@ struct run_options {
 struct recording {
     std::vector<std::string> signals;
     std::size_t samples = 0;
-    std::vector<double> values;  ///< signal s at sample k: [s * samples + k]
+    std::vector<double> values; ///< signal s at sample k: [s * samples + k]
 };
 
 class campaign {
@@ -52,7 +52,8 @@ public:
 
     /// Runs trials first .. first + count - 1. Returns how many are valid from the first on: `count`, or fewer after a
     /// cancel. A trial that diverged has undefined measures.
-    std::uint64_t run(std::uint64_t first, std::uint64_t count, const result_columns& to, const run_options& options) const;
+    std::uint64_t run(std::uint64_t first, std::uint64_t count, const result_columns& to,
+                      const run_options& options) const;
 
     /// One trial with every signal at every sample; the same digits as in `run`.
     recording replay(std::uint64_t trial) const;
@@ -64,7 +65,7 @@ private:
 };
 
 /// One measure over a recorded signal, by the code that measures trials. `target` is where a response should end.
-double evaluate_measure(const measure_description& d, const std::vector<double>& time, const std::vector<double>& values,
-                        double target, double sample_period);
+double evaluate_measure(const measure_description& d, const std::vector<double>& time,
+                        const std::vector<double>& values, double target, double sample_period);
 
 } // namespace windage

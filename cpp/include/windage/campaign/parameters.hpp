@@ -27,7 +27,7 @@ public:
 private:
     struct copula {
         std::vector<int> columns;
-        Eigen::MatrixXd factor;  // lower Cholesky factor
+        Eigen::MatrixXd factor; // lower Cholesky factor
     };
 
     double uniform(std::uint64_t trial, std::size_t column) const;

@@ -22,8 +22,8 @@ public:
     constant_signal estimate(int i) const override { return estimates_ + std::size_t(i) * size_; }
 
 private:
-    template <int Order> void sample_order(std::int64_t k, const signal* reference, constant_signal measured,
-                                           constant_signal fed);
+    template <int Order>
+    void sample_order(std::int64_t k, const signal* reference, constant_signal measured, constant_signal fed);
     template <int Order> wide command(const wide* x, const signal* reference, std::size_t i) const;
     void place_gains(std::size_t i, wide sample_period);
 
@@ -31,7 +31,7 @@ private:
     std::size_t size_;
     lane_value controller_bandwidth_, observer_bandwidth_, b0_, controller_factor_, observer_factor_;
     std::vector<lane_value> given_controller_gains_, given_observer_gains_;
-    signal controller_gains_, observer_gains_;  // n and n + 1 signals
+    signal controller_gains_, observer_gains_; // n and n + 1 signals
     signal period_, inverse_b0_, estimates_, output_;
     const lane_value* initial_command_ = nullptr;
 };

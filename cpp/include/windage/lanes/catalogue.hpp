@@ -26,10 +26,8 @@ const std::vector<elementary_entry>& elementary_names();
 void apply_elementary(std::string_view name, const double* x, const double* y, double* out, std::size_t n);
 
 /// Two uniforms a trial, for trials first_trial ... first_trial + n - 1.
-void apply_uniforms(stream_key key, std::uint32_t draw, std::uint64_t first_trial, double* a, double* b,
-                    std::size_t n);
+void apply_uniforms(stream_key key, std::uint32_t draw, std::uint64_t first_trial, double* a, double* b, std::size_t n);
 /// Two standard normal numbers a trial.
-void apply_normals(stream_key key, std::uint32_t draw, std::uint64_t first_trial, double* a, double* b,
-                   std::size_t n);
+void apply_normals(stream_key key, std::uint32_t draw, std::uint64_t first_trial, double* a, double* b, std::size_t n);
 
 } // namespace windage

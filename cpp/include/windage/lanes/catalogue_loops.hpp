@@ -93,9 +93,8 @@ WINDAGE_BINARY_FUNCTIONS(WINDAGE_DEFINE_BINARY)
 /// The catalogue for packs of width W.
 #define WINDAGE_LIST_UNARY(NAME) {#NAME, 1, &apply_unary<W, call_##NAME>},
 #define WINDAGE_LIST_BINARY(NAME) {#NAME, 2, &apply_binary<W, call_##NAME>},
-template <int W>
-inline constexpr catalogue_entry catalogue[] = {WINDAGE_UNARY_FUNCTIONS(WINDAGE_LIST_UNARY)
-                                                    WINDAGE_BINARY_FUNCTIONS(WINDAGE_LIST_BINARY)};
+template <int W> inline constexpr catalogue_entry catalogue[] = {WINDAGE_UNARY_FUNCTIONS(WINDAGE_LIST_UNARY)
+                                                                     WINDAGE_BINARY_FUNCTIONS(WINDAGE_LIST_BINARY)};
 #undef WINDAGE_LIST_UNARY
 #undef WINDAGE_LIST_BINARY
 

@@ -54,13 +54,8 @@ template <int W> WINDAGE_INLINE pack<W> exponential_kernel(pack<W> r) {
 
 /// (2 atanh(s) - 2 s) / s^3 in powers of s^2, for m = (1 + s) / (1 - s) between sqrt(1/2) and sqrt(2).
 inline constexpr double logarithm_rest[] = {
-    0x1.5555555555592p-1,
-    0x1.999999997fd76p-2,
-    0x1.24924941f5107p-2,
-    0x1.c71c5205f74fbp-3,
-    0x1.74663fa554d0ep-3,
-    0x1.39a1a6abf2961p-3,
-    0x1.2f06373abc3b8p-3,
+    0x1.5555555555592p-1, 0x1.999999997fd76p-2, 0x1.24924941f5107p-2, 0x1.c71c5205f74fbp-3,
+    0x1.74663fa554d0ep-3, 0x1.39a1a6abf2961p-3, 0x1.2f06373abc3b8p-3,
 };
 
 /// A positive normal number as m 2^k with m between sqrt(1/2) and sqrt(2).

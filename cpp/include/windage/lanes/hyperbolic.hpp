@@ -18,27 +18,14 @@ inline constexpr double half_ln2_low = -0x1.0ca86c3898d00p-50;
 
 /// (tanh(v) - v) / v^3 in powers of v^2 for |v| <= 0.55.
 inline constexpr double hyperbolic_tangent_rest[] = {
-    -0x1.5555555555497p-2,
-    0x1.1111111102233p-3,
-    -0x1.ba1ba1ad18315p-5,
-    0x1.664f45b2214a9p-6,
-    -0x1.226ddb8484734p-7,
-    0x1.d6c5e46a95d80p-9,
-    -0x1.7cf1829267aebp-10,
-    0x1.2f952e995ae74p-11,
-    -0x1.b8b1a599f7fb7p-13,
-    0x1.ab0b1c86c340ep-15,
+    -0x1.5555555555497p-2, 0x1.1111111102233p-3,   -0x1.ba1ba1ad18315p-5, 0x1.664f45b2214a9p-6,   -0x1.226ddb8484734p-7,
+    0x1.d6c5e46a95d80p-9,  -0x1.7cf1829267aebp-10, 0x1.2f952e995ae74p-11, -0x1.b8b1a599f7fb7p-13, 0x1.ab0b1c86c340ep-15,
 };
 
 /// (sinh(x) - x) / x^3 in powers of x^2 for |x| <= 1.
 inline constexpr double hyperbolic_sine_rest[] = {
-    0x1.5555555555556p-3,
-    0x1.11111111110a6p-7,
-    0x1.a01a01a0289bbp-13,
-    0x1.71de3a46598f3p-19,
-    0x1.ae64671c62b6ap-26,
-    0x1.611a559897137p-33,
-    0x1.b4c784535a083p-41,
+    0x1.5555555555556p-3,  0x1.11111111110a6p-7,  0x1.a01a01a0289bbp-13, 0x1.71de3a46598f3p-19,
+    0x1.ae64671c62b6ap-26, 0x1.611a559897137p-33, 0x1.b4c784535a083p-41,
 };
 
 /// e^x / 2 for 0 <= x; the largest argument with a finite result is ln(2^1025).

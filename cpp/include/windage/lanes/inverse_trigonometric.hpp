@@ -16,34 +16,15 @@ inline constexpr double quarter_pi_low = 0x1.1a62633145c07p-55;
 
 /// (atan(t) - t) / t^3 in powers of t^2 for |t| <= 1/2.
 inline constexpr double arc_tangent_rest[] = {
-    -0x1.5555555555516p-2,
-    0x1.999999999112ep-3,
-    -0x1.249249215d64cp-3,
-    0x1.c71c7090ba936p-4,
-    -0x1.745cf4c67beecp-4,
-    0x1.3b113d74d9272p-4,
-    -0x1.10f31c0047a8ep-4,
-    0x1.dfe94cf7d8d21p-5,
-    -0x1.a397a4553aacdp-5,
-    0x1.56f39e99f64a8p-5,
-    -0x1.c178d0890da42p-6,
-    0x1.4b7a225763bd6p-7,
+    -0x1.5555555555516p-2, 0x1.999999999112ep-3, -0x1.249249215d64cp-3, 0x1.c71c7090ba936p-4,
+    -0x1.745cf4c67beecp-4, 0x1.3b113d74d9272p-4, -0x1.10f31c0047a8ep-4, 0x1.dfe94cf7d8d21p-5,
+    -0x1.a397a4553aacdp-5, 0x1.56f39e99f64a8p-5, -0x1.c178d0890da42p-6, 0x1.4b7a225763bd6p-7,
 };
 /// (asin(s) - s) / s^3 in powers of s^2 for |s| <= 1/2.
 inline constexpr double arc_sine_rest[] = {
-    0x1.5555555555577p-3,
-    0x1.333333332e0e3p-4,
-    0x1.6db6db7215ab2p-5,
-    0x1.f1c71a93ce8e9p-6,
-    0x1.6e8bdeff0c25bp-6,
-    0x1.1c49ee432aa62p-6,
-    0x1.ca1fbee292dcdp-7,
-    0x1.7583f99675bdfp-7,
-    0x1.6145410a07e83p-7,
-    0x1.e5725306aa528p-9,
-    0x1.63c45d5010483p-6,
-    -0x1.58361db7718a8p-6,
-    0x1.0b588592fcd66p-5,
+    0x1.5555555555577p-3, 0x1.333333332e0e3p-4,  0x1.6db6db7215ab2p-5, 0x1.f1c71a93ce8e9p-6, 0x1.6e8bdeff0c25bp-6,
+    0x1.1c49ee432aa62p-6, 0x1.ca1fbee292dcdp-7,  0x1.7583f99675bdfp-7, 0x1.6145410a07e83p-7, 0x1.e5725306aa528p-9,
+    0x1.63c45d5010483p-6, -0x1.58361db7718a8p-6, 0x1.0b588592fcd66p-5,
 };
 
 /// The angle offset * pi/4 + atan(numerator / denominator), the quotient at most 1/2 in size.
@@ -107,8 +88,7 @@ template <int W> WINDAGE_INLINE pack<W> arc_tangent(pack<W> x) {
 template <int W> WINDAGE_INLINE pack<W> arc_sine(pack<W> x) {
     const auto parts = detail::reduce_arc_sine(absolute(x));
     // pi/2 - 2 (s + rest)
-    const pack<W> large = 2.0 * detail::quarter_pi_high -
-                          (2.0 * parts.s - 2.0 * (detail::quarter_pi_low - parts.rest));
+    const pack<W> large = 2.0 * detail::quarter_pi_high - (2.0 * parts.s - 2.0 * (detail::quarter_pi_low - parts.rest));
     return copy_sign(select(parts.large, large, parts.s + parts.rest), x);
 }
 

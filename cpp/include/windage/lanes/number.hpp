@@ -5,8 +5,8 @@
 namespace windage {
 
 struct number {
-    double value = 0.0;  ///< used when `parameter` is negative
-    int parameter = -1;  ///< column of the drawn parameter, or -1 for a constant
+    double value = 0.0; ///< used when `parameter` is negative
+    int parameter = -1; ///< column of the drawn parameter, or -1 for a constant
 
     constexpr number() = default;
     constexpr number(double constant) : value(constant) {}

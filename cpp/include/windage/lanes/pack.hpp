@@ -116,7 +116,9 @@ template <int W> struct pack : pack_layout<W> {
     WINDAGE_INLINE double operator[](int lane) const {
         return part[lane / layout::register_width][lane % layout::register_width];
     }
-    WINDAGE_INLINE void set(int lane, double x) { part[lane / layout::register_width][lane % layout::register_width] = x; }
+    WINDAGE_INLINE void set(int lane, double x) {
+        part[lane / layout::register_width][lane % layout::register_width] = x;
+    }
 };
 
 /// The pack of this build.
@@ -129,10 +131,14 @@ using wide = pack<lanes>;
     }                                                                                                                  \
     template <int W, class S> WINDAGE_INLINE auto operator OPERATOR(TYPE<W> a, S b)                                    \
         requires std::is_arithmetic_v<S>                                                                               \
-    { return a OPERATOR TYPE<W>(b); }                                                                                  \
+    {                                                                                                                  \
+        return a OPERATOR TYPE<W>(b);                                                                                  \
+    }                                                                                                                  \
     template <int W, class S> WINDAGE_INLINE auto operator OPERATOR(S a, TYPE<W> b)                                    \
         requires std::is_arithmetic_v<S>                                                                               \
-    { return TYPE<W>(a) OPERATOR b; }
+    {                                                                                                                  \
+        return TYPE<W>(a) OPERATOR b;                                                                                  \
+    }
 WINDAGE_BINARY(pack, +)
 WINDAGE_BINARY(pack, -)
 WINDAGE_BINARY(pack, *)

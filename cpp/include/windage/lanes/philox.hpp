@@ -6,9 +6,9 @@
 // Guarantee: distinct (seed, stream, draw, trial) use distinct counters or keys. Not meant for secrets.
 #pragma once
 
-#include <cstring>
 #include <array>
 #include <cstdint>
+#include <cstring>
 
 #include <windage/lanes/exponential.hpp>
 #include <windage/lanes/pack.hpp>
@@ -159,28 +159,24 @@ inline philox_counter philox4x32_10(philox_counter c, philox_key key) {
 }
 
 /// Two independent uniforms in the open interval (0, 1), 52 bits each; lane i belongs to trial first_trial + i.
-template <int W>
-WINDAGE_INLINE void uniform_pair(std::uint64_t first_trial, stream_key key, std::uint32_t draw, pack<W>& a,
-                                 pack<W>& b) {
+template <int W> WINDAGE_INLINE void uniform_pair(std::uint64_t first_trial, stream_key key, std::uint32_t draw,
+                                                  pack<W>& a, pack<W>& b) {
     detail::uniform_pair(detail::consecutive<W>(first_trial), key, draw, a, b);
 }
 /// The same for W trials given by their numbers.
-template <int W>
-WINDAGE_INLINE void uniform_pair(const std::uint64_t* trials, stream_key key, std::uint32_t draw, pack<W>& a,
-                                 pack<W>& b) {
+template <int W> WINDAGE_INLINE void uniform_pair(const std::uint64_t* trials, stream_key key, std::uint32_t draw,
+                                                  pack<W>& a, pack<W>& b) {
     detail::uniform_pair(detail::load_integers<W>(trials), key, draw, a, b);
 }
 
 /// Two independent standard normal numbers from the uniforms of the same (key, draw, trial); at most 8.58 in size.
 template <int W>
-WINDAGE_INLINE void normal_pair(std::uint64_t first_trial, stream_key key, std::uint32_t draw, pack<W>& a,
-                                pack<W>& b) {
+WINDAGE_INLINE void normal_pair(std::uint64_t first_trial, stream_key key, std::uint32_t draw, pack<W>& a, pack<W>& b) {
     detail::normal_pair(detail::consecutive<W>(first_trial), key, draw, a, b);
 }
 /// The same for W trials given by their numbers.
-template <int W>
-WINDAGE_INLINE void normal_pair(const std::uint64_t* trials, stream_key key, std::uint32_t draw, pack<W>& a,
-                                pack<W>& b) {
+template <int W> WINDAGE_INLINE void normal_pair(const std::uint64_t* trials, stream_key key, std::uint32_t draw,
+                                                 pack<W>& a, pack<W>& b) {
     detail::normal_pair(detail::load_integers<W>(trials), key, draw, a, b);
 }
 

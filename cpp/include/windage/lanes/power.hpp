@@ -15,13 +15,8 @@ namespace windage {
 namespace detail {
 /// (3 atanh(s) / s - 3 - s^2) / s^4 in powers of s^2.
 inline constexpr double power_rest[] = {
-    0x1.3333333333464p-1,
-    0x1.b6db6db683bb7p-2,
-    0x1.555555a21074dp-2,
-    0x1.1745af693930ep-2,
-    0x1.d8ae628d14431p-3,
-    0x1.973fd284e800bp-3,
-    0x1.9564763533e69p-3,
+    0x1.3333333333464p-1, 0x1.b6db6db683bb7p-2, 0x1.555555a21074dp-2, 0x1.1745af693930ep-2,
+    0x1.d8ae628d14431p-3, 0x1.973fd284e800bp-3, 0x1.9564763533e69p-3,
 };
 /// 2 / (3 ln 2), whole and in two pieces of which the first has 26 bits.
 inline constexpr double log2_factor = 0x1.ec709dc3a03fdp-1;

@@ -63,10 +63,10 @@ template <class F> WINDAGE_INLINE void for_each_pack(std::size_t block_size, F&&
 
 /// The trials that a block simulates: one index a lane, and their drawn parameters.
 struct trial_block {
-    std::size_t size = 0;                    ///< lanes, a multiple of the pack width
-    std::uint64_t seed = 0;                  ///< of the study
-    const std::uint64_t* trials = nullptr;   ///< trial index of each lane
-    const double* parameters = nullptr;      ///< parameter p of lane i at [p * size + i]
+    std::size_t size = 0;                  ///< lanes, a multiple of the pack width
+    std::uint64_t seed = 0;                ///< of the study
+    const std::uint64_t* trials = nullptr; ///< trial index of each lane
+    const double* parameters = nullptr;    ///< parameter p of lane i at [p * size + i]
 };
 
 /// A number of the description as a signal: the constant or the drawn parameter of each lane.

@@ -26,57 +26,29 @@ inline constexpr double largest_angle = 0x1p30;
 
 /// (sin(r) - r) / r^3 and (cos(r) - 1 + r^2/2) / r^4 in powers of r^2 for |r| <= pi/4.
 inline constexpr double sine_rest[] = {
-    -0x1.5555555555549p-3,
-    0x1.111111110f87ap-7,
-    -0x1.a01a019c11970p-13,
-    0x1.71de3577b4a47p-19,
-    -0x1.ae5e663922ebbp-26,
-    0x1.5d93009ab815ap-33,
+    -0x1.5555555555549p-3, 0x1.111111110f87ap-7,   -0x1.a01a019c11970p-13,
+    0x1.71de3577b4a47p-19, -0x1.ae5e663922ebbp-26, 0x1.5d93009ab815ap-33,
 };
 inline constexpr double cosine_rest[] = {
-    0x1.555555555554cp-5,
-    -0x1.6c16c16c1517ep-10,
-    0x1.a01a019cb1bdep-16,
-    -0x1.27e4f809f0bc2p-22,
-    0x1.1ee9ebe939ec1p-29,
-    -0x1.8fae9c7a52c6bp-37,
+    0x1.555555555554cp-5,   -0x1.6c16c16c1517ep-10, 0x1.a01a019cb1bdep-16,
+    -0x1.27e4f809f0bc2p-22, 0x1.1ee9ebe939ec1p-29,  -0x1.8fae9c7a52c6bp-37,
 };
 /// (tan(r) - r) / r^3 in powers of r^2 for |r| <= pi/4.
 inline constexpr double tangent_rest[] = {
-    0x1.55555555554f1p-2,
-    0x1.1111111118357p-3,
-    0x1.ba1ba1b465fdbp-5,
-    0x1.664f49a9601f8p-6,
-    0x1.226e1240f6c27p-7,
-    0x1.d6d9372ecfecap-9,
-    0x1.7d5b33ace04d6p-10,
-    0x1.37fbdb6aa4b06p-11,
-    0x1.d26193ed2cd88p-13,
-    0x1.1e47e8b0897eep-13,
-    -0x1.ba4f757a89b0bp-16,
-    0x1.771ad8b125592p-14,
-    -0x1.785c3fea4fab1p-15,
-    0x1.5dfbcf4389968p-16,
+    0x1.55555555554f1p-2,   0x1.1111111118357p-3,  0x1.ba1ba1b465fdbp-5,   0x1.664f49a9601f8p-6,  0x1.226e1240f6c27p-7,
+    0x1.d6d9372ecfecap-9,   0x1.7d5b33ace04d6p-10, 0x1.37fbdb6aa4b06p-11,  0x1.d26193ed2cd88p-13, 0x1.1e47e8b0897eep-13,
+    -0x1.ba4f757a89b0bp-16, 0x1.771ad8b125592p-14, -0x1.785c3fea4fab1p-15, 0x1.5dfbcf4389968p-16,
 };
 /// (sin(pi/2 f) / f - pi/2) / f^2 and (cos(pi/2 f) - 1) / f^2 in powers of f^2 for |f| <= 1/2; pi/2 as a sum.
 inline constexpr double half_pi_high = 0x1.921fb54442d18p+0;
 inline constexpr double half_pi_low = 0x1.1a62633145c07p-54;
 inline constexpr double turn_sine_rest[] = {
-    -0x1.4abbce625be47p-1,
-    0x1.466bc67758d85p-4,
-    -0x1.32d2cce3332c5p-8,
-    0x1.5078301b60c49p-13,
-    -0x1.e300a658c527fp-19,
-    0x1.e403d00e64139p-25,
+    -0x1.4abbce625be47p-1, 0x1.466bc67758d85p-4,   -0x1.32d2cce3332c5p-8,
+    0x1.5078301b60c49p-13, -0x1.e300a658c527fp-19, 0x1.e403d00e64139p-25,
 };
 inline constexpr double turn_cosine[] = {
-    -0x1.3bd3cc9be45dep+0,
-    0x1.03c1f081b5ab0p-2,
-    -0x1.55d3c7e3c95bcp-6,
-    0x1.e1f50683b429fp-11,
-    -0x1.a6d1ecb73e232p-16,
-    0x1.f9cc6ace687f7p-22,
-    -0x1.b26fe7fc4da18p-28,
+    -0x1.3bd3cc9be45dep+0,  0x1.03c1f081b5ab0p-2,  -0x1.55d3c7e3c95bcp-6,  0x1.e1f50683b429fp-11,
+    -0x1.a6d1ecb73e232p-16, 0x1.f9cc6ace687f7p-22, -0x1.b26fe7fc4da18p-28,
 };
 
 /// |x| = k pi/2 + remainder + lost.
@@ -134,8 +106,8 @@ template <int W> WINDAGE_INLINE sine_cosine_pair<W> sine_cosine_turn(pack<W> u) 
     const pack<W> shifted = quarters + detail::integer_shifter;
     const pack<W> f = quarters - (shifted - detail::integer_shifter);
     const pack<W> z = f * f;
-    const pack<W> sine = f * detail::half_pi_high +
-                         f * (z * detail::polynomial(z, detail::turn_sine_rest) + detail::half_pi_low);
+    const pack<W> sine =
+        f * detail::half_pi_high + f * (z * detail::polynomial(z, detail::turn_sine_rest) + detail::half_pi_low);
     const pack<W> cosine = 1.0 + z * detail::polynomial(z, detail::turn_cosine);
     return detail::place_in_quadrant(sine, cosine, bits_of(shifted));
 }
@@ -146,8 +118,7 @@ template <int W> WINDAGE_INLINE pack<W> tangent(pack<W> x) {
     const auto reduced = detail::reduce_angle(absolute(x));
     const pack<W> r = reduced.remainder;
     const pack<W> z = r * r;
-    const pack<W> rest =
-        (r * z) * detail::polynomial(z, detail::tangent_rest) + (reduced.lost + reduced.lost * z);
+    const pack<W> rest = (r * z) * detail::polynomial(z, detail::tangent_rest) + (reduced.lost + reduced.lost * z);
     const pack<W> high = r + rest;
     const pack<W> low = rest - (high - r);
     // Odd quadrants: -1 / (high + low), to first order in low.

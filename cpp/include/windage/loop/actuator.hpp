@@ -21,8 +21,8 @@ public:
 private:
     lane_value low_, high_, rate_limit_, resolution_, initial_;
     bool has_limits_;
-    signal largest_change_;  // a sample
-    signal unrounded_;       // what the rate limit starts from: changes below half a resolution must add up
+    signal largest_change_; // a sample
+    signal unrounded_;      // what the rate limit starts from: changes below half a resolution must add up
     signal command_;
     std::size_t size_;
 };

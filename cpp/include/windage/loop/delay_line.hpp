@@ -19,9 +19,9 @@ public:
 
     /// The interval is split: the command changes phi after the sample instant.
     bool is_split() const { return split_; }
-    constant_signal before() const { return before_; }      ///< command until t_k + phi
-    constant_signal after() const { return after_; }        ///< command from t_k + phi on
-    constant_signal fraction() const { return fraction_; }  ///< phi, s
+    constant_signal before() const { return before_; }     ///< command until t_k + phi
+    constant_signal after() const { return after_; }       ///< command from t_k + phi on
+    constant_signal fraction() const { return fraction_; } ///< phi, s
     /// Command that acts right after the sample instant.
     constant_signal acting() const { return split_ ? acting_ : after_; }
 
@@ -36,7 +36,7 @@ private:
     bool split_, same_for_all_;
     std::int64_t depth_ = 1;
     std::vector<double> history_;
-    std::vector<std::int64_t> whole_;  // m of each lane
+    std::vector<std::int64_t> whole_; // m of each lane
     signal fraction_, before_, after_, acting_;
 };
 

@@ -12,15 +12,15 @@ namespace windage {
 
 /// Functions of time, used as references and disturbances. `numbers` by kind (times in s, angles in rad):
 enum class time_function_kind {
-    constant,      ///< value
-    step,          ///< amplitude, at, initial
-    ramp,          ///< slope, start, stop, initial      (held after stop)
-    sine,          ///< amplitude, period, phase, offset, start   (offset before start)
-    pulse,         ///< amplitude, start, width
-    quintic,       ///< amplitude, start, duration, initial     (10 s^3 - 15 s^4 + 6 s^5)
-    jerk_limited,  ///< amplitude, start, speed limit, acceleration limit, jerk limit, initial
-    table_linear,  ///< times, then as many values; straight lines between, held outside
-    table_hold,    ///< times, then as many values; each value held until the next time
+    constant,     ///< value
+    step,         ///< amplitude, at, initial
+    ramp,         ///< slope, start, stop, initial      (held after stop)
+    sine,         ///< amplitude, period, phase, offset, start   (offset before start)
+    pulse,        ///< amplitude, start, width
+    quintic,      ///< amplitude, start, duration, initial     (10 s^3 - 15 s^4 + 6 s^5)
+    jerk_limited, ///< amplitude, start, speed limit, acceleration limit, jerk limit, initial
+    table_linear, ///< times, then as many values; straight lines between, held outside
+    table_hold,   ///< times, then as many values; each value held until the next time
 };
 
 struct time_function_description {
@@ -30,33 +30,33 @@ struct time_function_description {
 
 enum class disturbance_kind {
     time_function,
-    gauss_markov,  ///< standard deviation, correlation time: first-order, exactly sampled, held between samples
-    white,         ///< two-sided spectral density (unit^2/Hz): variance density / Ts, held between samples
+    gauss_markov, ///< standard deviation, correlation time: first-order, exactly sampled, held between samples
+    white,        ///< two-sided spectral density (unit^2/Hz): variance density / Ts, held between samples
 };
 
 struct disturbance_description {
     std::string name;
     disturbance_kind kind = disturbance_kind::time_function;
-    time_function_description function;  ///< for time_function
-    std::vector<number> numbers;         ///< for the noises
-    std::uint32_t stream = 0;            ///< random stream of a noise
+    time_function_description function; ///< for time_function
+    std::vector<number> numbers;        ///< for the noises
+    std::uint32_t stream = 0;           ///< random stream of a noise
 };
 
 /// y_m = clip(quantise(filter(gain * y + bias + noise))).
 struct sensor_description {
     number gain = 1.0;
     number bias = 0.0;
-    number noise = 0.0;             ///< standard deviation of white noise, a sample
-    number filter_frequency = 0.0;  ///< Hz, first-order low pass by backward Euler; 0: none
-    number resolution = 0.0;        ///< 0: none
-    number low, high;               ///< range; used where has_range
+    number noise = 0.0;            ///< standard deviation of white noise, a sample
+    number filter_frequency = 0.0; ///< Hz, first-order low pass by backward Euler; 0: none
+    number resolution = 0.0;       ///< 0: none
+    number low, high;              ///< range; used where has_range
     bool has_range = false;
-    std::uint32_t stream = 1;       ///< random stream of the noise
+    std::uint32_t stream = 1; ///< random stream of the noise
 };
 
 /// Command limits, rate limit, resolution; then transport delay; then first-order lag.
 struct actuator_description {
-    number low, high;            ///< used where has_limits
+    number low, high; ///< used where has_limits
     bool has_limits = false;
     number rate_limit = 0.0;     ///< unit/s; 0: none
     number resolution = 0.0;     ///< 0: none
@@ -69,23 +69,23 @@ struct actuator_description {
 /// A signal computed from others at each sample.
 struct expression_description {
     std::string name;
-    program formula;  ///< one output; inputs of kind `signal`, `value` or `time`
+    program formula; ///< one output; inputs of kind `signal`, `value` or `time`
 };
 
 struct loop_description {
     plant_description plant;
     controller_description controller;
-    number sample_period = 1e-3;  ///< s
-    number duration = 1.0;        ///< s
+    number sample_period = 1e-3; ///< s
+    number duration = 1.0;       ///< s
     time_function_description reference;
     std::vector<disturbance_description> disturbances;
     sensor_description sensor;
     actuator_description actuator;
     integrator_kind integrator = integrator_kind::rk4;
     int steps_per_sample = 1;
-    double reference_tolerance = 1e-10;  ///< of integrator_kind::reference, relative and (times 1e-3) absolute
+    double reference_tolerance = 1e-10; ///< of integrator_kind::reference, relative and (times 1e-3) absolute
     std::vector<expression_description> expressions;
-    std::string input_name, output_name;  ///< the plant's own words for "input" and "output"
+    std::string input_name, output_name; ///< the plant's own words for "input" and "output"
 };
 
 } // namespace windage

@@ -35,7 +35,7 @@ private:
     std::vector<lane_value> numbers_;
     std::optional<white_noise> noise_;
     signal now_;
-    signal keep_ = nullptr, gain_ = nullptr;  // of the noise: w_{k+1} = keep * w_k + gain * n
+    signal keep_ = nullptr, gain_ = nullptr; // of the noise: w_{k+1} = keep * w_k + gain * n
 };
 
 } // namespace windage

@@ -4,9 +4,9 @@
 #include <optional>
 
 #include <windage/loop/clock.hpp>
+#include <windage/loop/description.hpp>
 #include <windage/loop/noise.hpp>
 #include <windage/loop/quantiser.hpp>
-#include <windage/loop/description.hpp>
 
 namespace windage {
 

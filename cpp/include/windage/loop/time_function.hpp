@@ -4,8 +4,8 @@
 
 #include <vector>
 
-#include <windage/loop/description.hpp>
 #include <windage/lanes/signal.hpp>
+#include <windage/loop/description.hpp>
 
 namespace windage {
 
@@ -47,8 +47,8 @@ private:
     std::size_t size_;
     bool uniform_;
     std::vector<lane_value> numbers_;
-    signal allowance_;             // within which two instants are the same
-    std::vector<signal> derived_;  // angular frequency of a sine; phase times of a jerk-limited profile
+    signal allowance_;            // within which two instants are the same
+    std::vector<signal> derived_; // angular frequency of a sine; phase times of a jerk-limited profile
 };
 
 } // namespace windage

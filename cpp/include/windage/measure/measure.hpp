@@ -17,9 +17,9 @@ public:
 
 /// What a measure needs to know of the timing of a block.
 struct measure_timing {
-    constant_signal period;  ///< sample period of each lane
-    constant_signal end;     ///< time of each lane's last sample
-    bool is_uniform;         ///< sample instants and last sample are the same in every lane
+    constant_signal period; ///< sample period of each lane
+    constant_signal end;    ///< time of each lane's last sample
+    bool is_uniform;        ///< sample instants and last sample are the same in every lane
 };
 
 class measure {

@@ -1,6 +1,6 @@
-// Measures of a response, after IEC 60050-351:2013: overshoot (351-45-38), step response time and rise time (351-45-36),
-// settling time (351-45-37). The change is taken from the output at the window's start to the reference at its end;
-// crossings are interpolated between samples.
+// Measures of a response, after IEC 60050-351:2013: overshoot (351-45-38), step response time and rise time
+// (351-45-36), settling time (351-45-37). The change is taken from the output at the window's start to the reference at
+// its end; crossings are interpolated between samples.
 #pragma once
 
 #include <windage/measure/measure.hpp>
@@ -22,7 +22,7 @@ private:
 /// Largest excess over the final value (or, turned round, below the initial value) as a fraction of the change.
 class excursion {
 public:
-    static constexpr int values = 2;  // initial value, largest excess
+    static constexpr int values = 2; // initial value, largest excess
 
     excursion(bool below_initial, signal_arena& arena) : span_(arena), below_initial_(below_initial) {}
 
@@ -50,7 +50,7 @@ private:
 /// Time from the first crossing of fraction `a` of the change to the first crossing of fraction `b`.
 class rise_time {
 public:
-    static constexpr int values = 5;  // initial value, crossing of a, crossing of b, last fraction, last time
+    static constexpr int values = 5; // initial value, crossing of a, crossing of b, last fraction, last time
 
     rise_time(const measure_description& d, signal_arena& arena) : span_(arena), a_(d.a, arena), b_(d.b, arena) {}
 
@@ -88,7 +88,7 @@ private:
 /// Time from the window's start until the deviation stays within the band; infinite if it is outside at the end.
 class settling_time {
 public:
-    static constexpr int values = 4;  // initial value, settled since, last signed deviation, last time
+    static constexpr int values = 4; // initial value, settled since, last signed deviation, last time
 
     /// `relative`: the deviation is from the reference at the window's end, and the band a fraction of the change;
     /// otherwise the deviation is the signal itself and the band in its unit.

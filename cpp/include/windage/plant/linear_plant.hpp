@@ -41,12 +41,12 @@ private:
     plant_description d_;
     const plant_disturbances& w_;
     std::size_t size_;
-    int states_, order_;  // order: with the lag
+    int states_, order_; // order: with the lag
     bool has_lag_, split_;
     lane_value lag_;
     std::vector<lane_value> numbers_, initial_state_;
     signal x_, next_, output_, middle_;
-    signal phi_, before_, after_, gamma_w_, c_;  // row by row
+    signal phi_, before_, after_, gamma_w_, c_; // row by row
     std::vector<signal> w_middle_;
     std::vector<constant_signal> middle_values_;
 };

@@ -20,9 +20,9 @@ namespace odeint = boost::numeric::odeint;
 struct integration_settings {
     integrator_kind kind = integrator_kind::rk4;
     int steps_per_sample = 1;
-    double tolerance = 1e-10;  ///< of integrator_kind::reference
-    bool split = false;        ///< the command changes inside the interval
-    number lag;                ///< time constant of the actuator, 0: none
+    double tolerance = 1e-10; ///< of integrator_kind::reference
+    bool split = false;       ///< the command changes inside the interval
+    number lag;               ///< time constant of the actuator, 0: none
 };
 
 class ode_plant : public plant {
@@ -40,9 +40,9 @@ public:
 protected:
     /// What acts during one stage of one step.
     struct stage {
-        constant_signal step = nullptr;     ///< length h of the whole step
-        constant_signal time = nullptr;     ///< of the stage; null unless something reads it
-        constant_signal command = nullptr;  ///< after the delay, before the lag
+        constant_signal step = nullptr;    ///< length h of the whole step
+        constant_signal time = nullptr;    ///< of the stage; null unless something reads it
+        constant_signal command = nullptr; ///< after the delay, before the lag
         std::vector<constant_signal> disturbances;
     };
 
@@ -73,11 +73,11 @@ private:
     std::vector<lane_value> initial_state_;
     lane_value lag_;
     step_plan plan_;
-    std::vector<double> abscissae_;   // distinct fractions of a step at which stages lie
-    std::vector<int> stage_buffer_;   // which of them each stage uses
+    std::vector<double> abscissae_; // distinct fractions of a step at which stages lie
+    std::vector<int> stage_buffer_; // which of them each stage uses
     std::vector<stage> stages_;
-    std::vector<signal> stage_time_;                 // one a distinct abscissa
-    std::vector<std::vector<signal>> stage_values_;  // per abscissa, one a disturbance
+    std::vector<signal> stage_time_;                // one a distinct abscissa
+    std::vector<std::vector<signal>> stage_values_; // per abscissa, one a disturbance
     odeint::euler<block_state, double, block_state, double, block_algebra> euler_;
     odeint::runge_kutta4_classic<block_state, double, block_state, double, block_algebra> rk4_;
     odeint::runge_kutta_cash_karp54<block_state, double, block_state, double, block_algebra> cash_karp_;

@@ -21,11 +21,11 @@ public:
 
 /// The interval between two sample instants; the command changes `fraction` seconds after its start where it is split.
 struct sample_interval {
-    constant_signal time;      ///< start
-    constant_signal period;    ///< length
-    constant_signal fraction;  ///< null where the interval is not split
-    constant_signal before;    ///< command before the change
-    constant_signal after;     ///< command after it
+    constant_signal time;     ///< start
+    constant_signal period;   ///< length
+    constant_signal fraction; ///< null where the interval is not split
+    constant_signal before;   ///< command before the change
+    constant_signal after;    ///< command after it
 };
 
 class plant {

@@ -11,10 +11,44 @@
 namespace windage {
 
 enum class operation {
-    constant, load, add, sub, mul, div, neg, sqrt, sin, cos, tan, asin, acos, atan, atan2, exp, log, pow, tanh, sinh,
-    cosh, abs, sign, min, max, less, less_equal, equal, not_equal, logical_and, logical_or, logical_not, select,
+    constant,
+    load,
+    add,
+    sub,
+    mul,
+    div,
+    neg,
+    sqrt,
+    sin,
+    cos,
+    tan,
+    asin,
+    acos,
+    atan,
+    atan2,
+    exp,
+    log,
+    pow,
+    tanh,
+    sinh,
+    cosh,
+    abs,
+    sign,
+    min,
+    max,
+    less,
+    less_equal,
+    equal,
+    not_equal,
+    logical_and,
+    logical_or,
+    logical_not,
+    select,
     // made by the tape itself from the ones above
-    mul_add, mul_sub, sub_mul, reciprocal,
+    mul_add,
+    mul_sub,
+    sub_mul,
+    reciprocal,
 };
 
 /// Operation by the name used in descriptions ("add", "less_equal", ...); throws std::invalid_argument.
@@ -24,8 +58,8 @@ int operand_count(operation op);
 
 struct instruction {
     operation op = operation::constant;
-    int a = -1, b = -1, c = -1;  ///< operands: earlier values; for `load`, a is the index of the input
-    double constant = 0.0;       ///< for `constant`
+    int a = -1, b = -1, c = -1; ///< operands: earlier values; for `load`, a is the index of the input
+    double constant = 0.0;      ///< for `constant`
 };
 
 /// Where an input of a program comes from.
@@ -33,15 +67,15 @@ enum class source_kind { time, state, plant_input, disturbance, value, signal };
 
 struct program_input {
     source_kind kind = source_kind::value;
-    int index = 0;        ///< of the state or disturbance
-    number value;         ///< for `value`: a constant or a drawn parameter
-    std::string signal;   ///< for `signal`: its name
+    int index = 0;      ///< of the state or disturbance
+    number value;       ///< for `value`: a constant or a drawn parameter
+    std::string signal; ///< for `signal`: its name
 };
 
 struct program {
     std::vector<program_input> inputs;
     std::vector<instruction> code;
-    std::vector<int> outputs;  ///< values handed out
+    std::vector<int> outputs; ///< values handed out
 
     bool reads(source_kind kind) const;
 };

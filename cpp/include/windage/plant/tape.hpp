@@ -40,10 +40,10 @@ private:
     using kernel = void (*)(signal to, constant_signal a, constant_signal b, constant_signal c, std::size_t size);
     struct step {
         kernel run;
-        int to, a, b, c;  // slots; -1 where the operation has fewer operands
+        int to, a, b, c; // slots; -1 where the operation has fewer operands
     };
 
-    void bind(int slot, constant_signal values) { slots_[slot] = const_cast<signal>(values); }  // inputs are only read
+    void bind(int slot, constant_signal values) { slots_[slot] = const_cast<signal>(values); } // inputs are only read
     void execute(const std::vector<step>& steps) const;
     static kernel kernel_of(operation op);
 
@@ -51,8 +51,8 @@ private:
     std::vector<signal> slots_;
     std::vector<int> input_slot_, output_slot_;
     std::vector<step> prologue_, once_a_step_, body_;
-    std::vector<std::pair<int, double>> constants_;  // slot, value
-    std::vector<std::pair<int, number>> numbers_;    // slot, number
+    std::vector<std::pair<int, double>> constants_; // slot, value
+    std::vector<std::pair<int, number>> numbers_;   // slot, number
 };
 
 } // namespace windage

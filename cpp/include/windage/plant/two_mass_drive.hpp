@@ -2,9 +2,9 @@
 //     tau = k (theta_m - theta_l) + c (omega_m - omega_l)
 //     J_m domega_m/dt = u - tau
 //     J_l domega_l/dt = tau - (Fc + (Fs - Fc) exp(-(omega_l / v_s)^2)) tanh(omega_l / v_0) - B omega_l - load
-// (Stribeck friction after Armstrong-Helouvry, Dupont, Canudas de Wit 1994, Automatica 30(7), equation form from memory.)
-// States: motor angle, motor speed, load angle, load speed. Numbers: J_m, J_l (kg m^2), k (N m/rad), c (N m s/rad),
-// Fc, Fs (N m), v_s, v_0 (rad/s), B (N m s/rad).
+// (Stribeck friction after Armstrong-Helouvry, Dupont, Canudas de Wit 1994, Automatica 30(7), equation form from
+// memory.) States: motor angle, motor speed, load angle, load speed. Numbers: J_m, J_l (kg m^2), k (N m/rad), c (N m
+// s/rad), Fc, Fs (N m), v_s, v_0 (rad/s), B (N m s/rad).
 #pragma once
 
 #include <array>
@@ -22,8 +22,8 @@ public:
         n[5] = n[5] - n[4];
     }
     explicit two_mass_drive(const wide* n)
-        : inverse_motor_(n[0]), inverse_load_(n[1]), stiffness_(n[2]), damping_(n[3]), coulomb_(n[4]),
-          breakaway_(n[5]), inverse_stribeck_(n[6]), inverse_smoothing_(n[7]), viscous_(n[8]) {}
+        : inverse_motor_(n[0]), inverse_load_(n[1]), stiffness_(n[2]), damping_(n[3]), coulomb_(n[4]), breakaway_(n[5]),
+          inverse_stribeck_(n[6]), inverse_smoothing_(n[7]), viscous_(n[8]) {}
 
     void operator()(const std::array<wide, 4>& x, std::array<wide, 4>& dx, wide torque, const wide* w) const {
         const wide shaft = stiffness_ * (x[0] - x[2]) + damping_ * (x[1] - x[3]);
