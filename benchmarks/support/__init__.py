@@ -1,0 +1,1 @@
+"""What the benchmark's commands share: building, timing, comparing, reporting."""
