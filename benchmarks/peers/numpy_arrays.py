@@ -31,25 +31,27 @@ class NumpyLoop:
         chunk = CHUNKS[problem.letter]
         self._shares = Shares(simulate_chunk, problem.letter, threads, chunk)
         self.grain = chunk * threads
+        self.timed_samples = 400 if problem.letter == "d" else problem.samples
 
-    def simulate(self, parameters: Values, noise: bool, seed: int) -> Values:
+    def simulate(self, parameters: Values, noise: bool, seed: int, samples: int = 0) -> Values:
         """Return the measures, shape (measures, trials)."""
-        return self._shares.simulate(parameters, noise, seed)
+        return self._shares.simulate(parameters, noise, seed, samples)
 
     def close(self) -> None:
         """End the processes."""
         self._shares.close()
 
 
-def simulate_chunk(problem: Problem, parameters: Values, noise: bool, seed: int) -> Values:
-    """Return the measures of a chunk of trials, shape (measures, trials)."""
+def simulate_chunk(problem: Problem, parameters: Values, noise: bool, seed: int, samples: int) -> Values:
+    """Return the measures of a chunk of trials that end after some samples, shape (measures, trials)."""
     generator = np.random.Generator(np.random.SFC64(seed))
     trials = parameters.shape[1]
 
     def normal() -> Any:
         return generator.standard_normal(trials) if noise else 0.0
 
-    return MAKERS[problem.letter](problem, parameters, problem.reference(), normal)
+    reference = problem.reference()[:, : samples or problem.samples]
+    return MAKERS[problem.letter](problem, parameters, reference, normal)
 
 
 def linear_plant(problem: Problem, p: Values, reference: Values, normal: Any) -> Values:
@@ -148,12 +150,12 @@ def friction_drive(problem: Problem, p: Values, reference: Values, normal: Any) 
             square_sum += square_before + square
             variation += np.abs(u0 - u1)
         square_before = square
-        if k + 1 == problem.samples:
+        if k + 1 == reference.shape[1]:
             break
         saturated += np.abs(u0) >= limit
         angle, rate = step(angle, rate, *lengths[0], gear * early + load)
         angle, rate = step(angle, rate, *lengths[1], gear * late + load)
-    rms = np.sqrt(torque_square / problem.samples)
+    rms = np.sqrt(torque_square / reference.shape[1])
     return np.array([peak, rms, 0.5 * ts * square_sum, variation, ts * saturated])
 
 
@@ -194,7 +196,7 @@ def geared_servo(problem: Problem, p: Values, reference: Values, normal: Any) ->
     x = np.zeros((5, p.shape[1]))
     x1, x2, x3, u0, u1, u2, following, since, loaded, total, squares, deviation = np.zeros((12, p.shape[1]))
     outside, first_command = np.zeros(p.shape[1], bool), np.zeros(p.shape[1])
-    for k in range(problem.samples):
+    for k in range(reference.shape[1]):
         time, r = k * ts, reference[:, k]
         measured = np.floor((x[0] + c["noise"] * normal()) * (1.0 / c["resolution"]) + 0.5) * c["resolution"]
         top = x3 + b0 * u0
@@ -224,7 +226,7 @@ def geared_servo(problem: Problem, p: Values, reference: Values, normal: Any) ->
                 first_command = u0
             total += u0 - first_command
             squares += (u0 - first_command) ** 2
-        if k + 1 == problem.samples:
+        if k + 1 == reference.shape[1]:
             break
         command = np.where(is_two, u2, u1)
         load = load_torque if k >= loaded_from else 0.0
