@@ -53,14 +53,6 @@ template <> std::vector<std::string> enumerators<measure_kind>() {
 
 namespace {
 
-template <class E> E enumerator(py::handle value, const std::string& path) {
-    const auto names = enumerators<E>();
-    const auto wanted = py::str(value).cast<std::string>();
-    for (std::size_t i = 0; i < names.size(); ++i)
-        if (names[i] == wanted) return E(i);
-    throw std::invalid_argument(path + ": '" + wanted + "' is not known");
-}
-
 py::sequence sequence_of(py::handle value, std::size_t length, const std::string& path) {
     if (!py::isinstance<py::sequence>(value) || py::len(value) != length)
         throw std::invalid_argument(path + ": expected " + std::to_string(length) + " items");
@@ -70,7 +62,7 @@ py::sequence sequence_of(py::handle value, std::size_t length, const std::string
 program_input read_input(py::handle value, const std::string& path) {
     const py::sequence items = sequence_of(value, 4, path);
     program_input input;
-    input.kind = enumerator<source_kind>(items[0], path);
+    input.kind = read_enumerator<source_kind>(items[0], path);
     input.index = items[1].cast<int>();
     input.value = read_number(items[2], path);
     input.signal = items[3].cast<std::string>();
@@ -243,7 +235,7 @@ spread_description read_spread(py::handle source, const std::string& path) {
 }
 
 discretisation_kind read_discretisation(const std::string& name) {
-    return enumerator<discretisation_kind>(py::str(name), "discretisation");
+    return read_enumerator<discretisation_kind>(py::str(name), "discretisation");
 }
 
 study_description read_study(py::handle source) {

@@ -32,6 +32,15 @@ inline number read_number(py::handle value, const std::string& path) {
     throw std::invalid_argument(path + ": expected a number or ('drawn', column)");
 }
 
+/// The enumerator of E that a name stands for.
+template <class E> E read_enumerator(py::handle value, const std::string& path) {
+    const auto names = enumerators<E>();
+    const auto wanted = py::str(value).cast<std::string>();
+    for (std::size_t i = 0; i < names.size(); ++i)
+        if (names[i] == wanted) return E(i);
+    throw std::invalid_argument(path + ": '" + wanted + "' is not known");
+}
+
 class dict_reader {
 public:
     dict_reader(py::handle source, std::string path) : path_(std::move(path)) {
@@ -61,15 +70,7 @@ public:
     dict_reader& number_field(const char* name, number& to) { return field(name, to, read_number); }
     dict_reader& numbers(const char* name, std::vector<number>& to) { return list(name, to, read_number); }
 
-    template <class E> dict_reader& choice(const char* name, E& to) {
-        return field(name, to, [](py::handle value, const std::string& path) {
-            const auto names = enumerators<E>();
-            const auto wanted = py::str(value).cast<std::string>();
-            for (std::size_t i = 0; i < names.size(); ++i)
-                if (names[i] == wanted) return E(i);
-            throw std::invalid_argument(path + ": '" + wanted + "' is not known");
-        });
-    }
+    template <class E> dict_reader& choice(const char* name, E& to) { return field(name, to, read_enumerator<E>); }
 
     template <class T, class Read> dict_reader& list(const char* name, std::vector<T>& to, Read&& read) {
         return field(name, to, [&](py::handle value, const std::string& path) {
