@@ -8,7 +8,7 @@ namespace windage {
 class block_runner::reference_targets final : public target_source {
 public:
     explicit reference_targets(const loop& l) : loop_(l) {}
-    void target(constant_signal time, signal out) const override { loop_.reference().evaluate_at_own_times(time, out); }
+    void target(const held_value& time, signal out) const override { loop_.reference().evaluate_at_own_times(time, out); }
 
 private:
     const loop& loop_;
@@ -17,8 +17,9 @@ private:
 block_runner::block_runner(const study_description& study, const parameter_source& source, std::size_t block_size)
     : arena_(block_size), source_(source), loop_(study.loop, arena_), trials_(block_size),
       parameters_(source.count() * block_size), diverged_(arena_.take()), result_(arena_.take()) {
+    const measure_timing timing{loop_.clock().period(), loop_.clock().end()};
     for (const measure_description& m : study.measures)
-        measures_.push_back(make_measure(m, loop_.find(m.signal), arena_));
+        measures_.push_back(make_measure(m, loop_.find(m.signal), timing, arena_));
     block_ = {block_size, study.seed, trials_.data(), parameters_.data()};
 }
 
@@ -34,8 +35,7 @@ void block_runner::begin(std::uint64_t first, std::size_t count) {
     }
     loop_.begin(block_);
     const reference_targets targets(loop_);
-    const measure_timing timing{loop_.clock().period().data(), loop_.clock().end(), loop_.clock().end_is_uniform()};
-    for (auto& m : measures_) m->begin(block_, timing, targets);
+    for (auto& m : measures_) m->begin(block_, targets);
     std::fill_n(diverged_, block_.size, 0.0);
 }
 

@@ -9,7 +9,7 @@ namespace {
 class constant_target final : public target_source {
 public:
     constant_target(double value, std::size_t size) : value_(value), size_(size) {}
-    void target(constant_signal, signal out) const override {
+    void target(const held_value&, signal out) const override {
         for (std::size_t i = 0; i < size_; ++i) out[i] = value_;
     }
 
@@ -27,16 +27,17 @@ double evaluate_measure(const measure_description& d, const std::vector<double>&
     if (!d.after.is_constant() || !d.before.is_constant() || !d.a.is_constant() || !d.b.is_constant())
         throw std::invalid_argument("measure: a recorded signal has no drawn parameters");
     signal_arena arena(lanes);
-    const signal now = arena.take(), x = arena.take(), period = arena.take(), end = arena.take(), result = arena.take();
+    const signal now = arena.take(), x = arena.take(), result = arena.take();
+    held_value period(true, arena), end(true, arena);
     const auto fill = [](signal s, double v) {
         for (int i = 0; i < lanes; ++i) s[i] = v;
     };
-    fill(period, sample_period);
-    fill(end, time.back());
+    period.fill([&](std::size_t) { return sample_period; });
+    end.fill([&](std::size_t) { return time.back(); });
     const std::vector<std::uint64_t> trials(lanes, 0);
     const trial_block block{lanes, 0, trials.data(), nullptr};
-    const auto m = make_measure(d, x, arena);
-    m->begin(block, {period, end, true}, constant_target(target, lanes));
+    const auto m = make_measure(d, x, {period, end}, arena);
+    m->begin(block, constant_target(target, lanes));
     for (std::size_t k = 0; k < time.size(); ++k) {
         fill(now, time[k]);
         fill(x, values[k]);

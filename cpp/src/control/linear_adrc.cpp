@@ -1,5 +1,6 @@
 #include <windage/control/linear_adrc.hpp>
 
+#include <algorithm>
 #include <stdexcept>
 #include <string>
 
@@ -21,50 +22,60 @@ void check(const controller_description& d) {
                std::to_string(d.order + 1) + ", one a state and one for the total disturbance");
 }
 
+bool are_all_same(const std::vector<lane_value>& values) {
+    return std::all_of(values.begin(), values.end(), [](const lane_value& v) { return v.is_same(); });
+}
+
 } // namespace
 
-linear_adrc::linear_adrc(const controller_description& d, signal_arena& arena)
+linear_adrc::linear_adrc(const controller_description& d, const held_value& sample_period, signal_arena& arena)
     : d_((check(d), d)), size_(arena.block_size()), controller_bandwidth_(d.controller_bandwidth, arena),
       observer_bandwidth_(d.observer_bandwidth, arena), b0_(d.b0, arena),
       controller_factor_(d.controller_gain_factor, arena), observer_factor_(d.observer_gain_factor, arena),
-      controller_gains_(arena.take(d.order)), observer_gains_(arena.take(d.order + 1)), period_(arena.take()),
-      inverse_b0_(arena.take()), estimates_(arena.take(d.order + 1)), output_(arena.take()) {
+      period_(sample_period), inverse_b0_(b0_.is_same(), arena), estimates_(arena.take(d.order + 1)),
+      output_(arena.take()) {
     for (const number& n : d.controller_gains) given_controller_gains_.emplace_back(n, arena);
     for (const number& n : d.observer_gains) given_observer_gains_.emplace_back(n, arena);
+    const bool same_controller = are_same(controller_bandwidth_, controller_factor_) && are_all_same(given_controller_gains_);
+    const bool same_observer = are_same(observer_bandwidth_, observer_factor_, sample_period) && are_all_same(given_observer_gains_);
+    for (int s = 0; s < d.order; ++s) controller_gains_.emplace_back(same_controller, arena);
+    for (int s = 0; s <= d.order; ++s) observer_gains_.emplace_back(same_observer, arena);
 }
 
 int linear_adrc::reference_derivatives() const {
     return d_.form == adrc_form::output && d_.reference_derivatives ? d_.order : 0;
 }
 
-void linear_adrc::begin(const trial_block& block, const lane_value& sample_period, const lane_value& initial_command) {
+void linear_adrc::begin(const trial_block& block, const lane_value& initial_command) {
     for (lane_value* n : {&controller_bandwidth_, &observer_bandwidth_, &b0_, &controller_factor_, &observer_factor_})
         n->begin(block);
     for (lane_value& n : given_controller_gains_) n.begin(block);
     for (lane_value& n : given_observer_gains_) n.begin(block);
-    initial_command_ = &initial_command;
-    for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP {
-        const wide period = sample_period.pack_at(i);
-        place_gains(i, period);
-        period.store(period_ + i);
-        (1.0 / b0_.pack_at(i)).store(inverse_b0_ + i);
-        for (int s = 0; s <= d_.order; ++s) wide(0.0).store(estimates_ + s * size_ + i);
-        initial_command.pack_at(i).store(output_ + i);
-    });
+    place_gains();
+    inverse_b0_.fill([&](std::size_t i) { return 1.0 / b0_.pack_at(i); });
+    std::fill_n(estimates_, std::size_t(d_.order + 1) * size_, 0.0);
+    initial_command.copy_to(output_, size_);
 }
 
-void linear_adrc::place_gains(std::size_t i, wide sample_period) {
-    wide k[max_order], l[max_order + 1];
-    controller_gains(d_.order, controller_bandwidth_.pack_at(i), k);
-    observer_gains(d_.order, d_.discretisation, observer_bandwidth_.pack_at(i), sample_period, l);
-    for (int s = 0; s < d_.order; ++s) {
-        const wide gain = given_controller_gains_.empty() ? k[s] : given_controller_gains_[s].pack_at(i);
-        (gain * controller_factor_.pack_at(i)).store(controller_gains_ + s * size_ + i);
-    }
-    for (int s = 0; s <= d_.order; ++s) {
-        const wide gain = given_observer_gains_.empty() ? l[s] : given_observer_gains_[s].pack_at(i);
-        (gain * observer_factor_.pack_at(i)).store(observer_gains_ + s * size_ + i);
-    }
+void linear_adrc::place_gains() {
+    const std::size_t controller_packs = controller_gains_[0].is_same() ? lanes : size_,
+                      observer_packs = observer_gains_[0].is_same() ? lanes : size_;
+    for_each_pack(controller_packs, [&](std::size_t i) {
+        wide k[max_order];
+        controller_gains(d_.order, controller_bandwidth_.pack_at(i), k);
+        for (int s = 0; s < d_.order; ++s) {
+            const wide gain = given_controller_gains_.empty() ? k[s] : given_controller_gains_[s].pack_at(i);
+            controller_gains_[s].set(i, gain * controller_factor_.pack_at(i));
+        }
+    });
+    for_each_pack(observer_packs, [&](std::size_t i) {
+        wide l[max_order + 1];
+        observer_gains(d_.order, d_.discretisation, observer_bandwidth_.pack_at(i), period_.pack_at(i), l);
+        for (int s = 0; s <= d_.order; ++s) {
+            const wide gain = given_observer_gains_.empty() ? l[s] : given_observer_gains_[s].pack_at(i);
+            observer_gains_[s].set(i, gain * observer_factor_.pack_at(i));
+        }
+    });
 }
 
 // Output form: u = (k_1 (r - x_1) + ... + k_n (r^(n-1) - x_n) + r^(n) - x_{n+1}) / b0.
@@ -77,11 +88,11 @@ WINDAGE_INLINE wide linear_adrc::command(const wide* x, const signal* reference,
     for (int s = 0; s < Order; ++s) {
         wide deviation = error_form ? x[s] : -x[s];
         if (!error_form && (s == 0 || fed)) deviation += wide::load(reference[s] + i);
-        sum += wide::load(controller_gains_ + s * size_ + i) * deviation;
+        sum += controller_gains_[s].pack_at(i) * deviation;
     }
     if (!error_form && fed) sum += wide::load(reference[Order] + i);
     if (d_.cancel_disturbance) sum = error_form ? sum + x[Order] : sum - x[Order];
-    return sum * wide::load(inverse_b0_ + i);
+    return sum * inverse_b0_.pack_at(i);
 }
 
 template <int Order>
@@ -93,7 +104,7 @@ void linear_adrc::sample_order(std::int64_t k, const signal* reference, constant
         wide x[Order + 1], gains[Order + 1];
         for (int s = 0; s <= Order; ++s) {
             x[s] = wide::load(estimates_ + s * size_ + i);
-            gains[s] = wide::load(observer_gains_ + s * size_ + i);
+            gains[s] = observer_gains_[s].pack_at(i);
         }
         // In the error form the observer follows e = r - y, which the command drives with the opposite sign.
         const wide followed =
@@ -104,7 +115,7 @@ void linear_adrc::sample_order(std::int64_t k, const signal* reference, constant
             x[Order] = error_form ? drive : -drive; // at rest under the initial command
         } else {
             const wide top = error_form ? x[Order] - drive : x[Order] + drive;
-            const wide period = wide::load(period_ + i);
+            const wide period = period_.pack_at(i);
             holds ? predict_zero_order_hold<Order>(x, top, period) : predict_euler<Order>(x, top, period);
         }
         correct<Order>(x, followed, gains);

@@ -2,20 +2,20 @@
 
 namespace windage {
 
-command_limiter::command_limiter(const actuator_description& d, signal_arena& arena)
-    : low_(d.low, arena), high_(d.high, arena), rate_limit_(d.rate_limit, arena), resolution_(d.resolution, arena),
-      initial_(d.initial, arena), has_limits_(d.has_limits), largest_change_(arena.take()), unrounded_(arena.take()),
+command_limiter::command_limiter(const actuator_description& d, const sample_clock& clock, signal_arena& arena)
+    : period_(clock.period()), low_(d.low, arena), high_(d.high, arena), rate_limit_(d.rate_limit, arena), resolution_(d.resolution, arena),
+      initial_(d.initial, arena), has_limits_(d.has_limits), largest_change_(are_same(period_, rate_limit_), arena), unrounded_(arena.take()),
       command_(arena.take()), size_(arena.block_size()) {}
 
-void command_limiter::begin(const trial_block& block, const sample_clock& clock) {
+void command_limiter::begin(const trial_block& block) {
     for (lane_value* n : {&low_, &high_, &rate_limit_, &resolution_, &initial_}) n->begin(block);
     constexpr double unlimited = 0x1p1000;
-    for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP {
+    largest_change_.fill([&](std::size_t i) {
         const wide rate = rate_limit_.pack_at(i);
-        select(rate > 0.0, rate * clock.period().pack_at(i), unlimited).store(largest_change_ + i);
-        initial_.pack_at(i).store(unrounded_ + i);
-        initial_.pack_at(i).store(command_ + i);
+        return select(rate > 0.0, rate * period_.pack_at(i), unlimited);
     });
+    initial_.copy_to(unrounded_, size_);
+    initial_.copy_to(command_, size_);
 }
 
 void command_limiter::sample(constant_signal wanted) {
@@ -24,7 +24,7 @@ void command_limiter::sample(constant_signal wanted) {
         wide u = wide::load(wanted + i);
         if (has_limits_) u = clip(u, low_.pack_at(i), high_.pack_at(i));
         if (limits_rate) {
-            const wide before = wide::load(unrounded_ + i), change = wide::load(largest_change_ + i);
+            const wide before = wide::load(unrounded_ + i), change = largest_change_.pack_at(i);
             u = clip(u, before - change, before + change);
             u.store(unrounded_ + i);
         }

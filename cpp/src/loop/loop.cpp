@@ -10,14 +10,15 @@ namespace windage {
 
 class loop::disturbance_bank final : public plant_disturbances {
 public:
-    disturbance_bank(const loop_description& d, bool time_is_uniform, signal_arena& arena) : size_(arena.block_size()) {
-        for (const disturbance_description& w : d.disturbances) all_.emplace_back(w, time_is_uniform, arena);
+    disturbance_bank(const loop_description& d, const sample_clock& clock, bool time_is_uniform, signal_arena& arena)
+        : size_(arena.block_size()) {
+        for (const disturbance_description& w : d.disturbances) all_.emplace_back(w, clock, time_is_uniform, arena);
     }
-    void begin(const trial_block& block, const sample_clock& clock) {
-        for (disturbance& w : all_) w.begin(block, clock);
+    void begin(const trial_block& block) {
+        for (disturbance& w : all_) w.begin(block);
     }
-    void sample(std::int64_t k, const sample_clock& clock) {
-        for (disturbance& w : all_) w.sample(k, clock);
+    void sample(std::int64_t k) {
+        for (disturbance& w : all_) w.sample(k);
     }
     int count() const override { return int(all_.size()); }
     bool are_held() const override {
@@ -25,6 +26,7 @@ public:
             if (!w.is_held()) return false;
         return true;
     }
+    bool is_zero(int which) const override { return all_[which].is_zero(); }
     constant_signal now(int which) const override { return all_[which].now(); }
     void evaluate(int which, constant_signal time, bool ends_a_step, signal out) const override {
         const disturbance& w = all_[which];
@@ -49,11 +51,12 @@ bool stages_are_uniform(const loop_description& d) {
 
 loop::loop(const loop_description& d, signal_arena& arena)
     : size_(arena.block_size()), clock_(d.sample_period, d.duration, arena),
-      disturbances_(std::make_unique<disturbance_bank>(d, stages_are_uniform(d), arena)),
-      reference_(d.reference, d.sample_period.is_constant(), arena), sensor_(d.sensor, arena),
-      controller_(std::make_unique<linear_adrc>(d.controller, arena)), limiter_(d.actuator, arena), delay_(d, arena),
+      disturbances_(std::make_unique<disturbance_bank>(d, clock_, stages_are_uniform(d), arena)),
+      reference_(d.reference, d.sample_period.is_constant(), clock_.period(), arena), sensor_(d.sensor, clock_, arena),
+      controller_(std::make_unique<linear_adrc>(d.controller, clock_.period(), arena)), limiter_(d.actuator, clock_, arena),
+      delay_(d, clock_.period(), arena),
       error_(arena.take()), input_(arena.take()), zero_(arena.take()) {
-    plant_ = make_plant(d, *disturbances_, arena);
+    plant_ = make_plant(d, {clock_.period(), delay_.fraction(), delay_.is_split()}, *disturbances_, arena);
     for (int i = 0; i <= controller_->reference_derivatives(); ++i) reference_signals_.push_back(arena.take());
     name_signals(d);
     for (const expression_description& e : d.expressions) add_expression(e, arena);
@@ -63,20 +66,20 @@ loop::~loop() = default;
 
 void loop::begin(const trial_block& block) {
     clock_.begin(block);
-    disturbances_->begin(block, clock_);
-    reference_.begin(block, clock_.period().data());
-    sensor_.begin(block, clock_);
-    limiter_.begin(block, clock_);
-    delay_.begin(block, clock_, limiter_.initial());
-    plant_->begin(block, clock_.period().data(), delay_.fraction(), limiter_.initial());
-    controller_->begin(block, clock_.period(), limiter_.initial());
+    disturbances_->begin(block);
+    reference_.begin(block);
+    sensor_.begin(block);
+    limiter_.begin(block);
+    delay_.begin(block, limiter_.initial());
+    plant_->begin(block, limiter_.initial());
+    controller_->begin(block, limiter_.initial());
     for (named_expression& e : expressions_) e.formula.begin(block);
-    for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP { limiter_.initial().pack_at(i).store(input_ + i); });
+    limiter_.initial().copy_to(input_, size_);
 }
 
 void loop::sample(std::int64_t k) {
     clock_.tick(k, size_);
-    disturbances_->sample(k, clock_);
+    disturbances_->sample(k);
     plant_->evaluate_output(clock_.time(), input_);
     sample_reference();
     sample_error();
@@ -94,14 +97,14 @@ void loop::sample_reference() {
 }
 
 void loop::sample_error() {
+    const constant_signal reference = reference_signals_[0], output = plant_->output();
     for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP {
-        (wide::load(reference_signals_[0] + i) - wide::load(plant_->output() + i)).store(error_ + i);
+        (wide::load(reference + i) - wide::load(output + i)).store(error_ + i);
     });
 }
 
 void loop::advance() {
-    plant_->advance({clock_.time(), clock_.period().data(), delay_.is_split() ? delay_.fraction() : nullptr,
-                     delay_.before(), delay_.after()});
+    plant_->advance({clock_.time(), delay_.before(), delay_.after()});
 }
 
 constant_signal loop::find(const std::string& name) const {
@@ -114,7 +117,7 @@ void loop::mark_diverged(signal diverged) const {
     for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP {
         auto finite = is_finite(wide::load(plant_->state(0) + i));
         for (int s = 1; s < plant_->states(); ++s) finite = finite & is_finite(wide::load(plant_->state(s) + i));
-        const auto running = wide::load(clock_.time() + i) <= wide::load(clock_.end() + i);
+        const auto running = wide::load(clock_.time() + i) <= clock_.end().pack_at(i);
         const wide before = wide::load(diverged + i);
         select(running & !finite, 1.0, before).store(diverged + i);
     });

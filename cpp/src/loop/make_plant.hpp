@@ -8,6 +8,7 @@
 
 namespace windage {
 
-std::unique_ptr<plant> make_plant(const loop_description& d, const plant_disturbances& w, signal_arena& arena);
+std::unique_ptr<plant> make_plant(const loop_description& d, const plant_timing& timing, const plant_disturbances& w,
+                                  signal_arena& arena);
 
 } // namespace windage

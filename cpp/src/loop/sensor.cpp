@@ -1,26 +1,28 @@
 #include <windage/loop/sensor.hpp>
 
+#include <algorithm>
+
 namespace windage {
 
-sensor::sensor(const sensor_description& d, signal_arena& arena)
-    : gain_(d.gain, arena), bias_(d.bias, arena), noise_level_(d.noise, arena),
+sensor::sensor(const sensor_description& d, const sample_clock& clock, signal_arena& arena)
+    : period_(clock.period()), gain_(d.gain, arena), bias_(d.bias, arena), noise_level_(d.noise, arena),
       filter_frequency_(d.filter_frequency, arena), resolution_(d.resolution, arena), low_(d.low, arena),
-      high_(d.high, arena), has_range_(d.has_range), filter_gain_(arena.take()), measured_(arena.take()),
+      high_(d.high, arena), has_range_(d.has_range), filter_gain_(are_same(period_, filter_frequency_), arena), measured_(arena.take()),
       filtered_(arena.take()), size_(arena.block_size()) {
     if (!d.noise.is_constant(0.0)) noise_.emplace(d.stream, arena);
 }
 
-void sensor::begin(const trial_block& block, const sample_clock& clock) {
+void sensor::begin(const trial_block& block) {
     for (lane_value* n : {&gain_, &bias_, &noise_level_, &filter_frequency_, &resolution_, &low_, &high_})
         n->begin(block);
     if (noise_) noise_->begin(block);
     // Backward Euler of T dv/dt = y - v: v += (Ts/T) / (1 + Ts/T) (y - v).
     constexpr double two_pi = 6.283185307179586476925;
-    for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP {
-        const wide ratio = two_pi * filter_frequency_.pack_at(i) * clock.period().pack_at(i);
-        select(ratio > 0.0, ratio / (1.0 + ratio), 1.0).store(filter_gain_ + i);
-        wide(0.0).store(filtered_ + i);
+    filter_gain_.fill([&](std::size_t i) {
+        const wide ratio = two_pi * filter_frequency_.pack_at(i) * period_.pack_at(i);
+        return select(ratio > 0.0, ratio / (1.0 + ratio), 1.0);
     });
+    std::fill_n(filtered_, size_, 0.0);
 }
 
 void sensor::sample(std::int64_t k, constant_signal output) {
@@ -31,7 +33,7 @@ void sensor::sample(std::int64_t k, constant_signal output) {
         if (noise) y += noise_level_.pack_at(i) * wide::load(noise + i);
         if (filters) {
             const wide before = k == 0 ? y : wide::load(filtered_ + i); // starts settled on the first reading
-            y = before + wide::load(filter_gain_ + i) * (y - before);
+            y = before + filter_gain_.pack_at(i) * (y - before);
             y.store(filtered_ + i);
         }
         if (rounds) y = quantise(y, resolution_.pack_at(i));

@@ -19,26 +19,27 @@ bool all_constant(const std::vector<number>& numbers) {
 
 } // namespace
 
-time_function::time_function(const time_function_description& d, bool time_is_uniform, signal_arena& arena)
+time_function::time_function(const time_function_description& d, bool time_is_uniform, const held_value& period,
+                             signal_arena& arena)
     : kind_(d.kind), size_(arena.block_size()), uniform_(time_is_uniform && all_constant(d.numbers)),
-      allowance_(arena.take()) {
+      period_(period), allowance_(period.is_same(), arena) {
     for (const number& n : d.numbers) numbers_.emplace_back(n, arena);
     const int derived = kind_ == time_function_kind::sine ? 1 : kind_ == time_function_kind::jerk_limited ? 5 : 0;
     for (int i = 0; i < derived; ++i) derived_.push_back(arena.take());
 }
 
-void time_function::begin(const trial_block& block, constant_signal period) {
+void time_function::begin(const trial_block& block) {
     for (lane_value& n : numbers_) n.begin(block);
+    allowance_.fill([&](std::size_t i) { return 1e-9 * period_.pack_at(i); });
     for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP {
-        (1e-9 * wide::load(period + i)).store(allowance_ + i);
         if (kind_ == time_function_kind::sine) (wide(two_pi) / number_at(1, i)).store(derived_[0] + i);
         if (kind_ == time_function_kind::jerk_limited)
             plan_profile(number_at(0, i), number_at(2, i), number_at(3, i), number_at(4, i)).store(derived_.data(), i);
     });
 }
 
-time_function::instant time_function::instant_at(constant_signal time, std::size_t i, jump_side side) const {
-    const wide t = wide::load(time + i), allowance = wide::load(allowance_ + i);
+time_function::instant time_function::instant_at(wide t, std::size_t i, jump_side side) const {
+    const wide allowance = allowance_.pack_at(i);
     return {t, side == jump_side::after ? t + allowance : t - allowance};
 }
 
@@ -46,12 +47,12 @@ void time_function::evaluate(constant_signal time, signal* out, int derivatives,
     wide values[max_order + 1];
     if (!uniform_) {
         for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP {
-            evaluate_pack(i, instant_at(time, i, side), values, derivatives);
+            evaluate_pack(i, instant_at(wide::load(time + i), i, side), values, derivatives);
             for (int d = 0; d <= derivatives; ++d) values[d].store(out[d] + i);
         });
         return;
     }
-    const instant at = instant_at(time, 0, side);
+    const instant at = instant_at(wide::load(time), 0, side);
     const bool is_table = kind_ == time_function_kind::table_linear || kind_ == time_function_kind::table_hold;
     for (int d = 1; d <= derivatives; ++d) values[d] = 0.0;
     is_table ? table_uniform(at.t[0], at.sided[0], values, derivatives) : evaluate_pack(0, at, values, derivatives);
@@ -59,10 +60,10 @@ void time_function::evaluate(constant_signal time, signal* out, int derivatives,
         for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP { values[d].store(out[d] + i); });
 }
 
-void time_function::evaluate_at_own_times(constant_signal time, signal out) const {
+void time_function::evaluate_at_own_times(const held_value& time, signal out) const {
     for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP {
         wide value;
-        evaluate_pack(i, instant_at(time, i, jump_side::after), &value, 0);
+        evaluate_pack(i, instant_at(time.pack_at(i), i, jump_side::after), &value, 0);
         value.store(out + i);
     });
 }

@@ -9,9 +9,10 @@
 
 namespace windage {
 
-std::unique_ptr<measure> make_measure(const measure_description& d, constant_signal values, signal_arena& arena) {
+std::unique_ptr<measure> make_measure(const measure_description& d, constant_signal values,
+                                      const measure_timing& timing, signal_arena& arena) {
     const auto plain = [&]<class Reducer>(Reducer reducer) -> std::unique_ptr<measure> {
-        return std::make_unique<reduction<Reducer>>(d, values, arena, std::move(reducer));
+        return std::make_unique<reduction<Reducer>>(d, values, timing, arena, std::move(reducer));
     };
     using namespace reducers;
     switch (d.kind) {

@@ -9,13 +9,13 @@ namespace windage {
 /// `Reducer` may hold lane values of its own; it is told of each block by `begin_block`.
 template <class Reducer> class reduction final : public measure {
 public:
-    reduction(const measure_description& d, constant_signal values, signal_arena& arena, Reducer reducer = {})
-        : values_(values), size_(arena.block_size()), window_(d, arena), reducer_(std::move(reducer)),
-          running_(arena.take(Reducer::values)), seen_(arena.take()) {}
+    reduction(const measure_description& d, constant_signal values, const measure_timing& timing, signal_arena& arena,
+              Reducer reducer = {})
+        : values_(values), period_(timing.period), size_(arena.block_size()), window_(d, timing, arena),
+          reducer_(std::move(reducer)), running_(arena.take(Reducer::values)), seen_(arena.take()) {}
 
-    void begin(const trial_block& block, const measure_timing& timing, const target_source& targets) override {
-        window_.begin(block, timing);
-        period_ = timing.period;
+    void begin(const trial_block& block, const target_source& targets) override {
+        window_.begin(block);
         if constexpr (requires { reducer_.begin_block(block, window_.stop(), targets); })
             reducer_.begin_block(block, window_.stop(), targets);
         for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP {
@@ -49,10 +49,10 @@ public:
 
 private:
     template <bool Masked> WINDAGE_INLINE void add(constant_signal time, std::size_t i) {
-        const wide t = wide::load(time + i), dt = wide::load(period_ + i);
+        const wide t = wide::load(time + i), dt = period_.pack_at(i);
         const wide seen = wide::load(seen_ + i);
         const sample_point at{wide::load(values_ + i), t - window_.start(i), dt, seen == 0.0,
-                              t + 0.5 * dt > wide::load(window_.stop() + i)};
+                              t + 0.5 * dt > window_.stop().pack_at(i)};
         wide v[Reducer::values], before[Reducer::values];
         for (int k = 0; k < Reducer::values; ++k) before[k] = v[k] = wide::load(running_ + k * size_ + i);
         if constexpr (requires { reducer_.add(v, at, i); })
@@ -73,11 +73,11 @@ private:
     }
 
     constant_signal values_;
+    const held_value& period_;
     std::size_t size_;
     measure_window window_;
     Reducer reducer_;
     signal running_, seen_;
-    constant_signal period_ = nullptr;
 };
 
 } // namespace windage

@@ -38,8 +38,8 @@ const plant_description& checked(const plant_description& d, const plant_disturb
 } // namespace
 
 equation_plant::equation_plant(const plant_description& d, const integration_settings& settings,
-                               const plant_disturbances& w, signal_arena& arena)
-    : ode_plant(checked(d, w), settings, w, d.derivatives.reads(source_kind::time), arena),
+                               const plant_timing& timing, const plant_disturbances& w, signal_arena& arena)
+    : ode_plant(checked(d, w), settings, timing, w, d.derivatives.reads(source_kind::time), arena),
       derivative_inputs_(d.derivatives.inputs), output_inputs_(d.output.inputs),
       derivatives_(d.derivatives, arena, tape::outputs::scaled, held_inputs(d.derivatives, has_lag_, w)),
       output_tape_(d.output, arena, tape::outputs::as_written), disturbances_(w), output_(arena.take()) {

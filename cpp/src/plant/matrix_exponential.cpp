@@ -1,25 +1,68 @@
 #include <windage/plant/matrix_exponential.hpp>
 
-namespace windage {
+#include <utility>
 
-Eigen::MatrixXd matrix_exponential(const Eigen::MatrixXd& a) {
-    constexpr int degree = 16;         // remainder below 2^-53 for a norm of 1/2
-    constexpr int most_squarings = 60; // beyond, the result is not finite in any case
-    int squarings = 0;
-    double scale = 1.0;
-    for (double norm = a.cwiseAbs().rowwise().sum().maxCoeff(); norm > 0.5 && squarings < most_squarings; norm *= 0.5) {
-        scale *= 0.5;
-        ++squarings;
+namespace windage {
+namespace {
+
+constexpr int degree = 16;         // remainder below 2^-53 for a norm of 1/2
+constexpr int most_squarings = 60; // beyond, the result is not finite in any case
+
+// Halvings that bring the largest row sum of each lane to 1/2 or below, and that power of two.
+struct scaling {
+    wide count = 0.0, factor = 1.0;
+    int most = 0;
+
+    explicit scaling(const lane_matrix& rows) {
+        wide norm = 0.0;
+        for (int i = 0; i < rows.rows(); ++i) {
+            wide sum = 0.0;
+            for (int j = 0; j < rows.columns(); ++j) sum += absolute(rows(i, j));
+            norm = maximum(norm, sum);
+        }
+        for (auto large = norm > 0.5; any(large) && most < most_squarings; large = norm > 0.5) {
+            factor = select(large, 0.5 * factor, factor);
+            count = select(large, count + 1.0, count);
+            norm = 0.5 * norm;
+            ++most;
+        }
     }
-    const Eigen::MatrixXd scaled = scale * a, one = Eigen::MatrixXd::Identity(a.rows(), a.cols());
-    Eigen::MatrixXd sum = one, product(a.rows(), a.cols());
+};
+
+// An entry of the upper rows of a product; the lower rows of `b` are those of the unit matrix.
+wide product_entry(const lane_matrix& a, const lane_matrix& b, int i, int j) {
+    const int n = a.rows();
+    wide sum = a(i, 0) * b(0, j);
+    for (int k = 1; k < n; ++k) sum += a(i, k) * b(k, j);
+    return j >= n ? sum + a(i, j) : sum;
+}
+
+} // namespace
+
+lane_matrix transition(const linear_model& m, wide h) {
+    const int n = m.a.rows(), w = m.e.columns(), columns = n + 1 + w;
+    lane_matrix rows(n, columns);
+    for (int i = 0; i < n; ++i)
+        for (int j = 0; j < columns; ++j)
+            rows(i, j) = (j < n ? m.a(i, j) : j == n ? m.b(i, 0) : m.e(i, j - n - 1)) * h;
+    const scaling scale(rows);
+    lane_matrix sum(n, columns), next(n, columns);
+    for (int i = 0; i < n; ++i) {
+        for (int j = 0; j < columns; ++j) rows(i, j) *= scale.factor;
+        sum(i, i) = 1.0;
+    }
     for (int k = degree; k >= 1; --k) {
-        product = scaled.lazyProduct(sum);
-        sum = one + (1.0 / k) * product;
+        for (int i = 0; i < n; ++i)
+            for (int j = 0; j < columns; ++j)
+                next(i, j) = wide(i == j ? 1.0 : 0.0) + (1.0 / k) * product_entry(rows, sum, i, j);
+        std::swap(sum, next);
     }
-    for (int k = 0; k < squarings; ++k) {
-        product = sum.lazyProduct(sum);
-        sum.swap(product);
+    for (int k = 0; k < scale.most; ++k) {
+        const auto wanted = wide(double(k)) < scale.count;
+        for (int i = 0; i < n; ++i)
+            for (int j = 0; j < columns; ++j)
+                next(i, j) = select(wanted, product_entry(sum, sum, i, j), sum(i, j));
+        std::swap(sum, next);
     }
     return sum;
 }

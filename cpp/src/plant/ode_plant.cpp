@@ -28,13 +28,13 @@ void tableau(integrator_kind kind, std::vector<double>& abscissae, std::vector<i
 
 } // namespace
 
-ode_plant::ode_plant(const plant_description& d, const integration_settings& settings, const plant_disturbances& w,
-                     bool reads_time, signal_arena& arena)
+ode_plant::ode_plant(const plant_description& d, const integration_settings& settings, const plant_timing& timing,
+                     const plant_disturbances& w, bool reads_time, signal_arena& arena)
     : size_(arena.block_size()), states_(int(d.states.size())), has_lag_(!settings.lag.is_constant(0.0)),
       integrator_(settings.kind), x_(d.states.size() + (has_lag_ ? 1 : 0), arena.block_size()),
-      inverse_lag_(arena.take()), w_(w), tolerance_(settings.tolerance), split_(settings.split),
+      inverse_lag_(settings.lag.is_constant(), arena), w_(w), tolerance_(settings.tolerance), timing_(timing),
       evaluates_stages_(reads_time || !w.are_held()), lag_(settings.lag, arena),
-      plan_(settings.steps_per_sample, settings.split, arena) {
+      plan_(settings.steps_per_sample, timing, evaluates_stages_, arena) {
     if (settings.steps_per_sample < 1)
         throw std::invalid_argument("steps_per_sample is " + std::to_string(settings.steps_per_sample) +
                                     "; expected at least 1");
@@ -53,18 +53,17 @@ ode_plant::ode_plant(const plant_description& d, const integration_settings& set
     for (stage& s : stages_) s.disturbances.resize(w.count());
 }
 
-void ode_plant::begin(const trial_block& block, constant_signal sample_period, constant_signal fraction,
-                      const lane_value& initial_command) {
+void ode_plant::begin(const trial_block& block, const lane_value& initial_command) {
     for (std::size_t i = 0; i < initial_state_.size(); ++i) {
         initial_state_[i].begin(block);
-        std::copy_n(initial_state_[i].data(), size_, x_[i]);
+        initial_state_[i].copy_to(x_[i], size_);
     }
     if (has_lag_) {
         lag_.begin(block);
-        for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP { (1.0 / lag_.pack_at(i)).store(inverse_lag_ + i); });
-        std::copy_n(initial_command.data(), size_, x_[states_]);
+        inverse_lag_.fill([&](std::size_t i) { return 1.0 / lag_.pack_at(i); });
+        initial_command.copy_to(x_[states_], size_);
     }
-    plan_.begin(sample_period, fraction);
+    plan_.begin();
     begin_plant(block);
 }
 
@@ -100,7 +99,7 @@ void ode_plant::full_derivative(const block_state& x, block_state& dx, const sta
     derivative(x, dx, s);
     if (!has_lag_) return;
     for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP {
-        const wide lag_rate = (wide::load(s.command + i) - wide::load(x[states_] + i)) * wide::load(inverse_lag_ + i);
+        const wide lag_rate = (wide::load(s.command + i) - wide::load(x[states_] + i)) * inverse_lag_.pack_at(i);
         (lag_rate * wide::load(s.step + i)).store(dx[states_] + i);
     });
 }
@@ -115,15 +114,15 @@ void ode_plant::take_step(const std::vector<stage>& stages) {
 }
 
 void ode_plant::advance_reference(const sample_interval& interval) {
-    block_state buffer(2, size_);
+    block_state buffer(3, size_);
     for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP {
-        const wide period = wide::load(interval.period + i);
-        const wide fraction = split_ ? wide::load(interval.fraction + i) : wide(0.0);
-        (period - fraction).store(buffer[0] + i);
-        (wide::load(interval.time + i) + fraction).store(buffer[1] + i);
+        const wide fraction = timing_.is_split ? timing_.fraction.pack_at(i) : wide(0.0);
+        fraction.store(buffer[0] + i);
+        (timing_.period.pack_at(i) - fraction).store(buffer[1] + i);
+        (wide::load(interval.time + i) + fraction).store(buffer[2] + i);
     });
-    if (split_) integrate_reference(interval.time, interval.fraction, interval.before);
-    integrate_reference(buffer[1], buffer[0], interval.after);
+    if (timing_.is_split) integrate_reference(interval.time, buffer[0], interval.before);
+    integrate_reference(buffer[2], buffer[1], interval.after);
 }
 
 // Steps are halved and doubled, never scaled by a computed power, so that the digits of the audit are the same on

@@ -12,9 +12,9 @@ namespace windage {
 
 class linear_adrc : public controller {
 public:
-    linear_adrc(const controller_description& d, signal_arena& arena);
+    linear_adrc(const controller_description& d, const held_value& sample_period, signal_arena& arena);
 
-    void begin(const trial_block& block, const lane_value& sample_period, const lane_value& initial_command) override;
+    void begin(const trial_block& block, const lane_value& initial_command) override;
     void sample(std::int64_t k, const signal* reference, constant_signal measured, constant_signal applied) override;
     constant_signal output() const override { return output_; }
     int reference_derivatives() const override;
@@ -25,15 +25,16 @@ private:
     template <int Order>
     void sample_order(std::int64_t k, const signal* reference, constant_signal measured, constant_signal fed);
     template <int Order> wide command(const wide* x, const signal* reference, std::size_t i) const;
-    void place_gains(std::size_t i, wide sample_period);
+    void place_gains();
 
     controller_description d_;
     std::size_t size_;
     lane_value controller_bandwidth_, observer_bandwidth_, b0_, controller_factor_, observer_factor_;
     std::vector<lane_value> given_controller_gains_, given_observer_gains_;
-    signal controller_gains_, observer_gains_; // n and n + 1 signals
-    signal period_, inverse_b0_, estimates_, output_;
-    const lane_value* initial_command_ = nullptr;
+    const held_value& period_;
+    std::vector<held_value> controller_gains_, observer_gains_; // n and n + 1
+    held_value inverse_b0_;
+    signal estimates_, output_;
 };
 
 } // namespace windage

@@ -45,8 +45,10 @@ namespace detail {
 template <int N> struct register_types {
     typedef double real __attribute__((vector_size(8 * N)));
     typedef std::int64_t integer __attribute__((vector_size(8 * N)));
-    /// The same register as it lies in memory, at any multiple of eight bytes.
-    typedef double stored __attribute__((vector_size(8 * N), aligned(8), may_alias));
+    /// The same register as it lies in memory, at any multiple of eight bytes. It may be read where doubles were
+    /// written since a vector shares the alias class of its element; with `may_alias` every store of a pack would make
+    /// the compiler read all pointers again.
+    typedef double stored __attribute__((vector_size(8 * N), aligned(8)));
 };
 
 template <class Real> WINDAGE_INLINE Real register_square_root(Real x) {

@@ -26,16 +26,10 @@ public:
 
     /// One signal, set to zero.
     signal take() { return take(1); }
-
     /// `count` signals next to each other, set to zero.
-    signal take(std::size_t count) {
-        const std::size_t wanted = count * block_size_;
-        if (wanted > left_) grow(wanted);
-        signal s = next_;
-        next_ += wanted;
-        left_ -= wanted;
-        return s;
-    }
+    signal take(std::size_t count) { return take_values(count * block_size_); }
+    /// Room for one pack, set to zero.
+    double* take_pack() { return take_values(lanes); }
 
 private:
     static constexpr std::size_t chunk_signals = 32;
@@ -43,6 +37,14 @@ private:
     struct release {
         void operator()(double* p) const { ::operator delete[](p, alignment); }
     };
+
+    double* take_values(std::size_t wanted) {
+        if (wanted > left_) grow(wanted);
+        signal s = next_;
+        next_ += wanted;
+        left_ -= wanted;
+        return s;
+    }
 
     void grow(std::size_t wanted) {
         left_ = wanted > chunk_signals * block_size_ ? wanted : chunk_signals * block_size_;
@@ -69,24 +71,50 @@ struct trial_block {
     const double* parameters = nullptr;    ///< parameter p of lane i at [p * size + i]
 };
 
-/// A number of the description as a signal: the constant or the drawn parameter of each lane.
-class lane_value {
+/// A quantity that stays as it is while a block runs. Where it is the same in every lane it takes one pack, which keeps
+/// the first-level cache for what moves.
+class held_value {
 public:
-    lane_value(number source, signal_arena& arena) : source_(source), values_(arena.take()) {}
+    held_value(bool is_same, signal_arena& arena)
+        : values_(is_same ? arena.take_pack() : arena.take()), size_(is_same ? lanes : arena.block_size()),
+          which_(is_same ? 0 : ~std::size_t(0)) {}
+
+    /// Stores f(i), a pack or a number, for the offset of each pack; f reads values that differ only where this one may.
+    template <class F> WINDAGE_INLINE void fill(F&& f) {
+        for (std::size_t i = 0; i < size_; i += lanes) wide(f(i)).store(values_ + i);
+    }
+    WINDAGE_INLINE wide pack_at(std::size_t i) const { return wide::load(values_ + (i & which_)); }
+    double operator[](std::size_t lane) const { return values_[lane & which_]; }
+    void set(std::size_t i, wide x) { x.store(values_ + (i & which_)); }
+    /// The same in every lane.
+    bool is_same() const { return which_ == 0; }
+    void copy_to(signal to, std::size_t size) const {
+        for_each_pack(size, [&](std::size_t i) WINDAGE_LANE_LOOP { pack_at(i).store(to + i); });
+    }
+
+private:
+    double* values_;
+    std::size_t size_, which_;
+};
+
+/// A number of the description: the constant or the drawn parameter of each lane.
+class lane_value : public held_value {
+public:
+    lane_value(number source, signal_arena& arena) : held_value(source.is_constant(), arena), source_(source) {}
 
     void begin(const trial_block& block) {
-        for (std::size_t i = 0; i < block.size; ++i)
-            values_[i] = source_.is_constant() ? source_.value : block.parameters[source_.parameter * block.size + i];
+        if (source_.is_constant()) return fill([&](std::size_t) { return source_.value; });
+        const double* drawn = block.parameters + source_.parameter * block.size;
+        fill([&](std::size_t i) { return wide::load(drawn + i); });
     }
     bool is_constant() const { return source_.is_constant(); }
     bool is_constant(double x) const { return source_.is_constant(x); }
-    wide pack_at(std::size_t i) const { return wide::load(values_ + i); }
-    double operator[](std::size_t lane) const { return values_[lane]; }
-    constant_signal data() const { return values_; }
 
 private:
     number source_;
-    signal values_;
 };
+
+/// None of the values differs between lanes.
+template <class... Values> bool are_same(const Values&... values) { return (values.is_same() && ...); }
 
 } // namespace windage

@@ -11,18 +11,19 @@ namespace windage {
 class sample_clock {
 public:
     sample_clock(number sample_period, number duration, signal_arena& arena)
-        : period_(sample_period, arena), duration_(duration, arena), time_(arena.take()), end_(arena.take()) {}
+        : period_(sample_period, arena), duration_(duration, arena), time_(arena.take()),
+          end_(are_same(period_, duration_), arena) {}
 
     void begin(const trial_block& block) {
         period_.begin(block);
         duration_.begin(block);
         samples_ = 0;
-        for (std::size_t i = 0; i < block.size; i += lanes) {
+        end_.fill([&](std::size_t i) {
             // The last sample is the last multiple of Ts not above the duration, up to rounding of their ratio.
             const wide count = floor(duration_.pack_at(i) / period_.pack_at(i) + 1e-9);
-            (count * period_.pack_at(i)).store(end_ + i);
             for (int lane = 0; lane < lanes; ++lane) samples_ = std::max(samples_, std::int64_t(count[lane]));
-        }
+            return count * period_.pack_at(i);
+        });
     }
 
     void tick(std::int64_t k, std::size_t size) {
@@ -37,12 +38,13 @@ public:
     constant_signal time() const { return time_; }
     const lane_value& period() const { return period_; }
     /// Time of each lane's own last sample.
-    constant_signal end() const { return end_; }
-    bool end_is_uniform() const { return period_.is_constant() && duration_.is_constant(); }
+    const held_value& end() const { return end_; }
+    bool end_is_uniform() const { return end_.is_same(); }
 
 private:
     lane_value period_, duration_;
-    signal time_, end_;
+    signal time_;
+    held_value end_;
     std::int64_t samples_ = 0;
 };
 

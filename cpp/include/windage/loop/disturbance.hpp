@@ -14,28 +14,30 @@ namespace windage {
 
 class disturbance {
 public:
-    disturbance(const disturbance_description& d, bool time_is_uniform, signal_arena& arena);
+    disturbance(const disturbance_description& d, const sample_clock& clock, bool time_is_uniform, signal_arena& arena);
 
-    void begin(const trial_block& block, const sample_clock& clock);
+    void begin(const trial_block& block);
     /// Value at the sample instant, into `now`; noises move on to sample k.
-    void sample(std::int64_t k, const sample_clock& clock);
+    void sample(std::int64_t k);
     /// Value at any other time of this sample interval.
     void evaluate(constant_signal time, jump_side side, signal out) const;
 
     /// Does not change between two samples.
     bool is_held() const { return !function_ || function_->is_constant(); }
+    bool is_zero() const { return function_ && function_->is_constant(0.0); }
     constant_signal now() const { return now_; }
 
 private:
-    void begin_gauss_markov(const trial_block& block, const sample_clock& clock);
+    void begin_gauss_markov();
 
     disturbance_kind kind_;
+    const sample_clock& clock_;
     std::size_t size_;
     std::optional<time_function> function_;
     std::vector<lane_value> numbers_;
     std::optional<white_noise> noise_;
     signal now_;
-    signal keep_ = nullptr, gain_ = nullptr; // of the noise: w_{k+1} = keep * w_k + gain * n
+    std::optional<held_value> keep_, gain_; // of the noise: w_{k+1} = keep * w_k + gain * n
 };
 
 } // namespace windage

@@ -12,17 +12,19 @@ namespace windage {
 
 class sensor {
 public:
-    sensor(const sensor_description& d, signal_arena& arena);
+    sensor(const sensor_description& d, const sample_clock& clock, signal_arena& arena);
 
-    void begin(const trial_block& block, const sample_clock& clock);
+    void begin(const trial_block& block);
     void sample(std::int64_t k, constant_signal output);
     constant_signal measured() const { return measured_; }
 
 private:
+    const held_value& period_;
     lane_value gain_, bias_, noise_level_, filter_frequency_, resolution_, low_, high_;
     bool has_range_;
     std::optional<white_noise> noise_;
-    signal filter_gain_, measured_;
+    held_value filter_gain_;
+    signal measured_;
     signal filtered_;
     std::size_t size_;
 };

@@ -16,26 +16,28 @@ enum class jump_side { after, before };
 class time_function {
 public:
     /// `time_is_uniform`: all lanes are evaluated at the same instants.
-    time_function(const time_function_description& d, bool time_is_uniform, signal_arena& arena);
-
     /// `period`: sample period of each lane; instants closer than 1e-9 of it are the same instant.
-    void begin(const trial_block& block, constant_signal period);
+    time_function(const time_function_description& d, bool time_is_uniform, const held_value& period,
+                  signal_arena& arena);
+
+    void begin(const trial_block& block);
 
     /// Value and `derivatives` time derivatives at `time`, into out[0 .. derivatives]. At a jump, `side` chooses.
     void evaluate(constant_signal time, signal* out, int derivatives, jump_side side = jump_side::after) const;
     /// The value alone, at times that may differ from lane to lane even where those of `evaluate` do not.
-    void evaluate_at_own_times(constant_signal time, signal out) const;
+    void evaluate_at_own_times(const held_value& time, signal out) const;
 
     /// Never changes within a trial.
     bool is_constant() const { return kind_ == time_function_kind::constant; }
+    bool is_constant(double x) const { return is_constant() && numbers_[0].is_constant(x); }
 
 private:
-    wide number_at(std::size_t which, std::size_t i) const { return wide::load(numbers_[which].data() + i); }
+    wide number_at(std::size_t which, std::size_t i) const { return numbers_[which].pack_at(i); }
     /// A time, and the same time moved to the wanted side of a jump: the first for values, the second for comparisons.
     struct instant {
         wide t, sided;
     };
-    instant instant_at(constant_signal time, std::size_t i, jump_side side) const;
+    instant instant_at(wide time, std::size_t i, jump_side side) const;
     void evaluate_pack(std::size_t i, instant at, wide* out, int derivatives) const;
     void sine_pack(std::size_t i, instant at, wide* out, int derivatives) const;
     void quintic_pack(std::size_t i, instant at, wide* out, int derivatives) const;
@@ -46,8 +48,9 @@ private:
     time_function_kind kind_;
     std::size_t size_;
     bool uniform_;
+    const held_value& period_;
     std::vector<lane_value> numbers_;
-    signal allowance_;            // within which two instants are the same
+    held_value allowance_;        // within which two instants are the same
     std::vector<signal> derived_; // angular frequency of a sine; phase times of a jerk-limited profile
 };
 

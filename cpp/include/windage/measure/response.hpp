@@ -12,7 +12,7 @@ namespace windage {
 class response_span {
 public:
     explicit response_span(signal_arena& arena) : final_(arena.take()) {}
-    void begin_block(constant_signal window_stop, const target_source& targets) { targets.target(window_stop, final_); }
+    void begin_block(const held_value& window_stop, const target_source& targets) { targets.target(window_stop, final_); }
     wide final_value(std::size_t i) const { return wide::load(final_ + i); }
 
 private:
@@ -26,7 +26,7 @@ public:
 
     excursion(bool below_initial, signal_arena& arena) : span_(arena), below_initial_(below_initial) {}
 
-    void begin_block(const trial_block&, constant_signal stop, const target_source& targets) {
+    void begin_block(const trial_block&, const held_value& stop, const target_source& targets) {
         span_.begin_block(stop, targets);
     }
     static void begin(wide* v) { v[0] = v[1] = 0.0; }
@@ -54,7 +54,7 @@ public:
 
     rise_time(const measure_description& d, signal_arena& arena) : span_(arena), a_(d.a, arena), b_(d.b, arena) {}
 
-    void begin_block(const trial_block& block, constant_signal stop, const target_source& targets) {
+    void begin_block(const trial_block& block, const held_value& stop, const target_source& targets) {
         span_.begin_block(stop, targets);
         a_.begin(block);
         b_.begin(block);
@@ -95,7 +95,7 @@ public:
     settling_time(const measure_description& d, bool relative, signal_arena& arena)
         : span_(arena), band_(d.a, arena), relative_(relative) {}
 
-    void begin_block(const trial_block& block, constant_signal stop, const target_source& targets) {
+    void begin_block(const trial_block& block, const held_value& stop, const target_source& targets) {
         span_.begin_block(stop, targets);
         band_.begin(block);
     }

@@ -8,35 +8,32 @@ namespace windage {
 
 class measure_window {
 public:
-    measure_window(const measure_description& d, signal_arena& arena)
-        : after_(d.after, arena), before_(d.before, arena), start_(arena.take()), stop_(arena.take()),
-          size_(arena.block_size()) {}
+    measure_window(const measure_description& d, const measure_timing& timing, signal_arena& arena)
+        : timing_(timing), after_(d.after, arena), before_(d.before, arena),
+          start_(are_same(after_, timing.period), arena), stop_(are_same(before_, timing.end, timing.period), arena) {}
 
-    void begin(const trial_block& block, const measure_timing& timing) {
+    void begin(const trial_block& block) {
         after_.begin(block);
         before_.begin(block);
-        uniform_ = timing.is_uniform && after_.is_constant() && before_.is_constant();
-        for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP {
-            const wide allowance = 1e-6 * wide::load(timing.period + i);
-            (after_.pack_at(i) - allowance).store(start_ + i);
-            (minimum(before_.pack_at(i), wide::load(timing.end + i)) + allowance).store(stop_ + i);
-        });
+        const auto allowance = [&](std::size_t i) { return 1e-6 * timing_.period.pack_at(i); };
+        start_.fill([&](std::size_t i) { return after_.pack_at(i) - allowance(i); });
+        stop_.fill(
+            [&](std::size_t i) { return minimum(before_.pack_at(i), timing_.end.pack_at(i)) + allowance(i); });
     }
 
     /// All lanes are inside together or outside together.
-    bool is_uniform() const { return uniform_; }
+    bool is_uniform() const { return are_same(start_, stop_); }
     bool uniformly_inside(constant_signal time) const { return time[0] >= start_[0] && time[0] <= stop_[0]; }
     mask<lanes> inside(wide time, std::size_t i) const {
-        return (time >= wide::load(start_ + i)) & (time <= wide::load(stop_ + i));
+        return (time >= start_.pack_at(i)) & (time <= stop_.pack_at(i));
     }
     wide start(std::size_t i) const { return after_.pack_at(i); }
-    constant_signal stop() const { return stop_; }
+    const held_value& stop() const { return stop_; }
 
 private:
+    const measure_timing timing_;
     lane_value after_, before_;
-    signal start_, stop_;
-    std::size_t size_;
-    bool uniform_ = false;
+    held_value start_, stop_;
 };
 
 } // namespace windage

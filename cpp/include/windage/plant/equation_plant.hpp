@@ -8,8 +8,8 @@ namespace windage {
 
 class equation_plant final : public ode_plant {
 public:
-    equation_plant(const plant_description& d, const integration_settings& settings, const plant_disturbances& w,
-                   signal_arena& arena);
+    equation_plant(const plant_description& d, const integration_settings& settings, const plant_timing& timing,
+                   const plant_disturbances& w, signal_arena& arena);
 
     void evaluate_output(constant_signal time, constant_signal input) override;
     constant_signal output() const override { return output_; }

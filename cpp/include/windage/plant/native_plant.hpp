@@ -17,9 +17,9 @@ namespace windage {
 
 template <class Drive> class native_plant final : public ode_plant {
 public:
-    native_plant(const plant_description& d, const integration_settings& settings, const plant_disturbances& w,
-                 signal_arena& arena)
-        : ode_plant(checked(d, w), settings, w, false, arena), output_state_(d.output_state) {
+    native_plant(const plant_description& d, const integration_settings& settings, const plant_timing& timing,
+                 const plant_disturbances& w, signal_arena& arena)
+        : ode_plant(checked(d, w), settings, timing, w, false, arena), output_state_(d.output_state) {
         for (const number& n : d.numbers) numbers_.emplace_back(n, arena);
         for (signal& s : derived_) s = arena.take();
     }
@@ -85,7 +85,7 @@ private:
             for (int k = 0; k < N; ++k) x[k] = wide::load(x_[k] + i);
             const Drive drive = drive_at(i);
             const wide h = wide::load(stages[0].step + i), command = wide::load(stages[0].command + i);
-            const wide inverse_lag = wide::load(inverse_lag_ + i);
+            const wide inverse_lag = inverse_lag_.pack_at(i);
             std::size_t next = 0;
             auto system = [&](const state_array& at, state_array& rate, double) {
                 const auto w = acting(stages[next++], i);

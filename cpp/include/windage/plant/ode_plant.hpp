@@ -21,17 +21,15 @@ struct integration_settings {
     integrator_kind kind = integrator_kind::rk4;
     int steps_per_sample = 1;
     double tolerance = 1e-10; ///< of integrator_kind::reference
-    bool split = false;       ///< the command changes inside the interval
     number lag;               ///< time constant of the actuator, 0: none
 };
 
 class ode_plant : public plant {
 public:
-    ode_plant(const plant_description& d, const integration_settings& settings, const plant_disturbances& w,
-              bool reads_time, signal_arena& arena);
+    ode_plant(const plant_description& d, const integration_settings& settings, const plant_timing& timing,
+              const plant_disturbances& w, bool reads_time, signal_arena& arena);
 
-    void begin(const trial_block& block, constant_signal sample_period, constant_signal fraction,
-               const lane_value& initial_command) override;
+    void begin(const trial_block& block, const lane_value& initial_command) override;
     void advance(const sample_interval& interval) override;
     constant_signal state(int i) const override { return x_[i]; }
     int states() const override { return states_; }
@@ -59,7 +57,7 @@ protected:
     bool has_lag_;
     integrator_kind integrator_;
     block_state x_;
-    signal inverse_lag_;
+    held_value inverse_lag_;
 
 private:
     void full_derivative(const block_state& x, block_state& dx, const stage& s);
@@ -69,7 +67,8 @@ private:
 
     const plant_disturbances& w_;
     double tolerance_;
-    bool split_, evaluates_stages_;
+    const plant_timing timing_;
+    bool evaluates_stages_;
     std::vector<lane_value> initial_state_;
     lane_value lag_;
     step_plan plan_;

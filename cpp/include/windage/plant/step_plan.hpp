@@ -11,42 +11,32 @@ namespace windage {
 
 class step_plan {
 public:
-    step_plan(int steps_per_sample, bool split, signal_arena& arena)
-        : asked_(steps_per_sample), split_(split), size_(arena.block_size()), first_(arena.take()),
-          length_before_(arena.take()), length_after_(arena.take()), step_(arena.take()), start_(arena.take()),
-          input_(arena.take()) {}
+    step_plan(int steps_per_sample, const plant_timing& timing, bool needs_start, signal_arena& arena)
+        : timing_(timing), asked_(steps_per_sample), split_(timing.is_split), needs_start_(needs_start),
+          size_(arena.block_size()), first_(are_same(timing.period, timing.fraction), arena),
+          length_before_(first_.is_same(), arena), length_after_(first_.is_same(), arena), step_(arena.take()),
+          start_(arena.take()), input_(arena.take()) {}
 
     int steps() const { return split_ ? asked_ + 1 : asked_; }
 
-    void begin(constant_signal period, constant_signal fraction) {
+    void begin() {
+        const double asked = asked_;
+        const auto phi = [&](std::size_t i) { return timing_.fraction.pack_at(i); };
+        first_.fill([&](std::size_t i) { return -floor(-(phi(i) / timing_.period.pack_at(i) * asked)); });
+        length_before_.fill([&](std::size_t i) { return phi(i) / maximum(first_.pack_at(i), wide(1.0)); });
+        length_after_.fill([&](std::size_t i) {
+            return (timing_.period.pack_at(i) - phi(i)) / (asked + 1.0 - first_.pack_at(i));
+        });
         for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP {
-            const wide ts = wide::load(period + i);
-            if (!split_) return (ts * (1.0 / asked_)).store(step_ + i);
-            const wide phi = wide::load(fraction + i), first = -floor(-(phi / ts * double(asked_)));
-            first.store(first_ + i);
-            (phi / maximum(first, wide(1.0))).store(length_before_ + i);
-            ((ts - phi) / (double(asked_ + 1) - first)).store(length_after_ + i);
+            (timing_.period.pack_at(i) * (1.0 / asked)).store(step_ + i); // where the interval is not split
         });
     }
 
     /// Sets up step j: its length h, its start and the command that acts during it.
     void prepare(int j, const sample_interval& interval) {
-        const double index = j;
-        for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP {
-            const wide time = wide::load(interval.time + i);
-            if (!split_) {
-                (time + index * wide::load(step_ + i)).store(start_ + i);
-                return;
-            }
-            const wide first = wide::load(first_ + i), before = wide::load(length_before_ + i),
-                       after = wide::load(length_after_ + i);
-            const auto is_before = wide(index) < first;
-            select(is_before, before, after).store(step_ + i);
-            (time + select(is_before, index * before, wide::load(interval.fraction + i) + (index - first) * after))
-                .store(start_ + i);
-            select(is_before, wide::load(interval.before + i), wide::load(interval.after + i)).store(input_ + i);
-        });
         command_ = split_ ? input_ : interval.after;
+        if (split_) choose_part(j, interval);
+        if (needs_start_) find_start(j, interval.time);
     }
 
     constant_signal step() const { return step_; }
@@ -54,10 +44,28 @@ public:
     constant_signal command() const { return command_; }
 
 private:
+    void choose_part(double j, const sample_interval& interval) {
+        for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP {
+            const auto is_before = wide(j) < first_.pack_at(i);
+            select(is_before, length_before_.pack_at(i), length_after_.pack_at(i)).store(step_ + i);
+            select(is_before, wide::load(interval.before + i), wide::load(interval.after + i)).store(input_ + i);
+        });
+    }
+
+    void find_start(double j, constant_signal time) {
+        for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP {
+            const wide step = wide::load(step_ + i), first = first_.pack_at(i);
+            const wide later = timing_.fraction.pack_at(i) + (j - first) * step;
+            (wide::load(time + i) + (split_ ? select(wide(j) < first, j * step, later) : j * step)).store(start_ + i);
+        });
+    }
+
+    const plant_timing timing_;
     int asked_;
-    bool split_;
+    bool split_, needs_start_;
     std::size_t size_;
-    signal first_, length_before_, length_after_, step_, start_, input_;
+    held_value first_, length_before_, length_after_;
+    signal step_, start_, input_;
     constant_signal command_ = nullptr;
 };
 

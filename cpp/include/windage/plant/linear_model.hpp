@@ -1,0 +1,40 @@
+// State-space models of the linear stock plants, one plant a lane: x' = A x + B u + E w, y = C x.
+#pragma once
+
+#include <vector>
+
+#include <windage/lanes/pack.hpp>
+#include <windage/plant/description.hpp>
+
+namespace windage {
+
+/// A small matrix of packs: one matrix a lane.
+class lane_matrix {
+public:
+    lane_matrix() = default;
+    lane_matrix(int rows, int columns) : columns_(columns), values_(std::size_t(rows * columns), wide(0.0)) {}
+    wide& operator()(int row, int column) { return values_[std::size_t(row * columns_ + column)]; }
+    const wide& operator()(int row, int column) const { return values_[std::size_t(row * columns_ + column)]; }
+    int rows() const { return columns_ > 0 ? int(values_.size()) / columns_ : 0; }
+    int columns() const { return columns_; }
+
+private:
+    int columns_ = 0;
+    std::vector<wide> values_;
+};
+
+struct linear_model {
+    lane_matrix a, b, e, c;
+};
+
+/// Throws std::invalid_argument where the description has the wrong count of numbers or states.
+void check_linear(const plant_description& d);
+
+/// The model of a linear stock plant that `check_linear` accepts, for the numbers of each lane.
+linear_model realise(const plant_description& d, const std::vector<wide>& numbers);
+
+/// The model with the first-order lag of the actuator as one more state: the plant's input is that state, the command
+/// drives the lag.
+linear_model with_lag(const linear_model& m, wide time_constant);
+
+} // namespace windage
