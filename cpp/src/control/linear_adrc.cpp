@@ -80,26 +80,25 @@ void linear_adrc::place_gains() {
 
 // Output form: u = (k_1 (r - x_1) + ... + k_n (r^(n-1) - x_n) + r^(n) - x_{n+1}) / b0.
 // Error form:  u = (k_1 x_1 + ... + k_n x_n + x_{n+1}) / b0.
-template <int Order>
+template <int Order, adrc_form Form>
 WINDAGE_INLINE wide linear_adrc::command(const wide* x, const signal* reference, std::size_t i) const {
-    const bool error_form = d_.form == adrc_form::error;
-    const bool fed = d_.reference_derivatives;
+    constexpr bool error_form = Form == adrc_form::error;
+    const bool fed = !error_form && d_.reference_derivatives;
     wide sum = 0.0;
     for (int s = 0; s < Order; ++s) {
         wide deviation = error_form ? x[s] : -x[s];
         if (!error_form && (s == 0 || fed)) deviation += wide::load(reference[s] + i);
         sum += controller_gains_[s].pack_at(i) * deviation;
     }
-    if (!error_form && fed) sum += wide::load(reference[Order] + i);
+    if (fed) sum += wide::load(reference[Order] + i);
     if (d_.cancel_disturbance) sum = error_form ? sum + x[Order] : sum - x[Order];
     return sum * inverse_b0_.pack_at(i);
 }
 
-template <int Order>
-void linear_adrc::sample_order(std::int64_t k, const signal* reference, constant_signal measured, constant_signal fed) {
-    const bool error_form = d_.form == adrc_form::error;
+template <int Order, adrc_form Form, bool StartsMeasured>
+void linear_adrc::sample_form(const signal* reference, constant_signal measured, constant_signal fed) {
+    constexpr bool error_form = Form == adrc_form::error;
     const bool holds = d_.discretisation == discretisation_kind::zero_order_hold;
-    const bool starts_measured = k == 0 && d_.observer_start == observer_start_kind::measured;
     for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP {
         wide x[Order + 1], gains[Order + 1];
         for (int s = 0; s <= Order; ++s) {
@@ -110,7 +109,7 @@ void linear_adrc::sample_order(std::int64_t k, const signal* reference, constant
         const wide followed =
             error_form ? wide::load(reference[0] + i) - wide::load(measured + i) : wide::load(measured + i);
         const wide drive = b0_.pack_at(i) * wide::load(fed + i);
-        if (starts_measured) {
+        if constexpr (StartsMeasured) {
             x[0] = followed;
             x[Order] = error_form ? drive : -drive; // at rest under the initial command
         } else {
@@ -120,8 +119,19 @@ void linear_adrc::sample_order(std::int64_t k, const signal* reference, constant
         }
         correct<Order>(x, followed, gains);
         for (int s = 0; s <= Order; ++s) x[s].store(estimates_ + s * size_ + i);
-        command<Order>(x, reference, i).store(output_ + i);
+        command<Order, Form>(x, reference, i).store(output_ + i);
     });
+}
+
+template <int Order>
+void linear_adrc::sample_order(std::int64_t k, const signal* reference, constant_signal measured, constant_signal fed) {
+    const bool starts_measured = k == 0 && d_.observer_start == observer_start_kind::measured;
+    if (d_.form == adrc_form::error)
+        starts_measured ? sample_form<Order, adrc_form::error, true>(reference, measured, fed)
+                        : sample_form<Order, adrc_form::error, false>(reference, measured, fed);
+    else
+        starts_measured ? sample_form<Order, adrc_form::output, true>(reference, measured, fed)
+                        : sample_form<Order, adrc_form::output, false>(reference, measured, fed);
 }
 
 void linear_adrc::sample(std::int64_t k, const signal* reference, constant_signal measured, constant_signal applied) {

@@ -1,10 +1,18 @@
 #include <windage/loop/actuator.hpp>
 
 namespace windage {
+namespace {
 
-command_limiter::command_limiter(const actuator_description& d, const sample_clock& clock, signal_arena& arena)
+bool changes_nothing(const actuator_description& d) {
+    return !d.has_limits && d.rate_limit.is_constant(0.0) && d.resolution.is_constant(0.0);
+}
+
+} // namespace
+
+command_limiter::command_limiter(const actuator_description& d, const sample_clock& clock, constant_signal wanted,
+                                 signal_arena& arena)
     : period_(clock.period()), low_(d.low, arena), high_(d.high, arena), rate_limit_(d.rate_limit, arena), resolution_(d.resolution, arena),
-      initial_(d.initial, arena), has_limits_(d.has_limits), largest_change_(are_same(period_, rate_limit_), arena), unrounded_(arena.take()),
+      initial_(d.initial, arena), has_limits_(d.has_limits), is_transparent_(changes_nothing(d)), wanted_(wanted), largest_change_(are_same(period_, rate_limit_), arena), unrounded_(arena.take()),
       command_(arena.take()), size_(arena.block_size()) {}
 
 void command_limiter::begin(const trial_block& block) {
@@ -18,10 +26,11 @@ void command_limiter::begin(const trial_block& block) {
     initial_.copy_to(command_, size_);
 }
 
-void command_limiter::sample(constant_signal wanted) {
+void command_limiter::sample() {
+    if (is_transparent_) return;
     const bool limits_rate = !rate_limit_.is_constant(0.0), rounds = !resolution_.is_constant(0.0);
     for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP {
-        wide u = wide::load(wanted + i);
+        wide u = wide::load(wanted_ + i);
         if (has_limits_) u = clip(u, low_.pack_at(i), high_.pack_at(i));
         if (limits_rate) {
             const wide before = wide::load(unrounded_ + i), change = largest_change_.pack_at(i);

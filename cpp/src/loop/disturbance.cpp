@@ -40,7 +40,7 @@ void disturbance::begin_gauss_markov() {
 void disturbance::sample(std::int64_t k) {
     if (function_) {
         signal out[1] = {now_};
-        return function_->evaluate(clock_.time(), out, 0);
+        return function_->sample(clock_, out, 0);
     }
     const constant_signal n = noise_->sample(k);
     const bool starts_stationary = k == 0 && kind_ == disturbance_kind::gauss_markov;

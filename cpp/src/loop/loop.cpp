@@ -1,5 +1,6 @@
 #include <windage/loop/loop.hpp>
 
+#include <algorithm>
 #include <stdexcept>
 
 #include <windage/control/linear_adrc.hpp>
@@ -10,8 +11,7 @@ namespace windage {
 
 class loop::disturbance_bank final : public plant_disturbances {
 public:
-    disturbance_bank(const loop_description& d, const sample_clock& clock, bool time_is_uniform, signal_arena& arena)
-        : size_(arena.block_size()) {
+    disturbance_bank(const loop_description& d, const sample_clock& clock, bool time_is_uniform, signal_arena& arena) {
         for (const disturbance_description& w : d.disturbances) all_.emplace_back(w, clock, time_is_uniform, arena);
     }
     void begin(const trial_block& block) {
@@ -26,17 +26,15 @@ public:
             if (!w.is_held()) return false;
         return true;
     }
+    bool holds(int which) const override { return all_[which].holds(); }
     bool is_zero(int which) const override { return all_[which].is_zero(); }
     constant_signal now(int which) const override { return all_[which].now(); }
     void evaluate(int which, constant_signal time, bool ends_a_step, signal out) const override {
-        const disturbance& w = all_[which];
-        if (!w.is_held()) return w.evaluate(time, ends_a_step ? jump_side::before : jump_side::after, out);
-        for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP { wide::load(w.now() + i).store(out + i); });
+        all_[which].evaluate(time, ends_a_step ? jump_side::before : jump_side::after, out);
     }
 
 private:
     std::vector<disturbance> all_;
-    std::size_t size_;
 };
 
 namespace {
@@ -52,11 +50,13 @@ bool stages_are_uniform(const loop_description& d) {
 loop::loop(const loop_description& d, signal_arena& arena)
     : size_(arena.block_size()), clock_(d.sample_period, d.duration, arena),
       disturbances_(std::make_unique<disturbance_bank>(d, clock_, stages_are_uniform(d), arena)),
-      reference_(d.reference, d.sample_period.is_constant(), clock_.period(), arena), sensor_(d.sensor, clock_, arena),
-      controller_(std::make_unique<linear_adrc>(d.controller, clock_.period(), arena)), limiter_(d.actuator, clock_, arena),
       delay_(d, clock_.period(), arena),
-      error_(arena.take()), input_(arena.take()), zero_(arena.take()) {
-    plant_ = make_plant(d, {clock_.period(), delay_.fraction(), delay_.is_split()}, *disturbances_, arena);
+      plant_(make_plant(d, {clock_.period(), delay_.fraction(), delay_.is_split()}, *disturbances_, arena)),
+      reference_(d.reference, d.sample_period.is_constant(), clock_.period(), arena),
+      sensor_(d.sensor, clock_, plant_->output(), arena),
+      controller_(std::make_unique<linear_adrc>(d.controller, clock_.period(), arena)),
+      limiter_(d.actuator, clock_, controller_->output(), arena), error_(arena.take()) {
+    if (!delay_.is_absent() || plant_->lagged_input()) delayed_input_ = arena.take();
     for (int i = 0; i <= controller_->reference_derivatives(); ++i) reference_signals_.push_back(arena.take());
     name_signals(d);
     for (const expression_description& e : d.expressions) add_expression(e, arena);
@@ -74,26 +74,21 @@ void loop::begin(const trial_block& block) {
     plant_->begin(block, limiter_.initial());
     controller_->begin(block, limiter_.initial());
     for (named_expression& e : expressions_) e.formula.begin(block);
-    limiter_.initial().copy_to(input_, size_);
+    if (delayed_input_) limiter_.initial().copy_to(delayed_input_, size_);
 }
 
 void loop::sample(std::int64_t k) {
     clock_.tick(k, size_);
     disturbances_->sample(k);
-    plant_->evaluate_output(clock_.time(), input_);
-    sample_reference();
+    plant_->evaluate_output(clock_.time(), input());
+    reference_.sample(clock_, reference_signals_.data(), int(reference_signals_.size()) - 1);
     sample_error();
-    sensor_.sample(k, plant_->output());
+    sensor_.sample(k);
     controller_->sample(k, reference_signals_.data(), sensor_.measured(), limiter_.command());
-    limiter_.sample(controller_->output());
+    limiter_.sample();
     delay_.sample(k, limiter_.command());
-    const constant_signal acting = plant_->lagged_input() ? plant_->lagged_input() : delay_.acting();
-    for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP { wide::load(acting + i).store(input_ + i); });
+    if (delayed_input_) std::copy_n(plant_->lagged_input() ? plant_->lagged_input() : delay_.acting(), size_, delayed_input_);
     for (named_expression& e : expressions_) e.formula.run();
-}
-
-void loop::sample_reference() {
-    reference_.evaluate(clock_.time(), reference_signals_.data(), int(reference_signals_.size()) - 1);
 }
 
 void loop::sample_error() {
@@ -130,13 +125,13 @@ void loop::name_signals(const loop_description& d) {
     signals_["output"] = plant_->output();
     signals_["measured"] = sensor_.measured();
     signals_["command"] = limiter_.command();
-    signals_["input"] = input_;
+    signals_["input"] = input();
     for (std::size_t i = 0; i < d.plant.states.size(); ++i) signals_[d.plant.states[i]] = plant_->state(int(i));
     for (std::size_t i = 0; i < d.disturbances.size(); ++i)
         signals_[d.disturbances[i].name] = disturbances_->now(int(i));
     for (int i = 0; i < controller_->estimates(); ++i)
         signals_["estimate_" + std::to_string(i + 1)] = controller_->estimate(i);
-    if (!d.input_name.empty()) signals_.try_emplace(d.input_name, input_);
+    if (!d.input_name.empty()) signals_.try_emplace(d.input_name, input());
     if (!d.output_name.empty()) signals_.try_emplace(d.output_name, plant_->output());
 }
 

@@ -3,11 +3,19 @@
 #include <algorithm>
 
 namespace windage {
+namespace {
 
-sensor::sensor(const sensor_description& d, const sample_clock& clock, signal_arena& arena)
+bool changes_nothing(const sensor_description& d) {
+    return d.gain.is_constant(1.0) && d.bias.is_constant(0.0) && d.noise.is_constant(0.0) &&
+           d.filter_frequency.is_constant(0.0) && d.resolution.is_constant(0.0) && !d.has_range;
+}
+
+} // namespace
+
+sensor::sensor(const sensor_description& d, const sample_clock& clock, constant_signal output, signal_arena& arena)
     : period_(clock.period()), gain_(d.gain, arena), bias_(d.bias, arena), noise_level_(d.noise, arena),
       filter_frequency_(d.filter_frequency, arena), resolution_(d.resolution, arena), low_(d.low, arena),
-      high_(d.high, arena), has_range_(d.has_range), filter_gain_(are_same(period_, filter_frequency_), arena), measured_(arena.take()),
+      high_(d.high, arena), has_range_(d.has_range), is_transparent_(changes_nothing(d)), output_(output), filter_gain_(are_same(period_, filter_frequency_), arena), measured_(arena.take()),
       filtered_(arena.take()), size_(arena.block_size()) {
     if (!d.noise.is_constant(0.0)) noise_.emplace(d.stream, arena);
 }
@@ -25,11 +33,12 @@ void sensor::begin(const trial_block& block) {
     std::fill_n(filtered_, size_, 0.0);
 }
 
-void sensor::sample(std::int64_t k, constant_signal output) {
+void sensor::sample(std::int64_t k) {
+    if (is_transparent_) return;
     const constant_signal noise = noise_ ? noise_->sample(k) : nullptr;
     const bool filters = !filter_frequency_.is_constant(0.0), rounds = !resolution_.is_constant(0.0);
     for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP {
-        wide y = gain_.pack_at(i) * wide::load(output + i) + bias_.pack_at(i);
+        wide y = gain_.pack_at(i) * wide::load(output_ + i) + bias_.pack_at(i);
         if (noise) y += noise_level_.pack_at(i) * wide::load(noise + i);
         if (filters) {
             const wide before = k == 0 ? y : wide::load(filtered_ + i); // starts settled on the first reading

@@ -1,6 +1,7 @@
 #include <windage/loop/time_function.hpp>
 
 #include <algorithm>
+#include <limits>
 #include <stdexcept>
 
 #include <windage/control/limits.hpp>
@@ -12,6 +13,7 @@ namespace windage {
 namespace {
 
 constexpr double two_pi = 6.283185307179586476925;
+constexpr double infinity = std::numeric_limits<double>::infinity();
 
 bool all_constant(const std::vector<number>& numbers) {
     return std::all_of(numbers.begin(), numbers.end(), [](const number& n) { return n.is_constant(); });
@@ -29,6 +31,7 @@ time_function::time_function(const time_function_description& d, bool time_is_un
 }
 
 void time_function::begin(const trial_block& block) {
+    holds_until_ = -infinity;
     for (lane_value& n : numbers_) n.begin(block);
     allowance_.fill([&](std::size_t i) { return 1e-9 * period_.pack_at(i); });
     for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP {
@@ -36,6 +39,56 @@ void time_function::begin(const trial_block& block) {
         if (kind_ == time_function_kind::jerk_limited)
             plan_profile(number_at(0, i), number_at(2, i), number_at(3, i), number_at(4, i)).store(derived_.data(), i);
     });
+}
+
+void time_function::sample(const sample_clock& clock, signal* out, int derivatives) {
+    const double t = clock.time()[0];
+    if (t < holds_until_) return;
+    evaluate(clock.time(), out, derivatives);
+    holds_until_ = clock.is_uniform() ? holds_until(t) : -infinity;
+}
+
+bool time_function::holds(const sample_clock& clock) const {
+    constexpr double a_little_more = 1.000001; // than a period: the end of the interval is asked for as well
+    return clock.is_uniform() && clock.time()[0] + a_little_more * clock.period()[0] < holds_until_;
+}
+
+// Time until which, from t on, value and derivatives stay as they are in every lane; t or less where they move.
+double time_function::holds_until(double t) const {
+    double earliest = infinity;
+    const std::size_t different = uniform_ ? 1 : size_;
+    for (std::size_t lane = 0; lane < different && earliest > t; ++lane)
+        earliest = std::min(earliest, lane_holds_until(t, lane));
+    return earliest;
+}
+
+double time_function::lane_holds_until(double t, std::size_t lane) const {
+    const double allowance = allowance_[lane];
+    const auto number = [&](std::size_t k) { return numbers_[k][lane]; };
+    // A jump to come ends the rest early enough for both of its sides.
+    const auto until_jump = [&](double at) { return t + allowance >= at ? infinity : at - 2.0 * allowance; };
+    const auto unless_moving = [&](double start, double stop) {
+        if (t + allowance < start) return start - 2.0 * allowance;
+        return t - allowance > stop ? infinity : t;
+    };
+    const std::size_t entries = numbers_.size() / 2;
+    switch (kind_) {
+    case time_function_kind::constant: return infinity;
+    case time_function_kind::step: return until_jump(number(1));
+    case time_function_kind::pulse: return std::min(until_jump(number(1)), until_jump(number(1) + number(2)));
+    case time_function_kind::ramp: return unless_moving(number(1), number(2));
+    case time_function_kind::sine: return unless_moving(number(4), infinity);
+    case time_function_kind::quintic: return unless_moving(number(1), number(1) + number(2));
+    case time_function_kind::jerk_limited:
+        return unless_moving(number(1), number(1) + profile_plan::load(derived_.data(), lane / lanes * lanes).total[int(lane % lanes)]);
+    case time_function_kind::table_linear: return unless_moving(number(0), number(entries - 1));
+    case time_function_kind::table_hold: {
+        double earliest = infinity;
+        for (std::size_t k = 0; k < entries; ++k) earliest = std::min(earliest, until_jump(number(k)));
+        return earliest;
+    }
+    }
+    return t;
 }
 
 time_function::instant time_function::instant_at(wide t, std::size_t i, jump_side side) const {
@@ -56,8 +109,13 @@ void time_function::evaluate(constant_signal time, signal* out, int derivatives,
     const bool is_table = kind_ == time_function_kind::table_linear || kind_ == time_function_kind::table_hold;
     for (int d = 1; d <= derivatives; ++d) values[d] = 0.0;
     is_table ? table_uniform(at.t[0], at.sided[0], values, derivatives) : evaluate_pack(0, at, values, derivatives);
-    for (int d = 0; d <= derivatives; ++d)
-        for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP { values[d].store(out[d] + i); });
+    for (int d = 0; d <= derivatives; ++d) write_where_new(values[d], out[d]);
+}
+
+// A signal of a uniform function is written by nothing else, hence the same in all lanes at any time.
+void time_function::write_where_new(wide value, signal out) const {
+    if (bits_of(value)[0] == bits_of(wide::load(out))[0]) return;
+    for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP { value.store(out + i); });
 }
 
 void time_function::evaluate_at_own_times(const held_value& time, signal out) const {

@@ -1,12 +1,15 @@
 // The loop that every measure shares: which lanes are inside the window, and the running values of each pack.
 #pragma once
 
+#include <cstdint>
+
 #include <windage/measure/reducers.hpp>
 #include <windage/measure/window.hpp>
 
 namespace windage {
 
-/// `Reducer` may hold lane values of its own; it is told of each block by `begin_block`.
+/// `Reducer` may hold lane values of its own; it is told of each block by `begin_block`. `Reducer::stays_undefined`: once
+/// its first running value is undefined, no sample makes it a number again.
 template <class Reducer> class reduction final : public measure {
 public:
     reduction(const measure_description& d, constant_signal values, const measure_timing& timing, signal_arena& arena,
@@ -16,6 +19,7 @@ public:
 
     void begin(const trial_block& block, const target_source& targets) override {
         window_.begin(block);
+        samples_ = 0;
         if constexpr (requires { reducer_.begin_block(block, window_.stop(), targets); })
             reducer_.begin_block(block, window_.stop(), targets);
         for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP {
@@ -29,8 +33,10 @@ public:
     void update(constant_signal time) override {
         if (!window_.is_uniform())
             for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP { add<true>(time, i); });
-        else if (window_.uniformly_inside(time))
+        else if (window_.uniformly_inside(time)) {
             for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP { add<false>(time, i); });
+            ++samples_;
+        }
     }
 
     /// A window that holds no sample leaves the measure undefined.
@@ -43,14 +49,19 @@ public:
                 value = reducer_.finish(v, i, window_.start(i));
             else
                 value = reducer_.finish(v);
-            select(wide::load(seen_ + i) > 0.0, value, std::numeric_limits<double>::quiet_NaN()).store(result + i);
+            const wide seen = counts_together() ? wide(double(samples_)) : wide::load(seen_ + i);
+            select(seen > 0.0, value, std::numeric_limits<double>::quiet_NaN()).store(result + i);
         });
     }
 
 private:
+    bool counts_together() const { return Reducer::stays_undefined && window_.is_uniform(); }
+
     template <bool Masked> WINDAGE_INLINE void add(constant_signal time, std::size_t i) {
+        // Where all lanes enter the window together one count is enough for a reducer that stays undefined by itself.
+        constexpr bool counts_lanes = Masked || !Reducer::stays_undefined;
         const wide t = wide::load(time + i), dt = period_.pack_at(i);
-        const wide seen = wide::load(seen_ + i);
+        const wide seen = counts_lanes ? wide::load(seen_ + i) : wide(double(samples_));
         const sample_point at{wide::load(values_ + i), t - window_.start(i), dt, seen == 0.0,
                               t + 0.5 * dt > window_.stop().pack_at(i)};
         wide v[Reducer::values], before[Reducer::values];
@@ -61,13 +72,14 @@ private:
             reducer_.add(v, at);
         // x - x is zero, or undefined where x is not finite: one such sample leaves the whole measure undefined,
         // because comparisons would skip it and a trial would pass on what is left.
-        const wide counted = seen + (1.0 + (at.x - at.x));
+        const wide doubt = at.x - at.x;
+        if constexpr (!counts_lanes) v[0] += doubt;
         if constexpr (Masked) {
             const auto inside = window_.inside(t, i);
             for (int k = 0; k < Reducer::values; ++k) v[k] = select(inside, v[k], before[k]);
-            select(inside, counted, seen).store(seen_ + i);
-        } else {
-            counted.store(seen_ + i);
+            select(inside, seen + (1.0 + doubt), seen).store(seen_ + i);
+        } else if constexpr (counts_lanes) {
+            (seen + (1.0 + doubt)).store(seen_ + i);
         }
         for (int k = 0; k < Reducer::values; ++k) v[k].store(running_ + k * size_ + i);
     }
@@ -78,6 +90,7 @@ private:
     measure_window window_;
     Reducer reducer_;
     signal running_, seen_;
+    std::int64_t samples_ = 0; // inside the window, where all lanes enter it together
 };
 
 } // namespace windage

@@ -99,14 +99,18 @@ void linear_plant::evaluate_output(constant_signal, constant_signal) {
 }
 
 void linear_plant::find_disturbances(const sample_interval& interval) {
-    const bool held = w_.are_held();
-    if (!held && !acting_.empty())
-        for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP {
-            (wide::load(interval.time + i) + 0.5 * timing_.period.pack_at(i)).store(middle_ + i);
-        });
+    bool has_middle = false;
     for (std::size_t k = 0; k < acting_.size(); ++k) {
-        if (!held) w_.evaluate(acting_[k], middle_, false, w_middle_[acting_[k]]);
-        w_now_[k] = held ? w_.now(acting_[k]) : w_middle_[acting_[k]];
+        const int which = acting_[k];
+        w_now_[k] = w_.now(which);
+        if (w_.holds(which)) continue;
+        if (!has_middle)
+            for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP {
+                (wide::load(interval.time + i) + 0.5 * timing_.period.pack_at(i)).store(middle_ + i);
+            });
+        has_middle = true;
+        w_.evaluate(which, middle_, false, w_middle_[which]);
+        w_now_[k] = w_middle_[which];
     }
 }
 

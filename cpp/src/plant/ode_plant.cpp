@@ -33,8 +33,8 @@ ode_plant::ode_plant(const plant_description& d, const integration_settings& set
     : size_(arena.block_size()), states_(int(d.states.size())), has_lag_(!settings.lag.is_constant(0.0)),
       integrator_(settings.kind), x_(d.states.size() + (has_lag_ ? 1 : 0), arena.block_size()),
       inverse_lag_(settings.lag.is_constant(), arena), w_(w), tolerance_(settings.tolerance), timing_(timing),
-      evaluates_stages_(reads_time || !w.are_held()), lag_(settings.lag, arena),
-      plan_(settings.steps_per_sample, timing, evaluates_stages_, arena) {
+      reads_time_(reads_time), lag_(settings.lag, arena),
+      plan_(settings.steps_per_sample, timing, arena) {
     if (settings.steps_per_sample < 1)
         throw std::invalid_argument("steps_per_sample is " + std::to_string(settings.steps_per_sample) +
                                     "; expected at least 1");
@@ -43,7 +43,7 @@ ode_plant::ode_plant(const plant_description& d, const integration_settings& set
                                     std::to_string(d.states.size()) + " states");
     for (const number& n : d.initial_state) initial_state_.emplace_back(n, arena);
     tableau(settings.kind, abscissae_, stage_buffer_);
-    const std::size_t buffers = evaluates_stages_ ? abscissae_.size() : 0;
+    const std::size_t buffers = reads_time || !w.are_held() ? abscissae_.size() : 0;
     for (std::size_t c = 0; c < buffers; ++c) {
         stage_time_.push_back(arena.take());
         stage_values_.emplace_back();
@@ -69,29 +69,36 @@ void ode_plant::begin(const trial_block& block, const lane_value& initial_comman
 
 void ode_plant::advance(const sample_interval& interval) {
     if (integrator_ == integrator_kind::reference) return advance_reference(interval);
+    find_moving();
     for (int j = 0; j < plan_.steps(); ++j) {
-        plan_.prepare(j, interval);
+        plan_.prepare(j, interval, needs_times());
         prepare_stages();
         take_step(stages_);
     }
 }
 
+void ode_plant::find_moving() {
+    moving_.clear();
+    for (int k = 0; k < w_.count(); ++k)
+        if (!w_.holds(k)) moving_.push_back(k);
+}
+
 void ode_plant::prepare_stages() {
-    if (evaluates_stages_)
+    if (needs_times())
         for (std::size_t c = 0; c < abscissae_.size(); ++c) {
             const double fraction = abscissae_[c];
             for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP {
                 (wide::load(plan_.start() + i) + fraction * wide::load(plan_.step() + i)).store(stage_time_[c] + i);
             });
-            for (int k = 0; k < w_.count(); ++k) w_.evaluate(k, stage_time_[c], fraction == 1.0, stage_values_[c][k]);
+            for (int k : moving_) w_.evaluate(k, stage_time_[c], fraction == 1.0, stage_values_[c][k]);
         }
     for (std::size_t s = 0; s < stages_.size(); ++s) {
         stage& here = stages_[s];
         here.step = plan_.step();
         here.command = plan_.command();
-        here.time = evaluates_stages_ ? stage_time_[stage_buffer_[s]] : nullptr;
-        for (int k = 0; k < w_.count(); ++k)
-            here.disturbances[k] = evaluates_stages_ ? stage_values_[stage_buffer_[s]][k] : w_.now(k);
+        here.time = needs_times() ? stage_time_[stage_buffer_[s]] : nullptr;
+        for (int k = 0; k < w_.count(); ++k) here.disturbances[k] = w_.now(k);
+        for (int k : moving_) here.disturbances[k] = stage_values_[stage_buffer_[s]][k];
     }
 }
 
@@ -133,14 +140,15 @@ void ode_plant::integrate_reference(constant_signal start, constant_signal lengt
     here.step = length;
     here.command = command;
     for (int k = 0; k < w_.count(); ++k) here.disturbances.push_back(w_.now(k));
+    find_moving();
     begin_step(x_, here);
     auto system = [&](const block_state& x, block_state& dx, double tau) {
-        if (evaluates_stages_) {
+        if (needs_times()) {
             for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP {
                 (wide::load(start + i) + tau * wide::load(length + i)).store(stage_time_[0] + i);
             });
             here.time = stage_time_[0];
-            for (int k = 0; k < w_.count(); ++k) {
+            for (int k : moving_) {
                 w_.evaluate(k, stage_time_[0], tau == 1.0, stage_values_[0][k]);
                 here.disturbances[k] = stage_values_[0][k];
             }

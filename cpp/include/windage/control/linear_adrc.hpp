@@ -24,7 +24,10 @@ public:
 private:
     template <int Order>
     void sample_order(std::int64_t k, const signal* reference, constant_signal measured, constant_signal fed);
-    template <int Order> wide command(const wide* x, const signal* reference, std::size_t i) const;
+    template <int Order, adrc_form Form, bool StartsMeasured>
+    void sample_form(const signal* reference, constant_signal measured, constant_signal fed);
+    template <int Order, adrc_form Form>
+    wide command(const wide* x, const signal* reference, std::size_t i) const;
     void place_gains();
 
     controller_description d_;

@@ -10,18 +10,20 @@ namespace windage {
 
 class command_limiter {
 public:
-    command_limiter(const actuator_description& d, const sample_clock& clock, signal_arena& arena);
+    /// `wanted`: the output of the controller. A limiter that changes nothing hands on that very signal.
+    command_limiter(const actuator_description& d, const sample_clock& clock, constant_signal wanted,
+                    signal_arena& arena);
 
     void begin(const trial_block& block);
-    /// Limits the controller's output into `command`.
-    void sample(constant_signal wanted);
-    constant_signal command() const { return command_; }
+    void sample();
+    constant_signal command() const { return is_transparent_ ? wanted_ : command_; }
     const lane_value& initial() const { return initial_; }
 
 private:
     const held_value& period_;
     lane_value low_, high_, rate_limit_, resolution_, initial_;
-    bool has_limits_;
+    bool has_limits_, is_transparent_;
+    constant_signal wanted_;
     held_value largest_change_; // a sample
     signal unrounded_;      // what the rate limit starts from: changes below half a resolution must add up
     signal command_;

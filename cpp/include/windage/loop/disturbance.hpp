@@ -22,7 +22,9 @@ public:
     /// Value at any other time of this sample interval.
     void evaluate(constant_signal time, jump_side side, signal out) const;
 
-    /// Does not change between two samples.
+    /// Keeps its value until the next sample.
+    bool holds() const { return !function_ || function_->holds(clock_); }
+    /// Never changes between two samples.
     bool is_held() const { return !function_ || function_->is_constant(); }
     bool is_zero() const { return function_ && function_->is_constant(0.0); }
     constant_signal now() const { return now_; }

@@ -50,7 +50,7 @@ private:
         signal value;
     };
 
-    void sample_reference();
+    constant_signal input() const { return delayed_input_ ? delayed_input_ : limiter_.command(); }
     void sample_error();
     void add_expression(const expression_description& e, signal_arena& arena);
     void name_signals(const loop_description& d);
@@ -58,15 +58,16 @@ private:
     std::size_t size_;
     sample_clock clock_;
     std::unique_ptr<disturbance_bank> disturbances_;
+    delay_line delay_;
     std::unique_ptr<plant> plant_;
     time_function reference_;
     std::vector<signal> reference_signals_;
     sensor sensor_;
     std::unique_ptr<controller> controller_;
     command_limiter limiter_;
-    delay_line delay_;
     std::vector<named_expression> expressions_;
-    signal error_, input_, zero_;
+    signal error_;
+    signal delayed_input_ = nullptr; // null where the command acts at once
     std::map<std::string, constant_signal> signals_;
 };
 

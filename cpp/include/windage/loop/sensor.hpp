@@ -12,16 +12,18 @@ namespace windage {
 
 class sensor {
 public:
-    sensor(const sensor_description& d, const sample_clock& clock, signal_arena& arena);
+    /// `output`: what is measured. A sensor that changes nothing hands on that very signal.
+    sensor(const sensor_description& d, const sample_clock& clock, constant_signal output, signal_arena& arena);
 
     void begin(const trial_block& block);
-    void sample(std::int64_t k, constant_signal output);
-    constant_signal measured() const { return measured_; }
+    void sample(std::int64_t k);
+    constant_signal measured() const { return is_transparent_ ? output_ : measured_; }
 
 private:
     const held_value& period_;
     lane_value gain_, bias_, noise_level_, filter_frequency_, resolution_, low_, high_;
-    bool has_range_;
+    bool has_range_, is_transparent_;
+    constant_signal output_;
     std::optional<white_noise> noise_;
     held_value filter_gain_;
     signal measured_;

@@ -1,10 +1,11 @@
 // Functions of time over a block of trials, with their derivatives: references and disturbances.
-// Where nothing differs between the trials the value is computed for one pack and copied to the others.
+// Where nothing differs between the trials the value is computed for one pack and copied to the others when it changes.
 #pragma once
 
 #include <vector>
 
 #include <windage/lanes/signal.hpp>
+#include <windage/loop/clock.hpp>
 #include <windage/loop/description.hpp>
 
 namespace windage {
@@ -22,6 +23,12 @@ public:
 
     void begin(const trial_block& block);
 
+    /// Value and derivatives at the sample instant, into out[0 .. derivatives]; does nothing while nothing changes. The
+    /// samples of a block are asked for in their order and into the same signals.
+    void sample(const sample_clock& clock, signal* out, int derivatives);
+    /// Value and derivatives of the last sample hold until the next one, in every lane.
+    bool holds(const sample_clock& clock) const;
+
     /// Value and `derivatives` time derivatives at `time`, into out[0 .. derivatives]. At a jump, `side` chooses.
     void evaluate(constant_signal time, signal* out, int derivatives, jump_side side = jump_side::after) const;
     /// The value alone, at times that may differ from lane to lane even where those of `evaluate` do not.
@@ -32,12 +39,15 @@ public:
     bool is_constant(double x) const { return is_constant() && numbers_[0].is_constant(x); }
 
 private:
+    double holds_until(double t) const;
+    double lane_holds_until(double t, std::size_t lane) const;
     wide number_at(std::size_t which, std::size_t i) const { return numbers_[which].pack_at(i); }
     /// A time, and the same time moved to the wanted side of a jump: the first for values, the second for comparisons.
     struct instant {
         wide t, sided;
     };
     instant instant_at(wide time, std::size_t i, jump_side side) const;
+    void write_where_new(wide value, signal out) const;
     void evaluate_pack(std::size_t i, instant at, wide* out, int derivatives) const;
     void sine_pack(std::size_t i, instant at, wide* out, int derivatives) const;
     void quintic_pack(std::size_t i, instant at, wide* out, int derivatives) const;
@@ -48,6 +58,7 @@ private:
     time_function_kind kind_;
     std::size_t size_;
     bool uniform_;
+    double holds_until_ = 0.0; // from the last sample that was evaluated
     const held_value& period_;
     std::vector<lane_value> numbers_;
     held_value allowance_;        // within which two instants are the same

@@ -9,6 +9,7 @@ namespace windage {
 class band_time {
 public:
     static constexpr int values = 1;
+    static constexpr bool stays_undefined = true;
 
     /// `touching_counts`: a signal at the very limit counts (saturation), or only beyond it (a band).
     band_time(const measure_description& d, bool touching_counts, signal_arena& arena)
@@ -19,7 +20,7 @@ public:
         high_.begin(block);
     }
     static void begin(wide* v) { v[0] = 0.0; }
-    void add(wide* v, const sample_point& at, std::size_t i) const {
+    WINDAGE_INLINE void add(wide* v, const sample_point& at, std::size_t i) const {
         const wide low = low_.pack_at(i), high = high_.pack_at(i);
         const auto beyond = (at.x < low) | (at.x > high), touching = (at.x <= low) | (at.x >= high);
         const auto counts = (touching_counts_ ? touching : beyond) & !at.is_last;

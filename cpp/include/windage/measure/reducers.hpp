@@ -22,36 +22,41 @@ inline constexpr double infinite = std::numeric_limits<double>::infinity();
 
 struct peak {
     static constexpr int values = 1;
+    static constexpr bool stays_undefined = true;
     static void begin(wide* v) { v[0] = 0.0; }
-    static void add(wide* v, const sample_point& at) { v[0] = maximum(v[0], absolute(at.x)); }
+    static WINDAGE_INLINE void add(wide* v, const sample_point& at) { v[0] = maximum(v[0], absolute(at.x)); }
     static wide finish(const wide* v) { return v[0]; }
 };
 
 struct lowest {
     static constexpr int values = 1;
+    static constexpr bool stays_undefined = true;
     static void begin(wide* v) { v[0] = infinite; }
-    static void add(wide* v, const sample_point& at) { v[0] = minimum(v[0], at.x); }
+    static WINDAGE_INLINE void add(wide* v, const sample_point& at) { v[0] = minimum(v[0], at.x); }
     static wide finish(const wide* v) { return v[0]; }
 };
 
 struct highest {
     static constexpr int values = 1;
+    static constexpr bool stays_undefined = true;
     static void begin(wide* v) { v[0] = -infinite; }
-    static void add(wide* v, const sample_point& at) { v[0] = maximum(v[0], at.x); }
+    static WINDAGE_INLINE void add(wide* v, const sample_point& at) { v[0] = maximum(v[0], at.x); }
     static wide finish(const wide* v) { return v[0]; }
 };
 
 struct final_value {
     static constexpr int values = 1;
+    static constexpr bool stays_undefined = false;
     static void begin(wide* v) { v[0] = std::numeric_limits<double>::quiet_NaN(); }
-    static void add(wide* v, const sample_point& at) { v[0] = at.x; }
+    static WINDAGE_INLINE void add(wide* v, const sample_point& at) { v[0] = at.x; }
     static wide finish(const wide* v) { return v[0]; }
 };
 
 struct mean {
     static constexpr int values = 2;
+    static constexpr bool stays_undefined = true;
     static void begin(wide* v) { v[0] = v[1] = 0.0; }
-    static void add(wide* v, const sample_point& at) {
+    static WINDAGE_INLINE void add(wide* v, const sample_point& at) {
         v[0] += at.x;
         v[1] += wide(1.0);
     }
@@ -60,8 +65,9 @@ struct mean {
 
 struct root_mean_square {
     static constexpr int values = 2;
+    static constexpr bool stays_undefined = true;
     static void begin(wide* v) { v[0] = v[1] = 0.0; }
-    static void add(wide* v, const sample_point& at) {
+    static WINDAGE_INLINE void add(wide* v, const sample_point& at) {
         v[0] += at.x * at.x;
         v[1] += wide(1.0);
     }
@@ -71,8 +77,9 @@ struct root_mean_square {
 /// About the mean; deviations are taken from the first sample, so that a large mean does not cancel.
 struct standard_deviation {
     static constexpr int values = 4;
+    static constexpr bool stays_undefined = true;
     static void begin(wide* v) { v[0] = v[1] = v[2] = v[3] = 0.0; }
-    static void add(wide* v, const sample_point& at) {
+    static WINDAGE_INLINE void add(wide* v, const sample_point& at) {
         v[3] = select(at.is_first, at.x, v[3]);
         const wide d = at.x - v[3];
         v[0] += d;
@@ -88,8 +95,9 @@ struct standard_deviation {
 /// Integrals by the trapezium rule over the samples in the window.
 template <class Integrand> struct integral {
     static constexpr int values = 2;
+    static constexpr bool stays_undefined = true;
     static void begin(wide* v) { v[0] = v[1] = 0.0; }
-    static void add(wide* v, const sample_point& at) {
+    static WINDAGE_INLINE void add(wide* v, const sample_point& at) {
         const wide y = Integrand::of(at);
         v[0] += select(at.is_first, 0.0, 0.5 * at.dt * (v[1] + y));
         v[1] = y;
@@ -97,19 +105,20 @@ template <class Integrand> struct integral {
     static wide finish(const wide* v) { return v[0]; }
 };
 struct magnitude {
-    static wide of(const sample_point& at) { return absolute(at.x); }
+    static WINDAGE_INLINE wide of(const sample_point& at) { return absolute(at.x); }
 };
 struct square {
-    static wide of(const sample_point& at) { return at.x * at.x; }
+    static WINDAGE_INLINE wide of(const sample_point& at) { return at.x * at.x; }
 };
 struct time_weighted_magnitude {
-    static wide of(const sample_point& at) { return at.t * absolute(at.x); }
+    static WINDAGE_INLINE wide of(const sample_point& at) { return at.t * absolute(at.x); }
 };
 
 struct total_variation {
     static constexpr int values = 2;
+    static constexpr bool stays_undefined = true;
     static void begin(wide* v) { v[0] = v[1] = 0.0; }
-    static void add(wide* v, const sample_point& at) {
+    static WINDAGE_INLINE void add(wide* v, const sample_point& at) {
         v[0] += select(at.is_first, 0.0, absolute(at.x - v[1]));
         v[1] = at.x;
     }
@@ -118,8 +127,9 @@ struct total_variation {
 
 struct rms_change {
     static constexpr int values = 3;
+    static constexpr bool stays_undefined = true;
     static void begin(wide* v) { v[0] = v[1] = v[2] = 0.0; }
-    static void add(wide* v, const sample_point& at) {
+    static WINDAGE_INLINE void add(wide* v, const sample_point& at) {
         const wide change = at.x - v[1];
         v[0] += select(at.is_first, 0.0, change * change);
         v[2] += select(at.is_first, wide(0.0), wide(1.0));

@@ -23,6 +23,7 @@ private:
 class excursion {
 public:
     static constexpr int values = 2; // initial value, largest excess
+    static constexpr bool stays_undefined = false;
 
     excursion(bool below_initial, signal_arena& arena) : span_(arena), below_initial_(below_initial) {}
 
@@ -30,7 +31,7 @@ public:
         span_.begin_block(stop, targets);
     }
     static void begin(wide* v) { v[0] = v[1] = 0.0; }
-    void add(wide* v, const sample_point& at, std::size_t i) const {
+    WINDAGE_INLINE void add(wide* v, const sample_point& at, std::size_t i) const {
         v[0] = select(at.is_first, at.x, v[0]);
         const wide change = span_.final_value(i) - v[0];
         const wide excess = below_initial_ ? v[0] - at.x : at.x - span_.final_value(i);
@@ -51,6 +52,7 @@ private:
 class rise_time {
 public:
     static constexpr int values = 5; // initial value, crossing of a, crossing of b, last fraction, last time
+    static constexpr bool stays_undefined = false;
 
     rise_time(const measure_description& d, signal_arena& arena) : span_(arena), a_(d.a, arena), b_(d.b, arena) {}
 
@@ -63,7 +65,7 @@ public:
         v[0] = v[3] = v[4] = 0.0;
         v[1] = v[2] = reducers::infinite;
     }
-    void add(wide* v, const sample_point& at, std::size_t i) const {
+    WINDAGE_INLINE void add(wide* v, const sample_point& at, std::size_t i) const {
         v[0] = select(at.is_first, at.x, v[0]);
         const wide fraction = (at.x - v[0]) / (span_.final_value(i) - v[0]);
         v[1] = first_crossing(v[1], a_.pack_at(i), v, fraction, at.t);
@@ -89,6 +91,7 @@ private:
 class settling_time {
 public:
     static constexpr int values = 4; // initial value, settled since, last signed deviation, last time
+    static constexpr bool stays_undefined = false;
 
     /// `relative`: the deviation is from the reference at the window's end, and the band a fraction of the change;
     /// otherwise the deviation is the signal itself and the band in its unit.
@@ -102,7 +105,7 @@ public:
     static void begin(wide* v) {
         for (int k = 0; k < values; ++k) v[k] = 0.0;
     }
-    void add(wide* v, const sample_point& at, std::size_t i) const {
+    WINDAGE_INLINE void add(wide* v, const sample_point& at, std::size_t i) const {
         v[0] = select(at.is_first, at.x, v[0]);
         const wide target = relative_ ? span_.final_value(i) : wide(0.0);
         const wide band = relative_ ? band_.pack_at(i) * absolute(target - v[0]) : band_.pack_at(i);

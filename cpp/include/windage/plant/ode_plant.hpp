@@ -61,6 +61,8 @@ protected:
 
 private:
     void full_derivative(const block_state& x, block_state& dx, const stage& s);
+    void find_moving();
+    bool needs_times() const { return reads_time_ || !moving_.empty(); }
     void prepare_stages();
     void advance_reference(const sample_interval& interval);
     void integrate_reference(constant_signal start, constant_signal length, constant_signal command);
@@ -68,10 +70,11 @@ private:
     const plant_disturbances& w_;
     double tolerance_;
     const plant_timing timing_;
-    bool evaluates_stages_;
+    bool reads_time_;
     std::vector<lane_value> initial_state_;
     lane_value lag_;
     step_plan plan_;
+    std::vector<int> moving_;       // disturbances that change before the next sample
     std::vector<double> abscissae_; // distinct fractions of a step at which stages lie
     std::vector<int> stage_buffer_; // which of them each stage uses
     std::vector<stage> stages_;

@@ -14,10 +14,12 @@ public:
     virtual int count() const = 0;
     /// All of them keep their value between two samples.
     virtual bool are_held() const = 0;
+    /// Keeps its value from this sample to the next one.
+    virtual bool holds(int which) const = 0;
     /// Zero at all times in every trial.
     virtual bool is_zero(int which) const = 0;
     virtual constant_signal now(int which) const = 0;
-    /// Value at a time within the sample interval; at the end of a step a jump at that very time is still to come.
+    /// Value of one that moves at a time within the sample interval; at the end of a step a jump at that very time is still to come.
     virtual void evaluate(int which, constant_signal time, bool ends_a_step, signal out) const = 0;
 };
 

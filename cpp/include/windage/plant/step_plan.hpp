@@ -11,8 +11,8 @@ namespace windage {
 
 class step_plan {
 public:
-    step_plan(int steps_per_sample, const plant_timing& timing, bool needs_start, signal_arena& arena)
-        : timing_(timing), asked_(steps_per_sample), split_(timing.is_split), needs_start_(needs_start),
+    step_plan(int steps_per_sample, const plant_timing& timing, signal_arena& arena)
+        : timing_(timing), asked_(steps_per_sample), split_(timing.is_split),
           size_(arena.block_size()), first_(are_same(timing.period, timing.fraction), arena),
           length_before_(first_.is_same(), arena), length_after_(first_.is_same(), arena), step_(arena.take()),
           start_(arena.take()), input_(arena.take()) {}
@@ -32,11 +32,11 @@ public:
         });
     }
 
-    /// Sets up step j: its length h, its start and the command that acts during it.
-    void prepare(int j, const sample_interval& interval) {
+    /// Sets up step j: its length h, the command that acts during it and, where it is asked for, its start.
+    void prepare(int j, const sample_interval& interval, bool needs_start) {
         command_ = split_ ? input_ : interval.after;
         if (split_) choose_part(j, interval);
-        if (needs_start_) find_start(j, interval.time);
+        if (needs_start) find_start(j, interval.time);
     }
 
     constant_signal step() const { return step_; }
@@ -62,7 +62,7 @@ private:
 
     const plant_timing timing_;
     int asked_;
-    bool split_, needs_start_;
+    bool split_;
     std::size_t size_;
     held_value first_, length_before_, length_after_;
     signal step_, start_, input_;
