@@ -25,6 +25,20 @@ std::vector<bool> held_inputs(const program& p, bool has_lag, const plant_distur
     return held;
 }
 
+// The state that a program hands out as it is, if it does no more than that.
+std::optional<int> state_handed_out(const program& p) {
+    const instruction& in = p.code[p.outputs[0]];
+    if (in.op != operation::load || p.inputs[in.a].kind != source_kind::state) return std::nullopt;
+    return p.inputs[in.a].index;
+}
+
+std::vector<std::size_t> positions(const std::vector<bool>& flags, bool wanted) {
+    std::vector<std::size_t> found;
+    for (std::size_t i = 0; i < flags.size(); ++i)
+        if (flags[i] == wanted) found.push_back(i);
+    return found;
+}
+
 const plant_description& checked(const plant_description& d, const plant_disturbances& w) {
     check_inputs(d.derivatives, d);
     check_inputs(d.output, d);
@@ -41,7 +55,10 @@ equation_plant::equation_plant(const plant_description& d, const integration_set
                                const plant_timing& timing, const plant_disturbances& w, signal_arena& arena)
     : ode_plant(checked(d, w), settings, timing, w, d.derivatives.reads(source_kind::time), arena),
       derivative_inputs_(d.derivatives.inputs), output_inputs_(d.output.inputs),
-      derivatives_(d.derivatives, arena, tape::outputs::scaled, held_inputs(d.derivatives, has_lag_, w)),
+      held_(held_inputs(d.derivatives, has_lag_, w)), held_inputs_(positions(held_, true)),
+      moving_inputs_(positions(held_, false)),
+      every_output_input_(positions(std::vector<bool>(d.output.inputs.size(), true), true)), output_state_(state_handed_out(d.output)),
+      derivatives_(d.derivatives, arena, tape::outputs::scaled, held_),
       output_tape_(d.output, arena, tape::outputs::as_written), disturbances_(w), output_(arena.take()) {
     output_tape_.bind_output(0, output_);
 }
@@ -51,9 +68,10 @@ void equation_plant::begin_plant(const trial_block& block) {
     output_tape_.begin(block);
 }
 
-void equation_plant::bind(tape& t, const std::vector<program_input>& inputs, const block_state& x, constant_signal time,
-                          constant_signal command, const constant_signal* disturbances) {
-    for (std::size_t i = 0; i < inputs.size(); ++i) {
+void equation_plant::bind(tape& t, const std::vector<program_input>& inputs, const std::vector<std::size_t>& which,
+                          const block_state& x, constant_signal time, constant_signal command,
+                          const constant_signal* disturbances) {
+    for (std::size_t i : which) {
         const program_input& input = inputs[i];
         if (input.kind == source_kind::state) t.bind_input(i, x[input.index]);
         if (input.kind == source_kind::time) t.bind_input(i, time);
@@ -63,21 +81,22 @@ void equation_plant::bind(tape& t, const std::vector<program_input>& inputs, con
 }
 
 void equation_plant::begin_step(const block_state& x, const stage& s) {
-    bind(derivatives_, derivative_inputs_, x, s.time, s.command, s.disturbances.data());
+    bind(derivatives_, derivative_inputs_, held_inputs_, x, s.time, s.command, s.disturbances.data());
     derivatives_.bind_scale(s.step);
     derivatives_.begin_step();
 }
 
 void equation_plant::derivative(const block_state& x, block_state& dx, const stage& s) {
-    bind(derivatives_, derivative_inputs_, x, s.time, s.command, s.disturbances.data());
+    bind(derivatives_, derivative_inputs_, moving_inputs_, x, s.time, s.command, s.disturbances.data());
     for (int i = 0; i < states_; ++i) derivatives_.bind_output(i, dx[i]);
     derivatives_.run();
 }
 
 void equation_plant::evaluate_output(constant_signal time, constant_signal input) {
+    if (output_state_) return;
     now_.resize(disturbances_.count());
     for (int k = 0; k < disturbances_.count(); ++k) now_[k] = disturbances_.now(k);
-    bind(output_tape_, output_inputs_, x_, time, input, now_.data());
+    bind(output_tape_, output_inputs_, every_output_input_, x_, time, input, now_.data());
     output_tape_.run();
 }
 

@@ -24,9 +24,7 @@ void tape::begin(const trial_block& block) {
 }
 
 void tape::execute(const std::vector<step>& steps) const {
-    const signal* slots = slots_.data();
-    auto at = [slots](int slot) { return slot < 0 ? nullptr : slots[slot]; };
-    for (const step& s : steps) s.run(slots[s.to], at(s.a), at(s.b), at(s.c), size_);
+    for (const step& s : steps) s.run(slots_.data(), s.at.data(), size_);
 }
 
 } // namespace windage

@@ -2,6 +2,7 @@
 
 #include <algorithm>
 #include <map>
+#include <utility>
 
 namespace windage {
 
@@ -11,6 +12,7 @@ void tape_builder::build(bool scaled) {
     if (scaled) scale_outputs();
     count_uses();
     join_products();
+    join_pairs();
     place_leaves();
     find_last_uses();
     emit(block_level, tape_.prologue_);
@@ -19,9 +21,19 @@ void tape_builder::build(bool scaled) {
     emit_outputs();
 }
 
-template <class F> void tape_builder::for_operands(const instruction& in, F&& f) const {
+template <class F> void tape_builder::for_operands(const instruction& in, F&& f) {
     const int operands[3] = {in.a, in.b, in.c};
     for (int k = 0; k < operand_count(in.op); ++k) f(operands[k]);
+}
+
+// The values that the step of a value reads: of two joined operations those of the first, then the others of the second.
+template <class F> void tape_builder::for_read_values(int value, F&& f) const {
+    if (inner_[value] >= 0) for_operands(code_[inner_[value]], f);
+    int place = 0;
+    for_operands(code_[value], [&](int v) {
+        if (inner_[value] < 0 || place != place_[value]) f(v);
+        ++place;
+    });
 }
 
 tape_builder::level tape_builder::level_of(const instruction& in) const {
@@ -89,9 +101,8 @@ void tape_builder::count_uses() {
     }
 }
 
-bool tape_builder::is_product_used_once(int v) const {
-    return code_[v].op == operation::mul && uses_[v] == 1 && level_[v] == stage_level;
-}
+bool tape_builder::is_used_once(int v) const { return uses_[v] == 1 && level_[v] == stage_level; }
+bool tape_builder::is_product_used_once(int v) const { return code_[v].op == operation::mul && is_used_once(v); }
 
 // a*b + c in one step saves a store and a load; the product is still rounded before the sum.
 void tape_builder::join_products() {
@@ -107,6 +118,34 @@ void tape_builder::join_products() {
         const operation joined = is_sum ? operation::mul_add : left ? operation::mul_sub : operation::sub_mul;
         in = {joined, code_[product].a, code_[product].b, other};
     }
+}
+
+// Two operations in one loop save a store, a load and a call. Sums and products commute: the joined operand comes first.
+void tape_builder::join_pairs() {
+    inner_.assign(code_.size(), -1);
+    place_.assign(code_.size(), 0);
+    for (int i = 0; i < int(code_.size()); ++i) {
+        if (uses_[i] == 0 || level_[i] != stage_level || is_leaf(i)) continue;
+        instruction& in = code_[i];
+        const bool is_sum_or_product = in.op == operation::add || in.op == operation::mul;
+        const bool commutes = is_sum_or_product || in.op == operation::mul_add || in.op == operation::mul_sub ||
+                              in.op == operation::sub_mul;
+        for (int place = 0; place < operand_count(in.op); ++place) {
+            if (place == 1 && commutes) std::swap(in.a, in.b);
+            if (join_operand(i, place == 1 && commutes ? 0 : place)) break;
+        }
+    }
+}
+
+bool tape_builder::join_operand(int value, int place) {
+    const instruction& in = code_[value];
+    const int operand = place == 0 ? in.a : place == 1 ? in.b : in.c;
+    if (!is_used_once(operand) || inner_[operand] >= 0) return false;
+    if (!tape::kernel_of(code_[operand].op, in.op, place)) return false;
+    inner_[value] = operand;
+    place_[value] = place;
+    uses_[operand] = 0;
+    return true;
 }
 
 int tape_builder::new_slot(signal memory) {
@@ -138,7 +177,7 @@ void tape_builder::place_leaves() {
 void tape_builder::find_last_uses() {
     last_use_.assign(code_.size(), -1);
     for (int i = 0; i < int(code_.size()); ++i)
-        if (uses_[i] > 0 && level_[i] == stage_level) for_operands(code_[i], [&](int v) { last_use_[v] = i; });
+        if (uses_[i] > 0 && level_[i] == stage_level) for_read_values(i, [&](int v) { last_use_[v] = i; });
     for (int v : outputs_) last_use_[v] = int(code_.size());
 }
 
@@ -157,20 +196,25 @@ int tape_builder::slot_for(int v) {
     return s;
 }
 
-tape::step tape_builder::make_step(const instruction& in, int to) const {
-    const int n = operand_count(in.op);
-    return {tape::kernel_of(in.op), to, n > 0 ? slot_[in.a] : -1, n > 1 ? slot_[in.b] : -1, n > 2 ? slot_[in.c] : -1};
+tape::step tape_builder::make_step(int value) const {
+    const operation op = code_[value].op;
+    const int inner = inner_[value];
+    tape::step made{inner < 0 ? tape::kernel_of(op) : tape::kernel_of(code_[inner].op, op, place_[value]), {}};
+    std::size_t next = 0;
+    made.at[next++] = slot_[value];
+    for_read_values(value, [&](int v) { made.at[next++] = slot_[v]; });
+    return made;
 }
 
-// Values are in an order in which operands come first, but for the reciprocals, which the block's own values do not
-// read: those follow the written ones of their level.
+// Operands come before the values that read them: `append` adds reciprocals and scaled factors at the end, and what
+// reads those belongs to a higher level or comes later still.
 void tape_builder::emit(level which, std::vector<tape::step>& steps) {
     for (int i = 0; i < int(code_.size()); ++i) {
         if (uses_[i] == 0 || level_[i] != which || is_leaf(i)) continue;
         // Operands are released first: a step reads a pack before it writes it, so it may write over its operand.
-        for_operands(code_[i], [&](int v) { release_after_last_use(v, i); });
+        for_read_values(i, [&](int v) { release_after_last_use(v, i); });
         slot_[i] = slot_for(i);
-        steps.push_back(make_step(code_[i], slot_[i]));
+        steps.push_back(make_step(i));
     }
 }
 
@@ -179,7 +223,7 @@ void tape_builder::emit_outputs() {
         const bool is_direct = tape_.slots_[slot_[v]] == nullptr && !is_leaf(v);
         tape_.output_slot_.push_back(is_direct ? slot_[v] : new_slot(nullptr));
         if (!is_direct)
-            tape_.body_.push_back({tape::kernel_of(operation::load), tape_.output_slot_.back(), slot_[v], -1, -1});
+            tape_.body_.push_back({tape::kernel_of(operation::load), {tape_.output_slot_.back(), slot_[v]}});
     }
 }
 

@@ -25,6 +25,7 @@ private:
     void scale_outputs();
     void count_uses();
     void join_products();
+    void join_pairs();
     void place_leaves();
     void emit(level which, std::vector<tape::step>& steps);
     void emit_outputs();
@@ -32,13 +33,16 @@ private:
     level level_of(const instruction& in) const;
     int append(const instruction& in);
     bool is_leaf(int value) const;
+    bool is_used_once(int value) const;
     bool is_product_used_once(int value) const;
+    bool join_operand(int value, int place);
     int new_slot(signal memory);
     int slot_for(int value);
     void find_last_uses();
     void release_after_last_use(int value, int position);
-    tape::step make_step(const instruction& in, int to) const;
-    template <class F> void for_operands(const instruction& in, F&& f) const;
+    tape::step make_step(int value) const;
+    template <class F> static void for_operands(const instruction& in, F&& f);
+    template <class F> void for_read_values(int value, F&& f) const;
 
     std::vector<instruction> code_;
     std::vector<int> outputs_;
@@ -49,6 +53,8 @@ private:
     int written_; // values of the program; later ones are the builder's own
 
     std::vector<level> level_;
+    std::vector<int> inner_;    // the value that is computed together with this one, -1: none
+    std::vector<int> place_;    // which operand that is
     std::vector<int> uses_;     // of a value by reachable instructions and outputs
     std::vector<int> last_use_; // position of the last instruction of its level that reads it
     std::vector<int> slot_;     // of each value, -1 while it has none

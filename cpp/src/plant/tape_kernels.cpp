@@ -1,4 +1,4 @@
-// The kernels of the tape: one loop over the packs of a block for each operation.
+// The kernels of the tape: one loop over the packs of a block for each operation, or for two of them joined.
 #include <stdexcept>
 
 #include <windage/lanes/elementary.hpp>
@@ -46,13 +46,37 @@ template <operation Op> WINDAGE_INLINE wide apply(wide a, wide b, wide c) {
     if constexpr (Op == operation::select) return select(a != 0.0, b, c);
 }
 
-template <operation Op, int Operands>
-void over_block(signal to, constant_signal a, constant_signal b, constant_signal c, std::size_t size) {
+template <operation Op, int Operands> void over_block(const signal* slots, const int* at, std::size_t size) {
+    const signal to = slots[at[0]];
+    const constant_signal a = slots[at[1]], b = slots[at[Operands > 1 ? 2 : 1]], c = slots[at[Operands > 2 ? 3 : 1]];
     for_each_pack(size, [&](std::size_t i) WINDAGE_LANE_LOOP {
         const wide x = wide::load(a + i);
         const wide y = Operands > 1 ? wide::load(b + i) : x;
         const wide z = Operands > 2 ? wide::load(c + i) : x;
         apply<Op>(x, y, z).store(to + i);
+    });
+}
+
+constexpr int arithmetic_operands(operation op) {
+    if (op == operation::add || op == operation::sub || op == operation::mul) return 2;
+    return op == operation::mul_add || op == operation::mul_sub || op == operation::sub_mul ? 3 : 1;
+}
+
+// Two operations in one loop: the result of the first never leaves the registers.
+template <operation First, operation Then, int Place>
+void pair_over_block(const signal* slots, const int* at, std::size_t size) {
+    constexpr int first_operands = arithmetic_operands(First), operands = arithmetic_operands(Then);
+    const signal to = slots[at[0]];
+    constant_signal of_first[3] = {}, of_then[3] = {};
+    for (int k = 0; k < first_operands; ++k) of_first[k] = slots[at[1 + k]];
+    for (int k = 0, next = 1 + first_operands; k < operands; ++k)
+        if (k != Place) of_then[k] = slots[at[next++]];
+    for_each_pack(size, [&](std::size_t i) WINDAGE_LANE_LOOP {
+        wide x[3], y[3];
+        for (int k = 0; k < 3; ++k) x[k] = wide::load(of_first[k < first_operands ? k : 0] + i);
+        const wide joined = apply<First>(x[0], x[1], x[2]);
+        for (int k = 0; k < 3; ++k) y[k] = k < operands && k != Place ? wide::load(of_then[k] + i) : joined;
+        apply<Then>(y[0], y[1], y[2]).store(to + i);
     });
 }
 
@@ -102,6 +126,47 @@ tape::kernel tape::kernel_of(operation op) {
     case operation::constant: break;
     }
     throw std::logic_error("tape: a constant is placed, not computed");
+}
+
+namespace {
+
+using pair_kernel = void (*)(const signal*, const int*, std::size_t);
+
+template <operation First> pair_kernel pair_of(operation then, int place) {
+    if constexpr (First == operation::mul) {
+        if (then == operation::tanh) return pair_over_block<First, operation::tanh, 0>;
+        if (then == operation::exp) return pair_over_block<First, operation::exp, 0>;
+        if (then == operation::sin) return pair_over_block<First, operation::sin, 0>;
+        if (then == operation::cos) return pair_over_block<First, operation::cos, 0>;
+    }
+#define WINDAGE_PAIR(THEN, PLACE)                                                                                      \
+    if (then == operation::THEN && place == PLACE) return pair_over_block<First, operation::THEN, PLACE>
+    WINDAGE_PAIR(add, 0);
+    WINDAGE_PAIR(sub, 0);
+    WINDAGE_PAIR(sub, 1);
+    WINDAGE_PAIR(mul, 0);
+    WINDAGE_PAIR(mul_add, 0);
+    WINDAGE_PAIR(mul_add, 2);
+    WINDAGE_PAIR(mul_sub, 0);
+    WINDAGE_PAIR(mul_sub, 2);
+    WINDAGE_PAIR(sub_mul, 0);
+    WINDAGE_PAIR(sub_mul, 2);
+#undef WINDAGE_PAIR
+    return nullptr;
+}
+
+} // namespace
+
+tape::kernel tape::kernel_of(operation first, operation then, int place) {
+    switch (first) {
+    case operation::add: return pair_of<operation::add>(then, place);
+    case operation::sub: return pair_of<operation::sub>(then, place);
+    case operation::mul: return pair_of<operation::mul>(then, place);
+    case operation::mul_add: return pair_of<operation::mul_add>(then, place);
+    case operation::mul_sub: return pair_of<operation::mul_sub>(then, place);
+    case operation::sub_mul: return pair_of<operation::sub_mul>(then, place);
+    default: return nullptr;
+    }
 }
 
 } // namespace windage

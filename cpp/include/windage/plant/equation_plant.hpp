@@ -1,6 +1,8 @@
 // A plant written as equations: its right-hand side is a tape.
 #pragma once
 
+#include <optional>
+
 #include <windage/plant/ode_plant.hpp>
 #include <windage/plant/tape.hpp>
 
@@ -12,16 +14,20 @@ public:
                    const plant_disturbances& w, signal_arena& arena);
 
     void evaluate_output(constant_signal time, constant_signal input) override;
-    constant_signal output() const override { return output_; }
+    constant_signal output() const override { return output_state_ ? x_[*output_state_] : output_; }
 
 private:
     void begin_step(const block_state& x, const stage& s) override;
     void derivative(const block_state& x, block_state& dx, const stage& s) override;
     void begin_plant(const trial_block& block) override;
-    void bind(tape& t, const std::vector<program_input>& inputs, const block_state& x, constant_signal time,
-              constant_signal command, const constant_signal* disturbances);
+    /// Binds those inputs of a tape that are listed.
+    void bind(tape& t, const std::vector<program_input>& inputs, const std::vector<std::size_t>& which,
+              const block_state& x, constant_signal time, constant_signal command, const constant_signal* disturbances);
 
     std::vector<program_input> derivative_inputs_, output_inputs_;
+    std::vector<bool> held_;                             // derivative inputs that keep their value during a step
+    std::vector<std::size_t> held_inputs_, moving_inputs_, every_output_input_;
+    std::optional<int> output_state_;                    // where the output is a state as it is
     tape derivatives_, output_tape_;
     const plant_disturbances& disturbances_;
     std::vector<constant_signal> now_;

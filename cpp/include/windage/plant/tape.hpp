@@ -2,10 +2,11 @@
 //
 // Made once per block workspace: values that depend on numbers alone are computed once per block, values that depend on
 // nothing that moves during an integration step once per step; division by such a value becomes multiplication by its
-// reciprocal, a product used once joins the sum that uses it (two roundings, as written), and values share as few
-// signals as their lifetimes allow. The digits depend on the program alone, never on the block.
+// reciprocal, a value used once joins the operation that uses it (every operation still rounds, as written), and values
+// share as few signals as their lifetimes allow. The digits depend on the program alone, never on the block.
 #pragma once
 
+#include <array>
 #include <utility>
 #include <vector>
 
@@ -37,15 +38,19 @@ public:
 
 private:
     friend class tape_builder;
-    using kernel = void (*)(signal to, constant_signal a, constant_signal b, constant_signal c, std::size_t size);
+    static constexpr int most_operands = 5; // of two joined operations
+    /// Computes slots[at[0]] from slots[at[1]], slots[at[2]], ...
+    using kernel = void (*)(const signal* slots, const int* at, std::size_t size);
     struct step {
         kernel run;
-        int to, a, b, c; // slots; -1 where the operation has fewer operands
+        std::array<int, 1 + most_operands> at;
     };
 
     void bind(int slot, constant_signal values) { slots_[slot] = const_cast<signal>(values); } // inputs are only read
     void execute(const std::vector<step>& steps) const;
     static kernel kernel_of(operation op);
+    /// For `then` with the result of `first` as its operand `place`; null where the two are not joined.
+    static kernel kernel_of(operation first, operation then, int place);
 
     std::size_t size_;
     std::vector<signal> slots_;
