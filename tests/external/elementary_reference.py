@@ -180,9 +180,9 @@ def cases() -> dict[str, Case]:
         "hyperbolic_cosine": Case(mpmath.cosh, 1.6, [Range(-3.0, 3.0), Range(-HYPERBOLIC_TOP, HYPERBOLIC_TOP), tiny]),
         "hyperbolic_tangent": Case(
             mpmath.tanh,
-            1.8,
+            2.7,
             [Range(-1.0, 1.0), Range(-4.0, 4.0), Range(-22.0, 22.0), tiny, every],
-            neighbours([0.55, -0.55, 0.6065, 19.0, 19.06, 20.0]),
+            neighbours([math.log(2.0) / 4 * k for k in (1, -1, 3, 5, 35, 37)] + [19.0, 19.06, 20.0]),
         ),
         "square_root": Case(mpmath.sqrt, 0.5, [positive]),
         "normal_upper_tail": Case(exact_upper_tail, 9.0, [Range(0.0, 6.0), Range(0.0, 37.5)]),

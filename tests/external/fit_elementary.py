@@ -266,8 +266,8 @@ def tables() -> list[Table]:
             odd_tail(mpmath.tanh, taylor_tail(mpmath.tanh, 24)),
             relative_odd(mpmath.tanh),
             mpf(0),
-            mpf("0.551") ** 2,
-            10,
+            mpf("0.1734") ** 2,
+            6,
         ),
         Table(
             "hyperbolic_sine_rest",
