@@ -36,8 +36,11 @@ linear_adrc::linear_adrc(const controller_description& d, const held_value& samp
       output_(arena.take()) {
     for (const number& n : d.controller_gains) given_controller_gains_.emplace_back(n, arena);
     for (const number& n : d.observer_gains) given_observer_gains_.emplace_back(n, arena);
-    const bool same_controller = are_same(controller_bandwidth_, controller_factor_) && are_all_same(given_controller_gains_);
-    const bool same_observer = are_same(observer_bandwidth_, observer_factor_, sample_period) && are_all_same(given_observer_gains_);
+    for (int m = 0; m <= d.order; ++m) period_powers_.emplace_back(m == 0 || sample_period.is_same(), arena);
+    const bool same_controller =
+        are_same(controller_bandwidth_, controller_factor_, b0_) && are_all_same(given_controller_gains_);
+    const bool same_observer =
+        are_same(observer_bandwidth_, observer_factor_, sample_period) && are_all_same(given_observer_gains_);
     for (int s = 0; s < d.order; ++s) controller_gains_.emplace_back(same_controller, arena);
     for (int s = 0; s <= d.order; ++s) observer_gains_.emplace_back(same_observer, arena);
 }
@@ -51,8 +54,12 @@ void linear_adrc::begin(const trial_block& block, const lane_value& initial_comm
         n->begin(block);
     for (lane_value& n : given_controller_gains_) n.begin(block);
     for (lane_value& n : given_observer_gains_) n.begin(block);
-    place_gains();
     inverse_b0_.fill([&](std::size_t i) { return 1.0 / b0_.pack_at(i); });
+    place_gains();
+    period_powers_[0].fill([](std::size_t) { return 1.0; });
+    for (int m = 1; m <= d_.order; ++m)
+        period_powers_[m].fill(
+            [&](std::size_t i) { return period_powers_[m - 1].pack_at(i) * period_.pack_at(i) / double(m); });
     std::fill_n(estimates_, std::size_t(d_.order + 1) * size_, 0.0);
     initial_command.copy_to(output_, size_);
 }
@@ -65,7 +72,7 @@ void linear_adrc::place_gains() {
         controller_gains(d_.order, controller_bandwidth_.pack_at(i), k);
         for (int s = 0; s < d_.order; ++s) {
             const wide gain = given_controller_gains_.empty() ? k[s] : given_controller_gains_[s].pack_at(i);
-            controller_gains_[s].set(i, gain * controller_factor_.pack_at(i));
+            controller_gains_[s].set(i, gain * controller_factor_.pack_at(i) * inverse_b0_.pack_at(i));
         }
     });
     for_each_pack(observer_packs, [&](std::size_t i) {
@@ -78,49 +85,73 @@ void linear_adrc::place_gains() {
     });
 }
 
+/// The numbers of one pack of controllers.
+template <int Order> struct linear_adrc::numbers {
+    wide controller_gain[Order], observer_gain[Order + 1], period_power[Order + 1], b0, inverse_b0;
+};
+
+/// Reads them, all of a block at once where they are the same.
+template <int Order> struct linear_adrc::number_reader {
+    const linear_adrc& of;
+
+    bool is_same() const {
+        return are_same(of.controller_gains_[0], of.observer_gains_[0], of.period_powers_[Order], of.b0_);
+    }
+    template <bool Same> WINDAGE_INLINE numbers<Order> read(std::size_t i) const {
+        numbers<Order> n;
+        for (int s = 0; s < Order; ++s) n.controller_gain[s] = of.controller_gains_[s].template read<Same>(i);
+        for (int s = 0; s <= Order; ++s) n.observer_gain[s] = of.observer_gains_[s].template read<Same>(i);
+        for (int m = 1; m <= Order; ++m) n.period_power[m] = of.period_powers_[m].template read<Same>(i);
+        n.b0 = of.b0_.template read<Same>(i);
+        n.inverse_b0 = of.inverse_b0_.template read<Same>(i);
+        return n;
+    }
+};
+
 // Output form: u = (k_1 (r - x_1) + ... + k_n (r^(n-1) - x_n) + r^(n) - x_{n+1}) / b0.
 // Error form:  u = (k_1 x_1 + ... + k_n x_n + x_{n+1}) / b0.
-template <int Order, adrc_form Form>
-WINDAGE_INLINE wide linear_adrc::command(const wide* x, const signal* reference, std::size_t i) const {
+// The gains k_i are divided by b0 beforehand.
+template <int Order, adrc_form Form> WINDAGE_INLINE wide linear_adrc::command(const wide* x, const numbers<Order>& n,
+                                                                              const signal* reference,
+                                                                              std::size_t i) const {
     constexpr bool error_form = Form == adrc_form::error;
     const bool fed = !error_form && d_.reference_derivatives;
-    wide sum = 0.0;
+    wide u = 0.0;
     for (int s = 0; s < Order; ++s) {
         wide deviation = error_form ? x[s] : -x[s];
-        if (!error_form && (s == 0 || fed)) deviation += wide::load(reference[s] + i);
-        sum += controller_gains_[s].pack_at(i) * deviation;
+        if (!error_form && (s == 0 || fed)) deviation = wide::load(reference[s] + i) - x[s];
+        const wide share = n.controller_gain[s] * deviation;
+        u = s == 0 ? share : u + share;
     }
-    if (fed) sum += wide::load(reference[Order] + i);
-    if (d_.cancel_disturbance) sum = error_form ? sum + x[Order] : sum - x[Order];
-    return sum * inverse_b0_.pack_at(i);
+    if (fed) u += n.inverse_b0 * wide::load(reference[Order] + i);
+    if (!d_.cancel_disturbance) return u;
+    return error_form ? u + n.inverse_b0 * x[Order] : u - n.inverse_b0 * x[Order];
 }
 
 template <int Order, adrc_form Form, bool StartsMeasured>
 void linear_adrc::sample_form(const signal* reference, constant_signal measured, constant_signal fed) {
     constexpr bool error_form = Form == adrc_form::error;
     const bool holds = d_.discretisation == discretisation_kind::zero_order_hold;
-    for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP {
-        wide x[Order + 1], gains[Order + 1];
-        for (int s = 0; s <= Order; ++s) {
-            x[s] = wide::load(estimates_ + s * size_ + i);
-            gains[s] = observer_gains_[s].pack_at(i);
-        }
+    const auto sample_pack = [&](std::size_t i, const numbers<Order>& n) WINDAGE_LANE_LOOP {
+        wide x[Order + 1];
+        for (int s = 0; s <= Order; ++s) x[s] = wide::load(estimates_ + s * size_ + i);
         // In the error form the observer follows e = r - y, which the command drives with the opposite sign.
         const wide followed =
             error_form ? wide::load(reference[0] + i) - wide::load(measured + i) : wide::load(measured + i);
-        const wide drive = b0_.pack_at(i) * wide::load(fed + i);
+        const wide drive = n.b0 * wide::load(fed + i);
         if constexpr (StartsMeasured) {
             x[0] = followed;
             x[Order] = error_form ? drive : -drive; // at rest under the initial command
         } else {
             const wide top = error_form ? x[Order] - drive : x[Order] + drive;
-            const wide period = period_.pack_at(i);
-            holds ? predict_zero_order_hold<Order>(x, top, period) : predict_euler<Order>(x, top, period);
+            holds ? predict_zero_order_hold<Order>(x, top, n.period_power)
+                  : predict_euler<Order>(x, top, n.period_power[1]);
         }
-        correct<Order>(x, followed, gains);
+        correct<Order>(x, followed, n.observer_gain);
         for (int s = 0; s <= Order; ++s) x[s].store(estimates_ + s * size_ + i);
-        command<Order, Form>(x, reference, i).store(output_ + i);
-    });
+        command<Order, Form>(x, n, reference, i).store(output_ + i);
+    };
+    for_each_pack_with(size_, sample_pack, number_reader<Order>{*this});
 }
 
 template <int Order>

@@ -26,8 +26,10 @@ private:
     void sample_order(std::int64_t k, const signal* reference, constant_signal measured, constant_signal fed);
     template <int Order, adrc_form Form, bool StartsMeasured>
     void sample_form(const signal* reference, constant_signal measured, constant_signal fed);
+    template <int Order> struct numbers;
+    template <int Order> struct number_reader;
     template <int Order, adrc_form Form>
-    wide command(const wide* x, const signal* reference, std::size_t i) const;
+    wide command(const wide* x, const numbers<Order>& n, const signal* reference, std::size_t i) const;
     void place_gains();
 
     controller_description d_;
@@ -35,7 +37,9 @@ private:
     lane_value controller_bandwidth_, observer_bandwidth_, b0_, controller_factor_, observer_factor_;
     std::vector<lane_value> given_controller_gains_, given_observer_gains_;
     const held_value& period_;
-    std::vector<held_value> controller_gains_, observer_gains_; // n and n + 1
+    std::vector<held_value> controller_gains_; // n, each divided by b0
+    std::vector<held_value> observer_gains_;   // n + 1
+    std::vector<held_value> period_powers_;    // Ts^m / m!
     held_value inverse_b0_;
     signal estimates_, output_;
 };

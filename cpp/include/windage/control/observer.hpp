@@ -7,12 +7,13 @@
 namespace windage {
 
 /// Prediction with a zero-order hold: the Taylor series of the integrator chain, exact for constant f and u.
-/// `top` is the highest derivative f + b0 u.
-template <int Order> WINDAGE_INLINE void predict_zero_order_hold(wide* x, wide top, wide sample_period) {
+/// `top` is the highest derivative f + b0 u, `weight` holds Ts^m / m! for m = 0 .. n. The terms are independent
+/// products, since a chain of dependent operations is what this step waits for (measured).
+template <int Order> WINDAGE_INLINE void predict_zero_order_hold(wide* x, wide top, const wide* weight) {
     for (int i = 0; i < Order; ++i) {
-        wide sum = top;
-        for (int m = Order - i; m >= 1; --m) sum = x[i + m - 1] + (sample_period * (1.0 / m)) * sum;
-        x[i] = sum;
+        wide sum = weight[Order - i] * top;
+        for (int m = Order - i - 1; m >= 1; --m) sum = weight[m] * x[i + m] + sum;
+        x[i] = x[i] + sum;
     }
 }
 
