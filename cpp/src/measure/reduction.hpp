@@ -8,8 +8,8 @@
 
 namespace windage {
 
-/// `Reducer` may hold lane values of its own; it is told of each block by `begin_block`. `Reducer::stays_undefined`: once
-/// its first running value is undefined, no sample makes it a number again.
+/// `Reducer` may hold lane values of its own; it is told of each block by `begin_block`. `Reducer::stays_undefined`:
+/// once its first running value is undefined, no sample makes it a number again.
 template <class Reducer> class reduction final : public measure {
 public:
     reduction(const measure_description& d, constant_signal values, const measure_timing& timing, signal_arena& arena,
@@ -32,9 +32,13 @@ public:
 
     void update(constant_signal time) override {
         if (!window_.is_uniform())
-            for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP { add<true>(time, i); });
+            for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP {
+                add<true>(instant_at(wide::load(time + i), i, wide::load(seen_ + i)), i);
+            });
         else if (window_.uniformly_inside(time)) {
-            for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP { add<false>(time, i); });
+            // The instant is the same for all lanes and read once, since loads are what a pass waits for.
+            const instant now = instant_at(wide(time[0]), 0, wide(double(samples_)));
+            for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP { add<false>(now, i); });
             ++samples_;
         }
     }
@@ -57,13 +61,22 @@ public:
 private:
     bool counts_together() const { return Reducer::stays_undefined && window_.is_uniform(); }
 
-    template <bool Masked> WINDAGE_INLINE void add(constant_signal time, std::size_t i) {
+    /// What a sample is to the window.
+    struct instant {
+        wide t, dt, start;
+        mask<lanes> is_first, is_last, is_outside_after;
+    };
+    instant instant_at(wide t, std::size_t i, wide seen) const {
+        const wide dt = period_.pack_at(i), stop = window_.stop().pack_at(i);
+        return {t, dt, window_.start(i), seen == 0.0, t + dt > stop, t + 0.5 * dt > stop};
+    }
+
+    template <bool Masked> WINDAGE_INLINE void add(const instant& now, std::size_t i) {
         // Where all lanes enter the window together one count is enough for a reducer that stays undefined by itself.
         constexpr bool counts_lanes = Masked || !Reducer::stays_undefined;
-        const wide t = wide::load(time + i), dt = period_.pack_at(i);
-        const wide seen = counts_lanes ? wide::load(seen_ + i) : wide(double(samples_));
-        const sample_point at{wide::load(values_ + i), t - window_.start(i), dt, seen == 0.0,
-                              t + 0.5 * dt > window_.stop().pack_at(i)};
+        const wide seen = counts_lanes ? wide::load(seen_ + i) : wide(0.0);
+        const sample_point at{wide::load(values_ + i), now.t - now.start, now.dt, now.is_first, now.is_last,
+                              now.is_outside_after};
         wide v[Reducer::values], before[Reducer::values];
         for (int k = 0; k < Reducer::values; ++k) before[k] = v[k] = wide::load(running_ + k * size_ + i);
         if constexpr (requires { reducer_.add(v, at, i); })
@@ -75,7 +88,7 @@ private:
         const wide doubt = at.x - at.x;
         if constexpr (!counts_lanes) v[0] += doubt;
         if constexpr (Masked) {
-            const auto inside = window_.inside(t, i);
+            const auto inside = window_.inside(now.t, i);
             for (int k = 0; k < Reducer::values; ++k) v[k] = select(inside, v[k], before[k]);
             select(inside, seen + (1.0 + doubt), seen).store(seen_ + i);
         } else if constexpr (counts_lanes) {

@@ -23,7 +23,7 @@ public:
     WINDAGE_INLINE void add(wide* v, const sample_point& at, std::size_t i) const {
         const wide low = low_.pack_at(i), high = high_.pack_at(i);
         const auto beyond = (at.x < low) | (at.x > high), touching = (at.x <= low) | (at.x >= high);
-        const auto counts = (touching_counts_ ? touching : beyond) & !at.is_last;
+        const auto counts = (touching_counts_ ? touching : beyond) & !at.is_outside_after;
         v[0] += select(counts, at.dt, 0.0);
     }
     static wide finish(const wide* v) { return v[0]; }

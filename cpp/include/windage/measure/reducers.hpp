@@ -1,8 +1,8 @@
 // Reducers: how a signal in a window becomes one number. Each is a handful of running values, a way to add a sample
 // and a way to finish.
 //
-// A sample comes as `at`: value x, time since the window's start t, sample period dt, whether it is the first one
-// in the window, and whether it is the last one (its sample interval lies outside the window).
+// A sample comes as `at`: value x, time since the window's start t, sample period dt, whether it is the first one in
+// the window and whether it is the last one, and whether its sample interval lies outside the window for the most part.
 #pragma once
 
 #include <limits>
@@ -13,7 +13,7 @@ namespace windage {
 
 struct sample_point {
     wide x, t, dt;
-    mask<lanes> is_first, is_last;
+    mask<lanes> is_first, is_last, is_outside_after;
 };
 
 namespace reducers {
@@ -94,13 +94,13 @@ struct standard_deviation {
 
 /// Integrals by the trapezium rule over the samples in the window.
 template <class Integrand> struct integral {
-    static constexpr int values = 2;
+    static constexpr int values = 1;
     static constexpr bool stays_undefined = true;
-    static void begin(wide* v) { v[0] = v[1] = 0.0; }
+    static void begin(wide* v) { v[0] = 0.0; }
     static WINDAGE_INLINE void add(wide* v, const sample_point& at) {
-        const wide y = Integrand::of(at);
-        v[0] += select(at.is_first, 0.0, 0.5 * at.dt * (v[1] + y));
-        v[1] = y;
+        const auto is_end = at.is_first | at.is_last;
+        const wide weight = select(at.is_first & at.is_last, 0.0, select(is_end, 0.5 * at.dt, at.dt));
+        v[0] += weight * Integrand::of(at);
     }
     static wide finish(const wide* v) { return v[0]; }
 };

@@ -12,7 +12,9 @@ namespace windage {
 class response_span {
 public:
     explicit response_span(signal_arena& arena) : final_(arena.take()) {}
-    void begin_block(const held_value& window_stop, const target_source& targets) { targets.target(window_stop, final_); }
+    void begin_block(const held_value& window_stop, const target_source& targets) {
+        targets.target(window_stop, final_);
+    }
     wide final_value(std::size_t i) const { return wide::load(final_ + i); }
 
 private:

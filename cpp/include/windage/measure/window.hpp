@@ -17,8 +17,7 @@ public:
         before_.begin(block);
         const auto allowance = [&](std::size_t i) { return 1e-6 * timing_.period.pack_at(i); };
         start_.fill([&](std::size_t i) { return after_.pack_at(i) - allowance(i); });
-        stop_.fill(
-            [&](std::size_t i) { return minimum(before_.pack_at(i), timing_.end.pack_at(i)) + allowance(i); });
+        stop_.fill([&](std::size_t i) { return minimum(before_.pack_at(i), timing_.end.pack_at(i)) + allowance(i); });
     }
 
     /// All lanes are inside together or outside together.
