@@ -8,7 +8,9 @@ namespace windage {
 class block_runner::reference_targets final : public target_source {
 public:
     explicit reference_targets(const loop& l) : loop_(l) {}
-    void target(const held_value& time, signal out) const override { loop_.reference().evaluate_at_own_times(time, out); }
+    void target(const held_value& time, signal out) const override {
+        loop_.reference().evaluate_at_own_times(time, out);
+    }
 
 private:
     const loop& loop_;
@@ -25,14 +27,8 @@ block_runner::block_runner(const study_description& study, const parameter_sourc
 
 // Lanes beyond the last trial repeat it: their results are not written.
 void block_runner::begin(std::uint64_t first, std::size_t count) {
-    for (std::size_t lane = 0; lane < block_.size; ++lane) {
-        trials_[lane] = first + std::min(lane, count - 1);
-        if (lane < count)
-            source_.draw(trials_[lane], parameters_.data() + lane, block_.size);
-        else
-            for (std::size_t p = 0; p < source_.count(); ++p)
-                parameters_[p * block_.size + lane] = parameters_[p * block_.size + count - 1];
-    }
+    for (std::size_t lane = 0; lane < block_.size; ++lane) trials_[lane] = first + std::min(lane, count - 1);
+    source_.draw(trials_.data(), block_.size, parameters_.data());
     loop_.begin(block_);
     const reference_targets targets(loop_);
     for (auto& m : measures_) m->begin(block_, targets);

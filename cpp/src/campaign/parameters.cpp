@@ -9,6 +9,7 @@
 #include <windage/lanes/elementary.hpp>
 #include <windage/lanes/normal.hpp>
 #include <windage/lanes/philox.hpp>
+#include <windage/lanes/signal.hpp>
 
 namespace windage {
 namespace {
@@ -46,29 +47,36 @@ parameter_source::parameter_source(const study_description& study)
     }
 }
 
-double parameter_source::uniform(std::uint64_t trial, std::size_t column) const {
-    pack<1> first, second;
-    uniform_pair<1>(&trial, {seed_, spreads_[column].stream}, 0, first, second);
-    return first[0];
+void parameter_source::draw(const std::uint64_t* trials, std::size_t size, double* values) const {
+    for (std::size_t p = 0; p < spreads_.size(); ++p)
+        for_each_pack(size, [&](std::size_t i) WINDAGE_LANE_LOOP {
+            wide first, second;
+            uniform_pair(trials + i, {seed_, spreads_[p].stream}, 0, first, second);
+            first.store(values + p * size + i);
+        });
+    for (const copula& c : copulas_) correlate(c, size, values);
+    for (std::size_t p = 0; p < spreads_.size(); ++p)
+        for (std::size_t i = 0; i < size; ++i) {
+            double& value = values[p * size + i];
+            value = quantile(spreads_[p], value, trials[i]);
+        }
 }
 
-void parameter_source::correlate(std::uint64_t trial, const copula& c, std::vector<double>& uniforms) const {
+void parameter_source::correlate(const copula& c, std::size_t size, double* uniforms) const {
     const std::size_t n = c.columns.size();
     std::vector<double> independent(n);
-    for (std::size_t i = 0; i < n; ++i) independent[i] = normal_quantile(uniform(trial, c.columns[i]));
-    for (std::size_t i = 0; i < n; ++i) {
-        double sum = 0.0;
-        for (std::size_t k = 0; k <= i; ++k) sum += c.factor(i, k) * independent[k];
-        // Stay inside the open unit interval, where every quantile is defined.
-        uniforms[c.columns[i]] = std::clamp(normal_cdf(sum), 0x1p-53, 1.0 - 0x1p-53);
+    for (std::size_t lane = 0; lane < size; ++lane) {
+        const auto uniform = [&](std::size_t i) -> double& {
+            return uniforms[std::size_t(c.columns[i]) * size + lane];
+        };
+        for (std::size_t i = 0; i < n; ++i) independent[i] = normal_quantile(uniform(i));
+        for (std::size_t i = 0; i < n; ++i) {
+            double sum = 0.0;
+            for (std::size_t k = 0; k <= i; ++k) sum += c.factor(i, k) * independent[k];
+            // Stay inside the open unit interval, where every quantile is defined.
+            uniform(i) = std::clamp(normal_cdf(sum), 0x1p-53, 1.0 - 0x1p-53);
+        }
     }
-}
-
-void parameter_source::draw(std::uint64_t trial, double* values, std::size_t stride) const {
-    std::vector<double> uniforms(spreads_.size());
-    for (std::size_t i = 0; i < spreads_.size(); ++i) uniforms[i] = uniform(trial, i);
-    for (const copula& c : copulas_) correlate(trial, c, uniforms);
-    for (std::size_t i = 0; i < spreads_.size(); ++i) values[i * stride] = quantile(spreads_[i], uniforms[i], trial);
 }
 
 } // namespace windage

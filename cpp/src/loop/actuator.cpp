@@ -11,9 +11,10 @@ bool changes_nothing(const actuator_description& d) {
 
 command_limiter::command_limiter(const actuator_description& d, const sample_clock& clock, constant_signal wanted,
                                  signal_arena& arena)
-    : period_(clock.period()), low_(d.low, arena), high_(d.high, arena), rate_limit_(d.rate_limit, arena), resolution_(d.resolution, arena),
-      initial_(d.initial, arena), has_limits_(d.has_limits), is_transparent_(changes_nothing(d)), wanted_(wanted), largest_change_(are_same(period_, rate_limit_), arena), unrounded_(arena.take()),
-      command_(arena.take()), size_(arena.block_size()) {}
+    : period_(clock.period()), low_(d.low, arena), high_(d.high, arena), rate_limit_(d.rate_limit, arena),
+      resolution_(d.resolution, arena), initial_(d.initial, arena), has_limits_(d.has_limits),
+      is_transparent_(changes_nothing(d)), wanted_(wanted), largest_change_(are_same(period_, rate_limit_), arena),
+      unrounded_(arena.take()), command_(arena.take()), size_(arena.block_size()) {}
 
 void command_limiter::begin(const trial_block& block) {
     for (lane_value* n : {&low_, &high_, &rate_limit_, &resolution_, &initial_}) n->begin(block);
@@ -29,17 +30,18 @@ void command_limiter::begin(const trial_block& block) {
 void command_limiter::sample() {
     if (is_transparent_) return;
     const bool limits_rate = !rate_limit_.is_constant(0.0), rounds = !resolution_.is_constant(0.0);
-    for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP {
+    const auto limit = [&](std::size_t i, wide low, wide high, wide largest_change, wide resolution) WINDAGE_LANE_LOOP {
         wide u = wide::load(wanted_ + i);
-        if (has_limits_) u = clip(u, low_.pack_at(i), high_.pack_at(i));
+        if (has_limits_) u = clip(u, low, high);
         if (limits_rate) {
-            const wide before = wide::load(unrounded_ + i), change = largest_change_.pack_at(i);
-            u = clip(u, before - change, before + change);
+            const wide before = wide::load(unrounded_ + i);
+            u = clip(u, before - largest_change, before + largest_change);
             u.store(unrounded_ + i);
         }
-        if (rounds) u = quantise(u, resolution_.pack_at(i));
+        if (rounds) u = quantise(u, resolution);
         u.store(command_ + i);
-    });
+    };
+    for_each_pack_with(size_, limit, low_, high_, largest_change_, resolution_);
 }
 
 } // namespace windage

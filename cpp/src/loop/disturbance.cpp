@@ -32,9 +32,8 @@ void disturbance::begin(const trial_block& block) {
 void disturbance::begin_gauss_markov() {
     const auto ratio = [&](std::size_t i) { return clock_.period().pack_at(i) / numbers_[1].pack_at(i); };
     keep_->fill([&](std::size_t i) { return exponential(-ratio(i)); });
-    gain_->fill([&](std::size_t i) {
-        return numbers_[0].pack_at(i) * square_root(-exponential_minus_one(-2.0 * ratio(i)));
-    });
+    gain_->fill(
+        [&](std::size_t i) { return numbers_[0].pack_at(i) * square_root(-exponential_minus_one(-2.0 * ratio(i))); });
 }
 
 void disturbance::sample(std::int64_t k) {
@@ -44,12 +43,12 @@ void disturbance::sample(std::int64_t k) {
     }
     const constant_signal n = noise_->sample(k);
     const bool starts_stationary = k == 0 && kind_ == disturbance_kind::gauss_markov;
-    for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP {
+    const auto move_on = [&](std::size_t i, wide keep, wide gain, wide deviation) WINDAGE_LANE_LOOP {
         const wide draw = wide::load(n + i);
-        const wide w = starts_stationary ? numbers_[0].pack_at(i) * draw
-                                         : keep_->pack_at(i) * wide::load(now_ + i) + gain_->pack_at(i) * draw;
+        const wide w = starts_stationary ? deviation * draw : keep * wide::load(now_ + i) + gain * draw;
         w.store(now_ + i);
-    });
+    };
+    for_each_pack_with(size_, move_on, *keep_, *gain_, numbers_[0]);
 }
 
 void disturbance::evaluate(constant_signal time, jump_side side, signal out) const {

@@ -87,7 +87,8 @@ void loop::sample(std::int64_t k) {
     controller_->sample(k, reference_signals_.data(), sensor_.measured(), limiter_.command());
     limiter_.sample();
     delay_.sample(k, limiter_.command());
-    if (delayed_input_) std::copy_n(plant_->lagged_input() ? plant_->lagged_input() : delay_.acting(), size_, delayed_input_);
+    if (delayed_input_)
+        std::copy_n(plant_->lagged_input() ? plant_->lagged_input() : delay_.acting(), size_, delayed_input_);
     for (named_expression& e : expressions_) e.formula.run();
 }
 
@@ -98,9 +99,7 @@ void loop::sample_error() {
     });
 }
 
-void loop::advance() {
-    plant_->advance({clock_.time(), delay_.before(), delay_.after()});
-}
+void loop::advance() { plant_->advance({clock_.time(), delay_.before(), delay_.after()}); }
 
 constant_signal loop::find(const std::string& name) const {
     const auto found = signals_.find(name);

@@ -15,7 +15,8 @@ std::unique_ptr<plant> make_plant(const loop_description& d, const plant_timing&
     switch (d.plant.kind) {
     case plant_kind::equations: return std::make_unique<equation_plant>(d.plant, settings, timing, w, arena);
     case plant_kind::dc_drive: return std::make_unique<native_plant<dc_drive>>(d.plant, settings, timing, w, arena);
-    case plant_kind::two_mass_drive: return std::make_unique<native_plant<two_mass_drive>>(d.plant, settings, timing, w, arena);
+    case plant_kind::two_mass_drive:
+        return std::make_unique<native_plant<two_mass_drive>>(d.plant, settings, timing, w, arena);
     default: return std::make_unique<linear_plant>(d.plant, settings.lag, timing, w, arena);
     }
 }

@@ -23,8 +23,8 @@ bool all_constant(const std::vector<number>& numbers) {
 
 time_function::time_function(const time_function_description& d, bool time_is_uniform, const held_value& period,
                              signal_arena& arena)
-    : kind_(d.kind), size_(arena.block_size()), uniform_(time_is_uniform && all_constant(d.numbers)),
-      period_(period), allowance_(period.is_same(), arena) {
+    : kind_(d.kind), size_(arena.block_size()), uniform_(time_is_uniform && all_constant(d.numbers)), period_(period),
+      allowance_(period.is_same(), arena) {
     for (const number& n : d.numbers) numbers_.emplace_back(n, arena);
     const int derived = kind_ == time_function_kind::sine ? 1 : kind_ == time_function_kind::jerk_limited ? 5 : 0;
     for (int i = 0; i < derived; ++i) derived_.push_back(arena.take());
@@ -80,7 +80,8 @@ double time_function::lane_holds_until(double t, std::size_t lane) const {
     case time_function_kind::sine: return unless_moving(number(4), infinity);
     case time_function_kind::quintic: return unless_moving(number(1), number(1) + number(2));
     case time_function_kind::jerk_limited:
-        return unless_moving(number(1), number(1) + profile_plan::load(derived_.data(), lane / lanes * lanes).total[int(lane % lanes)]);
+        return unless_moving(
+            number(1), number(1) + profile_plan::load(derived_.data(), lane / lanes * lanes).total[int(lane % lanes)]);
     case time_function_kind::table_linear: return unless_moving(number(0), number(entries - 1));
     case time_function_kind::table_hold: {
         double earliest = infinity;

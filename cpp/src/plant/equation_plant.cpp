@@ -57,8 +57,8 @@ equation_plant::equation_plant(const plant_description& d, const integration_set
       derivative_inputs_(d.derivatives.inputs), output_inputs_(d.output.inputs),
       held_(held_inputs(d.derivatives, has_lag_, w)), held_inputs_(positions(held_, true)),
       moving_inputs_(positions(held_, false)),
-      every_output_input_(positions(std::vector<bool>(d.output.inputs.size(), true), true)), output_state_(state_handed_out(d.output)),
-      derivatives_(d.derivatives, arena, tape::outputs::scaled, held_),
+      every_output_input_(positions(std::vector<bool>(d.output.inputs.size(), true), true)),
+      output_state_(state_handed_out(d.output)), derivatives_(d.derivatives, arena, tape::outputs::scaled, held_),
       output_tape_(d.output, arena, tape::outputs::as_written), disturbances_(w), output_(arena.take()) {
     output_tape_.bind_output(0, output_);
 }

@@ -8,8 +8,19 @@
 namespace windage {
 namespace {
 
-bool are_all_same(const std::vector<lane_value>& values) {
-    return std::all_of(values.begin(), values.end(), [](const lane_value& v) { return v.is_same(); });
+const plant_description& checked(const plant_description& d, const plant_disturbances& w) {
+    if (d.kind != plant_kind::state_space && w.count() > 1)
+        throw std::invalid_argument("plant: this stock plant has one disturbance; use a state-space plant for more");
+    check_linear(d);
+    if (d.initial_state.size() != d.states.size())
+        throw std::invalid_argument("plant: one initial state a state is expected");
+    return d;
+}
+
+std::vector<lane_value> lane_values(const std::vector<number>& numbers, signal_arena& arena) {
+    std::vector<lane_value> values;
+    for (const number& n : numbers) values.emplace_back(n, arena);
+    return values;
 }
 
 bool has_general_output(plant_kind kind) {
@@ -20,35 +31,25 @@ bool has_general_output(plant_kind kind) {
 
 linear_plant::linear_plant(const plant_description& d, number lag, const plant_timing& timing,
                            const plant_disturbances& w, signal_arena& arena)
-    : d_(d), timing_(timing), w_(w), size_(arena.block_size()), states_(int(d.states.size())), order_(states_),
-      w_count_(w.count()),
-      has_lag_(!lag.is_constant(0.0)), output_is_first_state_(!has_general_output(d.kind)), lag_(lag, arena) {
-    if (has_lag_) ++order_;
-    if (d.kind != plant_kind::state_space && w_count_ > 1)
-        throw std::invalid_argument("plant: this stock plant has one disturbance; use a state-space plant for more");
-    check_linear(d);
-    if (d.initial_state.size() != d.states.size())
-        throw std::invalid_argument("plant: one initial state a state is expected");
-    for (const number& n : d.numbers) numbers_.emplace_back(n, arena);
-    for (const number& n : d.initial_state) initial_state_.emplace_back(n, arena);
-    x_ = arena.take(order_);
-    next_ = arena.take(order_);
-    middle_ = arena.take();
-    if (!output_is_first_state_) output_ = arena.take();
-    const bool is_same = are_all_same(numbers_) && are_same(lag_, timing.period, timing.fraction);
-    const auto matrix = [&](std::vector<held_value>& entries, int count) {
-        for (int k = 0; k < count; ++k) entries.emplace_back(is_same, arena);
-    };
-    matrix(phi_, order_ * order_);
-    if (timing.is_split) matrix(before_, order_);
-    matrix(after_, order_);
-    matrix(gamma_w_, order_ * w_count_);
-    matrix(c_, order_);
+    : d_(checked(d, w)), timing_(timing), w_(w), size_(arena.block_size()), states_(int(d.states.size())),
+      order_(lag.is_constant(0.0) ? states_ : states_ + 1), w_count_(w.count()), has_lag_(order_ > states_),
+      output_is_first_state_(!has_general_output(d.kind)), lag_(lag, arena), numbers_(lane_values(d.numbers, arena)),
+      initial_state_(lane_values(d.initial_state, arena)), x_(arena.take(order_)), next_(arena.take(order_)),
+      output_(arena.take()), middle_(arena.take()), phi_(order_, order_, is_same(), arena),
+      before_(order_, 1, is_same(), arena), after_(order_, 1, is_same(), arena),
+      gamma_w_(order_, w_count_, is_same(), arena), c_(1, order_, is_same(), arena) {
     for (int k = 0; k < w_count_; ++k) {
         w_middle_.push_back(arena.take());
         if (!w.is_zero(k)) acting_.push_back(k);
     }
     w_now_.resize(acting_.size());
+}
+
+// All lanes are the same plant at the same instants.
+bool linear_plant::is_same() const {
+    const bool same_numbers =
+        std::all_of(numbers_.begin(), numbers_.end(), [](const lane_value& v) { return v.is_same(); });
+    return same_numbers && are_same(lag_, timing_.period, timing_.fraction);
 }
 
 void linear_plant::begin(const trial_block& trials, const lane_value& initial_command) {
@@ -59,7 +60,7 @@ void linear_plant::begin(const trial_block& trials, const lane_value& initial_co
         initial_state_[i].copy_to(x_ + i * size_, size_);
     }
     if (has_lag_) initial_command.copy_to(x_ + states_ * size_, size_);
-    const std::size_t packs = phi_[0].is_same() ? lanes : size_;
+    const std::size_t packs = is_same() ? lanes : size_;
     for (std::size_t i = 0; i < packs; i += lanes) sample_exactly(i);
 }
 
@@ -78,14 +79,14 @@ void linear_plant::sample_exactly(std::size_t i) {
         return sum;
     };
     for (int r = 0; r < n; ++r) {
-        for (int k = 0; k < n; ++k) phi_[r * n + k].set(i, timing_.is_split ? through(r, k) : last(r, k));
-        after_[r].set(i, last(r, n));
-        if (timing_.is_split) before_[r].set(i, through(r, n));
+        for (int k = 0; k < n; ++k) phi_.set(r, k, i, timing_.is_split ? through(r, k) : last(r, k));
+        after_.set(r, 0, i, last(r, n));
+        if (timing_.is_split) before_.set(r, 0, i, through(r, n));
         for (int k = 0; k < w_count_; ++k) {
             const wide second = last(r, n + 1 + k);
-            gamma_w_[r * w_count_ + k].set(i, timing_.is_split ? through(r, n + 1 + k) + second : second);
+            gamma_w_.set(r, k, i, timing_.is_split ? through(r, n + 1 + k) + second : second);
         }
-        c_[r].set(i, m.c(0, r));
+        c_.set(0, r, i, m.c(0, r));
     }
 }
 
@@ -93,7 +94,7 @@ void linear_plant::evaluate_output(constant_signal, constant_signal) {
     if (output_is_first_state_) return;
     for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP {
         wide y = 0.0;
-        for (int k = 0; k < order_; ++k) y += c_[k].pack_at(i) * wide::load(x_ + k * size_ + i);
+        for (int k = 0; k < order_; ++k) y += c_.pack_at(0, k, i) * wide::load(x_ + k * size_ + i);
         y.store(output_ + i);
     });
 }
@@ -127,12 +128,12 @@ void linear_plant::advance(const sample_interval& interval) {
 
 // Row r of the new state; `n` states, known to the compiler for the usual plants.
 WINDAGE_INLINE wide linear_plant::next_state(int r, int n, const sample_interval& interval, std::size_t i) const {
-    wide sum = after_[r].pack_at(i) * wide::load(interval.after + i);
-    if (timing_.is_split) sum += before_[r].pack_at(i) * wide::load(interval.before + i);
+    wide sum = after_.pack_at(r, 0, i) * wide::load(interval.after + i);
+    if (timing_.is_split) sum += before_.pack_at(r, 0, i) * wide::load(interval.before + i);
 #pragma GCC unroll 4
-    for (int k = 0; k < n; ++k) sum += phi_[r * n + k].pack_at(i) * wide::load(x_ + k * size_ + i);
+    for (int k = 0; k < n; ++k) sum += phi_.pack_at(r, k, i) * wide::load(x_ + k * size_ + i);
     for (std::size_t k = 0; k < acting_.size(); ++k)
-        sum += gamma_w_[r * w_count_ + acting_[k]].pack_at(i) * wide::load(w_now_[k] + i);
+        sum += gamma_w_.pack_at(r, acting_[k], i) * wide::load(w_now_[k] + i);
     return sum;
 }
 

@@ -30,7 +30,7 @@ struct scaling {
 };
 
 // An entry of the upper rows of a product; the lower rows of `b` are those of the unit matrix.
-wide product_entry(const lane_matrix& a, const lane_matrix& b, int i, int j) {
+WINDAGE_INLINE wide product_entry(const lane_matrix& a, const lane_matrix& b, int i, int j) {
     const int n = a.rows();
     wide sum = a(i, 0) * b(0, j);
     for (int k = 1; k < n; ++k) sum += a(i, k) * b(k, j);
@@ -43,28 +43,28 @@ lane_matrix transition(const linear_model& m, wide h) {
     const int n = m.a.rows(), w = m.e.columns(), columns = n + 1 + w;
     lane_matrix rows(n, columns);
     for (int i = 0; i < n; ++i)
-        for (int j = 0; j < columns; ++j)
-            rows(i, j) = (j < n ? m.a(i, j) : j == n ? m.b(i, 0) : m.e(i, j - n - 1)) * h;
+        for (int j = 0; j < columns; ++j) rows(i, j) = (j < n ? m.a(i, j) : j == n ? m.b(i, 0) : m.e(i, j - n - 1)) * h;
     const scaling scale(rows);
-    lane_matrix sum(n, columns), next(n, columns);
+    lane_matrix first(n, columns), second(n, columns);
+    lane_matrix *sum = &first, *next = &second; // exchanged after every product
     for (int i = 0; i < n; ++i) {
         for (int j = 0; j < columns; ++j) rows(i, j) *= scale.factor;
-        sum(i, i) = 1.0;
+        (*sum)(i, i) = 1.0;
     }
     for (int k = degree; k >= 1; --k) {
         for (int i = 0; i < n; ++i)
             for (int j = 0; j < columns; ++j)
-                next(i, j) = wide(i == j ? 1.0 : 0.0) + (1.0 / k) * product_entry(rows, sum, i, j);
+                (*next)(i, j) = wide(i == j ? 1.0 : 0.0) + (1.0 / k) * product_entry(rows, *sum, i, j);
         std::swap(sum, next);
     }
     for (int k = 0; k < scale.most; ++k) {
         const auto wanted = wide(double(k)) < scale.count;
         for (int i = 0; i < n; ++i)
             for (int j = 0; j < columns; ++j)
-                next(i, j) = select(wanted, product_entry(sum, sum, i, j), sum(i, j));
+                (*next)(i, j) = select(wanted, product_entry(*sum, *sum, i, j), (*sum)(i, j));
         std::swap(sum, next);
     }
-    return sum;
+    return *sum;
 }
 
 } // namespace windage

@@ -33,8 +33,7 @@ ode_plant::ode_plant(const plant_description& d, const integration_settings& set
     : size_(arena.block_size()), states_(int(d.states.size())), has_lag_(!settings.lag.is_constant(0.0)),
       integrator_(settings.kind), x_(d.states.size() + (has_lag_ ? 1 : 0), arena.block_size()),
       inverse_lag_(settings.lag.is_constant(), arena), w_(w), tolerance_(settings.tolerance), timing_(timing),
-      reads_time_(reads_time), lag_(settings.lag, arena),
-      plan_(settings.steps_per_sample, timing, arena) {
+      reads_time_(reads_time), lag_(settings.lag, arena), plan_(settings.steps_per_sample, timing, arena) {
     if (settings.steps_per_sample < 1)
         throw std::invalid_argument("steps_per_sample is " + std::to_string(settings.steps_per_sample) +
                                     "; expected at least 1");

@@ -26,7 +26,8 @@ template <class F> void tape_builder::for_operands(const instruction& in, F&& f)
     for (int k = 0; k < operand_count(in.op); ++k) f(operands[k]);
 }
 
-// The values that the step of a value reads: of two joined operations those of the first, then the others of the second.
+// The values that the step of a value reads: of two joined operations those of the first, then the others of the
+// second.
 template <class F> void tape_builder::for_read_values(int value, F&& f) const {
     if (inner_[value] >= 0) for_operands(code_[inner_[value]], f);
     int place = 0;
@@ -120,7 +121,8 @@ void tape_builder::join_products() {
     }
 }
 
-// Two operations in one loop save a store, a load and a call. Sums and products commute: the joined operand comes first.
+// Two operations in one loop save a store, a load and a call. Sums and products commute: the joined operand comes
+// first.
 void tape_builder::join_pairs() {
     inner_.assign(code_.size(), -1);
     place_.assign(code_.size(), 0);

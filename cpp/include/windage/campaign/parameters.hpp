@@ -19,8 +19,8 @@ public:
     explicit parameter_source(const study_description& study);
 
     std::size_t count() const { return spreads_.size(); }
-    /// The parameters of one trial into values[0 .. count - 1], `stride` apart.
-    void draw(std::uint64_t trial, double* values, std::size_t stride) const;
+    /// Parameter p of trial trials[i] into values[p * size + i]; `size` fills whole packs.
+    void draw(const std::uint64_t* trials, std::size_t size, double* values) const;
     /// Largest number of trials that the spreads can supply (tables of rows end).
     std::uint64_t trials_available() const { return available_; }
 
@@ -30,8 +30,7 @@ private:
         Eigen::MatrixXd factor; // lower Cholesky factor
     };
 
-    double uniform(std::uint64_t trial, std::size_t column) const;
-    void correlate(std::uint64_t trial, const copula& c, std::vector<double>& uniforms) const;
+    void correlate(const copula& c, std::size_t size, double* uniforms) const;
 
     std::uint64_t seed_;
     std::uint64_t available_;

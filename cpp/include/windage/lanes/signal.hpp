@@ -28,8 +28,8 @@ public:
     signal take() { return take(1); }
     /// `count` signals next to each other, set to zero.
     signal take(std::size_t count) { return take_values(count * block_size_); }
-    /// Room for one pack, set to zero.
-    double* take_pack() { return take_values(lanes); }
+    /// Room for `count` packs, set to zero.
+    double* take_packs(std::size_t count) { return take_values(count * lanes); }
 
 private:
     static constexpr std::size_t chunk_signals = 32;
@@ -76,14 +76,20 @@ struct trial_block {
 class held_value {
 public:
     held_value(bool is_same, signal_arena& arena)
-        : values_(is_same ? arena.take_pack() : arena.take()), size_(is_same ? lanes : arena.block_size()),
+        : values_(is_same ? arena.take_packs(1) : arena.take()), size_(is_same ? lanes : arena.block_size()),
           which_(is_same ? 0 : ~std::size_t(0)) {}
 
-    /// Stores f(i), a pack or a number, for the offset of each pack; f reads values that differ only where this one may.
+    /// Stores f(i), a pack or a number, for the offset of each pack; f reads values that differ only where this one
+    /// may.
     template <class F> WINDAGE_INLINE void fill(F&& f) {
         for (std::size_t i = 0; i < size_; i += lanes) wide(f(i)).store(values_ + i);
     }
     WINDAGE_INLINE wide pack_at(std::size_t i) const { return wide::load(values_ + (i & which_)); }
+    /// The same; with `Same` for a value that is the same in every lane, from one number instead of a pack.
+    template <bool Same> WINDAGE_INLINE wide read(std::size_t i) const {
+        if constexpr (Same) return wide(values_[0]);
+        return pack_at(i);
+    }
     double operator[](std::size_t lane) const { return values_[lane & which_]; }
     void set(std::size_t i, wide x) { x.store(values_ + (i & which_)); }
     /// The same in every lane.
@@ -114,7 +120,41 @@ private:
     number source_;
 };
 
+/// A small matrix of held values, its entries row by row.
+class held_matrix {
+public:
+    held_matrix(int rows, int columns, bool is_same, signal_arena& arena)
+        : columns_(std::size_t(columns)), stride_(is_same ? lanes : arena.block_size()),
+          which_(is_same ? 0 : ~std::size_t(0)),
+          values_(is_same ? arena.take_packs(std::size_t(rows) * columns_) : arena.take(std::size_t(rows) * columns_)) {
+    }
+
+    WINDAGE_INLINE wide pack_at(int row, int column, std::size_t i) const {
+        return wide::load(values_ + (std::size_t(row) * columns_ + std::size_t(column)) * stride_ + (i & which_));
+    }
+    void set(int row, int column, std::size_t i, wide x) {
+        x.store(values_ + (std::size_t(row) * columns_ + std::size_t(column)) * stride_ + (i & which_));
+    }
+    bool is_same() const { return which_ == 0; }
+
+private:
+    std::size_t columns_, stride_, which_;
+    double* values_;
+};
+
 /// None of the values differs between lanes.
 template <class... Values> bool are_same(const Values&... values) { return (values.is_same() && ...); }
+
+/// Calls f(i, a, b, ...) for each pack, with the packs of held values. Where none of them differs between lanes they
+/// are read once and stay in registers: loads are what a pass over a block waits for (measured).
+template <class F, class... Values>
+WINDAGE_INLINE void for_each_pack_with(std::size_t block_size, F&& f, const Values&... values) {
+    if (are_same(values...))
+        [&](const auto... once) WINDAGE_LANE_LOOP {
+            for (std::size_t i = 0; i < block_size; i += lanes) f(i, once...);
+        }(values.template read<true>(0)...);
+    else
+        for (std::size_t i = 0; i < block_size; i += lanes) f(i, values.template read<false>(i)...);
+}
 
 } // namespace windage

@@ -25,7 +25,7 @@ private:
     bool has_limits_, is_transparent_;
     constant_signal wanted_;
     held_value largest_change_; // a sample
-    signal unrounded_;      // what the rate limit starts from: changes below half a resolution must add up
+    signal unrounded_;          // what the rate limit starts from: changes below half a resolution must add up
     signal command_;
     std::size_t size_;
 };

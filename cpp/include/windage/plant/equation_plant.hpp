@@ -25,9 +25,9 @@ private:
               const block_state& x, constant_signal time, constant_signal command, const constant_signal* disturbances);
 
     std::vector<program_input> derivative_inputs_, output_inputs_;
-    std::vector<bool> held_;                             // derivative inputs that keep their value during a step
+    std::vector<bool> held_; // derivative inputs that keep their value during a step
     std::vector<std::size_t> held_inputs_, moving_inputs_, every_output_input_;
-    std::optional<int> output_state_;                    // where the output is a state as it is
+    std::optional<int> output_state_; // where the output is a state as it is
     tape derivatives_, output_tape_;
     const plant_disturbances& disturbances_;
     std::vector<constant_signal> now_;

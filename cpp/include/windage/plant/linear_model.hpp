@@ -1,7 +1,10 @@
 // State-space models of the linear stock plants, one plant a lane: x' = A x + B u + E w, y = C x.
 #pragma once
 
+#include <memory>
 #include <vector>
+
+#include <boost/container/small_vector.hpp>
 
 #include <windage/lanes/pack.hpp>
 #include <windage/plant/description.hpp>
@@ -20,7 +23,8 @@ public:
 
 private:
     int columns_ = 0;
-    std::vector<wide> values_;
+    /// No allocation up to three states; the standard allocator aligns packs, that of boost does not.
+    boost::container::small_vector<wide, 16, std::allocator<wide>> values_;
 };
 
 struct linear_model {

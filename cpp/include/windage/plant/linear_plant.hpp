@@ -25,6 +25,7 @@ public:
     constant_signal lagged_input() const override { return has_lag_ ? state(states_) : nullptr; }
 
 private:
+    bool is_same() const;
     void sample_exactly(std::size_t i);
     void find_disturbances(const sample_interval& interval);
     wide next_state(int row, int order, const sample_interval& interval, std::size_t i) const;
@@ -39,9 +40,9 @@ private:
     bool has_lag_, output_is_first_state_;
     lane_value lag_;
     std::vector<lane_value> numbers_, initial_state_;
-    signal x_, next_, output_ = nullptr, middle_;
-    std::vector<held_value> phi_, before_, after_, gamma_w_, c_; // matrices row by row
-    std::vector<int> acting_;                                    // disturbances that are not zero for good
+    signal x_, next_, output_, middle_;
+    held_matrix phi_, before_, after_, gamma_w_, c_;
+    std::vector<int> acting_; // disturbances that are not zero for good
     std::vector<signal> w_middle_;
     std::vector<constant_signal> w_now_; // of those that act
 };

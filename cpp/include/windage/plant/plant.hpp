@@ -19,7 +19,8 @@ public:
     /// Zero at all times in every trial.
     virtual bool is_zero(int which) const = 0;
     virtual constant_signal now(int which) const = 0;
-    /// Value of one that moves at a time within the sample interval; at the end of a step a jump at that very time is still to come.
+    /// Value of one that moves at a time within the sample interval; at the end of a step a jump at that very time is
+    /// still to come.
     virtual void evaluate(int which, constant_signal time, bool ends_a_step, signal out) const = 0;
 };
 

@@ -12,10 +12,9 @@ namespace windage {
 class step_plan {
 public:
     step_plan(int steps_per_sample, const plant_timing& timing, signal_arena& arena)
-        : timing_(timing), asked_(steps_per_sample), split_(timing.is_split),
-          size_(arena.block_size()), first_(are_same(timing.period, timing.fraction), arena),
-          length_before_(first_.is_same(), arena), length_after_(first_.is_same(), arena), step_(arena.take()),
-          start_(arena.take()), input_(arena.take()) {}
+        : timing_(timing), asked_(steps_per_sample), split_(timing.is_split), size_(arena.block_size()),
+          first_(are_same(timing.period, timing.fraction), arena), length_before_(first_.is_same(), arena),
+          length_after_(first_.is_same(), arena), step_(arena.take()), start_(arena.take()), input_(arena.take()) {}
 
     int steps() const { return split_ ? asked_ + 1 : asked_; }
 
@@ -24,9 +23,8 @@ public:
         const auto phi = [&](std::size_t i) { return timing_.fraction.pack_at(i); };
         first_.fill([&](std::size_t i) { return -floor(-(phi(i) / timing_.period.pack_at(i) * asked)); });
         length_before_.fill([&](std::size_t i) { return phi(i) / maximum(first_.pack_at(i), wide(1.0)); });
-        length_after_.fill([&](std::size_t i) {
-            return (timing_.period.pack_at(i) - phi(i)) / (asked + 1.0 - first_.pack_at(i));
-        });
+        length_after_.fill(
+            [&](std::size_t i) { return (timing_.period.pack_at(i) - phi(i)) / (asked + 1.0 - first_.pack_at(i)); });
         for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP {
             (timing_.period.pack_at(i) * (1.0 / asked)).store(step_ + i); // where the interval is not split
         });
