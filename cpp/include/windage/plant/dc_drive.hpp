@@ -19,11 +19,11 @@ public:
     static void derive(wide* n) {
         for (int divisor : {1, 3, 6}) n[divisor] = 1.0 / n[divisor];
     }
-    explicit dc_drive(const wide* n)
+    WINDAGE_INLINE explicit dc_drive(const wide* n)
         : resistance_(n[0]), inverse_inductance_(n[1]), constant_(n[2]), inverse_inertia_(n[3]), viscous_(n[4]),
           coulomb_(n[5]), inverse_smoothing_(n[6]) {}
 
-    void operator()(const std::array<wide, 3>& x, std::array<wide, 3>& dx, wide voltage, const wide* w) const {
+    WINDAGE_INLINE void operator()(const std::array<wide, 3>& x, std::array<wide, 3>& dx, wide voltage, const wide* w) const {
         const wide speed = x[1], current = x[2];
         const wide friction = viscous_ * speed + coulomb_ * hyperbolic_tangent(speed * inverse_smoothing_);
         dx[0] = speed;

@@ -1,4 +1,6 @@
-// A stock plant written in C++: odeint steps one pack at a time, its whole state in registers or close to them.
+// A stock plant written in C++: one pass over the block for each stage of the integrator. A whole step for one pack at a
+// time would keep the state in registers but wait for one slow function after the other, while those of neighbouring
+// packs overlap (measured: 1.4 times the time).
 //
 // `Drive` names the plant: `states`, `numbers` and `disturbances` are its counts, and
 //     static void derive(wide* n)                       turns the numbers into what the equations need, once a block
@@ -8,8 +10,6 @@
 
 #include <array>
 #include <stdexcept>
-
-#include <boost/numeric/odeint/algebra/array_algebra.hpp>
 
 #include <windage/plant/ode_plant.hpp>
 
@@ -45,13 +45,12 @@ private:
         });
     }
 
-    Drive drive_at(std::size_t i) const {
+    WINDAGE_INLINE Drive drive_at(std::size_t i) const {
         wide n[Drive::numbers];
         for (int k = 0; k < Drive::numbers; ++k) n[k] = wide::load(derived_[k] + i);
         return Drive(n);
     }
 
-    // The same equations over a block state, for the reference integrator.
     void derivative(const block_state& x, block_state& dx, const stage& s) override {
         for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP {
             std::array<wide, Drive::states> here, rate;
@@ -62,44 +61,11 @@ private:
         });
     }
 
-    static std::array<wide, Drive::disturbances> acting(const stage& s, std::size_t i) {
+    static WINDAGE_INLINE std::array<wide, Drive::disturbances> acting(const stage& s, std::size_t i) {
         std::array<wide, Drive::disturbances> w;
         for (std::size_t k = 0; k < Drive::disturbances; ++k)
             w[k] = k < s.disturbances.size() ? wide::load(s.disturbances[k] + i) : wide(0.0);
         return w;
-    }
-
-    void take_step(const std::vector<stage>& stages) override {
-        has_lag_ ? take_step_of<Drive::states + 1>(stages) : take_step_of<Drive::states>(stages);
-    }
-
-    template <int N> void take_step_of(const std::vector<stage>& stages) {
-        using state_array = std::array<wide, N>;
-        namespace ode = boost::numeric::odeint;
-        using algebra = ode::array_algebra;
-        ode::euler<state_array, double, state_array, double, algebra> euler;
-        ode::runge_kutta4_classic<state_array, double, state_array, double, algebra> rk4;
-        ode::runge_kutta_cash_karp54<state_array, double, state_array, double, algebra> cash_karp;
-        for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP {
-            state_array x;
-            for (int k = 0; k < N; ++k) x[k] = wide::load(x_[k] + i);
-            const Drive drive = drive_at(i);
-            const wide h = wide::load(stages[0].step + i), command = wide::load(stages[0].command + i);
-            const wide inverse_lag = inverse_lag_.pack_at(i);
-            std::size_t next = 0;
-            auto system = [&](const state_array& at, state_array& rate, double) {
-                const auto w = acting(stages[next++], i);
-                std::array<wide, Drive::states> own, own_rate;
-                for (int k = 0; k < Drive::states; ++k) own[k] = at[k];
-                drive(own, own_rate, N > Drive::states ? at[N - 1] : command, w.data());
-                for (int k = 0; k < Drive::states; ++k) rate[k] = own_rate[k] * h;
-                if constexpr (N > Drive::states) rate[N - 1] = (command - at[N - 1]) * inverse_lag * h;
-            };
-            if (integrator_ == integrator_kind::euler) euler.do_step(system, x, 0.0, 1.0);
-            if (integrator_ == integrator_kind::rk4) rk4.do_step(system, x, 0.0, 1.0);
-            if (integrator_ == integrator_kind::cash_karp5) cash_karp.do_step(system, x, 0.0, 1.0);
-            for (int k = 0; k < N; ++k) x[k].store(x_[k] + i);
-        });
     }
 
     int output_state_;
