@@ -32,13 +32,6 @@ std::optional<int> state_handed_out(const program& p) {
     return p.inputs[in.a].index;
 }
 
-std::vector<std::size_t> positions(const std::vector<bool>& flags, bool wanted) {
-    std::vector<std::size_t> found;
-    for (std::size_t i = 0; i < flags.size(); ++i)
-        if (flags[i] == wanted) found.push_back(i);
-    return found;
-}
-
 const plant_description& checked(const plant_description& d, const plant_disturbances& w) {
     check_inputs(d.derivatives, d);
     check_inputs(d.output, d);
@@ -54,13 +47,20 @@ const plant_description& checked(const plant_description& d, const plant_disturb
 equation_plant::equation_plant(const plant_description& d, const integration_settings& settings,
                                const plant_timing& timing, const plant_disturbances& w, signal_arena& arena)
     : ode_plant(checked(d, w), settings, timing, w, d.derivatives.reads(source_kind::time), arena),
-      derivative_inputs_(d.derivatives.inputs), output_inputs_(d.output.inputs),
-      held_(held_inputs(d.derivatives, has_lag_, w)), held_inputs_(positions(held_, true)),
-      moving_inputs_(positions(held_, false)),
-      every_output_input_(positions(std::vector<bool>(d.output.inputs.size(), true), true)),
+      held_(held_inputs(d.derivatives, has_lag_, w)), held_bindings_(bindings(d.derivatives, held_, true)),
+      moving_bindings_(bindings(d.derivatives, held_, false)), output_bindings_(bindings(d.output, {}, false)),
       output_state_(state_handed_out(d.output)), derivatives_(d.derivatives, arena, tape::outputs::scaled, held_),
       output_tape_(d.output, arena, tape::outputs::as_written), disturbances_(w), output_(arena.take()) {
     output_tape_.bind_output(0, output_);
+}
+
+std::vector<equation_plant::binding> equation_plant::bindings(const program& p, const std::vector<bool>& held,
+                                                              bool wanted) {
+    std::vector<binding> found;
+    for (std::size_t i = 0; i < p.inputs.size(); ++i)
+        if (p.inputs[i].kind != source_kind::value && (!held.empty() && held[i]) == wanted)
+            found.push_back({i, p.inputs[i].kind, std::size_t(p.inputs[i].index)});
+    return found;
 }
 
 void equation_plant::begin_plant(const trial_block& block) {
@@ -68,26 +68,24 @@ void equation_plant::begin_plant(const trial_block& block) {
     output_tape_.begin(block);
 }
 
-void equation_plant::bind(tape& t, const std::vector<program_input>& inputs, const std::vector<std::size_t>& which,
-                          const block_state& x, constant_signal time, constant_signal command,
-                          const constant_signal* disturbances) {
-    for (std::size_t i : which) {
-        const program_input& input = inputs[i];
-        if (input.kind == source_kind::state) t.bind_input(i, x[input.index]);
-        if (input.kind == source_kind::time) t.bind_input(i, time);
-        if (input.kind == source_kind::disturbance) t.bind_input(i, disturbances[input.index]);
-        if (input.kind == source_kind::plant_input) t.bind_input(i, has_lag_ ? x[states_] : command);
+void equation_plant::bind(tape& t, const std::vector<binding>& which, const block_state& x, constant_signal time,
+                          constant_signal command, const constant_signal* disturbances) {
+    for (const binding& b : which) {
+        if (b.kind == source_kind::state) t.bind_input(b.input, x[b.index]);
+        if (b.kind == source_kind::time) t.bind_input(b.input, time);
+        if (b.kind == source_kind::disturbance) t.bind_input(b.input, disturbances[b.index]);
+        if (b.kind == source_kind::plant_input) t.bind_input(b.input, has_lag_ ? x[states_] : command);
     }
 }
 
 void equation_plant::begin_step(const block_state& x, const stage& s) {
-    bind(derivatives_, derivative_inputs_, held_inputs_, x, s.time, s.command, s.disturbances.data());
+    bind(derivatives_, held_bindings_, x, s.time, s.command, s.disturbances.data());
     derivatives_.bind_scale(s.step);
     derivatives_.begin_step();
 }
 
 void equation_plant::derivative(const block_state& x, block_state& dx, const stage& s) {
-    bind(derivatives_, derivative_inputs_, moving_inputs_, x, s.time, s.command, s.disturbances.data());
+    bind(derivatives_, moving_bindings_, x, s.time, s.command, s.disturbances.data());
     for (int i = 0; i < states_; ++i) derivatives_.bind_output(i, dx[i]);
     derivatives_.run();
 }
@@ -96,7 +94,7 @@ void equation_plant::evaluate_output(constant_signal time, constant_signal input
     if (output_state_) return;
     now_.resize(disturbances_.count());
     for (int k = 0; k < disturbances_.count(); ++k) now_[k] = disturbances_.now(k);
-    bind(output_tape_, output_inputs_, every_output_input_, x_, time, input, now_.data());
+    bind(output_tape_, output_bindings_, x_, time, input, now_.data());
     output_tape_.run();
 }
 

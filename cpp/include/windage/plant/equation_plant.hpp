@@ -20,13 +20,18 @@ private:
     void begin_step(const block_state& x, const stage& s) override;
     void derivative(const block_state& x, block_state& dx, const stage& s) override;
     void begin_plant(const trial_block& block) override;
-    /// Binds those inputs of a tape that are listed.
-    void bind(tape& t, const std::vector<program_input>& inputs, const std::vector<std::size_t>& which,
-              const block_state& x, constant_signal time, constant_signal command, const constant_signal* disturbances);
+    /// An input of a tape that is bound from outside.
+    struct binding {
+        std::size_t input;
+        source_kind kind;
+        std::size_t index;
+    };
+    static std::vector<binding> bindings(const program& p, const std::vector<bool>& held, bool wanted);
+    void bind(tape& t, const std::vector<binding>& which, const block_state& x, constant_signal time,
+              constant_signal command, const constant_signal* disturbances);
 
-    std::vector<program_input> derivative_inputs_, output_inputs_;
     std::vector<bool> held_; // derivative inputs that keep their value during a step
-    std::vector<std::size_t> held_inputs_, moving_inputs_, every_output_input_;
+    std::vector<binding> held_bindings_, moving_bindings_, output_bindings_;
     std::optional<int> output_state_; // where the output is a state as it is
     tape derivatives_, output_tape_;
     const plant_disturbances& disturbances_;
