@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import html
 import math
 from collections.abc import Iterator
 from dataclasses import dataclass
@@ -87,6 +86,8 @@ class Drivers:
         )
 
     def _repr_html_(self) -> str:
+        import html  # costs import time and is seldom needed
+
         return f"<pre>{html.escape(str(self))}</pre>"
 
 

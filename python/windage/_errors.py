@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import difflib
 from collections.abc import Iterable
 
 
@@ -56,6 +55,8 @@ def shorten(value: object, limit: int = 80) -> str:
 def suggestion(name: str, known: Iterable[str]) -> str:
     """Return `Did you mean 'x'?` for the closest known name, or a list of the known names."""
     known = sorted(known)
+    import difflib  # costs import time and is seldom needed
+
     close = difflib.get_close_matches(name, known, n=1)
     if close:
         return f"Did you mean {close[0]!r}?"

@@ -6,7 +6,6 @@ come from the compiled module `_statistics`; this module checks arguments and ex
 
 from __future__ import annotations
 
-import difflib
 import operator
 from collections.abc import Callable, Collection
 from dataclasses import dataclass
@@ -501,5 +500,7 @@ def _checked_choice(field: str, value: object, known: Collection[str]) -> str:
     if isinstance(value, str) and value in known:
         return value
     listed = ", ".join(repr(name) for name in known)
+    import difflib  # costs import time and is seldom needed
+
     near = difflib.get_close_matches(value, list(known), n=1) if isinstance(value, str) else []
     raise DescriptionError(field, value, f"one of {listed}", f"Did you mean {near[0]!r}?" if near else "")

@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import html
 from collections.abc import Mapping
 from functools import cached_property
 from types import MappingProxyType
@@ -213,6 +212,8 @@ class Outcome:
         return "\n".join([self._headline(), *(f"  {text}" for text in self._rows())])
 
     def _repr_html_(self) -> str:
+        import html  # costs import time and is seldom needed
+
         rows = "".join(f"<li>{html.escape(text)}</li>" for text in self._rows())
         return f"<p><strong>{html.escape(self._headline())}</strong></p><ul>{rows}</ul>"
 

@@ -3,8 +3,6 @@
 from __future__ import annotations
 
 import os
-import tempfile
-import tomllib
 from pathlib import Path
 from typing import Any
 
@@ -26,6 +24,8 @@ def save(study: Study, path: str | os.PathLike[str]) -> None:
     DescriptionError
         If it is no study, or too large for a study file.
     """
+    import tempfile  # costs import time and is seldom needed
+
     if not isinstance(study, Study):
         raise DescriptionError("study", study, "a Study")
     text = to_toml(study)
@@ -76,6 +76,8 @@ def to_toml(study: Study) -> str:
 
 def from_toml(text: str) -> Study:
     """Return the study that the text of a study file describes; errors as for `load`."""
+    import tomllib  # costs import time and is seldom needed
+
     try:
         data: dict[str, Any] = tomllib.loads(text)
     except (tomllib.TOMLDecodeError, RecursionError, ValueError) as error:

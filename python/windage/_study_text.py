@@ -8,9 +8,7 @@ calls the same public functions that a person would call, so every check is made
 
 from __future__ import annotations
 
-import hashlib
 import inspect
-import json
 import math
 from collections.abc import Callable, Mapping
 from typing import TYPE_CHECKING, Any
@@ -141,6 +139,9 @@ def to_data(study: Study) -> dict[str, Any]:
 
 def digest_of(study: Study) -> str:
     """Return the SHA-256 of a study's data, with names in sorted order."""
+    import hashlib  # both cost import time and are seldom needed
+    import json
+
     text = json.dumps(to_data(study), sort_keys=True, separators=(",", ":"), allow_nan=False)
     return hashlib.sha256(text.encode()).hexdigest()
 

@@ -8,7 +8,6 @@ wrong verdict has at most the probability 1 - C, provided that the number of tri
 
 from __future__ import annotations
 
-import html
 import textwrap
 from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import asdict, dataclass
@@ -548,6 +547,8 @@ def _cautions_as_html(cautions: Sequence[str]) -> str:
 
 
 def _escaped(text: str) -> str:
+    import html  # costs import time and is seldom needed
+
     return html.escape(text, quote=True)
 
 
