@@ -248,7 +248,7 @@ def test_demo_study_tells_its_story() -> None:
     assert len(np.setdiff1d(outcome.failed(peak), outcome.failed(effort))) >= 20
     delays = outcome.parameters["actuator.delay"]
     assert delays[outcome.failed(effort)].min() > np.quantile(delays, 0.7)
-    assert DEMO_TRIALS == 20_000
+    assert DEMO_TRIALS == 10_000
 
 
 def test_cancelling_the_disturbance_is_worth_a_factor_of_ten() -> None:

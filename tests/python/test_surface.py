@@ -11,9 +11,10 @@ import pyarrow as pa
 import pytest
 
 import windage as wd
-from windage._demo import DEMO_TRIALS, demo_study
+from windage._demo import demo_study
 from windage._plot_style import StudyFigure
 
+TRIALS = 20_000
 README = Path(__file__).resolve().parents[2] / "README.md"
 NUMBER = re.compile(r"(?<![\w.])\d[\d_]*(?:\.\d+)?(?:e-?\d+)?")
 
@@ -91,7 +92,7 @@ def test_the_lines_are_the_promised_ones() -> None:
 
 def test_it_is_the_study_of_the_demo(names: dict[str, Any]) -> None:
     assert names["study"] == demo_study()
-    assert names["outcome"].trials == DEMO_TRIALS
+    assert names["outcome"].trials == TRIALS
 
 
 def test_the_verdict_is_a_pass_with_failures_to_look_at(names: dict[str, Any]) -> None:
@@ -123,12 +124,12 @@ def test_the_replay_has_the_digits_of_the_run(names: dict[str, Any]) -> None:
 
 def test_arrays_and_table_have_the_promised_shapes(names: dict[str, Any]) -> None:
     outcome, replay = names["outcome"], names["replay"]
-    assert outcome.slack.shape == (DEMO_TRIALS, 2)
+    assert outcome.slack.shape == (TRIALS, 2)
     assert replay.time.shape == replay["error"].shape == (10_001,)
     np.testing.assert_array_equal(outcome.passed, (outcome.slack >= 0.0).all(axis=1))
     table = outcome.table()
     assert isinstance(table, pa.Table)
-    assert table.num_rows == DEMO_TRIALS
+    assert table.num_rows == TRIALS
     for name in ("trial", *outcome.parameters, *outcome.measures, "status"):
         assert name in table.column_names
     for label in outcome.requirements:
