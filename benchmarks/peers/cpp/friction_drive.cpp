@@ -23,9 +23,8 @@ struct drive {
     }
 };
 
-template <bool Noise>
-void simulate_trial(const drive& p, normal_numbers<Noise>& normal, const double* reference, long samples,
-                    double* measures) {
+template <bool Noise> void simulate_trial(const drive& p, normal_numbers<Noise>& normal, const double* reference,
+                                          long samples, double* measures) {
     constexpr double ts = c::sample_period;
     constexpr double k1 = c::controller_bandwidth * c::controller_bandwidth, k2 = 2.0 * c::controller_bandwidth;
     const long peak_from = long(c::peak_after / ts + 0.5);
@@ -38,7 +37,7 @@ void simulate_trial(const drive& p, normal_numbers<Noise>& normal, const double*
     const double keep = std::exp(-ts / c::correlation_time), load_gain = p.intensity * std::sqrt(1.0 - keep * keep);
 
     extended_observer observer(c::observer_bandwidth, ts);
-    double angle = 0.0, rate = 0.0, load = 0.0, u[4] = {0.0, 0.0, 0.0, 0.0};  // this command and the three before
+    double angle = 0.0, rate = 0.0, load = 0.0, u[4] = {0.0, 0.0, 0.0, 0.0}; // this command and the three before
     double peak = 0.0, torque_square = 0.0, square_sum = 0.0, square_before = 0.0, variation = 0.0, saturated = 0.0;
     for (long k = 0; k < samples; ++k) {
         load = k == 0 ? p.intensity * normal() : keep * load + load_gain * normal();
@@ -68,9 +67,8 @@ void simulate_trial(const drive& p, normal_numbers<Noise>& normal, const double*
     std::copy_n(m, 5, measures);
 }
 
-template <bool Noise>
-void simulate_all(const double* parameters, long trials, const double* reference, long samples, double* measures,
-                  int threads, std::uint64_t seed) {
+template <bool Noise> void simulate_all(const double* parameters, long trials, const double* reference, long samples,
+                                        double* measures, int threads, std::uint64_t seed) {
     divide_trials(trials, threads, [=](long first, long last, int worker) {
         normal_numbers<Noise> normal(seed + std::uint64_t(worker));
         for (long t = first; t < last; ++t) {

@@ -69,10 +69,14 @@ public:
             const quantity &load_noise = k % 2 == 0 ? load_even_ : load_odd_,
                            &sensor_noise = k % 2 == 0 ? sensor_even_ : sensor_odd_;
             const double r = reference[k];
-            if (k == 0) sample<true, false, true>(r, load_noise, sensor_noise);
-            else if (k == last) sample<false, true, false>(r, load_noise, sensor_noise);
-            else if (k < peak_from) sample<false, false, true>(r, load_noise, sensor_noise);
-            else sample<false, true, true>(r, load_noise, sensor_noise);
+            if (k == 0)
+                sample<true, false, true>(r, load_noise, sensor_noise);
+            else if (k == last)
+                sample<false, true, false>(r, load_noise, sensor_noise);
+            else if (k < peak_from)
+                sample<false, false, true>(r, load_noise, sensor_noise);
+            else
+                sample<false, true, true>(r, load_noise, sensor_noise);
             if (k == last) break;
             step(before_, drive_before_);
             step(after_, drive_after_);
@@ -96,9 +100,9 @@ private:
         for (int n = 0; n < n_parameters; ++n)
             for (int lane = 0; lane < block; ++lane)
                 p[n].values[lane] = parameters[n * trials + std::min(first + lane, trials - 1)];
-        for (quantity* q : {&angle_, &rate_, &load_, &x1_, &x2_, &x3_, &u0_, &u1_, &u2_, &peak_, &torque_square_,
-                            &error_square_, &error_before_, &variation_, &saturated_, &load_even_, &load_odd_,
-                            &sensor_even_, &sensor_odd_})
+        for (quantity* q :
+             {&angle_, &rate_, &load_, &x1_, &x2_, &x3_, &u0_, &u1_, &u2_, &peak_, &torque_square_, &error_square_,
+              &error_before_, &variation_, &saturated_, &load_even_, &load_odd_, &sensor_even_, &sensor_odd_})
             std::fill_n(q->values, block, 0.0);
         const double ratio = c::sample_period / c::correlation_time;
         const double gain = square_root(pack<1>(-exponential_minus_one(-2.0 * ratio)))[0];
@@ -144,8 +148,8 @@ private:
                          k2 = 2.0 * c::controller_bandwidth / c::b0, k3 = 1.0 / c::b0;
         const observer_gains o = gains_;
         for_each_pack_of_block([&](int i) WINDAGE_LANE_LOOP {
-            const pack_t load = First ? load_start_[i] * load_noise[i]
-                                      : load_keep_ * load_[i] + load_gain_[i] * load_noise[i];
+            const pack_t load =
+                First ? load_start_[i] * load_noise[i] : load_keep_ * load_[i] + load_gain_[i] * load_noise[i];
             load_.set(i, load);
             const pack_t angle = angle_[i], error = reference - angle;
             const pack_t noisy = angle + c::noise * sensor_noise[i];
@@ -181,8 +185,7 @@ private:
                 variation_.set(i, variation_[i] + absolute(u0 - u1));
             }
             error_before_.set(i, square);
-            if constexpr (Advances)
-                saturated_.set(i, saturated_[i] + as_number((u0 <= -c::limit) | (u0 >= c::limit)));
+            if constexpr (Advances) saturated_.set(i, saturated_[i] + as_number((u0 <= -c::limit) | (u0 >= c::limit)));
         });
     }
 
@@ -220,7 +223,7 @@ private:
     bool with_noise_;
     observer_gains gains_;
     double load_keep_ = 0.0;
-    quantity gear_, drag_, coulomb_, whole_, early_, before_, after_, load_start_, load_gain_;  // folded numbers
+    quantity gear_, drag_, coulomb_, whole_, early_, before_, after_, load_start_, load_gain_; // folded numbers
     quantity angle_, rate_, load_, x1_, x2_, x3_, u0_, u1_, u2_;
     quantity load_even_, load_odd_, sensor_even_, sensor_odd_, drive_before_, drive_after_, stage_rate_, k_sum_, r_sum_;
     quantity peak_, torque_square_, error_square_, error_before_, variation_, saturated_;

@@ -7,7 +7,7 @@
 namespace {
 
 namespace c = constants;
-using state = std::array<double, 5>;  // motor angle, motor speed, load angle, load speed, torque
+using state = std::array<double, 5>; // motor angle, motor speed, load angle, load speed, torque
 
 struct servo {
     double inverse_motor, inverse_load, stiffness, damping, inverse_current_time, gain, coulomb, breakaway, viscous,
@@ -52,9 +52,8 @@ struct settling {
     }
 };
 
-template <bool Noise>
-void simulate_trial(const servo& p, normal_numbers<Noise>& normal, const double* reference, long samples,
-                    double* measures) {
+template <bool Noise> void simulate_trial(const servo& p, normal_numbers<Noise>& normal, const double* reference,
+                                          long samples, double* measures) {
     constexpr double ts = c::sample_period, k1 = c::controller_bandwidth * c::controller_bandwidth,
                      k2 = 2.0 * c::controller_bandwidth, moved = c::move_start + c::move_time;
     const auto at = [](double time) { return long(time / ts + 0.5); };
@@ -72,8 +71,8 @@ void simulate_trial(const servo& p, normal_numbers<Noise>& normal, const double*
         const double time = double(k) * ts, error = reference[k] - x[0];
         const double measured = quantise(x[0] + c::noise * normal(), c::resolution);
         observer.update(measured, c::b0 * u[0]);
-        const double wanted = (k1 * (reference[k] - observer.x1) + k2 * (speed[k] - observer.x2) + acceleration[k] -
-                               observer.x3) / c::b0;
+        const double wanted =
+            (k1 * (reference[k] - observer.x1) + k2 * (speed[k] - observer.x2) + acceleration[k] - observer.x3) / c::b0;
         u[2] = u[1];
         u[1] = u[0];
         u[0] = std::clamp(wanted, -c::limit, c::limit);
@@ -96,16 +95,17 @@ void simulate_trial(const servo& p, normal_numbers<Noise>& normal, const double*
     std::copy_n(m, 4, measures);
 }
 
-template <bool Noise>
-void simulate_all(const double* parameters, long trials, const double* reference, long samples, double* measures,
-                  int threads, std::uint64_t seed) {
+template <bool Noise> void simulate_all(const double* parameters, long trials, const double* reference, long samples,
+                                        double* measures, int threads, std::uint64_t seed) {
     divide_trials(trials, threads, [=](long first, long last, int worker) {
         normal_numbers<Noise> normal(seed + std::uint64_t(worker));
         for (long t = first; t < last; ++t) {
             const auto p = [&](int i) { return parameters[i * trials + t]; };
             const double resonance = std::sqrt(p(2) * (p(0) + p(1)) / (p(0) * p(1)));
-            const servo s{1.0 / p(0), 1.0 / p(1), p(2), 2.0 * p(3) * p(2) / resonance, 1.0 / p(4), p(5), p(6),
-                          (p(7) - 1.0) * p(6), p(8), p(9), p(10), p(11), p(12)};
+            const servo s{1.0 / p(0), 1.0 / p(1), p(2),  2.0 * p(3) * p(2) / resonance,
+                          1.0 / p(4), p(5),       p(6),  (p(7) - 1.0) * p(6),
+                          p(8),       p(9),       p(10), p(11),
+                          p(12)};
             double m[4];
             simulate_trial(s, normal, reference, samples, m);
             for (int i = 0; i < 4; ++i) measures[i * trials + t] = m[i];

@@ -13,12 +13,10 @@ constexpr int lanes = 4;
 #else
 constexpr int lanes = 2;
 #endif
-constexpr int chains = lanes == 8 ? 24 : 12;  // of the 32 or 16 registers
+constexpr int chains = lanes == 8 ? 24 : 12; // of the 32 or 16 registers
 typedef double vector __attribute__((vector_size(8 * lanes)));
 
-double seconds() {
-    return std::chrono::duration<double>(std::chrono::steady_clock::now().time_since_epoch()).count();
-}
+double seconds() { return std::chrono::duration<double>(std::chrono::steady_clock::now().time_since_epoch()).count(); }
 
 // Keeps the compiler from seeing through the chains without costing an instruction.
 inline void keep(vector& v) {

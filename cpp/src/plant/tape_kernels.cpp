@@ -46,8 +46,8 @@ template <operation Op, class Pack> WINDAGE_INLINE Pack apply(Pack a, Pack b, Pa
     if constexpr (Op == operation::select) return select(a != 0.0, b, c);
 }
 
-// Functions wait for themselves: their chain of operations is longer than what the processor looks ahead. Two packs side
-// by side fill the gaps (measured: a tenth faster); plain arithmetic waits for memory and gains nothing.
+// Functions wait for themselves: their chain of operations is longer than what the processor looks ahead. Two packs
+// side by side fill the gaps (measured: a tenth faster); plain arithmetic waits for memory and gains nothing.
 constexpr bool is_function(operation op) {
     switch (op) {
     case operation::sin:

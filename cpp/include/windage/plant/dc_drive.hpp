@@ -23,7 +23,8 @@ public:
         : resistance_(n[0]), inverse_inductance_(n[1]), constant_(n[2]), inverse_inertia_(n[3]), viscous_(n[4]),
           coulomb_(n[5]), inverse_smoothing_(n[6]) {}
 
-    WINDAGE_INLINE void operator()(const std::array<wide, 3>& x, std::array<wide, 3>& dx, wide voltage, const wide* w) const {
+    WINDAGE_INLINE void operator()(const std::array<wide, 3>& x, std::array<wide, 3>& dx, wide voltage,
+                                   const wide* w) const {
         const wide speed = x[1], current = x[2];
         const wide friction = viscous_ * speed + coulomb_ * hyperbolic_tangent(speed * inverse_smoothing_);
         dx[0] = speed;

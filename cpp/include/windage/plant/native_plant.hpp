@@ -1,5 +1,5 @@
-// A stock plant written in C++: one pass over the block for each stage of the integrator. A whole step for one pack at a
-// time would keep the state in registers but wait for one slow function after the other, while those of neighbouring
+// A stock plant written in C++: one pass over the block for each stage of the integrator. A whole step for one pack at
+// a time would keep the state in registers but wait for one slow function after the other, while those of neighbouring
 // packs overlap (measured: 1.4 times the time).
 //
 // `Drive` names the plant: `states`, `numbers` and `disturbances` are its counts, and

@@ -57,7 +57,8 @@ private:
         for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP {
             const auto is_before = wide(j) < wide::load(first_ + i);
             select(is_before, wide::load(length_before_ + i), wide::load(length_after_ + i)).store(mixed_length_ + i);
-            select(is_before, wide::load(interval.before + i), wide::load(interval.after + i)).store(mixed_command_ + i);
+            select(is_before, wide::load(interval.before + i), wide::load(interval.after + i))
+                .store(mixed_command_ + i);
         });
         length_ = mixed_length_;
         command_ = mixed_command_;

@@ -25,7 +25,8 @@ public:
         : inverse_motor_(n[0]), inverse_load_(n[1]), stiffness_(n[2]), damping_(n[3]), coulomb_(n[4]), breakaway_(n[5]),
           inverse_stribeck_(n[6]), inverse_smoothing_(n[7]), viscous_(n[8]) {}
 
-    WINDAGE_INLINE void operator()(const std::array<wide, 4>& x, std::array<wide, 4>& dx, wide torque, const wide* w) const {
+    WINDAGE_INLINE void operator()(const std::array<wide, 4>& x, std::array<wide, 4>& dx, wide torque,
+                                   const wide* w) const {
         const wide shaft = stiffness_ * (x[0] - x[2]) + damping_ * (x[1] - x[3]);
         const wide ratio = x[3] * inverse_stribeck_;
         const wide level = coulomb_ + breakaway_ * exponential(-(ratio * ratio));
