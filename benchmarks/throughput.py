@@ -83,18 +83,30 @@ def one_core(seconds: float, repeats: int) -> dict[str, float]:
 
 
 def threads_line(campaign: Any, trials: int, threads: int, repeats: int) -> str:
-    """Return how well several threads are used: time of one with its share over time of all with all."""
+    """Return how well several threads are used: time of one with its share over time of all with all.
+
+    Cores that are all busy may each be slower (they share caches, power and, on a hired machine, neighbours); the share
+    of the time in which they were busy tells what the distribution of the work loses.
+    """
+    busy = []
+
+    def on_all() -> None:
+        wall, processor = time.perf_counter(), time.process_time()
+        campaign.run(0, threads * trials, threads)
+        busy.append((time.process_time() - processor) / (threads * (time.perf_counter() - wall)))
+
     taken = alternately(
         {
             "one": partial(campaign.run, 0, trials, 1),
-            "all": partial(campaign.run, 0, threads * trials, threads),
+            "all": on_all,
         },
         repeats,
     )
     efficiency = sorted(a / b for a, b in zip(taken["one"], taken["all"], strict=True))
     return (
         f"  {threads} threads: efficiency {100 * statistics.median(efficiency):.1f} % "
-        f"({100 * efficiency[0]:.1f} to {100 * efficiency[-1]:.1f} %)"
+        f"({100 * efficiency[0]:.1f} to {100 * efficiency[-1]:.1f} %), "
+        f"busy {100 * statistics.median(busy):.1f} % of the time"
     )
 
 
