@@ -15,11 +15,13 @@
 namespace windage {
 namespace {
 
+// Measured (benchmarks/README.md): a longer block starts fewer passes, until its signals leave the first-level cache.
 #ifdef WINDAGE_BLOCK
-constexpr std::size_t usual_block = WINDAGE_BLOCK;
+constexpr std::size_t block_of_few_signals = WINDAGE_BLOCK, block_of_many_signals = WINDAGE_BLOCK;
 #else
-constexpr std::size_t usual_block = 128;
+constexpr std::size_t block_of_few_signals = 192, block_of_many_signals = 128;
 #endif
+constexpr std::size_t few_signals = 48;
 
 std::size_t whole_packs(std::size_t trials) { return (trials + lanes - 1) / lanes * lanes; }
 
@@ -29,7 +31,7 @@ int threads_for(const run_options& options) {
 }
 
 // Few trials make small blocks, so that every thread has some; the digits do not depend on it.
-std::size_t block_size_for(const run_options& options, std::uint64_t count, int threads) {
+std::size_t block_size_for(const run_options& options, std::uint64_t count, int threads, std::size_t usual_block) {
     if (options.block_size > 0) return whole_packs(options.block_size);
     const std::uint64_t share = (count + threads - 1) / threads;
     return std::min(usual_block, whole_packs(std::size_t(std::min<std::uint64_t>(share, usual_block))));
@@ -40,7 +42,8 @@ std::size_t block_size_for(const run_options& options, std::uint64_t count, int 
 campaign::campaign(study_description study)
     : study_(std::move(study)), signals_(signal_names(study_.loop)),
       source_(std::make_unique<parameter_source>(study_)) {
-    block_runner(study_, *source_, lanes); // builds every stage once, so that a bad description is refused here
+    const block_runner probe(study_, *source_, lanes); // builds every stage, so that a bad description is refused here
+    usual_block_ = probe.signals() <= few_signals ? block_of_few_signals : block_of_many_signals;
 }
 
 campaign::~campaign() = default;
@@ -60,7 +63,7 @@ std::uint64_t campaign::run(std::uint64_t first, std::uint64_t count, const resu
     if (count == 0) return 0;
     const int threads = threads_for(options);
     const bool one_by_one = study_.loop.integrator == integrator_kind::reference; // its steps follow one trial
-    const std::size_t block_size = one_by_one ? lanes : block_size_for(options, count, threads);
+    const std::size_t block_size = one_by_one ? lanes : block_size_for(options, count, threads, usual_block_);
     const std::size_t trials_per_block = one_by_one ? 1 : block_size;
     const std::uint64_t blocks = (count + trials_per_block - 1) / trials_per_block;
     work_queue queue(blocks, options.progress);

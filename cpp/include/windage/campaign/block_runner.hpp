@@ -24,6 +24,8 @@ public:
     recording replay(std::uint64_t trial, const std::vector<std::string>& names);
 
     std::size_t block_size() const { return arena_.block_size(); }
+    /// Signals of a block, a measure of the memory that a sample touches.
+    std::size_t signals() const { return arena_.signals(); }
 
 private:
     class reference_targets;

@@ -62,6 +62,7 @@ private:
     study_description study_;
     std::vector<std::string> signals_;
     std::unique_ptr<class parameter_source> source_;
+    std::size_t usual_block_ = 0; // trials
 };
 
 /// One measure over a recorded signal, by the code that measures trials. `target` is where a response should end.

@@ -23,11 +23,16 @@ public:
     explicit signal_arena(std::size_t block_size) : block_size_(block_size) {}
 
     std::size_t block_size() const { return block_size_; }
+    /// Signals taken so far.
+    std::size_t signals() const { return signals_; }
 
     /// One signal, set to zero.
     signal take() { return take(1); }
     /// `count` signals next to each other, set to zero.
-    signal take(std::size_t count) { return take_values(count * block_size_); }
+    signal take(std::size_t count) {
+        signals_ += count;
+        return take_values(count * block_size_);
+    }
     /// Room for `count` packs, set to zero.
     double* take_packs(std::size_t count) { return take_values(count * lanes); }
 
@@ -52,7 +57,7 @@ private:
         next_ = chunks_.back().get();
     }
 
-    std::size_t block_size_;
+    std::size_t block_size_, signals_ = 0;
     std::vector<std::unique_ptr<double[], release>> chunks_;
     double* next_ = nullptr;
     std::size_t left_ = 0;
