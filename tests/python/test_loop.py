@@ -385,3 +385,34 @@ def test_trials_of_another_tuning_meet_the_same_units() -> None:
     a, b = study.run(10, progress=False), slower.run(10, progress=False)
     assert all(np.array_equal(a.parameters[name], b.parameters[name]) for name in a.parameters)
     assert np.array_equal(study.replay(4)["wind"], slower.replay(4)["wind"])
+
+
+@pytest.mark.parametrize("load", [0.3, wd.Step(0.3, at=0.4)], ids=["constant", "step"])
+def test_a_drawn_sample_period_agrees_with_a_fixed_one(load: Any) -> None:
+    def study(period: Any) -> wd.Study:
+        plant = wd.Plant(
+            states={"x": 0.0, "v": 0.0},
+            equations={"x": "v", "v": "2*u - v + w"},
+            input="u",
+            output="x",
+            disturbances=["w"],
+        )
+        loop = wd.Loop(
+            plant=plant,
+            controller=wd.ErrorADRC(order=2, controller_bandwidth=4.0, observer_bandwidth=25.0, b0=2.0),
+            sample_period=period,
+            duration=1.0,
+            reference=wd.Step(1.0),
+            disturbances={"w": load},
+            steps_per_sample=2,
+        )
+        return wd.Study(loop, measures=[wd.peak("error", after=0.5), wd.final("output")], seed=1)
+
+    # Only nearly: intervals of a drawn period are split where the delay ends, which takes one step more.
+    drawn = study(wd.choice([0.01, 0.02], [0.5, 0.5])).run(60, progress=False)
+    (periods,) = drawn.parameters.values()
+    for period in (0.01, 0.02):
+        fixed = study(period).run(1, progress=False)
+        assert (periods == period).any()
+        for name, values in drawn.measures.items():
+            np.testing.assert_allclose(values[periods == period], fixed.measures[name][0], rtol=1e-8)

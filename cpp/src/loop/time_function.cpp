@@ -50,7 +50,7 @@ void time_function::sample(const sample_clock& clock, signal* out, int derivativ
 
 bool time_function::holds(const sample_clock& clock) const {
     constexpr double a_little_more = 1.000001; // than a period: the end of the interval is asked for as well
-    return clock.is_uniform() && clock.time()[0] + a_little_more * clock.period()[0] < holds_until_;
+    return is_constant() || (clock.is_uniform() && clock.time()[0] + a_little_more * clock.period()[0] < holds_until_);
 }
 
 // Time until which, from t on, value and derivatives stay as they are in every lane; t or less where they move.
