@@ -13,8 +13,9 @@ from rich.console import Console
 from rich.text import Text
 
 from ._drivers import FAILING, FEW_FAILURES
-from ._errors import DescriptionError, WindageError, shorten
+from ._errors import DescriptionError, WindageError
 from ._plots import HOW_TO_INSTALL, has_matplotlib
+from ._shown_text import shorten
 
 if TYPE_CHECKING:
     from ._outcome import Outcome

@@ -21,7 +21,8 @@ from ._equation_lowering import lower
 from ._equation_program import Instruction, Program, Tape
 from ._equation_reference import evaluate_reference
 from ._equation_text import Formula, parse
-from ._errors import EquationError, shorten, suggestion
+from ._errors import EquationError, suggestion
+from ._shown_text import LONGEST_NAME, shorten
 
 __all__ = [
     "Instruction",
@@ -54,6 +55,8 @@ def check_name(name: object, field: str) -> str:
     expected = "a name of letters (a to z, A to Z), digits and underscores that does not start with a digit"
     if not isinstance(name, str) or not re.fullmatch(r"[A-Za-z_][A-Za-z0-9_]*", name):
         raise EquationError(field, name, expected)
+    if len(name) > LONGEST_NAME:
+        raise EquationError(field, name, f"a name of at most {LONGEST_NAME} characters")
     meaning = ""
     if name in FUNCTIONS:
         meaning = "a function of the equation language"

@@ -4,6 +4,12 @@ from __future__ import annotations
 
 from collections.abc import Iterable
 
+from ._shown_text import one_line, shorten
+
+#: Longest piece of a message, and what is looked at to find a name that was meant.
+LONGEST_PIECE = 500
+LONGEST_GUESSED, MOST_GUESSES = 100, 1000
+
 
 class WindageError(Exception):
     """Root of every error that windage raises on purpose."""
@@ -16,12 +22,13 @@ class DescriptionError(WindageError, ValueError):
     """
 
     def __init__(self, field: str, found: object, expected: str, mend: str = "") -> None:
-        self.field = field
+        # Paths and hints quote names and keys as they were found.
+        self.field = one_line(field, LONGEST_PIECE)
         self.found = found
-        self.expected = expected
-        self.mend = mend
-        text = f"{field}: found {shorten(found)}; expected {expected}."
-        super().__init__(f"{text} {mend}".rstrip())
+        self.expected = one_line(expected, LONGEST_PIECE)
+        self.mend = one_line(mend, LONGEST_PIECE)
+        text = f"{self.field}: found {shorten(found)}; expected {self.expected}."
+        super().__init__(f"{text} {self.mend}".rstrip())
 
 
 class EquationError(DescriptionError):
@@ -36,29 +43,14 @@ class EngineError(WindageError, RuntimeError):
     """The engine cannot do what was asked (for example an instruction set that this machine lacks)."""
 
 
-def shorten(value: object, limit: int = 80) -> str:
-    """Show a value in at most `limit` characters, however large it is.
-
-    Parameters
-    ----------
-    value : object
-        Anything; text longer than `limit` is cut before it is quoted.
-    limit : int
-        Largest number of characters shown.
-    """
-    if isinstance(value, str) and len(value) > limit:
-        return f"{value[: limit - 20]!r}... ({len(value)} characters)"
-    text = repr(value)
-    return text if len(text) <= limit else f"{text[: limit - 3]}..."
-
-
 def suggestion(name: str, known: Iterable[str]) -> str:
     """Return `Did you mean 'x'?` for the closest known name, or a list of the known names."""
     known = sorted(known)
     import difflib  # costs import time and is seldom needed
 
-    close = difflib.get_close_matches(name, known, n=1)
+    is_short = len(name) <= LONGEST_GUESSED
+    close = difflib.get_close_matches(name, known[:MOST_GUESSES], n=1) if is_short else []
     if close:
         return f"Did you mean {close[0]!r}?"
-    shown = ", ".join(known[:12]) + (", ..." if len(known) > 12 else "")
+    shown = ", ".join(word[:40] for word in known[:12]) + (", ..." if len(known) > 12 else "")
     return f"Known: {shown}." if known else ""

@@ -21,9 +21,10 @@ from ._numbers import (
     Rule,
     Spread,
     check_order,
+    checked_label,
     checked_number,
+    checked_title,
     is_plain_number,
-    is_text,
     takes,
 )
 
@@ -76,10 +77,14 @@ class Measure(Description):
     tolerance: Number | None = None
 
     def __post_init__(self) -> None:
-        if not is_text(self.signal):
-            raise DescriptionError(f"{self.kind}.signal", self.signal, "the name of a signal")
+        if checked_label(self.kind, "measure.kind") is None:
+            raise DescriptionError("measure.kind", self.kind, "the name of a function that makes a measure")
+        object.__setattr__(self, "signal", checked_title(self.signal, f"{self.kind}.signal"))
         for name, rule in (("after", NON_NEGATIVE), ("before", _BEFORE)):
             object.__setattr__(self, name, checked_number(getattr(self, name), f"{self.kind}.{name}", rule))
+        for name in ("low", "high", "band", "tolerance"):
+            if getattr(self, name) is not None:
+                object.__setattr__(self, name, checked_number(getattr(self, name), f"{self.kind}.{name}", ANY))
         check_order(self.after, self.before, f"{self.kind}.before")
 
     @property
@@ -188,8 +193,8 @@ class Requirement(Description):
             if getattr(self, side) is not None:
                 checked = checked_number(getattr(self, side), f"requirement.{side}", ANY)
                 object.__setattr__(self, side, checked)
-        if self.name is not None and not is_text(self.name):
-            raise DescriptionError("requirement.name", self.name, "a name written as text")
+        if self.name is not None:
+            object.__setattr__(self, "name", checked_title(self.name, "requirement.name"))
 
     @property
     def limit(self) -> Number:

@@ -16,7 +16,8 @@ from dataclasses import dataclass
 from typing import Any
 
 from ._descriptions import Description
-from ._errors import DescriptionError, shorten, suggestion
+from ._errors import DescriptionError, suggestion
+from ._shown_text import LONGEST_NAME, hidden_character, shorten
 
 #: Names of drawn parameters, and of anything else that becomes part of a path.
 NAME_EXPECTED = "a name of letters (a to z, A to Z), digits and underscores that does not start with a digit"
@@ -239,6 +240,31 @@ def checked_label(value: object, place: str) -> str | None:
         return None
     if not isinstance(value, str) or not value.isascii() or not value.isidentifier():
         raise DescriptionError(place, value, NAME_EXPECTED)
+    return checked_length(value, place)
+
+
+def checked_length(name: str, place: str) -> str:
+    """Return a name that is not too long."""
+    if len(name) > LONGEST_NAME:
+        raise DescriptionError(place, name, f"a name of at most {LONGEST_NAME} characters")
+    return name
+
+
+def checked_title(value: object, place: str) -> str:
+    """Return a name in free words: one line whose every character shows as itself.
+
+    No character of it may move the cursor of a terminal or change the direction of writing, and blanks come
+    singly and inside, so that no name can pass for a line of a report.
+    """
+    if not isinstance(value, str) or not value.strip():
+        raise DescriptionError(place, value, "a name written as text")
+    value = str(checked_length(value, place))
+    hidden = hidden_character(value)
+    if hidden is not None:
+        mend = f"Leave {hidden!a} out."
+        raise DescriptionError(place, value, "a name in one line of characters that can be seen", mend)
+    if " ".join(value.split(" ")) != " ".join(value.split()):
+        raise DescriptionError(place, value, "single blanks between the words of a name, and none at its ends")
     return value
 
 

@@ -61,9 +61,9 @@ def checked_table(value: object) -> FrozenMapping[tuple[float, ...]] | None:
         raise DescriptionError("study.table", value, "a mapping from column names to values")
     columns: dict[str, tuple[float, ...]] = {}
     for name, rows in value.items():
-        place = f"study.table.{name}"
         if checked_label(name, "study.table") is None:
             raise DescriptionError("study.table", name, "column names written as text")
+        place = f"study.table.{name}"
         items = checked_sequence(rows, place, "a list of numbers")
         if not 1 <= len(items) <= MOST_ROWS:
             raise DescriptionError(place, f"{len(items)} rows", f"1 to {MOST_ROWS} rows")

@@ -53,12 +53,13 @@ def load(path: str | os.PathLike[str]) -> Study:
         If the file is too large, is not UTF-8 or not TOML, has unknown or missing keys, or describes what is
         not allowed; the message names the dotted path.
     """
-    file = Path(path)
     try:
-        with file.open("rb") as stream:
+        with Path(path).open("rb") as stream:
             content = stream.read(LARGEST_FILE + 1)
     except OSError as error:
         raise StudyFileError("study file", str(path), "a file that can be read", f"{error.strerror}.") from error
+    except (TypeError, ValueError) as error:  # no path at all, or one that no system can have
+        raise StudyFileError("study file", path, "the path of a file", f"{error}.") from None
     if len(content) > LARGEST_FILE:
         raise StudyFileError("study file", f"more than {LARGEST_FILE} bytes", f"at most {LARGEST_FILE} bytes")
     try:

@@ -118,7 +118,8 @@ EVERY_STUDY = [
     *(study_of(disturbance=disturbance) for disturbance in EVERY_DISTURBANCE),
     study_of(measures=EVERY_MEASURE, requirements=[], seed=2**64 - 1),
     study_of(requirements=[m <= 1.0 for m in EVERY_MEASURE]),
-    study_of(requirements=[(wd.peak("error") >= SPREAD).named('a "quoted" \\ name\twith\nlines \x7f')]),
+    study_of(requirements=[(wd.peak("error") >= SPREAD).named('a "quoted" \\ name, größer')]),
+    study_of(signals={"power": "error *\r\n\tcommand"}),
     study_of(
         controller=CONTROLLER,
         sample_period=wd.uniform(0.01, 0.02),
