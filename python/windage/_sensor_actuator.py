@@ -76,18 +76,21 @@ class Actuator(Description):
     Parameters
     ----------
     limits : pair of float or spread, optional
-        Lowest and highest command.
+        Lowest and highest command. A command that reaches a limit is exactly that limit, whatever the
+        resolution, and none is ever beyond it.
     rate_limit : float or spread, optional
-        Largest change of the command in a second; 0 or None for none.
+        Largest change of the command in a second, before it is rounded; 0 or None for none. Rounding adds at
+        most one resolution: over n samples the command changes by no more than n * rate_limit * sample_period
+        + resolution, and slow changes add up until the next step.
     resolution : float or spread
-        Step to whose multiples the command is rounded; 0 for none.
+        Step to whose multiples the command is rounded between its limits; 0 for none.
     delay : float or spread, s
         Time from the sample instant until the command acts, computation included; any number, not only
         multiples of the sample period.
     time_constant : float or spread, s
         Of a first-order lag after the delay; 0 for none.
     initial : float or spread
-        Command before the first sample.
+        Command before the first sample; in a trial whose drawn limits do not hold it, the nearest limit.
     """
 
     limits: Sequence[Number] | None = None

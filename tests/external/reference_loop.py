@@ -238,7 +238,10 @@ class ReferenceLoop:
     def _limit(self, wanted: float, before: float) -> float:
         value = min(max(wanted, self.limits[0]), self.limits[1])
         change = self.rate_limit * self.period
-        return _rounded(min(max(value, before - change), before + change), self.resolution)
+        value = min(max(value, before - change), before + change)
+        if value in self.limits:
+            return value
+        return min(max(_rounded(value, self.resolution), self.limits[0]), self.limits[1])
 
     def _acting(self, arrivals: Sequence[tuple[float, float]], t: float) -> float:
         """Return the command that reached the plant last; within 1e-9 of a period counts as now."""

@@ -49,7 +49,7 @@ int linear_adrc::reference_derivatives() const {
     return d_.form == adrc_form::output && d_.reference_derivatives ? d_.order : 0;
 }
 
-void linear_adrc::begin(const trial_block& block, const lane_value& initial_command) {
+void linear_adrc::begin(const trial_block& block, const held_value& initial_command) {
     for (lane_value* n : {&controller_bandwidth_, &observer_bandwidth_, &b0_, &controller_factor_, &observer_factor_})
         n->begin(block);
     for (lane_value& n : given_controller_gains_) n.begin(block);

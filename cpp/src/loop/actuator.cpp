@@ -13,8 +13,8 @@ command_limiter::command_limiter(const actuator_description& d, const sample_clo
                                  signal_arena& arena)
     : period_(clock.period()), low_(d.low, arena), high_(d.high, arena), rate_limit_(d.rate_limit, arena),
       resolution_(d.resolution, arena), initial_(d.initial, arena), has_limits_(d.has_limits),
-      is_transparent_(changes_nothing(d)), wanted_(wanted), largest_change_(are_same(period_, rate_limit_), arena),
-      unrounded_(arena.take()), command_(arena.take()), size_(arena.block_size()) {}
+      is_transparent_(changes_nothing(d)), wanted_(wanted), start_(are_same(initial_, low_, high_), arena),
+      largest_change_(are_same(period_, rate_limit_), arena), unrounded_(arena.take()), command_(arena.take()), size_(arena.block_size()) {}
 
 void command_limiter::begin(const trial_block& block) {
     for (lane_value* n : {&low_, &high_, &rate_limit_, &resolution_, &initial_}) n->begin(block);
@@ -23,8 +23,12 @@ void command_limiter::begin(const trial_block& block) {
         const wide rate = rate_limit_.pack_at(i);
         return select(rate > 0.0, rate * period_.pack_at(i), unlimited);
     });
-    initial_.copy_to(unrounded_, size_);
-    initial_.copy_to(command_, size_);
+    start_.fill([&](std::size_t i) {
+        const wide initial = initial_.pack_at(i);
+        return has_limits_ ? clip(initial, low_.pack_at(i), high_.pack_at(i)) : initial;
+    });
+    start_.copy_to(unrounded_, size_);
+    start_.copy_to(command_, size_);
 }
 
 void command_limiter::sample() {
@@ -38,7 +42,7 @@ void command_limiter::sample() {
             u = clip(u, before - largest_change, before + largest_change);
             u.store(unrounded_ + i);
         }
-        if (rounds) u = quantise(u, resolution);
+        if (rounds) u = has_limits_ ? quantise_within(u, resolution, low, high) : quantise(u, resolution);
         u.store(command_ + i);
     };
     for_each_pack_with(size_, limit, low_, high_, largest_change_, resolution_);

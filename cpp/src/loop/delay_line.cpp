@@ -32,7 +32,7 @@ delay_line::delay_line(const loop_description& d, const held_value& sample_perio
       whole_(are_same(delay_, dead_time_, sample_period), arena), fraction_(whole_.is_same(), arena),
       chosen_before_(arena.take()), chosen_after_(arena.take()), chosen_acting_(arena.take()) {}
 
-void delay_line::begin(const trial_block& block, const lane_value& initial_command) {
+void delay_line::begin(const trial_block& block, const held_value& initial_command) {
     delay_.begin(block);
     dead_time_.begin(block);
     whole_.fill([&](std::size_t i) { return split_delay(i).whole; });

@@ -52,7 +52,7 @@ bool linear_plant::is_same() const {
     return same_numbers && are_same(lag_, timing_.period, timing_.fraction);
 }
 
-void linear_plant::begin(const trial_block& trials, const lane_value& initial_command) {
+void linear_plant::begin(const trial_block& trials, const held_value& initial_command) {
     lag_.begin(trials);
     for (lane_value& n : numbers_) n.begin(trials);
     for (int i = 0; i < states_; ++i) {

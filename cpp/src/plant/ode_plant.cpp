@@ -52,7 +52,7 @@ ode_plant::ode_plant(const plant_description& d, const integration_settings& set
     for (stage& s : stages_) s.disturbances.resize(w.count());
 }
 
-void ode_plant::begin(const trial_block& block, const lane_value& initial_command) {
+void ode_plant::begin(const trial_block& block, const held_value& initial_command) {
     for (std::size_t i = 0; i < initial_state_.size(); ++i) {
         initial_state_[i].begin(block);
         initial_state_[i].copy_to(x_[i], size_);

@@ -11,7 +11,7 @@ class controller {
 public:
     virtual ~controller() = default;
 
-    virtual void begin(const trial_block& block, const lane_value& initial_command) = 0;
+    virtual void begin(const trial_block& block, const held_value& initial_command) = 0;
 
     /// Sample k: `reference` holds r and its derivatives, `applied` the limited command of the sample before.
     virtual void sample(std::int64_t k, const signal* reference, constant_signal measured, constant_signal applied) = 0;

@@ -14,7 +14,7 @@ class linear_adrc : public controller {
 public:
     linear_adrc(const controller_description& d, const held_value& sample_period, signal_arena& arena);
 
-    void begin(const trial_block& block, const lane_value& initial_command) override;
+    void begin(const trial_block& block, const held_value& initial_command) override;
     void sample(std::int64_t k, const signal* reference, constant_signal measured, constant_signal applied) override;
     constant_signal output() const override { return output_; }
     int reference_derivatives() const override;

@@ -14,7 +14,7 @@ class delay_line {
 public:
     delay_line(const loop_description& d, const held_value& sample_period, signal_arena& arena);
 
-    void begin(const trial_block& block, const lane_value& initial_command);
+    void begin(const trial_block& block, const held_value& initial_command);
     void sample(std::int64_t k, constant_signal command);
 
     /// The interval is split: the command changes phi after the sample instant.

@@ -16,7 +16,7 @@ public:
     linear_plant(const plant_description& d, number lag, const plant_timing& timing, const plant_disturbances& w,
                  signal_arena& arena);
 
-    void begin(const trial_block& block, const lane_value& initial_command) override;
+    void begin(const trial_block& block, const held_value& initial_command) override;
     void evaluate_output(constant_signal time, constant_signal input) override;
     void advance(const sample_interval& interval) override;
     constant_signal output() const override { return output_is_first_state_ ? x_ : output_; }

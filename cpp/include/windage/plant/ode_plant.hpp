@@ -29,7 +29,7 @@ public:
     ode_plant(const plant_description& d, const integration_settings& settings, const plant_timing& timing,
               const plant_disturbances& w, bool reads_time, signal_arena& arena);
 
-    void begin(const trial_block& block, const lane_value& initial_command) override;
+    void begin(const trial_block& block, const held_value& initial_command) override;
     void advance(const sample_interval& interval) override;
     constant_signal state(int i) const override { return x_[i]; }
     int states() const override { return states_; }

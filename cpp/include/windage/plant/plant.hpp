@@ -41,7 +41,7 @@ struct sample_interval {
 class plant {
 public:
     virtual ~plant() = default;
-    virtual void begin(const trial_block& block, const lane_value& initial_command) = 0;
+    virtual void begin(const trial_block& block, const held_value& initial_command) = 0;
     /// Computes the output; `time` is the sample instant, `input` the input that acts at it.
     virtual void evaluate_output(constant_signal time, constant_signal input) = 0;
     virtual void advance(const sample_interval& interval) = 0;
