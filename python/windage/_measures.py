@@ -2,7 +2,8 @@
 
 A measure is one number computed from a trial: a reducer over a signal in a window. Compared with a limit
 (`measure <= limit`, `measure >= limit`) it becomes a requirement. Windows are in seconds and include both
-ends.
+ends: a sample at the very instant of a step shows the error after the step, and is the first of a window that
+starts there as well as the last of one that ends there.
 """
 
 from __future__ import annotations
@@ -294,8 +295,9 @@ def time_outside(signal: str, low: Any, high: Any, after: Any = 0.0, before: Any
 def overshoot(signal: str = "output", after: Any = 0.0, before: Any = math.inf) -> Measure:
     """Measure the largest excess over the final reference, as a fraction of the change.
 
-    The change goes from the signal at the window's start to the reference at its end (IEC 60050-351:2013,
-    351-45-38). Without a change the overshoot is infinite.
+    The change goes from the signal at the window's first sample to the reference at its last one (IEC
+    60050-351:2013, 351-45-38). Where the window ends at the instant at which the reference jumps, it is the
+    reference before the jump. Without a change the overshoot is infinite.
     """
     return Measure("overshoot", signal, after, before)
 

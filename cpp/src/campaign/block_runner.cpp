@@ -8,8 +8,8 @@ namespace windage {
 class block_runner::reference_targets final : public target_source {
 public:
     explicit reference_targets(const loop& l) : loop_(l) {}
-    void target(const held_value& time, signal out) const override {
-        loop_.reference().evaluate_at_own_times(time, out);
+    void target(const window_end& end, signal out) const override {
+        loop_.reference().evaluate_at_own_times(end.last_sample, end.ends_there, out);
     }
 
 private:

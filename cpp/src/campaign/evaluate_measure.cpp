@@ -9,7 +9,7 @@ namespace {
 class constant_target final : public target_source {
 public:
     constant_target(double value, std::size_t size) : value_(value), size_(size) {}
-    void target(const held_value&, signal out) const override {
+    void target(const window_end&, signal out) const override {
         for (std::size_t i = 0; i < size_; ++i) out[i] = value_;
     }
 

@@ -119,10 +119,12 @@ void time_function::write_where_new(wide value, signal out) const {
     for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP { value.store(out + i); });
 }
 
-void time_function::evaluate_at_own_times(const held_value& time, signal out) const {
+void time_function::evaluate_at_own_times(const held_value& time, const held_value& before_jump, signal out) const {
     for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP {
         wide value;
-        evaluate_pack(i, instant_at(time.pack_at(i), i, jump_side::after), &value, 0);
+        const instant before = instant_at(time.pack_at(i), i, jump_side::before),
+                      after = instant_at(time.pack_at(i), i, jump_side::after);
+        evaluate_pack(i, {after.t, select(before_jump.pack_at(i) != 0.0, before.sided, after.sided)}, &value, 0);
         value.store(out + i);
     });
 }

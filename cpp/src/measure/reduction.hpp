@@ -20,8 +20,8 @@ public:
     void begin(const trial_block& block, const target_source& targets) override {
         window_.begin(block);
         samples_ = 0;
-        if constexpr (requires { reducer_.begin_block(block, window_.stop(), targets); })
-            reducer_.begin_block(block, window_.stop(), targets);
+        if constexpr (requires { reducer_.begin_block(block, window_.end(), targets); })
+            reducer_.begin_block(block, window_.end(), targets);
         for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP {
             wide v[Reducer::values];
             reducer_.begin(v);

@@ -15,7 +15,7 @@ public:
     band_time(const measure_description& d, bool touching_counts, signal_arena& arena)
         : low_(d.a, arena), high_(d.b, arena), touching_counts_(touching_counts) {}
 
-    void begin_block(const trial_block& block, const held_value&, const target_source&) {
+    void begin_block(const trial_block& block, const window_end&, const target_source&) {
         low_.begin(block);
         high_.begin(block);
     }

@@ -8,11 +8,19 @@
 
 namespace windage {
 
+/// Where a window ends: at the time of its last sample, or (0 in `ends_there`) somewhere between that and the next one.
+struct window_end {
+    const held_value& last_sample;
+    const held_value& ends_there;
+};
+
 /// The value that the output should end at, for the measures of a response.
 class target_source {
 public:
     virtual ~target_source() = default;
-    virtual void target(const held_value& time, signal out) const = 0;
+    /// The reference that holds inside the window at its last sample. Where the window ends at that very sample and the
+    /// reference jumps there, it is the one before the jump: the one after it holds for no time in the window.
+    virtual void target(const window_end& end, signal out) const = 0;
 };
 
 /// What a measure needs to know of the timing of a trial.

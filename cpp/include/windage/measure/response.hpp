@@ -1,6 +1,6 @@
 // Measures of a response, after IEC 60050-351:2013: overshoot (351-45-38), step response time and rise time
-// (351-45-36), settling time (351-45-37). The change is taken from the output at the window's start to the reference at
-// its end; crossings are interpolated between samples.
+// (351-45-36), settling time (351-45-37). The change is taken from the output at the first sample of the window to the
+// reference at its last one (target_source); crossings are interpolated between samples.
 #pragma once
 
 #include <windage/measure/measure.hpp>
@@ -12,8 +12,8 @@ namespace windage {
 class response_span {
 public:
     explicit response_span(signal_arena& arena) : final_(arena.take()) {}
-    void begin_block(const held_value& window_stop, const target_source& targets) {
-        targets.target(window_stop, final_);
+    void begin_block(const window_end& end, const target_source& targets) {
+        targets.target(end, final_);
     }
     wide final_value(std::size_t i) const { return wide::load(final_ + i); }
 
@@ -29,8 +29,8 @@ public:
 
     excursion(bool below_initial, signal_arena& arena) : span_(arena), below_initial_(below_initial) {}
 
-    void begin_block(const trial_block&, const held_value& stop, const target_source& targets) {
-        span_.begin_block(stop, targets);
+    void begin_block(const trial_block&, const window_end& end, const target_source& targets) {
+        span_.begin_block(end, targets);
     }
     static void begin(wide* v) { v[0] = v[1] = 0.0; }
     WINDAGE_INLINE void add(wide* v, const sample_point& at, std::size_t i) const {
@@ -58,8 +58,8 @@ public:
 
     rise_time(const measure_description& d, signal_arena& arena) : span_(arena), a_(d.a, arena), b_(d.b, arena) {}
 
-    void begin_block(const trial_block& block, const held_value& stop, const target_source& targets) {
-        span_.begin_block(stop, targets);
+    void begin_block(const trial_block& block, const window_end& end, const target_source& targets) {
+        span_.begin_block(end, targets);
         a_.begin(block);
         b_.begin(block);
     }
@@ -100,8 +100,8 @@ public:
     settling_time(const measure_description& d, bool relative, signal_arena& arena)
         : span_(arena), band_(d.a, arena), relative_(relative) {}
 
-    void begin_block(const trial_block& block, const held_value& stop, const target_source& targets) {
-        span_.begin_block(stop, targets);
+    void begin_block(const trial_block& block, const window_end& end, const target_source& targets) {
+        span_.begin_block(end, targets);
         band_.begin(block);
     }
     static void begin(wide* v) {
