@@ -14,7 +14,8 @@ command_limiter::command_limiter(const actuator_description& d, const sample_clo
     : period_(clock.period()), low_(d.low, arena), high_(d.high, arena), rate_limit_(d.rate_limit, arena),
       resolution_(d.resolution, arena), initial_(d.initial, arena), has_limits_(d.has_limits),
       is_transparent_(changes_nothing(d)), wanted_(wanted), start_(are_same(initial_, low_, high_), arena),
-      largest_change_(are_same(period_, rate_limit_), arena), unrounded_(arena.take()), command_(arena.take()), size_(arena.block_size()) {}
+      largest_change_(are_same(period_, rate_limit_), arena), unrounded_(arena.take()), command_(arena.take()),
+      size_(arena.block_size()) {}
 
 void command_limiter::begin(const trial_block& block) {
     for (lane_value* n : {&low_, &high_, &rate_limit_, &resolution_, &initial_}) n->begin(block);

@@ -28,7 +28,7 @@ private:
     bool has_limits_, is_transparent_;
     constant_signal wanted_;
     held_value start_, largest_change_; // before the first sample; in a sample
-    signal unrounded_;          // what the rate limit starts from: changes below half a resolution must add up
+    signal unrounded_;                  // what the rate limit starts from: changes below half a resolution must add up
     signal command_;
     std::size_t size_;
 };

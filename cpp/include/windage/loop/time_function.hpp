@@ -31,8 +31,8 @@ public:
 
     /// Value and `derivatives` time derivatives at `time`, into out[0 .. derivatives]. At a jump, `side` chooses.
     void evaluate(constant_signal time, signal* out, int derivatives, jump_side side = jump_side::after) const;
-    /// The value alone, at times that may differ from lane to lane even where those of `evaluate` do not. At a jump it is
-    /// the one before it where `before_jump` is not zero.
+    /// The value alone, at times that may differ from lane to lane even where those of `evaluate` do not. At a jump it
+    /// is the one before it where `before_jump` is not zero.
     void evaluate_at_own_times(const held_value& time, const held_value& before_jump, signal out) const;
 
     /// Never changes within a trial.

@@ -12,9 +12,7 @@ namespace windage {
 class response_span {
 public:
     explicit response_span(signal_arena& arena) : final_(arena.take()) {}
-    void begin_block(const window_end& end, const target_source& targets) {
-        targets.target(end, final_);
-    }
+    void begin_block(const window_end& end, const target_source& targets) { targets.target(end, final_); }
     wide final_value(std::size_t i) const { return wide::load(final_ + i); }
 
 private:
