@@ -19,14 +19,20 @@ namespace {
 
 using column = py::array_t<double, py::array::c_style>;
 
-py::tuple run(const campaign& c, std::uint64_t first, std::uint64_t count, int threads, std::size_t block_size,
+using trial_list = py::array_t<std::uint64_t, py::array::c_style>;
+
+void check_count(std::uint64_t count) {
+    if (count > (std::uint64_t(1) << 40)) throw std::invalid_argument("count: more trials than memory can hold");
+}
+
+py::tuple run(const campaign& c, const trial_choice& chosen, int threads, std::size_t block_size,
               const py::object& progress) {
     if (threads < 0) throw std::invalid_argument("threads: expected 0 or more");
-    if (count > (std::uint64_t(1) << 40)) throw std::invalid_argument("count: more trials than memory can hold");
-    const auto n = py::ssize_t(count);
+    check_count(chosen.count);
+    const auto n = py::ssize_t(chosen.count);
     column parameters({py::ssize_t(c.parameters()), n}), measures({py::ssize_t(c.measures()), n});
     py::array_t<std::uint8_t> status(n);
-    const result_columns to{parameters.mutable_data(), measures.mutable_data(), status.mutable_data(), count};
+    const result_columns to{parameters.mutable_data(), measures.mutable_data(), status.mutable_data(), chosen.count};
 
     bool interrupted = false;
     py::object failure = py::none();
@@ -48,13 +54,30 @@ py::tuple run(const campaign& c, std::uint64_t first, std::uint64_t count, int t
     std::uint64_t completed = 0;
     {
         const py::gil_scoped_release unlock; // workers touch no Python object
-        completed = c.run(first, count, to, options);
+        completed = c.run(chosen, to, options);
     }
     if (!failure.is_none()) {
         PyErr_SetObject(py::type::of(failure).ptr(), failure.ptr());
         throw py::error_already_set();
     }
     return py::make_tuple(parameters, measures, status, completed);
+}
+
+py::tuple run_range(const campaign& c, std::uint64_t first, std::uint64_t count, int threads, std::size_t block_size,
+                    const py::object& progress) {
+    return run(c, {first, count}, threads, block_size, progress);
+}
+
+py::tuple run_chosen(const campaign& c, const trial_list& trials, int threads, std::size_t block_size,
+                     const py::object& progress) {
+    return run(c, {0, std::uint64_t(trials.size()), trials.data()}, threads, block_size, progress);
+}
+
+column draw(const campaign& c, std::uint64_t first, std::uint64_t count) {
+    check_count(count);
+    column parameters({py::ssize_t(c.parameters()), py::ssize_t(count)});
+    c.draw({first, count}, {parameters.mutable_data(), nullptr, nullptr, count});
+    return parameters;
 }
 
 column replay(const campaign& c, std::uint64_t trial) {
@@ -104,9 +127,12 @@ void bind_campaign(py::module_& m) {
         .def("signal_names", &campaign::signals, "Names of the signals in the order of a replay.")
         .def_property_readonly("trials_available", &campaign::trials_available)
         .def(
-            "run", run, py::arg("first"), py::arg("count"), py::arg("threads") = 0, py::arg("block_size") = 0,
+            "run", run_range, py::arg("first"), py::arg("count"), py::arg("threads") = 0, py::arg("block_size") = 0,
             py::arg("progress") = py::none(),
             "Run trials; returns parameters (n, count), measures (n, count), status (count,) and the trials completed.")
+        .def("run_chosen", run_chosen, py::arg("trials"), py::arg("threads") = 0, py::arg("block_size") = 0,
+             py::arg("progress") = py::none(), "As `run`, for listed trials, in the order of the list.")
+        .def("draw", draw, py::arg("first"), py::arg("count"), "Parameters of trials that are not run: (n, count).")
         .def("replay", replay, py::arg("trial"), "Every signal of one trial at every sample: (signals, samples).");
     m.def("evaluate_measure", measure_recording, py::arg("measure"), py::arg("time"), py::arg("values"),
           py::arg("target"), py::arg("sample_period"), "One measure over a recorded signal.");

@@ -31,6 +31,7 @@ from windage._cautions import (
 )
 from windage._errors import DescriptionError, suggestion
 from windage._evidence import checked_count, checked_counts, checked_probability
+from windage._numerics import UNKNOWN, Numerics
 
 Decision = Literal["pass", "fail", "inconclusive"]
 
@@ -53,9 +54,11 @@ class Verdict:
     at_least, confidence : float
         The claim: at least this fraction of all trials passes, at this confidence.
     trials, failures, diverged : int
-        What was run; diverged trials are among the failures.
+        What was run, and what counts as failed for the claim: the trials that failed, diverged ones among them, and
+        those whose pass is not safe from numerical error (`numerics.hidden`).
     lower_bound, upper_bound : float
-        One-sided Clopper-Pearson bounds of the pass probability, each by itself at `confidence`.
+        One-sided Clopper-Pearson bounds of the pass probability, each by itself at `confidence`. The upper one
+        leaves out failures that are not safe from numerical error (`numerics.doubtful`).
     estimate : float
         Observed pass fraction; NaN without trials.
     further_trials : int or None
@@ -71,6 +74,8 @@ class Verdict:
         Number of claims judged together; 1 for a claim by itself.
     family_confidence : float
         Confidence that all claims of the family hold together; `confidence` for a claim by itself.
+    numerics : Numerics
+        What is known of the numerical error behind the counts.
     """
 
     decision: Decision
@@ -90,13 +95,14 @@ class Verdict:
     looks: int
     family: int
     family_confidence: float
+    numerics: Numerics = UNKNOWN
 
     @property
     def cautions(self) -> tuple[str, ...]:
         """Sentences on what the verdict does not cover; those that this outcome calls for come first."""
-        return situational_cautions(
-            self.failures, self.trials, self.confidence, self.looks, self.truncated
-        ) + standing_cautions(self.diverged, self.not_varied, self.looks)
+        situation = situational_cautions(self.failures, self.trials, self.confidence, self.looks, self.truncated)
+        numerical = (self.numerics.caution,) if self.numerics.caution else ()
+        return (*numerical, *situation, *standing_cautions(self.diverged, self.not_varied, self.looks))
 
     def __bool__(self) -> bool:
         return self.decision == "pass"
@@ -173,7 +179,8 @@ class VerdictTable:
             if verdict.trials and not verdict.failures
         ]
         first = self.verdicts[0]
-        situation = [repeated_looks(first.looks), truncated_spreads(first.truncated)]
+        numerical = list(dict.fromkeys(verdict.numerics.caution for verdict in self.verdicts))
+        situation = [*numerical, repeated_looks(first.looks), truncated_spreads(first.truncated)]
         standing = standing_cautions(first.diverged, first.not_varied, first.looks)
         return (*unfailed, *filter(None, situation), *standing)
 
@@ -185,6 +192,8 @@ class VerdictTable:
             ("  " + "  ".join(cell.ljust(w) for cell, w in zip(row, widths, strict=True))).rstrip()
             for row in (header, *body)
         ]
+        text = self.verdicts[0].numerics.text
+        lines += _labelled("Numerics", text) if text else []
         return _finished([*lines, *_cautions_as_text(self.cautions)])
 
     def _repr_html_(self) -> str:
@@ -221,6 +230,7 @@ def judge(
     spreads: Sequence[str] = (),
     truncated: Sequence[str] = (),
     looks: int = 1,
+    numerics: Numerics = UNKNOWN,
 ) -> Verdict:
     """Judge the claim that at least a stated fraction of all trials passes.
 
@@ -243,6 +253,8 @@ def judge(
     looks : int
         Times these trials have been judged, this one included; 1 or more. More than one voids the confidence,
         and the verdict says so.
+    numerics : Numerics
+        What is known of the numerical error behind the counts; by default nothing, and nothing is said of it.
 
     Returns
     -------
@@ -281,6 +293,7 @@ def judge(
         looks=checked_count("looks", looks, 1, MOST_LOOKS),
         family=1,
         family_confidence=confidence,
+        numerics=numerics,
     )
 
 
@@ -295,6 +308,7 @@ def judge_many(
     spreads: Sequence[str] = (),
     truncated: Sequence[str] = (),
     looks: int = 1,
+    numerics: Mapping[str, Numerics] | None = None,
 ) -> VerdictTable:
     """Judge several requirements, each by itself, so that all verdicts hold together at one confidence.
 
@@ -310,6 +324,8 @@ def judge_many(
         Confidence that no verdict of the table is wrong, 0.5 up to but not including 1.
     not_varied, spreads, truncated, looks
         As for `judge`.
+    numerics : mapping of str to Numerics, optional
+        What is known of the numerical error behind the count of each requirement.
 
     Returns
     -------
@@ -355,6 +371,7 @@ def judge_many(
                 looks=looks,
                 family=len(failures),
                 family_confidence=confidence,
+                numerics=(numerics or {}).get(requirement, UNKNOWN),
                 **names,
             )
         )
@@ -375,24 +392,29 @@ def _judged(
     looks: int,
     family: int,
     family_confidence: float,
+    numerics: Numerics,
 ) -> Verdict:
-    """Decide on checked arguments."""
-    lower = _statistics.clopper_pearson_lower(failures, trials, confidence)
-    upper = _statistics.clopper_pearson_upper(failures, trials, confidence)
+    """Decide on checked arguments: against numerical error on either side."""
+    most = failures + checked_count("numerics.hidden", numerics.hidden, 0, trials - failures)
+    fewest = failures - checked_count("numerics.doubtful", numerics.doubtful, 0, failures)
+    lower = _statistics.clopper_pearson_lower(most, trials, confidence)
+    upper = _statistics.clopper_pearson_upper(fewest, trials, confidence)
     decision: Decision = "inconclusive"
-    if _statistics.claim_demonstrated(failures, trials, at_least, confidence):
+    if numerics.is_open:
+        pass
+    elif _statistics.claim_demonstrated(most, trials, at_least, confidence):
         decision = "pass"
         # The decision compares tail probabilities. Where the bound equals the limit its last digit may fall
         # below it; reported is what was decided.
         lower = max(lower, at_least)
-    elif _statistics.claim_refuted(failures, trials, at_least, confidence):
+    elif _statistics.claim_refuted(fewest, trials, at_least, confidence):
         decision = "fail"
     return Verdict(
         decision=decision,
         at_least=at_least,
         confidence=confidence,
         trials=trials,
-        failures=failures,
+        failures=most,
         diverged=diverged,
         lower_bound=lower,
         upper_bound=upper,
@@ -405,6 +427,7 @@ def _judged(
         looks=looks,
         family=family,
         family_confidence=family_confidence,
+        numerics=numerics,
     )
 
 
@@ -460,6 +483,8 @@ def _rows(verdict: Verdict) -> list[tuple[str, str]]:
         together = f"{grouped(verdict.family)} claims hold together at {percent(verdict.family_confidence)}"
         rows.append(("Correction", f"Bonferroni: {together}"))
     rows.append(("Observed", _observed(verdict)))
+    if verdict.numerics.text:
+        rows.append(("Numerics", verdict.numerics.text))
     if verdict.spreads:
         rows.append(("Spreads", listed(verdict.spreads)))
     if verdict.decision == "inconclusive":
@@ -480,7 +505,8 @@ def _observed(verdict: Verdict) -> str:
     run = trials_in_words(verdict.trials)
     if not verdict.trials:
         return run
-    failed = f"{grouped(verdict.failures)} of {run} failed, {grouped(verdict.diverged)} of them diverged"
+    seen = verdict.failures - verdict.numerics.hidden
+    failed = f"{grouped(seen)} of {run} failed, {grouped(verdict.diverged)} of them diverged"
     return f"{failed}; {percent_near(verdict.estimate)} passed"
 
 
@@ -488,6 +514,8 @@ def _to_decide(verdict: Verdict) -> str:
     # With several looks the cautions carry this sentence already.
     warning = "" if verdict.looks > 1 else f" {REPEATED_LOOKS}"
     further = verdict.further_trials
+    if verdict.numerics.is_open or (further == 0 and (verdict.numerics.hidden or verdict.numerics.doubtful)):
+        return f"the numerical error has to be known better; see below.{warning}"
     if further is None:
         return f"the observed rate is too near the limit for any practicable number of trials.{warning}"
     ending = "a pass" if not verdict.failures or verdict.estimate >= verdict.at_least else "a fail"

@@ -26,8 +26,9 @@ block_runner::block_runner(const study_description& study, const parameter_sourc
 }
 
 // Lanes beyond the last trial repeat it: their results are not written.
-void block_runner::begin(std::uint64_t first, std::size_t count) {
-    for (std::size_t lane = 0; lane < block_.size; ++lane) trials_[lane] = first + std::min(lane, count - 1);
+void block_runner::begin(const trial_choice& chosen, std::uint64_t offset, std::size_t count) {
+    for (std::size_t lane = 0; lane < block_.size; ++lane)
+        trials_[lane] = chosen[offset + std::min<std::uint64_t>(lane, count - 1)];
     source_.draw(trials_.data(), block_.size, parameters_.data());
     loop_.begin(block_);
     const reference_targets targets(loop_);
@@ -35,9 +36,9 @@ void block_runner::begin(std::uint64_t first, std::size_t count) {
     std::fill_n(diverged_, block_.size, 0.0);
 }
 
-bool block_runner::run(std::uint64_t first, std::size_t count, const result_columns& to, std::size_t offset,
+bool block_runner::run(const trial_choice& chosen, std::uint64_t offset, std::size_t count, const result_columns& to,
                        const std::function<bool()>& keep_going) {
-    begin(first, count);
+    begin(chosen, offset, count);
     const std::int64_t last = loop_.clock().last_sample();
     // A state that is not finite stays so, and a look now and then finds it; but where trials end at different times
     // a lane must not be blamed for what happens after its own end.
@@ -52,7 +53,7 @@ bool block_runner::run(std::uint64_t first, std::size_t count, const result_colu
         if (k % 64 == 63 && !keep_going()) return false;
         if (k < last) loop_.advance();
     }
-    write(count, to, offset);
+    write(count, to, std::size_t(offset));
     return true;
 }
 
@@ -74,7 +75,7 @@ void block_runner::write(std::size_t count, const result_columns& to, std::size_
 }
 
 recording block_runner::replay(std::uint64_t trial, const std::vector<std::string>& names) {
-    begin(trial, 1);
+    begin({trial, 1}, 0, 1);
     std::vector<constant_signal> sources;
     for (const std::string& name : names) sources.push_back(loop_.find(name));
     recording r;

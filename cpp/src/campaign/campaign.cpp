@@ -52,14 +52,31 @@ campaign::campaign(campaign&&) noexcept = default;
 std::size_t campaign::parameters() const { return source_->count(); }
 std::uint64_t campaign::trials_available() const { return source_->trials_available(); }
 
-std::uint64_t campaign::run(std::uint64_t first, std::uint64_t count, const result_columns& to,
-                            const run_options& options) const {
+void campaign::check(const trial_choice& chosen) const {
     const std::uint64_t available = trials_available();
-    if (first > available || count > available - first)
-        throw std::invalid_argument("run: trials up to " + std::to_string(first + count) +
-                                    " asked for; the table of "
-                                    "parameter values has " +
-                                    std::to_string(available) + " rows");
+    bool exists = chosen.listed || (chosen.first <= available && chosen.count <= available - chosen.first);
+    for (std::uint64_t i = 0; chosen.listed && i < chosen.count; ++i) exists = exists && chosen.listed[i] < available;
+    if (!exists)
+        throw std::invalid_argument("run: more trials asked for than the table of parameter values has rows, " +
+                                    std::to_string(available));
+}
+
+void campaign::draw(const trial_choice& chosen, const result_columns& to) const {
+    check(chosen);
+    std::vector<std::uint64_t> trials(usual_block_);
+    std::vector<double> values(parameters() * usual_block_);
+    for (std::uint64_t offset = 0; offset < chosen.count; offset += usual_block_) {
+        const std::size_t here = std::size_t(std::min<std::uint64_t>(usual_block_, chosen.count - offset));
+        for (std::size_t i = 0; i < usual_block_; ++i) trials[i] = chosen[offset + std::min(i, here - 1)];
+        source_->draw(trials.data(), usual_block_, values.data());
+        for (std::size_t p = 0; p < parameters(); ++p)
+            std::copy_n(values.data() + p * usual_block_, here, to.parameters + p * to.stride + offset);
+    }
+}
+
+std::uint64_t campaign::run(const trial_choice& chosen, const result_columns& to, const run_options& options) const {
+    check(chosen);
+    const std::uint64_t count = chosen.count;
     if (count == 0) return 0;
     const int threads = threads_for(options);
     const bool one_by_one = study_.loop.integrator == integrator_kind::reference; // its steps follow one trial
@@ -75,7 +92,7 @@ std::uint64_t campaign::run(std::uint64_t first, std::uint64_t count, const resu
             while (queue.take(block)) {
                 const std::uint64_t offset = block * trials_per_block;
                 const std::size_t trials = std::size_t(std::min<std::uint64_t>(trials_per_block, count - offset));
-                if (runner.run(first + offset, trials, to, std::size_t(offset), [&] { return queue.keep_going(); }))
+                if (runner.run(chosen, offset, trials, to, [&] { return queue.keep_going(); }))
                     queue.finish(block, trials);
             }
         });

@@ -16,9 +16,9 @@ class block_runner {
 public:
     block_runner(const study_description& study, const parameter_source& source, std::size_t block_size);
 
-    /// Runs `count` <= block size trials from `first` on and writes them at `offset`. `keep_going` is asked now and
-    /// then; returns false, with nothing written, once it says no.
-    bool run(std::uint64_t first, std::size_t count, const result_columns& to, std::size_t offset,
+    /// Runs `count` <= block size trials, the `offset`-th chosen and those after it, and writes them at `offset`.
+    /// `keep_going` is asked now and then; returns false, with nothing written, once it says no.
+    bool run(const trial_choice& chosen, std::uint64_t offset, std::size_t count, const result_columns& to,
              const std::function<bool()>& keep_going);
 
     recording replay(std::uint64_t trial, const std::vector<std::string>& names);
@@ -30,7 +30,7 @@ public:
 private:
     class reference_targets;
 
-    void begin(std::uint64_t first, std::size_t count);
+    void begin(const trial_choice& chosen, std::uint64_t offset, std::size_t count);
     void write(std::size_t count, const result_columns& to, std::size_t offset) const;
     bool all_diverged() const;
 

@@ -17,7 +17,15 @@ namespace windage {
 
 enum class trial_status : std::uint8_t { finished = 0, diverged = 1 };
 
-/// Where the results go: column c of trial i at [c * stride + i]. The caller owns the memory.
+/// Trials in the order of their results: a range, or a list that the caller keeps alive.
+struct trial_choice {
+    std::uint64_t first = 0, count = 0;
+    const std::uint64_t* listed = nullptr; ///< null: first, first + 1, ...
+
+    std::uint64_t operator[](std::uint64_t i) const { return listed ? listed[i] : first + i; }
+};
+
+/// Where the results go: column c of the i-th trial at [c * stride + i]. The caller owns the memory.
 struct result_columns {
     double* parameters = nullptr;
     double* measures = nullptr;
@@ -50,15 +58,19 @@ public:
     const std::vector<std::string>& signals() const { return signals_; }
     std::uint64_t trials_available() const;
 
-    /// Runs trials first .. first + count - 1. Returns how many are valid from the first on: `count`, or fewer after a
-    /// cancel. A trial that diverged has undefined measures.
-    std::uint64_t run(std::uint64_t first, std::uint64_t count, const result_columns& to,
-                      const run_options& options) const;
+    /// Runs the trials chosen. Returns how many results are valid from the first on: all, or fewer after a cancel.
+    /// A trial that diverged has undefined measures. A trial's digits do not depend on which others are chosen.
+    std::uint64_t run(const trial_choice& chosen, const result_columns& to, const run_options& options) const;
+
+    /// Draws the parameters of the trials chosen and runs none of them; `to` needs parameters only.
+    void draw(const trial_choice& chosen, const result_columns& to) const;
 
     /// One trial with every signal at every sample; the same digits as in `run`.
     recording replay(std::uint64_t trial) const;
 
 private:
+    void check(const trial_choice& chosen) const;
+
     study_description study_;
     std::vector<std::string> signals_;
     std::unique_ptr<class parameter_source> source_;
