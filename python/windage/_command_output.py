@@ -16,6 +16,7 @@ from ._drivers import FAILING, FEW_FAILURES
 from ._errors import DescriptionError, WindageError
 from ._plots import HOW_TO_INSTALL, has_matplotlib
 from ._shown_text import shorten
+from ._text_table import plainly_grouped
 
 if TYPE_CHECKING:
     from ._outcome import Outcome
@@ -42,9 +43,11 @@ def say(text: str = "") -> None:
 
 def print_verdict(outcome: Outcome, verdict: Verdict) -> None:
     """Print a verdict; that of a stopped run is marked as interim."""
+    say(repr(outcome))
+    say()
     head, _, body = str(verdict).partition("\n")
     if outcome.interrupted:
-        asked = f"{outcome.trials:,} of {outcome.requested:,} trials"
+        asked = f"{plainly_grouped(outcome.trials)} of {plainly_grouped(outcome.requested)} trials"
         say(f"Stopped after {asked}. What follows is interim and no verdict: the number of trials was")
         say("not fixed beforehand. Run the study again to its end.")
         head = f"INTERIM {head}"
@@ -187,7 +190,6 @@ def write_json(report: Mapping[str, Any], path: Path) -> None:
 
 def run_report(outcome: Outcome, verdict: Verdict, source: Path, code: int) -> dict[str, Any]:
     """Return what `windage run --json` writes."""
-    missed = (~outcome.met).sum(axis=0).tolist()
     worst = outcome.slack.argmin(axis=0) + outcome.first
     return {
         "windage": version(),
@@ -203,8 +205,8 @@ def run_report(outcome: Outcome, verdict: Verdict, source: Path, code: int) -> d
         "verdict": None if outcome.interrupted else verdict.to_dict(),
         "interim_verdict": verdict.to_dict() if outcome.interrupted else None,
         "requirements": [
-            {"requirement": label, "missed": count, "worst_trial": int(trial)}
-            for label, count, trial in zip(outcome.requirements, missed, worst, strict=True)
+            {"requirement": label, "missed": line.missed, "worst_trial": int(trial), **line.to_dict()}
+            for label, line, trial in zip(outcome.requirements, outcome._lines, worst, strict=False)
         ],
         "first_failures": outcome.failures[:MOST_INDICES].tolist(),
         "drivers": [

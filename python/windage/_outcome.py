@@ -15,9 +15,11 @@ from ._errors import DescriptionError, suggestion
 from ._numbers import checked_integer
 from ._runner import Columns, Report
 from ._slack import slack_of
+from ._text_table import WIDTH, plainly_grouped
 
 if TYPE_CHECKING:
     from ._drivers import Drivers
+    from ._requirement_table import Line
     from ._study import Study
     from ._verdict import Verdict, VerdictTable
 
@@ -209,22 +211,32 @@ class Outcome:
         return self.trials
 
     def __repr__(self) -> str:
-        return "\n".join([self._headline(), *(f"  {text}" for text in self._rows())])
+        return self._text()
 
     def _repr_html_(self) -> str:
         import html  # costs import time and is seldom needed
 
-        rows = "".join(f"<li>{html.escape(text)}</li>" for text in self._rows())
-        return f"<p><strong>{html.escape(self._headline())}</strong></p><ul>{rows}</ul>"
+        from ._requirement_table import outcome_html
+
+        return f"<p><strong>{html.escape(self._headline())}</strong></p>{outcome_html(self, self._lines)}"
+
+    def _text(self, width: int = WIDTH) -> str:
+        """Return the counts, and what each requirement asked for and what came of it."""
+        from ._requirement_table import outcome_text
+
+        return "\n".join([self._headline(), *outcome_text(self, self._lines, width)])
+
+    @cached_property
+    def _lines(self) -> tuple[Line, ...]:
+        from ._requirement_table import requirement_lines
+
+        return requirement_lines(self)
 
     def _headline(self) -> str:
-        asked = f" (stopped; {self.requested:,} asked for)" if self.interrupted else ""
-        failed, diverged = len(self.failures), len(self.diverged)
-        return f"Outcome of {self.trials:,} trials{asked}: {failed:,} failed, {diverged:,} of them diverged"
-
-    def _rows(self) -> list[str]:
-        missed = (~self.met).sum(axis=0).tolist()
-        return [f"{n:,} missed: {label}" for label, n in zip(self.requirements, missed, strict=True)]
+        asked = f" (stopped; {plainly_grouped(self.requested)} asked for)" if self.interrupted else ""
+        run = f"{plainly_grouped(self.trials)} trial{'' if self.trials == 1 else 's'}"
+        failed, diverged = plainly_grouped(len(self.failures)), plainly_grouped(len(self.diverged))
+        return f"Outcome of {run}{asked}: {failed} failed, {diverged} of them diverged"
 
     def _indices(self, chosen: NDArray[np.bool_]) -> NDArray[np.int64]:
         indices = np.flatnonzero(chosen).astype(np.int64) + self.first

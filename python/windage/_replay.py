@@ -15,6 +15,7 @@ from ._measures import Requirement
 from ._numbers import Number, Spread
 from ._shared_numbers import Column, Shared
 from ._slack import slack_of
+from ._text_table import WIDTH, html_table, plainly_grouped
 
 if TYPE_CHECKING:
     from ._loop import Loop
@@ -139,14 +140,29 @@ class Replay:
         return importlib.import_module("windage._plots").plot_replay(self, *args, **options)
 
     def __repr__(self) -> str:
-        name = "nominal unit" if self.trial is None else f"trial {self.trial}"
+        return self._text()
+
+    def _repr_html_(self) -> str:
+        import html  # costs import time and is seldom needed
+
+        from ._requirement_table import REPLAY_HEADER, replay_cells
+
+        table = html_table(REPLAY_HEADER, replay_cells(self))
+        return f"<p><strong>{html.escape(self._headline())}</strong></p>{table}"
+
+    def _text(self, width: int = WIDTH) -> str:
+        """Return what became of the trial, and limit, value and slack of each requirement."""
+        from ._requirement_table import replay_text
+
+        return "\n".join([self._headline(), *replay_text(self, width)])
+
+    def _headline(self) -> str:
+        name = "nominal unit" if self.trial is None else f"trial {plainly_grouped(self.trial)}"
+        samples = plainly_grouped(len(self.time))
         fate = "diverged" if self.diverged else ("passed" if self.passed else "failed")
         if not self.requirements and not self.diverged:
             fate = "finished"
-        lines = [f"Replay of {name}: {fate}, {len(self.time)} samples of {len(self._signals)} signals"]
-        for requirement, slack in zip(self.requirements, self.slack, strict=True):
-            lines.append(f"  {'met   ' if slack >= 0.0 else 'MISSED'}  {requirement.label}  (slack {slack:.4g})")
-        return "\n".join(lines)
+        return f"Replay of {name}: {fate}, {samples} samples of {len(self._signals)} signals"
 
     def _b0(self) -> float:
         return self._value(self._loop.controller.b0, "controller.b0")

@@ -178,7 +178,7 @@ class Study(Description):
 
     def nominal(self) -> Replay:
         """Run the nominal unit: every spread at its nominal value, noise as in trial 0."""
-        loop, requirements, measures = rebuilt(self._bound, lambda x: nominal_of(x) if isinstance(x, Spread) else None)
+        loop, requirements, measures = _at_nominal(self._bound)
         _check_memory(loop)
         described = describe(loop, requirements, measures, {}, self.seed, self.resolved_steps(), every_signal=True)
         return _replay(self, loop, described, 0, None)
@@ -280,6 +280,18 @@ class Study(Description):
         return self._describe(self.resolved_steps())
 
     @cached_property
+    def _nominal_measures(self) -> list[float]:
+        """Measures of the nominal unit in the order of a run's, NaN if it diverges; without its signals."""
+        loop, requirements, measures = _at_nominal(self._bound)
+        described = describe(loop, requirements, measures, {}, self.seed, self.resolved_steps())
+        columns = run_columns(make_campaign(described.study), 0, 1, 1, False)
+        if columns.trials < 1:
+            raise KeyboardInterrupt
+        # Measures that differ in a spread only may be the same one here.
+        rows = [described.measures.index(_at_nominal(measure)) for measure in self._run_description.measures]
+        return [float(columns.measures[row, 0]) for row in rows]
+
+    @cached_property
     def _campaign(self) -> Any:
         return make_campaign(self._run_description.study)
 
@@ -288,6 +300,11 @@ class Study(Description):
 
     def _columns(self, first: int, count: int, threads: int, progress: bool | Report | None) -> Columns:
         return run_columns(self._campaign, first, count, threads, progress)
+
+
+def _at_nominal(part: Any) -> Any:
+    """Return a description with every spread at its nominal value."""
+    return rebuilt(part, lambda x: nominal_of(x) if isinstance(x, Spread) else None)
 
 
 def _check_memory(loop: Loop) -> None:

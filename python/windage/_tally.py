@@ -10,6 +10,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from ._outcome import Outcome, joint_requirement
+from ._text_table import plainly_grouped, text_table
 
 if TYPE_CHECKING:
     from ._study import Study
@@ -64,10 +65,11 @@ class Tally:
         return judge_many(counts, self.trials, self.diverged, at_least, confidence, **self.study.cautions())
 
     def __repr__(self) -> str:
-        asked = f" (stopped; {self.requested:,} asked for)" if self.trials < self.requested else ""
-        counts = f"{self.failures:,} failed, {self.diverged:,} of them diverged"
-        head = f"Tally of {self.trials:,} trials{asked}: {counts}"
-        return "\n".join([head, *(f"  {n:,} missed: {label}" for label, n in self.requirement_failures.items())])
+        asked = f" (stopped; {plainly_grouped(self.requested)} asked for)" if self.trials < self.requested else ""
+        counts = f"{plainly_grouped(self.failures)} failed, {plainly_grouped(self.diverged)} of them diverged"
+        head = f"Tally of {plainly_grouped(self.trials)} trials{asked}: {counts}"
+        rows = [(label, plainly_grouped(missed)) for label, missed in self.requirement_failures.items()]
+        return "\n".join([head, *text_table(("Requirement", "Missed"), rows)])
 
 
 class Counter:

@@ -372,7 +372,7 @@ def test_interrupted_run_is_judged_as_interim(
     same = study.run(done, progress=False)
     assert report["interim_verdict"]["failures"] == len(same.failures)
     printed = capsys.readouterr().out
-    assert f"Stopped after {done:,} of {trials:,} trials." in printed
+    assert f"Stopped after {done:,} of {trials:,} trials.".replace(",", " ") in printed
     assert "INTERIM PASS: at least 80 %" in printed
 
 

@@ -113,7 +113,7 @@ def test_progress_is_reported_and_can_stop_the_run() -> None:
     assert 0 <= outcome.trials < 200_000
     assert seen[0][1] == 200_000
     assert np.array_equal(outcome.slack, study.run(max(outcome.trials, 1), progress=False).slack[: outcome.trials])
-    assert "stopped; 200,000 asked for" in repr(outcome)
+    assert "stopped; 200 000 asked for" in repr(outcome)
 
 
 def test_progress_bar_writes_one_line(capsys: pytest.CaptureFixture[str]) -> None:
