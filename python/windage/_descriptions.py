@@ -11,12 +11,13 @@ import math
 from collections.abc import Callable, Iterator, Mapping
 from typing import Any, ClassVar, NoReturn, Self, TypeVar
 
-from ._errors import DescriptionError, suggestion
+from ._arguments import ExplainedCalls, unknown_name
+from ._errors import DescriptionError
 
 Value = TypeVar("Value")
 
 
-class Description:
+class Description(metaclass=ExplainedCalls):
     """Root of the frozen dataclasses that describe plants, loops, spreads, measures and studies."""
 
     __slots__ = ()
@@ -59,11 +60,6 @@ class FrozenMapping(dict[str, Value]):
         raise TypeError("a description cannot be changed; make a copy with .with_(...)")
 
     __setitem__ = __delitem__ = update = pop = clear = setdefault = popitem = __ior__ = _refuse
-
-
-def unknown_name(place: str, name: str, known: list[str]) -> DescriptionError:
-    """Describe an argument or key that does not exist."""
-    return DescriptionError(place, name, "one of its arguments", suggestion(name, known))
 
 
 def kind_of(description: object) -> str:

@@ -6,10 +6,13 @@ import math
 from collections.abc import Iterator
 from dataclasses import dataclass
 from statistics import NormalDist
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, NoReturn
 
 import numpy as np
 from numpy.typing import NDArray
+
+from ._errors import DescriptionError, suggestion
+from ._numbers import checked_integer
 
 if TYPE_CHECKING:
     from ._outcome import Outcome
@@ -60,10 +63,13 @@ class Drivers:
         The correlations.
     note : str
         What to keep in mind, empty if nothing in particular.
+    results : tuple of str
+        What `of` takes: the requirements under their names, and "failing".
     """
 
     rows: tuple[Driver, ...]
     note: str
+    results: tuple[str, ...] = (FAILING,)
 
     def __iter__(self) -> Iterator[Driver]:
         return iter(self.rows)
@@ -71,8 +77,28 @@ class Drivers:
     def __len__(self) -> int:
         return len(self.rows)
 
+    def __getitem__(self, key: int | str) -> Driver:
+        """Return a row by its place, or the strongest one of a parameter by its name."""
+        if isinstance(key, str):
+            known = [row.parameter for row in self.rows]
+            if key not in known:
+                raise DescriptionError("drivers", key, "a drawn parameter that varies", suggestion(key, set(known)))
+            return self.rows[known.index(key)]
+        count = len(self.rows)
+        place = checked_integer(key, "drivers", -count, count - 1) if count else _no_rows(key)
+        return self.rows[place]
+
     def of(self, against: str) -> tuple[Driver, ...]:
-        """Return the rows of one requirement, or of "failing"."""
+        """Return the rows of one requirement, or of "failing", the strongest first.
+
+        Raises
+        ------
+        DescriptionError
+            If it is neither. A result without any variation has no rows.
+        """
+        if against not in self.results:
+            mend = suggestion(str(against), self.results)
+            raise DescriptionError("drivers.of", against, f"a requirement of the study, or {FAILING!r}", mend)
         return tuple(row for row in self.rows if row.against == against)
 
     def __str__(self) -> str:
@@ -111,7 +137,7 @@ def find_drivers(outcome: Outcome) -> Drivers:
             if not math.isnan(correlation):
                 rows.append(Driver(name, result, correlation, *fisher_interval(correlation, outcome.trials)))
     rows.sort(key=lambda row: -abs(row.correlation))
-    return Drivers(tuple(rows), _note(outcome))
+    return Drivers(tuple(rows), _note(outcome), tuple(against))
 
 
 def ranks(values: Values) -> Values:
@@ -140,6 +166,10 @@ def _correlation(a: Values, b: Values) -> float:
     a, b = a - a.mean(), b - b.mean()
     scale = math.sqrt(float(a @ a) * float(b @ b))
     return min(max(float(a @ b) / scale, -1.0), 1.0) if scale > 0.0 else math.nan
+
+
+def _no_rows(key: object) -> NoReturn:
+    raise DescriptionError("drivers", key, "a row", "There are none: no drawn parameter or no result varies.")
 
 
 def _note(outcome: Outcome) -> str:

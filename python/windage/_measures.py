@@ -12,6 +12,7 @@ import math
 from dataclasses import dataclass, field
 from typing import TYPE_CHECKING, Any, NoReturn
 
+from ._arguments import explained
 from ._descriptions import Description
 from ._errors import DescriptionError
 from ._numbers import (
@@ -224,66 +225,79 @@ class Requirement(Description):
         raise DescriptionError("requirement", self.words, "a requirement used as such, not as true or false", mend)
 
 
+@explained
 def peak(signal: str, after: Any = 0.0, before: Any = math.inf) -> Measure:
     """Measure the largest magnitude of a signal in a window."""
     return Measure("peak", signal, after, before)
 
 
+@explained
 def minimum(signal: str, after: Any = 0.0, before: Any = math.inf) -> Measure:
     """Measure the smallest value of a signal in a window."""
     return Measure("minimum", signal, after, before)
 
 
+@explained
 def maximum(signal: str, after: Any = 0.0, before: Any = math.inf) -> Measure:
     """Measure the largest value of a signal in a window."""
     return Measure("maximum", signal, after, before)
 
 
+@explained
 def mean(signal: str, after: Any = 0.0, before: Any = math.inf) -> Measure:
     """Measure the mean of a signal over the samples in a window."""
     return Measure("mean", signal, after, before)
 
 
+@explained
 def rms(signal: str, after: Any = 0.0, before: Any = math.inf) -> Measure:
     """Measure the root mean square of a signal over the samples in a window."""
     return Measure("rms", signal, after, before)
 
 
+@explained
 def standard_deviation(signal: str, after: Any = 0.0, before: Any = math.inf) -> Measure:
     """Measure the root mean square of a signal about its mean in a window."""
     return Measure("standard_deviation", signal, after, before)
 
 
+@explained
 def final(signal: str, after: Any = 0.0, before: Any = math.inf) -> Measure:
     """Measure the last value of a signal in a window."""
     return Measure("final", signal, after, before)
 
 
+@explained
 def integral_absolute(signal: str, after: Any = 0.0, before: Any = math.inf) -> Measure:
     """Measure the integral of the magnitude of a signal (trapezium rule over the samples)."""
     return Measure("integral_absolute", signal, after, before)
 
 
+@explained
 def integral_square(signal: str, after: Any = 0.0, before: Any = math.inf) -> Measure:
     """Measure the integral of the square of a signal (trapezium rule over the samples)."""
     return Measure("integral_square", signal, after, before)
 
 
+@explained
 def integral_time_absolute(signal: str, after: Any = 0.0, before: Any = math.inf) -> Measure:
     """Measure the integral of magnitude times the time since the window's start."""
     return Measure("integral_time_absolute", signal, after, before)
 
 
+@explained
 def total_variation(signal: str, after: Any = 0.0, before: Any = math.inf) -> Measure:
     """Measure the sum of the magnitudes of all changes of a signal from sample to sample."""
     return Measure("total_variation", signal, after, before)
 
 
+@explained
 def rms_change(signal: str, after: Any = 0.0, before: Any = math.inf) -> Measure:
     """Measure the root mean square of the change of a signal from sample to sample."""
     return Measure("rms_change", signal, after, before)
 
 
+@explained
 def time_outside(signal: str, low: Any, high: Any, after: Any = 0.0, before: Any = math.inf) -> Measure:
     """Measure the time that a signal spends outside [low, high], in steps of the sample period."""
     low = checked_number(low, "time_outside.low", ANY)
@@ -292,6 +306,7 @@ def time_outside(signal: str, low: Any, high: Any, after: Any = 0.0, before: Any
     return Measure("time_outside", signal, after, before, low=low, high=high)
 
 
+@explained
 def overshoot(signal: str = "output", after: Any = 0.0, before: Any = math.inf) -> Measure:
     """Measure the largest excess over the final reference, as a fraction of the change.
 
@@ -302,11 +317,13 @@ def overshoot(signal: str = "output", after: Any = 0.0, before: Any = math.inf) 
     return Measure("overshoot", signal, after, before)
 
 
+@explained
 def undershoot(signal: str = "output", after: Any = 0.0, before: Any = math.inf) -> Measure:
     """Measure the largest move to the wrong side of the initial value, as a fraction of the change."""
     return Measure("undershoot", signal, after, before)
 
 
+@explained
 def rise_time(
     low: Any = 0.1, high: Any = 0.9, signal: str = "output", after: Any = 0.0, before: Any = math.inf
 ) -> Measure:
@@ -317,6 +334,7 @@ def rise_time(
     return Measure("rise_time", signal, after, before, low=low, high=high)
 
 
+@explained
 def settling_time(
     band: Any = None,
     tolerance: Any = None,
@@ -347,21 +365,25 @@ def settling_time(
     return Measure("settling_time", signal or "output", after, before, band=band)
 
 
+@explained
 def time_in_saturation(after: Any = 0.0, before: Any = math.inf) -> Measure:
     """Measure the time that the command spends at a limit of the actuator."""
     return Measure("time_in_saturation", "command", after, before)
 
 
+@explained
 def ise(after: Any = 0.0, before: Any = math.inf) -> Measure:
     """Measure the integral of the squared error."""
     return Measure("ise", "error", after, before)
 
 
+@explained
 def iae(after: Any = 0.0, before: Any = math.inf) -> Measure:
     """Measure the integral of the magnitude of the error."""
     return Measure("iae", "error", after, before)
 
 
+@explained
 def itae(after: Any = 0.0, before: Any = math.inf) -> Measure:
     """Measure the integral of time since the window's start times the magnitude of the error."""
     return Measure("itae", "error", after, before)

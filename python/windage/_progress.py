@@ -4,9 +4,17 @@ from __future__ import annotations
 
 from typing import TYPE_CHECKING
 
+from ._text_table import WIDTH, plainly_grouped
+
 if TYPE_CHECKING:
     from rich.console import Console
     from rich.progress import Progress, TaskID
+
+DESCRIPTION = "trials"
+#: Characters that bar and counts leave to percentage, rate (", 123 456 789/s"), time and the gaps between them.
+BESIDE = 4 + 15 + 7 + 3
+FASTEST = 999_999_999
+NARROWEST_BAR, WIDEST_BAR = 4, 30
 
 
 class ProgressBar:
@@ -39,19 +47,19 @@ class ProgressBar:
         if self._is_closed:
             return
         progress, task = self._begun(total)
-        progress.update(task, completed=done, description="trials" if done == total else "trials, stopped")
+        progress.update(task, completed=done, description=DESCRIPTION if done == total else f"{DESCRIPTION}, stopped")
         progress.stop()
         self._progress, self._is_closed = None, True
 
     def _begun(self, total: int) -> tuple[Progress, TaskID]:
         if self._progress is None or self._task is None:
-            self._progress = _new_progress(self._console)
-            self._task = self._progress.add_task("trials", total=total)
+            self._progress = _new_progress(self._console, total)
+            self._task = self._progress.add_task(DESCRIPTION, total=total)
             self._progress.start()
         return self._progress, self._task
 
 
-def _new_progress(console: Console | None) -> Progress:
+def _new_progress(console: Console | None, total: int) -> Progress:
     from rich.console import Console as RichConsole
     from rich.progress import (
         BarColumn,
@@ -68,14 +76,20 @@ def _new_progress(console: Console | None) -> Progress:
 
         def render(self, task: Task) -> Text:
             speed = task.finished_speed or task.speed
-            rate = f", {speed:,.0f} a second" if speed else ""
-            return Text(f"{int(task.completed):,} of {int(task.total or 0):,} {task.description}{rate}")
+            is_stopped = task.description != DESCRIPTION
+            is_known = speed is not None and 0.0 < speed < FASTEST and not is_stopped
+            rate = f", {plainly_grouped(round(speed))}/s" if speed and is_known else ""
+            counts = f"{plainly_grouped(int(task.completed))} of {plainly_grouped(int(task.total or 0))}"
+            return Text(f"{counts} {task.description}{rate}", no_wrap=True)
 
+    drawn_on = console or RichConsole(stderr=True)
+    counts = 2 * len(plainly_grouped(total)) + len(f" of  {DESCRIPTION}")
+    room = min(WIDTH, drawn_on.width) - counts - BESIDE
     return Progress(
-        BarColumn(bar_width=30),
+        BarColumn(bar_width=min(max(room, NARROWEST_BAR), WIDEST_BAR)),
         TaskProgressColumn(),
         Counts(),
         TimeRemainingColumn(),
-        console=console or RichConsole(stderr=True),
+        console=drawn_on,
         auto_refresh=False,
     )

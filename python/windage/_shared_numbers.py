@@ -6,6 +6,7 @@ import math
 from dataclasses import dataclass, field
 from typing import Any, ClassVar
 
+from ._arguments import explained
 from ._errors import DescriptionError
 from ._numbers import NAME_EXPECTED, Spread, checked_label
 
@@ -98,6 +99,7 @@ class Column(Spread):
         return "rows", list(self.rows)
 
 
+@explained
 def shared(name: str, spread: Any) -> Shared:
     """Use one draw of a spread at several places.
 
@@ -118,6 +120,7 @@ def shared(name: str, spread: Any) -> Shared:
     return Shared(name, spread)
 
 
+@explained
 def column(name: str) -> Column:
     """Take a number from the study's table: trial i has the value in row i of this column.
 

@@ -8,9 +8,11 @@ from __future__ import annotations
 
 from typing import Any
 
+from ._arguments import explained
 from ._distributions import Beta, Choice, LogNormal, Normal, Samples, Tolerance, Triangular, Uniform
 
 
+@explained
 def normal(
     mean: float,
     sd: float,
@@ -46,16 +48,19 @@ def normal(
     return Normal(mean, sd, low, high, sigmas, name=name)
 
 
+@explained
 def uniform(low: float, high: float, *, name: str | None = None) -> Uniform:
     """Spread a number evenly between two bounds. Nominal value: the middle."""
     return Uniform(low, high, name=name)
 
 
+@explained
 def triangular(low: float, mode: float, high: float, *, name: str | None = None) -> Triangular:
     """Spread a number by a triangular density. Nominal value: the mode."""
     return Triangular(low, mode, high, name=name)
 
 
+@explained
 def lognormal(median: float, sd_log: float, *, name: str | None = None) -> LogNormal:
     """Spread a positive number such that its natural logarithm is normal.
 
@@ -71,11 +76,13 @@ def lognormal(median: float, sd_log: float, *, name: str | None = None) -> LogNo
     return LogNormal(median, sd_log, name=name)
 
 
+@explained
 def beta(a: float, b: float, low: float = 0.0, high: float = 1.0, *, name: str | None = None) -> Beta:
     """Spread a number by a beta density with shapes a and b (above 0) from low to high. Nominal: the mean."""
     return Beta(a, b, low, high, name=name)
 
 
+@explained
 def tolerance(nominal: float, percent: float, shape: str = "uniform", *, name: str | None = None) -> Tolerance:
     """Spread a number around its nominal value by a tolerance.
 
@@ -94,6 +101,7 @@ def tolerance(nominal: float, percent: float, shape: str = "uniform", *, name: s
     return Tolerance(nominal, percent, shape, name=name)
 
 
+@explained
 def choice(values: Any, probabilities: Any = None, *, name: str | None = None) -> Choice:
     """Draw one of several values.
 
@@ -109,6 +117,7 @@ def choice(values: Any, probabilities: Any = None, *, name: str | None = None) -
     return Choice(values, probabilities, name=name)
 
 
+@explained
 def samples(values: Any, *, name: str | None = None) -> Samples:
     """Draw from observed values, each as likely as any other. Nominal: their (lower) median."""
     return Samples(values, name=name)

@@ -11,9 +11,10 @@ from typing import Any, Self
 import numpy as np
 
 from ._accuracy import chosen_steps
+from ._arguments import unknown_name
 from ._controllers import Controller
 from ._describe import Described, describe
-from ._descriptions import Description, rebuilt, unknown_name
+from ._descriptions import Description, rebuilt
 from ._errors import DescriptionError
 from ._loop import Loop
 from ._measures import Measure, Requirement

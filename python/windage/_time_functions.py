@@ -176,8 +176,7 @@ class Table(TimeFunction):
         if len(times) > MOST_ROWS:
             raise DescriptionError("Table.times", f"{len(times)} times", f"at most {MOST_ROWS} times")
         values = checked_numbers(self.values, "Table.values", ANY, len(times))
-        for i in range(len(times) - 1):
-            check_order(times[i], times[i + 1], f"Table.times[{i + 1}]", strict=False)
+        _check_rising(times)
         checked_choice(self.interpolation, "Table.interpolation", ("linear", "hold"))
         object.__setattr__(self, "times", times)
         object.__setattr__(self, "values", values)
@@ -185,6 +184,16 @@ class Table(TimeFunction):
     def _describe(self, numbers: Numbers, path: str) -> dict[str, Any]:
         taken = numbers.take_all(self.times, f"{path}.times") + numbers.take_all(self.values, f"{path}.values")
         return {"kind": f"table_{self.interpolation}", "numbers": taken}
+
+
+def _check_rising(times: Sequence[Number]) -> None:
+    """Refuse times that fall, or that may fall where they are drawn."""
+    for i in range(len(times) - 1):
+        first, second = times[i], times[i + 1]
+        if isinstance(first, float) and isinstance(second, float) and second < first:
+            mend = "Times rise from each to the next; two equal ones make a jump."
+            raise DescriptionError(f"Table.times[{i + 1}]", second, f"at least {first:g}, that of times[{i}]", mend)
+        check_order(first, second, f"Table.times[{i + 1}]", strict=False)
 
 
 class Noise(Description):

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import io
 import json
+import re
 import signal
 import subprocess
 import sys
@@ -22,6 +23,7 @@ from windage._command_line import main
 from windage._demo import DEMO_TRIALS, demo_study
 from windage._progress import ProgressBar
 from windage._study_file import from_toml
+from windage._text_table import plainly_grouped
 
 TRIALS = 2_000
 COMMANDS = ("demo", "run", "replay", "config")
@@ -413,10 +415,10 @@ def test_progress_bar_counts_and_never_stops_a_run() -> None:
     console = Console(file=io.StringIO(), force_terminal=True, width=110, color_system=None)
     bar = ProgressBar(console)
     assert bar(500, 2_000) is True
-    assert "500 of 2,000 trials" in drawn(console)
+    assert "500 of 2 000 trials" in drawn(console)
     assert "25%" in drawn(console)
     bar.close(2_000, 2_000)
-    assert "2,000 of 2,000 trials" in drawn(console)
+    assert "2 000 of 2 000 trials" in drawn(console)
     length = len(drawn(console))
     bar.close(2_000, 2_000)
     assert len(drawn(console)) == length
@@ -425,7 +427,22 @@ def test_progress_bar_counts_and_never_stops_a_run() -> None:
 def test_progress_bar_says_that_a_run_was_stopped() -> None:
     console = Console(file=io.StringIO(), force_terminal=True, width=110, color_system=None)
     ProgressBar(console).close(300, 2_000)
-    assert "300 of 2,000 trials, stopped" in drawn(console)
+    assert "300 of 2 000 trials, stopped" in drawn(console)
+
+
+@pytest.mark.parametrize("total", [1, 10_000, 10_000_000, 1 << 40])
+@pytest.mark.parametrize("width", [80, 132])
+def test_progress_bar_fits_eighty_columns(total: int, width: int) -> None:
+    console = Console(file=io.StringIO(), force_terminal=True, width=width, color_system=None)
+    bar = ProgressBar(console)
+    for tenth in range(11):
+        bar(total * tenth // 10, total)
+    bar.close(total, total)
+    bare = re.sub(r"\x1b\[[0-9;?]*[A-Za-z]", "", drawn(console))
+    lines = [line for line in re.split(r"[\r\n]", bare) if line]
+    assert max(map(len, lines)) <= 80
+    # One line, drawn over and over: nothing was wrapped.
+    assert all(f" of {plainly_grouped(total)} trials" in line for line in lines)
 
 
 def test_progress_bar_is_what_a_run_takes(study: wd.Study) -> None:
@@ -434,7 +451,7 @@ def test_progress_bar_is_what_a_run_takes(study: wd.Study) -> None:
     outcome = study.run(TRIALS, progress=bar)
     bar.close(outcome.trials, outcome.requested)
     assert not outcome.interrupted
-    assert f"{TRIALS:,} of {TRIALS:,} trials" in drawn(console)
+    assert "2 000 of 2 000 trials" in drawn(console)
 
 
 # --- help and imports

@@ -102,5 +102,5 @@ def test_critical_gain_never_is_zero(b0: Any) -> None:
 
 
 def test_error_form_takes_no_reference_derivatives() -> None:
-    with pytest.raises(TypeError, match="reference_derivatives"):
+    with pytest.raises(wd.DescriptionError, match="reference_derivatives"):
         wd.ErrorADRC(1, b0=1.0, controller_bandwidth=1.0, observer_bandwidth=5.0, reference_derivatives=True)

@@ -374,6 +374,16 @@ def test_drivers_find_the_parameter_that_matters() -> None:
     assert first.correlation < -0.8
     assert first.low < first.correlation < first.high < 0.0
     assert drivers.note == ""
+    assert drivers[0] is drivers.rows[0]
+    assert drivers[-1] is drivers.rows[-1]
+    assert drivers["gain"].parameter == "gain"
+    assert [row.parameter for row in drivers] == [row.parameter for row in drivers.rows]
+    with pytest.raises(wd.DescriptionError, match=r"Did you mean 'peak of error after 1 s <= 0\.01'"):
+        drivers.of("peak of error after 1 s")
+    with pytest.raises(wd.DescriptionError, match="Did you mean 'gain'"):
+        drivers["gian"]
+    with pytest.raises(wd.DescriptionError, match=f"from -{len(drivers)} to {len(drivers) - 1}"):
+        drivers[len(drivers)]
     few = wd.Study(loop, [wd.peak("error", after=1.0) <= 50.0]).run(50, progress=False).drivers()
     assert few.note.startswith("Too few failures (0)")
     assert few.of("failing") == ()

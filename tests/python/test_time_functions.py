@@ -124,3 +124,14 @@ def test_noises_of_two_places_and_trials_differ() -> None:
     noise = one["measured"] - one["output"]
     for a, b in ((one["load_1"], one["load_2"]), (one["load_1"], noise), (one["load_1"], other["load_1"])):
         assert abs(np.corrcoef(a, b)[0, 1]) < 4.0 / math.sqrt(len(a))
+
+
+def test_a_table_whose_times_fall_says_which() -> None:
+    with pytest.raises(wd.DescriptionError) as caught:
+        wd.Table([0.0, 2.0, 1.0], [0.0, 1.0, 2.0])
+    assert str(caught.value) == (
+        "Table.times[2]: found 1.0; expected at least 2, that of times[1]. "
+        "Times rise from each to the next; two equal ones make a jump."
+    )
+    with pytest.raises(wd.DescriptionError, match=r"Table\.times\[1\]"):
+        wd.Table([wd.uniform(0.0, 2.0), 1.0], [0.0, 1.0])
