@@ -100,6 +100,30 @@ def run_columns(
     return Columns(parameters, measures, status, count)
 
 
+def run_chosen(campaign: Any, trials: NDArray[np.uint64], report: Report | None = None, threads: int = 0) -> Columns:
+    """Run listed trials, in the order of the list; see `run_columns`.
+
+    Parameters
+    ----------
+    campaign : Campaign
+        From `make_campaign`.
+    trials : ndarray of uint64
+        Indices of trials that the study has.
+    report : callable, optional
+        As `progress` of `run_columns`.
+    threads : int
+        As for `run_columns`.
+    """
+    threads = threads or default_threads()
+    count = len(trials)
+
+    def step(done: int) -> bool:
+        return report is None or bool(report(done, count))
+
+    parameters, measures, status, done = campaign.run_chosen(trials, threads, 0, step)
+    return Columns(parameters[:, :done], measures[:, :done], status[:done], count)
+
+
 def reporter(progress: object) -> Report | None:
     """Return what is to be told of progress: a bar, the caller's function, or nothing."""
     if progress is True or (progress is None and sys.stderr is not None and sys.stderr.isatty()):

@@ -10,7 +10,7 @@ from typing import Any, Self
 
 import numpy as np
 
-from ._accuracy import chosen_steps
+from ._accuracy import Choice, chosen_steps
 from ._arguments import unknown_name
 from ._controllers import Controller
 from ._describe import Described, describe
@@ -192,7 +192,7 @@ class Study(Description):
         DescriptionError
             If no number of steps is enough; see `windage._accuracy`.
         """
-        return self._steps
+        return self._choice.steps
 
     @property
     def parameters(self) -> dict[str, Spread]:
@@ -253,8 +253,8 @@ class Study(Description):
     def __repr__(self) -> str:
         steps: Any = self.loop.steps_per_sample
         if steps == "auto":
-            chosen = self.__dict__.get("_steps")
-            steps = "auto" if chosen is None else f"auto ({chosen})"
+            chosen = self.__dict__.get("_choice")
+            steps = "auto" if chosen is None else f"auto ({chosen.steps})"
         loop, plant = self.loop, type(self.loop.plant).__name__
         lines = [
             f"Study {self.digest[:12]}: {plant} under {type(loop.controller).__name__} of order "
@@ -273,8 +273,8 @@ class Study(Description):
         return bound
 
     @cached_property
-    def _steps(self) -> int:
-        return chosen_steps(*self._bound, self.correlations or {}, self.seed)
+    def _choice(self) -> Choice:
+        return chosen_steps((*self._bound, self.correlations or {}, self.seed))
 
     @cached_property
     def _run_description(self) -> Described:

@@ -238,7 +238,7 @@ def test_friction_that_sticks_is_compared_at_fixed_steps() -> None:
 
 
 def test_a_comparison_that_takes_too_long_is_given_up(monkeypatch: pytest.MonkeyPatch) -> None:
-    monkeypatch.setattr("windage._accuracy.REFERENCE_SECONDS", 0.0)
+    monkeypatch.setattr("windage._pilots.REFERENCE_SECONDS", 0.0)
     with pytest.raises(wd.DescriptionError, match=r"loop\.steps_per_sample: .*chatters"):
         crane_study(steps_per_sample="auto", duration=400.0).resolved_steps()
 

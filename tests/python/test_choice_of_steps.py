@@ -1,0 +1,147 @@
+"""The automatic number of integration steps: no pilot is left out, and none is a scale for another."""
+
+from __future__ import annotations
+
+from typing import Any
+
+import numpy as np
+import pytest
+
+import windage as wd
+from windage import _accuracy, _pilots, _scales
+
+
+def study(plant: wd.Plant, requirements: Any, seed: int = 0, measures: Any = (), **loop: Any) -> wd.Study:
+    settings: dict[str, Any] = {
+        "plant": plant,
+        "controller": wd.ErrorADRC(1, controller_bandwidth=4.0, observer_bandwidth=20.0, b0=1.0),
+        "sample_period": 1e-2,
+        "duration": 4.0,
+        "reference": wd.Step(1.0),
+        "actuator": wd.Actuator(limits=(-3.0, 3.0)),
+    }
+    return wd.Study(wd.Loop(**(settings | loop)), requirements, seed=seed, measures=measures)
+
+
+def flexible(limit: float, seed: int = 0, **loop: Any) -> wd.Study:
+    """A light mode of 200 rad/s sampled at 10 ms, beside a plant that one unit in ten makes unstable."""
+    plant = wd.Plant(
+        {"y": 0.0, "q": 1.0, "p": 0.0},
+        {"y": "grow*y + u", "q": "p", "p": "-200**2*(q - 0.1*y) - 0.4*p"},
+        input="u",
+        output="y",
+        parameters={"grow": wd.choice([-1.0, 8.0], [0.9, 0.1])},
+    )
+    requirements = [wd.peak("error", after=2.0) <= 0.05, wd.standard_deviation("q", after=2.0) <= limit]
+    return study(plant, requirements, seed, **loop)
+
+
+def stiff(limit: float) -> wd.Study:
+    plant = wd.Plant({"x": 0.0}, {"x": "-k*(x - u)"}, "u", "x", parameters={"k": wd.uniform(900.0, 1100.0)})
+    controller = wd.ErrorADRC(1, b0=1e3, controller_bandwidth=4.0, observer_bandwidth=20.0)
+    return study(plant, [wd.peak("error") <= limit], 3, controller=controller, actuator=wd.Actuator(), duration=2.0)
+
+
+def settled(**requires: Any) -> wd.Study:
+    plant = wd.Plant(
+        {"x": 0.0, "v": 0.0},
+        {"x": "v", "v": "(u - 0.5*v - 2*x)/m"},
+        input="u",
+        output="x",
+        parameters={"m": wd.uniform(0.9, 1.1)},
+    )
+    controller = wd.OutputADRC(2, controller_bandwidth=5.0, observer_bandwidth=30.0, b0=1.0)
+    whole = {"controller": controller, "duration": 20.0, "reference": wd.Step(1.0, at=0.1), "actuator": wd.Actuator()}
+    return study(plant, requires.get("requirements", ()), 1, requires.get("measures", ()), **whole)
+
+
+@pytest.mark.parametrize("limit", [0.05, 0.35])
+@pytest.mark.parametrize("seed", [0, 5])
+def test_pilots_that_miss_a_limit_widely_are_compared_too(limit: float, seed: int) -> None:
+    # At 0.05 every pilot misses its limit by more than the limit; with seed 5 some pilots grow without bound.
+    chosen = flexible(limit, seed)
+    many = flexible(limit, seed, steps_per_sample=64)
+    assert np.array_equal(chosen.run(200, progress=False).passed, many.run(200, progress=False).passed)
+
+
+def test_a_tighter_limit_does_not_make_the_choice_worse() -> None:
+    chosen = [stiff(limit).resolved_steps() for limit in (2.0, 0.6, 0.4, 0.1)]
+    assert chosen == sorted(chosen)
+    assert len(stiff(0.1).run(100, progress=False).diverged) == 0
+
+
+@pytest.mark.parametrize(
+    "measures", [[wd.final("error")], [wd.rms("error", after=15.0)], [wd.final("v"), wd.peak("error")]]
+)
+def test_a_measure_near_zero_has_the_scale_of_its_signals(measures: list[wd.Measure]) -> None:
+    assert settled(measures=measures).resolved_steps() == 1
+    assert settled(requirements=[measure <= 1e-9 for measure in measures]).resolved_steps() == 1
+
+
+def test_extremes_of_the_spreads_are_among_the_pilots() -> None:
+    plant = wd.Plant(
+        {"i": 0.0, "x": 0.0},
+        {"i": "(u - i)/tau", "x": "i - 0.5*x"},
+        input="u",
+        output="x",
+        parameters={"tau": wd.lognormal(0.02, 0.8)},
+    )
+    chosen = study(plant, [wd.peak("error", after=2.0) <= 0.05])
+    outcome = chosen.with_(steps_per_sample=1).run(_pilots.LOOKED_AT, progress=False)
+    pilots = _pilots.pilots_of((*chosen._bound, {}, chosen.seed))
+    tau = outcome.parameters["tau"]
+    assert {int(np.argmin(tau)), int(np.argmax(tau)), *range(_pilots.FIRST_TRIALS)} == set(pilots.trials.tolist())
+    # Only the extremes need more than the first pilots do, and no trial diverges with what is chosen.
+    assert tau[: _pilots.FIRST_TRIALS].min() * 2.78 > chosen.loop.sample_period  # type: ignore[operator]
+    assert tau.min() * 2.78 < chosen.loop.sample_period  # type: ignore[operator]
+    assert chosen.resolved_steps() >= 2
+    assert len(chosen.run(_pilots.LOOKED_AT, progress=False).diverged) == 0
+
+
+def test_where_every_pilot_diverges_the_choice_says_so() -> None:
+    plant = wd.Plant({"y": 1.0}, {"y": "y**3 + 0*u"}, "u", "y", parameters={"unused": wd.uniform(0.0, 1.0)})
+    lost = study(plant, [wd.peak("error") <= 0.05])
+    assert lost.resolved_steps() == _accuracy.UNCOMPARED_STEPS == 16
+    assert "could not be chosen by comparison" in lost._choice.caution
+
+
+def test_failing_pilots_on_a_limit_cycle_are_compared_coarsely_and_that_is_said() -> None:
+    # Lorenz 1963, J. Atmos. Sci. 20, eqs. 25-27: chaotic motion, whose path no two integrators share for long.
+    plant = wd.Plant(
+        {"a": 1.0, "b": 1.0, "c": 20.0},
+        {"a": "10*(b - a) + 0*u", "b": "a*(28 - c) - b", "c": "a*b - 8*c/3"},
+        input="u",
+        output="a",
+        parameters={"d": wd.uniform(0.0, 1.0)},
+    )
+    chaotic = study(plant, [wd.rms("c") <= 1.0], duration=30.0)
+    assert "irregularly" in chaotic._choice.caution
+    assert len(chaotic.run(20, progress=False).failures) == 20
+    # Where such a trial does not fail, its path has to be right, and nothing is chosen.
+    with pytest.raises(wd.DescriptionError, match=r"steps_per_sample: found 'auto'"):
+        chaotic.with_(requirements=(), measures=[wd.final("c")]).resolved_steps()
+
+
+def test_a_limit_decides_as_under_the_reference() -> None:
+    # The measure may differ by a thousandth of its limit; a pilot whose slack is larger has to come out the same.
+    chosen = flexible(0.35)
+    pilots = _pilots.pilots_of((*chosen._bound, {}, chosen.seed))
+    columns = pilots.with_steps(chosen.resolved_steps(), "rk4")
+    assert not _accuracy._complaint(pilots, columns, pilots.allowed)
+    assert "differs" in _accuracy._complaint(pilots, pilots.with_steps(4, "rk4"), pilots.allowed)
+    assert "differently" in _accuracy._complaint(pilots, pilots.with_steps(1, "rk4"), pilots.allowed + 1e12)
+
+
+def test_scales_are_those_of_each_trial_and_its_signals() -> None:
+    bound = settled(measures=[wd.final("error"), wd.rms("v", after=15.0), wd.overshoot(), wd.ise()])
+    pilots = _pilots.pilots_of((*bound._bound, {}, bound.seed))
+    final, rms, overshoot, ise = pilots.allowed
+    np.testing.assert_allclose(final, _scales.OF_SIZE + _scales.OF_WHOLE, rtol=0.1)
+    assert (rms < 3e-9).all()
+    np.testing.assert_allclose(overshoot, _scales.OF_SIZE + _scales.OF_WHOLE, rtol=0.1)
+    own = pilots.columns.measures[3]
+    np.testing.assert_allclose(ise, _scales.OF_SIZE * own + 20.0 * _scales.OF_WHOLE + _scales.FLOOR, rtol=0.1)
+    limited = bound.with_(requirements=[wd.final("error") <= 0.5, wd.overshoot() <= 1e9], measures=())
+    allowed = _pilots.pilots_of((*limited._bound, {}, bound.seed)).allowed
+    np.testing.assert_allclose(allowed[0], 0.5 * _scales.OF_LIMIT, rtol=0.01)
+    np.testing.assert_allclose(allowed[1], _scales.OF_LIMIT, rtol=0.1)  # a limit far away widens nothing
