@@ -55,7 +55,8 @@ RUN = _help(
         "windage run dish.toml",
         "windage run dish.toml --trials 100000 --at-least 0.99",
         "windage run dish.toml --plot outcome.png --table trials.parquet",
-        "windage run dish.toml --json verdict.json || exit 1",
+        "windage run dish.toml --set controller.b0=0.09 --set actuator.delay=0.01 --seed 7",
+        "windage run dish.toml --short --json verdict.json || exit 1",
     ],
 )
 REPLAY = _help(

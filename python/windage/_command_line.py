@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 import os
-import shlex
 import sys
 from collections.abc import Sequence
 from pathlib import Path
@@ -13,6 +12,7 @@ import typer
 
 from . import _command_help as teach
 from . import _command_output as output
+from ._command_changes import arguments_of, changed
 from ._demo import DEMO_AT_LEAST, DEMO_CONFIDENCE, DEMO_TRIALS, demo_study
 from ._errors import DescriptionError, WindageError
 from ._loader import show_config
@@ -40,6 +40,14 @@ app = typer.Typer(
 StudyFile = Annotated[Path, typer.Argument(metavar="STUDY.toml", help="The study file.", show_default=False)]
 Trials = Annotated[int, typer.Option("--trials", metavar="N", help="How many trials to run.")]
 Threads = Annotated[int, typer.Option("--threads", metavar="N", help="0: every core. Digits do not depend on it.")]
+Seed = Annotated[
+    int | None,
+    typer.Option("--seed", metavar="N", help="Another seed than that of the file: fresh trials.", show_default=False),
+]
+Changes = Annotated[
+    list[str] | None,
+    typer.Option("--set", metavar="PATH=VALUE", help="Change a number of the study; may be given again."),
+]
 Plot = Annotated[Path | None, typer.Option("--plot", metavar="FILE", help="Draw a picture: .png, .pdf or .svg.")]
 
 
@@ -102,6 +110,11 @@ def run(
     report: Annotated[
         Path | None, typer.Option("--json", metavar="FILE", help="Write verdict and counts as JSON.")
     ] = None,
+    seed: Seed = None,
+    changes: Changes = None,
+    short: Annotated[
+        bool, typer.Option("--short", help="One line on the standard output; advice goes to the error stream.")
+    ] = False,
 ) -> int:
     """Run a study file, print the verdict and write what is asked for."""
     output.check_target("--plot", plot, output.PICTURES)
@@ -109,22 +122,31 @@ def run(
     output.check_target("--json", report, (".json",))
     # Arguments of the verdict are checked on an empty outcome, before any trial is run.
     judge(0, 0, 0, at_least, confidence)
-    study = load(study_file)
-    output.print_advice(study)
+    study = changed(load(study_file), changes or (), seed)
+    with output.on_error_stream(short):
+        output.print_advice(study)
     outcome = study.run(trials, threads)
     if not outcome.trials:
         return INTERRUPTED
-    verdict, code = _report(outcome, at_least, confidence)
+    verdict, code = _report(outcome, at_least, confidence, short)
+    with output.on_error_stream(short):
+        _write(outcome, verdict, code, study_file, (plot, table, report))
+    if len(outcome.failures) and not short:
+        again = output.command_again("replay", study_file, *arguments_of(changes or (), seed))
+        output.say(f"See the first failing trial: {again} --trial {outcome.failures[0]}")
+    return code
+
+
+def _write(
+    outcome: Outcome, verdict: Verdict, code: int, study_file: Path, files: tuple[Path | None, Path | None, Path | None]
+) -> None:
+    plot, table, report = files
     if plot is not None:
         output.write_picture(outcome, plot)
     if table is not None:
         output.write_table(output.outcome_table(outcome), table, table.suffix.lower())
     if report is not None:
         output.write_json(output.run_report(outcome, verdict, study_file, code), report)
-    if len(outcome.failures):
-        name = shlex.quote(str(study_file))
-        output.say(f"See the first failing trial: windage replay {name} --trial {outcome.failures[0]}")
-    return code
 
 
 @app.command(help=teach.REPLAY, epilog=teach.REPLAY_CODES)
@@ -147,6 +169,8 @@ def replay(
     parquet: Annotated[
         Path | None, typer.Option("--parquet", metavar="FILE", help="The same as a Parquet file.")
     ] = None,
+    seed: Seed = None,
+    changes: Changes = None,
 ) -> int:
     """Run one trial again and write its signals."""
     if (trial is None) != nominal:
@@ -155,7 +179,7 @@ def replay(
     output.check_target("--plot", plot, output.PICTURES)
     output.check_target("--csv", csv, (".csv",))
     output.check_target("--parquet", parquet, (".parquet",))
-    study = load(study_file)
+    study = changed(load(study_file), changes or (), seed)
     replayed = study.nominal() if trial is None else study.replay(trial)
     output.say(repr(replayed))
     for name, value in replayed.parameters.items():
@@ -187,10 +211,10 @@ def main(arguments: Sequence[str] | None = None) -> int:
         By default those of the process.
     """
     try:
-        code = app(arguments, prog_name="windage", standalone_mode=False)
+        code = app(arguments, prog_name=output.called_as(), standalone_mode=False)
     except UsageError as error:
         message, context = cast(Any, error).format_message(), getattr(error, "ctx", None)
-        command = context.command_path if context else "windage"
+        command = context.command_path if context else output.called_as()
         output.print_failure(WindageError(f"{message}\n  mend      see {command} --help"))
         return WRONG
     except (KeyboardInterrupt, typer.Abort):
@@ -209,11 +233,14 @@ def main(arguments: Sequence[str] | None = None) -> int:
     return code if isinstance(code, int) else 0
 
 
-def _report(outcome: Outcome, at_least: float, confidence: float) -> tuple[Verdict, int]:
+def _report(outcome: Outcome, at_least: float, confidence: float, short: bool = False) -> tuple[Verdict, int]:
     """Print verdict and hints; return the verdict and the exit code."""
     verdict = outcome.verdict(at_least, confidence)
-    output.print_verdict(outcome, verdict)
-    output.print_hints(outcome)
+    if short:
+        output.print_short(outcome, verdict)
+    else:
+        output.print_verdict(outcome, verdict)
+        output.print_hints(outcome)
     return verdict, INTERRUPTED if outcome.interrupted else CODES[verdict.decision]
 
 
@@ -234,12 +261,12 @@ def _holds(file: Path, study: Study) -> bool:
 
 
 def _print_next_steps(outcome: Outcome, file: Path) -> None:
-    steps = [(f"windage run {shlex.quote(str(file))} --at-least 0.99", "claim more")]
+    steps = [(output.command_again("run", file, "--at-least", "0.99"), "claim more")]
     if len(outcome.failures):
         trial = outcome.failures[0]
         picture = file.with_name(f"trial-{trial}.png")
-        names = [shlex.quote(str(name)) for name in (file, picture)]
-        steps.insert(0, (f"windage replay {names[0]} --trial {trial} --plot {names[1]}", "see a failing trial"))
+        again = output.command_again("replay", file, "--trial", trial, "--plot", picture)
+        steps.insert(0, (again, "see a failing trial"))
     width = max(len(command) for command, _ in steps)
     output.say("\nNext:")
     for command, reason in steps:

@@ -4,8 +4,11 @@ from __future__ import annotations
 
 import json
 import os
+import shlex
+import shutil
+import sys
 from collections.abc import Iterator, Mapping
-from contextlib import contextmanager, suppress
+from contextlib import contextmanager, nullcontext, redirect_stdout, suppress
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
@@ -39,6 +42,41 @@ def out() -> Console:
 def say(text: str = "") -> None:
     """Print a text as it is."""
     out().print(text)
+
+
+def called_as() -> str:
+    """Return how this command line was called, so that printed commands run as they are printed."""
+    script = Path(sys.argv[0])
+    if script.name == "__main__.py" and script.parent.name == "windage":
+        return f"{_on_path(Path(sys.executable))} -m windage"
+    return _on_path(script) if script.name == "windage" else "windage"
+
+
+def _on_path(program: Path) -> str:
+    """Return a program's name where that finds it, otherwise the path that it was called by."""
+    found = shutil.which(program.name)
+    is_found = found is not None and program.exists() and program.samefile(found)
+    return program.name if is_found else shlex.quote(str(program))
+
+
+def command_again(command: str, *arguments: object) -> str:
+    """Return a command line of windage that can be copied."""
+    return " ".join([called_as(), command, *(shlex.quote(str(argument)) for argument in arguments)])
+
+
+@contextmanager
+def on_error_stream(wanted: bool) -> Iterator[None]:
+    """Print to the error stream meanwhile, if wanted: nothing is lost, and one line remains on the other."""
+    with redirect_stdout(sys.stderr) if wanted else nullcontext():
+        yield
+
+
+def print_short(outcome: Outcome, verdict: Verdict) -> None:
+    """Print a verdict in one line."""
+    counts = f"{plainly_grouped(len(outcome.failures))} of {plainly_grouped(outcome.trials)} trials failed"
+    interim = "INTERIM " if outcome.interrupted else ""
+    title = f"{outcome.study.title}: " if outcome.study.title else ""
+    out().print(Text(f"{title}{interim}{verdict.headline} {counts}.", style=_STYLES[verdict.decision]))
 
 
 def print_verdict(outcome: Outcome, verdict: Verdict) -> None:
@@ -193,7 +231,12 @@ def run_report(outcome: Outcome, verdict: Verdict, source: Path, code: int) -> d
     worst = outcome.slack.argmin(axis=0) + outcome.first
     return {
         "windage": version(),
-        "study": {"file": source.name, "digest": outcome.study.digest, "seed": outcome.study.seed},
+        "study": {
+            "file": source.name,
+            "title": outcome.study.title,
+            "digest": outcome.study.digest,
+            "seed": outcome.study.seed,
+        },
         "exit_code": code,
         "interim": outcome.interrupted,
         "trials": {

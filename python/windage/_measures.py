@@ -216,6 +216,11 @@ class Requirement(Description):
         sign = "<=" if self.at_most is not None else ">="
         return f"{self.measure.label} {sign} {shown(self.limit)}"
 
+    @property
+    def in_full(self) -> str:
+        """The requirement in words, after its name if it has one."""
+        return self.words if self.name is None else f"{self.name}: {self.words}"
+
     def named(self, name: str) -> Requirement:
         """Return a copy under a name."""
         return Requirement(self.measure, at_most=self.at_most, at_least=self.at_least, name=name)

@@ -16,6 +16,7 @@ class Cautions(TypedDict):
     not_varied: tuple[str, ...]
     spreads: tuple[str, ...]
     truncated: tuple[str, ...]
+    title: str
 
 
 def not_varied(loop: Loop) -> tuple[str, ...]:

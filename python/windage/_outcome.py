@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from functools import cached_property
 from types import MappingProxyType
 from typing import TYPE_CHECKING, Any
@@ -19,6 +19,7 @@ from ._text_table import WIDTH, plainly_grouped
 
 if TYPE_CHECKING:
     from ._drivers import Drivers
+    from ._measures import Requirement
     from ._requirement_table import Line
     from ._study import Study
     from ._verdict import Verdict, VerdictTable
@@ -142,7 +143,7 @@ class Outcome:
             len(self.diverged),
             at_least,
             confidence,
-            requirement=joint_requirement(self.requirements),
+            requirement=joint_requirement(self.study.requirements),
             **self.study.cautions(),
             looks=self._look(),
         )
@@ -218,13 +219,16 @@ class Outcome:
 
         from ._requirement_table import outcome_html
 
-        return f"<p><strong>{html.escape(self._headline())}</strong></p>{outcome_html(self, self._lines)}"
+        title = f"<p>{html.escape(self.study.title)}</p>" if self.study.title else ""
+        head = f"<p><strong>{html.escape(self._headline())}</strong></p>"
+        return f"{title}{head}{outcome_html(self, self._lines)}"
 
     def _text(self, width: int = WIDTH) -> str:
         """Return the counts, and what each requirement asked for and what came of it."""
         from ._requirement_table import outcome_text
 
-        return "\n".join([self._headline(), *outcome_text(self, self._lines, width)])
+        title = [self.study.title] if self.study.title else []
+        return "\n".join([*title, self._headline(), *outcome_text(self, self._lines, width)])
 
     @cached_property
     def _lines(self) -> tuple[Line, ...]:
@@ -258,8 +262,9 @@ class Outcome:
         return len(self._judged)
 
 
-def joint_requirement(labels: tuple[str, ...]) -> str:
+def joint_requirement(requirements: Sequence[Requirement]) -> str:
     """Return in words what a trial has to do to pass."""
-    if not labels:
+    if not requirements:
         return "the trial finishes"
-    return labels[0] if len(labels) == 1 else f"all {len(labels)} requirements met in the same trial"
+    count = len(requirements)
+    return requirements[0].in_full if count == 1 else f"all {count} requirements met in the same trial"

@@ -45,7 +45,7 @@ class Replay:
         Whether a state of the plant left the finite range.
     seed : int
         Of the study.
-    digest : str
+    digest, title : str
         Of the study; see `Study.digest`.
     """
 
@@ -61,7 +61,7 @@ class Replay:
         parameters, measures, status = run
         self.trial = trial
         self.requirements: tuple[Requirement, ...] = tuple(study.requirements)
-        self.seed, self.digest = study.seed, study.digest
+        self.seed, self.digest, self.title = study.seed, study.digest, study.title
         self._loop = loop
         self._signals = dict(signals)
         self._described = described
@@ -148,13 +148,15 @@ class Replay:
         from ._requirement_table import REPLAY_HEADER, replay_cells
 
         table = html_table(REPLAY_HEADER, replay_cells(self))
-        return f"<p><strong>{html.escape(self._headline())}</strong></p>{table}"
+        title = f"<p>{html.escape(self.title)}</p>" if self.title else ""
+        return f"{title}<p><strong>{html.escape(self._headline())}</strong></p>{table}"
 
     def _text(self, width: int = WIDTH) -> str:
         """Return what became of the trial, and limit, value and slack of each requirement."""
         from ._requirement_table import replay_text
 
-        return "\n".join([self._headline(), *replay_text(self, width)])
+        title = [self.title] if self.title else []
+        return "\n".join([*title, self._headline(), *replay_text(self, width)])
 
     def _headline(self) -> str:
         name = "nominal unit" if self.trial is None else f"trial {plainly_grouped(self.trial)}"

@@ -26,6 +26,7 @@ from ._replay import Replay
 from ._runner import Columns, Report, make_campaign, reporter, run_columns
 from ._study_checks import (
     check_positive_definite,
+    check_title,
     check_windows,
     checked_correlations,
     checked_measures,
@@ -60,6 +61,8 @@ class Study(Description):
     correlations : mapping of (str, str) to float, optional
         Rank correlations (Spearman) between drawn parameters, by their path ("plant.inertia") or shared name,
         through a Gaussian copula. Pairs not given within a group count as uncorrelated.
+    title : str
+        What outcomes, verdicts and plots are headed with. It decides no digit and is no part of the digest.
 
     Raises
     ------
@@ -74,6 +77,7 @@ class Study(Description):
     measures: Sequence[Measure] = ()
     table: Mapping[str, Sequence[float]] | None = None
     correlations: Mapping[tuple[str, str], float] | None = None
+    title: str = ""
 
     def __post_init__(self) -> None:
         if not isinstance(self.loop, Loop):
@@ -84,6 +88,7 @@ class Study(Description):
         put(self, "seed", checked_integer(self.seed, "study.seed", 0, 2**64 - 1))
         put(self, "table", checked_table(self.table))
         put(self, "correlations", checked_correlations(self.correlations))
+        check_title(self.title)
         if not self.requirements and not self.measures:
             mend = "Add for example peak('error') <= 0.01."
             raise DescriptionError("study.requirements", "none", "at least one requirement or measure", mend)
@@ -242,6 +247,7 @@ class Study(Description):
             not_varied=not_varied(self.loop),
             spreads=tuple(f"{c.name}: {c.spread!r}" for c in columns),
             truncated=tuple(c.name for c in columns if c.spread._is_truncated()),
+            title=self.title,
         )
 
     def __eq__(self, other: object) -> bool:
@@ -256,12 +262,13 @@ class Study(Description):
             chosen = self.__dict__.get("_choice")
             steps = "auto" if chosen is None else f"auto ({chosen.steps})"
         loop, plant = self.loop, type(self.loop.plant).__name__
-        lines = [
+        lines = [self.title] if self.title else []
+        lines += [
             f"Study {self.digest[:12]}: {plant} under {type(loop.controller).__name__} of order "
             f"{loop.controller.order}, seed {self.seed}, steps per sample {steps}"
         ]
         lines += [f"  {name}: {spread!r}" for name, spread in self.parameters.items()]
-        lines += [f"  requires {requirement.label}" for requirement in self.requirements]
+        lines += [f"  requires {requirement.in_full}" for requirement in self.requirements]
         lines += [f"  measures {measure.label}" for measure in self.measures]
         return "\n".join(lines)
 

@@ -14,6 +14,7 @@ from ._loop import Loop
 from ._measures import Measure, Requirement
 from ._numbers import Spread, checked_label, checked_sequence, high_of, low_of, plain_number
 from ._shared_numbers import Column
+from ._shown_text import LONGEST_NAME, hidden_character
 
 MOST_REQUIREMENTS = 1000
 MOST_ROWS = 10_000_000
@@ -157,3 +158,10 @@ def with_table(part: Part, table: Mapping[str, tuple[float, ...]] | None) -> Par
 
     result: Part = rebuilt(part, change)
     return result
+
+
+def check_title(title: object) -> None:
+    """Refuse a title that is no single line of text."""
+    if not isinstance(title, str) or hidden_character(title) is not None or len(title) > LONGEST_NAME:
+        expected = f"one line of at most {LONGEST_NAME} characters that all show"
+        raise DescriptionError("study.title", title, expected)

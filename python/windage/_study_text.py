@@ -125,7 +125,7 @@ _TEXTS = ("equations", "auxiliaries", "signals")
 
 def to_data(study: Study) -> dict[str, Any]:
     """Return a study as nested dictionaries, lists, texts, numbers and truth values."""
-    data: dict[str, Any] = {"windage_study": FORMAT, "seed": study.seed}
+    data: dict[str, Any] = {"windage_study": FORMAT, "title": study.title, "seed": study.seed}
     if study.correlations:
         pairs = sorted((*sorted(pair), rho) for pair, rho in study.correlations.items())
         data["correlations"] = [{"between": [a, b], "rank_correlation": rho} for a, b, rho in pairs]
@@ -134,7 +134,7 @@ def to_data(study: Study) -> dict[str, Any]:
     data["measures"] = [_encoded(measure) for measure in study.measures]
     if study.table is not None:
         data["table"] = {name: list(rows) for name, rows in study.table.items()}
-    return {key: value for key, value in data.items() if value != []}
+    return {key: value for key, value in data.items() if value not in ([], "")}
 
 
 def digest_of(study: Study) -> str:
@@ -142,7 +142,8 @@ def digest_of(study: Study) -> str:
     import hashlib  # both cost import time and are seldom needed
     import json
 
-    text = json.dumps(to_data(study), sort_keys=True, separators=(",", ":"), allow_nan=False)
+    data = {key: part for key, part in to_data(study).items() if key != "title"}
+    text = json.dumps(data, sort_keys=True, separators=(",", ":"), allow_nan=False)
     return hashlib.sha256(text.encode()).hexdigest()
 
 
@@ -183,14 +184,13 @@ def from_data(data: Any) -> Study:
     from ._study import Study
 
     _check_version(data)
-    known = ["windage_study", "seed", "loop", "requirements", "measures", "table", "correlations"]
+    known = ["windage_study", "title", "seed", "loop", "requirements", "measures", "table", "correlations"]
     _check_keys(data, known, ["loop"], "")
     made: dict[str, Any] = {"loop": _made_loop(_table(data["loop"], "loop"))}
     for key, decode in (("requirements", _requirement), ("measures", _measure)):
         items = _list(data.get(key, []), key)
         made[key] = [decode(item, f"{key}[{i}]") for i, item in enumerate(items)]
-    if "seed" in data:
-        made["seed"] = data["seed"]
+    made.update({key: data[key] for key in ("seed", "title") if key in data})
     if "table" in data:
         made["table"] = _table(data["table"], "table")
     if "correlations" in data:

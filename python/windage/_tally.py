@@ -53,7 +53,7 @@ class Tally:
             self.diverged,
             at_least,
             confidence,
-            requirement=joint_requirement(tuple(self.requirement_failures)),
+            requirement=joint_requirement(self.study.requirements),
             **self.study.cautions(),
         )
 

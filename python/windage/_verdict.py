@@ -76,6 +76,8 @@ class Verdict:
         Confidence that all claims of the family hold together; `confidence` for a claim by itself.
     numerics : Numerics
         What is known of the numerical error behind the counts.
+    title : str
+        Of the study.
     """
 
     decision: Decision
@@ -96,6 +98,12 @@ class Verdict:
     family: int
     family_confidence: float
     numerics: Numerics = UNKNOWN
+    title: str = ""
+
+    @property
+    def headline(self) -> str:
+        """The decision and the claim in one sentence."""
+        return _plain(_headline(self))
 
     @property
     def cautions(self) -> tuple[str, ...]:
@@ -229,6 +237,7 @@ def judge(
     not_varied: Sequence[str] = (),
     spreads: Sequence[str] = (),
     truncated: Sequence[str] = (),
+    title: str = "",
     looks: int = 1,
     numerics: Numerics = UNKNOWN,
 ) -> Verdict:
@@ -250,6 +259,8 @@ def judge(
         What a trial had to meet.
     not_varied, spreads, truncated : sequence of str
         Numbers held at one value, spreads drawn from, and spreads with cut tails: printed with the verdict.
+    title : str
+        Of the study, printed with the verdict.
     looks : int
         Times these trials have been judged, this one included; 1 or more. More than one voids the confidence,
         and the verdict says so.
@@ -290,6 +301,7 @@ def judge(
         not_varied=_checked_names("not_varied", not_varied),
         spreads=_checked_names("spreads", spreads),
         truncated=_checked_names("truncated", truncated),
+        title=title,
         looks=checked_count("looks", looks, 1, MOST_LOOKS),
         family=1,
         family_confidence=confidence,
@@ -307,6 +319,7 @@ def judge_many(
     not_varied: Sequence[str] = (),
     spreads: Sequence[str] = (),
     truncated: Sequence[str] = (),
+    title: str = "",
     looks: int = 1,
     numerics: Mapping[str, Numerics] | None = None,
 ) -> VerdictTable:
@@ -322,7 +335,7 @@ def judge_many(
         Pass probability claimed, one for all or one a requirement.
     confidence : float
         Confidence that no verdict of the table is wrong, 0.5 up to but not including 1.
-    not_varied, spreads, truncated, looks
+    not_varied, spreads, truncated, title, looks
         As for `judge`.
     numerics : mapping of str to Numerics, optional
         What is known of the numerical error behind the count of each requirement.
@@ -368,6 +381,7 @@ def judge_many(
                 limits[requirement],
                 each,
                 requirement=requirement,
+                title=title,
                 looks=looks,
                 family=len(failures),
                 family_confidence=confidence,
@@ -389,6 +403,7 @@ def _judged(
     not_varied: tuple[str, ...],
     spreads: tuple[str, ...],
     truncated: tuple[str, ...],
+    title: str,
     looks: int,
     family: int,
     family_confidence: float,
@@ -424,6 +439,7 @@ def _judged(
         not_varied=not_varied,
         spreads=spreads,
         truncated=truncated,
+        title=title,
         looks=looks,
         family=family,
         family_confidence=family_confidence,
@@ -478,7 +494,8 @@ def _headline(verdict: Verdict) -> str:
 
 def _rows(verdict: Verdict) -> list[tuple[str, str]]:
     """Return the labelled lines between the headline and the cautions."""
-    rows = [("Requirement", verdict.requirement), ("Bound", _bound(verdict)), ("Method", METHOD)]
+    rows = [("Study", verdict.title)] if verdict.title else []
+    rows += [("Requirement", verdict.requirement), ("Bound", _bound(verdict)), ("Method", METHOD)]
     if verdict.family > 1:
         together = f"{grouped(verdict.family)} claims hold together at {percent(verdict.family_confidence)}"
         rows.append(("Correction", f"Bonferroni: {together}"))
@@ -528,12 +545,13 @@ def _to_decide(verdict: Verdict) -> str:
 
 
 def _table_headline(table: VerdictTable) -> str:
-    together = percent(table.confidence)
+    together, title = percent(table.confidence), table.verdicts[0].title
+    of = f"{title}: " if title else ""
     if len(table) == 1:
-        return f"1 requirement, judged at confidence {together} ({METHOD})."
+        return f"{of}1 requirement, judged at confidence {together} ({METHOD})."
     each = percent(table.verdicts[0].confidence)
     return (
-        f"{grouped(len(table))} requirements, each judged by itself; all verdicts hold together at "
+        f"{of}{grouped(len(table))} requirements, each judged by itself; all verdicts hold together at "
         f"confidence {together} ({table.correction} correction: each at {each}; {METHOD})."
     )
 

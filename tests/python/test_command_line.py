@@ -102,7 +102,7 @@ def test_json_report_is_that_of_python(study: wd.Study, study_file: str) -> None
     assert report["interim"] is False
     assert report["interim_verdict"] is None
     assert report["verdict"] == outcome.verdict(0.95).to_dict()
-    assert report["study"] == {"file": "servo.toml", "digest": study.digest, "seed": 11}
+    assert report["study"] == {"file": "servo.toml", "title": "", "digest": study.digest, "seed": 11}
     assert report["trials"] == {"asked_for": TRIALS, "run": TRIALS, "failed": TRIALS // 10, "diverged": 0}
     assert report["first_failures"] == outcome.failures.tolist()
     (requirement,) = report["requirements"]
