@@ -25,6 +25,35 @@ void check_count(std::uint64_t count) {
     if (count > (std::uint64_t(1) << 40)) throw std::invalid_argument("count: more trials than memory can hold");
 }
 
+// What a run asks Python while it lasts, on the thread that called it: it is told of the trials done and answers
+// whether to go on. Ctrl-C answers no; every other exception ends the run and is raised after it.
+class question {
+public:
+    explicit question(const py::object& progress) : progress_(progress) {}
+
+    /// Takes the lock of the interpreter for its own length: the run has given it back, and its workers never want it.
+    bool ask(std::uint64_t done) {
+        const py::gil_scoped_acquire lock;
+        try {
+            if (PyErr_CheckSignals() != 0) throw py::error_already_set();
+            return progress_.is_none() || progress_(done).cast<bool>();
+        } catch (py::error_already_set& e) {
+            if (!e.matches(PyExc_KeyboardInterrupt)) failure_ = e.value();
+            return false;
+        }
+    }
+
+    void raise() const {
+        if (failure_.is_none()) return;
+        PyErr_SetObject(py::type::of(failure_).ptr(), failure_.ptr());
+        throw py::error_already_set();
+    }
+
+private:
+    const py::object& progress_;
+    py::object failure_ = py::none();
+};
+
 py::tuple run(const campaign& c, const trial_choice& chosen, int threads, std::size_t block_size,
               const py::object& progress) {
     if (threads < 0) throw std::invalid_argument("threads: expected 0 or more");
@@ -34,32 +63,17 @@ py::tuple run(const campaign& c, const trial_choice& chosen, int threads, std::s
     py::array_t<std::uint8_t> status(n);
     const result_columns to{parameters.mutable_data(), measures.mutable_data(), status.mutable_data(), chosen.count};
 
-    bool interrupted = false;
-    py::object failure = py::none();
+    question python(progress);
     run_options options;
     options.threads = threads;
     options.block_size = block_size;
-    // Runs on this thread, between two samples of a block, and takes the lock of the interpreter for its own length.
-    options.progress = [&](std::uint64_t done) {
-        const py::gil_scoped_acquire lock;
-        try {
-            if (PyErr_CheckSignals() != 0) throw py::error_already_set();
-            return progress.is_none() || progress(done).cast<bool>();
-        } catch (py::error_already_set& e) {
-            interrupted = e.matches(PyExc_KeyboardInterrupt);
-            if (!interrupted) failure = e.value();
-            return false;
-        }
-    };
+    options.progress = [&](std::uint64_t done) { return python.ask(done); };
     std::uint64_t completed = 0;
     {
         const py::gil_scoped_release unlock; // workers touch no Python object
         completed = c.run(chosen, to, options);
     }
-    if (!failure.is_none()) {
-        PyErr_SetObject(py::type::of(failure).ptr(), failure.ptr());
-        throw py::error_already_set();
-    }
+    python.raise();
     return py::make_tuple(parameters, measures, status, completed);
 }
 
@@ -80,15 +94,17 @@ column draw(const campaign& c, std::uint64_t first, std::uint64_t count) {
     return parameters;
 }
 
-column replay(const campaign& c, std::uint64_t trial) {
+column replay(const campaign& c, std::uint64_t trial, const py::object& progress) {
+    question python(progress);
     recording r;
     {
         const py::gil_scoped_release unlock;
-        r = c.replay(trial);
+        r = c.replay(trial, [&] { return python.ask(0); });
     }
-    column values({py::ssize_t(r.signals.size()), py::ssize_t(r.samples)});
-    std::copy(r.values.begin(), r.values.end(), values.mutable_data());
-    return values;
+    python.raise();
+    if (!r.values) return column(std::vector<py::ssize_t>{0, 0});
+    const py::capsule owner(r.values.get(), [](void* values) { delete[] static_cast<double*>(values); });
+    return column({py::ssize_t(r.signals.size()), py::ssize_t(r.samples)}, r.values.release(), owner);
 }
 
 column quantiles(const py::dict& source, const column& probabilities) {
@@ -133,7 +149,8 @@ void bind_campaign(py::module_& m) {
         .def("run_chosen", run_chosen, py::arg("trials"), py::arg("threads") = 0, py::arg("block_size") = 0,
              py::arg("progress") = py::none(), "As `run`, for listed trials, in the order of the list.")
         .def("draw", draw, py::arg("first"), py::arg("count"), "Parameters of trials that are not run: (n, count).")
-        .def("replay", replay, py::arg("trial"), "Every signal of one trial at every sample: (signals, samples).");
+        .def("replay", replay, py::arg("trial"), py::arg("progress") = py::none(),
+             "Every signal of one trial at every sample: (signals, samples); nothing if it was stopped.");
     m.def("evaluate_measure", measure_recording, py::arg("measure"), py::arg("time"), py::arg("values"),
           py::arg("target"), py::arg("sample_period"), "One measure over a recorded signal.");
     m.def("spread_quantiles", quantiles, py::arg("spread"), py::arg("probabilities"));

@@ -20,7 +20,8 @@ from numpy.typing import NDArray
 
 from ._errors import DescriptionError
 from ._pilots import Parts, Pilots, pilots_of
-from ._runner import Columns, Report
+from ._reporter import Reporter
+from ._runner import Columns
 from ._scales import Values
 from ._slack import slack_of
 
@@ -39,27 +40,29 @@ class Choice:
     caution: str = ""
 
 
-def chosen_steps(parts: Parts, report: Report | None = None) -> Choice:
+def chosen_steps(parts: Parts, reporter: Reporter | None = None) -> Choice:
     """Return the integration steps in a sample period.
 
     Parameters
     ----------
     parts : tuple
         Loop, requirements, measures, correlations and seed of the study.
-    report : callable, optional
-        Told of pilot trials done and asked for; returning False ends the choice with KeyboardInterrupt.
+    reporter : Reporter, optional
+        Of the call that waits for the choice.
 
     Raises
     ------
     DescriptionError
         If 256 steps are not enough.
+    KeyboardInterrupt
+        If the reporter was asked to stop.
     """
     loop = parts[0]
     if isinstance(loop.steps_per_sample, int):
         return Choice(loop.steps_per_sample)
     if loop.plant.is_linear:
         return Choice(1)
-    pilots = pilots_of(parts, report)
+    pilots = pilots_of(parts, reporter)
     if not pilots.finished.any():
         caution = (
             f"Every one of {len(pilots.trials)} pilot trials diverges, so the integration steps could not be chosen by "
@@ -68,7 +71,7 @@ def chosen_steps(parts: Parts, report: Report | None = None) -> Choice:
         return Choice(UNCOMPARED_STEPS, caution)
     found: dict[int, Columns] = {}
     for steps in CANDIDATES:
-        found[steps] = pilots.with_steps(steps, loop.integrator)
+        found[steps] = pilots.with_steps(steps, loop.integrator, reporter)
         worst = _complaint(pilots, found[steps], pilots.allowed)
         if not worst:
             return Choice(steps)

@@ -13,7 +13,8 @@ from numpy.typing import NDArray
 from ._describe import Described
 from ._errors import DescriptionError, suggestion
 from ._numbers import checked_integer
-from ._runner import Columns, Report
+from ._reporter import Report, Reporter
+from ._runner import Columns
 from ._slack import slack_of
 from ._text_table import WIDTH, plainly_grouped
 
@@ -176,15 +177,17 @@ class Outcome:
             As for `Study.run`.
         """
         trials = checked_integer(trials, "trials", 1, 1 << 40)
-        more = self.study._columns(self.first + self.trials, trials, threads, progress)
         mine = self._columns
-        joined = Columns(
-            np.concatenate([mine.parameters, more.parameters], axis=1),
-            np.concatenate([mine.measures, more.measures], axis=1),
-            np.concatenate([mine.status, more.status]),
-            mine.trials + trials,
-        )
-        return Outcome(self.study, self._described, joined, self.first, frozenset(self._judged))
+        with Reporter(progress, trials) as reporter:
+            more = self.study._columns(self.first + self.trials, trials, threads, reporter, reporter.go_on)
+            joined = Columns(
+                np.concatenate([mine.parameters, more.parameters], axis=1),
+                np.concatenate([mine.measures, more.measures], axis=1),
+                np.concatenate([mine.status, more.status]),
+                mine.trials + trials,
+            )
+            described = self.study._run_description if more.trials else self._described
+            return Outcome(self.study, described, joined, self.first, frozenset(self._judged))
 
     def table(self) -> Any:
         """Return a `pyarrow.Table`, one row a trial.

@@ -13,7 +13,8 @@ from ._describe import Described, describe
 from ._errors import DescriptionError
 from ._loop import Loop
 from ._measures import Measure, Requirement
-from ._runner import Columns, Report, make_campaign, run_chosen
+from ._reporter import Reporter
+from ._runner import Columns, make_campaign, run_chosen
 from ._scales import Sized, Values, allowed_differences, with_scales
 from ._slack import slack_of
 
@@ -63,13 +64,13 @@ class Pilots:
         finished: NDArray[np.bool_] = self.columns.status == 0
         return finished
 
-    def with_steps(self, steps: int, integrator: str) -> Columns:
+    def with_steps(self, steps: int, integrator: str, reporter: Reporter | None = None) -> Columns:
         """Return what fixed steps find for the same trials."""
         loop = {"steps_per_sample": steps, "integrator": integrator}
-        return _checked_run(_changed(self.sized.described, loop), self.trials, None)
+        return _checked_run(_changed(self.sized.described, loop), self.trials, reporter)
 
 
-def pilots_of(parts: Parts, report: Report | None = None) -> Pilots:
+def pilots_of(parts: Parts, reporter: Reporter | None = None) -> Pilots:
     """Choose the pilot trials of a study and compute them with the reference.
 
     Roundings of sensor and actuator are left out: they turn a difference in the last digit into a whole step of
@@ -83,7 +84,7 @@ def pilots_of(parts: Parts, report: Report | None = None) -> Pilots:
     jumping: dict[str, object] = {"integrator": "cash_karp5", "steps_per_sample": FIXED_STEPS}
     settings = jumping if loop.plant.may_jump else dict[str, object](integrator="reference")
     trials = _chosen(sized.described, MOST_JUMPING if loop.plant.may_jump else MOST_PILOTS)
-    columns = _checked_run(_changed(sized.described, settings), trials, report)
+    columns = _checked_run(_changed(sized.described, settings), trials, reporter)
     limits = limits_of(sized.described, columns)
     slack = slack_of(sized.described, requirements, columns.parameters, columns.measures, columns.status)
     return Pilots(parts, trials, sized, columns, slack, *allowed_differences(sized, loop, columns, limits))
@@ -111,20 +112,21 @@ def _changed(described: Described, loop: dict[str, object]) -> Described:
     return replace(described, study=described.study | {"loop": described.study["loop"] | loop})
 
 
-def _checked_run(described: Described, trials: Trials, report: Report | None) -> Columns:
+def _checked_run(described: Described, trials: Trials, reporter: Reporter | None) -> Columns:
     """Run trials of the comparison; give up on equations that no step control gets through.
 
     The budget decides only whether there is an error, never which number of steps is chosen.
     """
     deadline = time.perf_counter() + REFERENCE_SECONDS
+    told = reporter.beside("pilot trials", len(trials)) if reporter else None
 
-    def go_on(done: int, count: int) -> object:
-        return time.perf_counter() < deadline and (report is None or report(done, count))
+    def go_on(done: int) -> bool:
+        return time.perf_counter() < deadline and (told is None or told(done))
 
     columns = run_chosen(make_campaign(described.study), trials, go_on)
     if columns.trials == len(trials):
         return columns
-    if time.perf_counter() < deadline:
+    if time.perf_counter() < deadline or (reporter and reporter.stopped):
         raise KeyboardInterrupt
     expected = f"pilot trials that end within {REFERENCE_SECONDS:g} s with control of the step"
     mend = "Something in them chatters (write tanh for sign), or set steps_per_sample to a number of your own."

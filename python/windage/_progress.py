@@ -37,17 +37,22 @@ class ProgressBar:
 
     def __call__(self, done: int, total: int) -> bool:
         """Draw `done` of `total` trials. Always returns True: go on."""
+        self.show(DESCRIPTION, done, total)
+        return True
+
+    def show(self, work: str, done: int, total: int) -> None:
+        """Draw `done` of `total` trials of some work."""
         self._is_closed = False
         progress, task = self._begun(total)
-        progress.update(task, completed=done, refresh=True)
-        return True
+        progress.update(task, completed=done, total=total, description=work, refresh=True)
 
     def close(self, done: int, total: int) -> None:
         """Draw the last state and end the line; a second call does nothing."""
         if self._is_closed:
             return
         progress, task = self._begun(total)
-        progress.update(task, completed=done, description=DESCRIPTION if done == total else f"{DESCRIPTION}, stopped")
+        work = DESCRIPTION if done == total else f"{DESCRIPTION}, stopped"
+        progress.update(task, completed=done, total=total, description=work)
         progress.stop()
         self._progress, self._is_closed = None, True
 

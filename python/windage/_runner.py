@@ -1,23 +1,20 @@
-"""Runs ranges of trials on the engine, with progress and a way to stop early."""
+"""Runs ranges of trials on the engine."""
 
 from __future__ import annotations
 
-import sys
-from collections.abc import Callable
 from dataclasses import dataclass
 from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
 
+from ._describe import Described
 from ._errors import DescriptionError, EngineError
 from ._loader import default_threads, engine
 from ._numbers import checked_integer
-from ._progress import ProgressBar
+from ._reporter import GoOn
 
 MOST_THREADS = 1024
-#: Called with the trials done and the trials asked for; returning False stops the run and keeps what is done.
-Report = Callable[[int, int], object]
 
 
 @dataclass(frozen=True)
@@ -44,6 +41,12 @@ class Columns:
         return len(self.status)
 
 
+def no_columns(described: Described, requested: int) -> Columns:
+    """Return the columns of a run that was stopped before its first trial."""
+    parameters, measures = np.empty((len(described.columns), 0)), np.empty((len(described.measures), 0))
+    return Columns(parameters, measures, np.empty(0, dtype=np.uint8), requested)
+
+
 def make_campaign(study: dict[str, Any]) -> Any:
     """Return the engine's campaign of a described study.
 
@@ -58,9 +61,7 @@ def make_campaign(study: dict[str, Any]) -> Any:
         raise EngineError(f"The engine refused the study: {error}") from error
 
 
-def run_columns(
-    campaign: Any, first: int, count: int, threads: int = 0, progress: bool | Report | None = False
-) -> Columns:
+def run_columns(campaign: Any, first: int, count: int, threads: int = 0, go_on: GoOn | None = None) -> Columns:
     """Run the trials first, ..., first + count - 1.
 
     Parameters
@@ -71,28 +72,21 @@ def run_columns(
         Range of trials.
     threads : int
         0: `WINDAGE_THREADS` if that is set, otherwise every core this process may use.
-    progress : bool or callable or None
-        True: a bar on the terminal; None: the same if there is one; False: none; a callable gets the trials
-        done and asked for, about ten times a second, and stops the run by returning False.
+    go_on : callable, optional
+        Gets the trials done, at once, about twenty times a second and at the end, on this thread; the run stops
+        when it returns False. See `windage._reporter`.
 
     Returns
     -------
     Columns
-        All trials, or after Ctrl-C or a stop those that were finished, from the first one on without a gap.
+        All trials, or after a stop those that were finished, from the first one on without a gap.
     """
     threads = checked_integer(threads, "threads", 0, MOST_THREADS) or default_threads()
     available = int(campaign.trials_available)
     if first + count > available:
         mend = "Ask for fewer trials, or give a table with more rows."
         raise DescriptionError("trials", first + count, f"at most {available}, the rows of the study's table", mend)
-    report = reporter(progress)
-
-    def step(done: int) -> bool:
-        return report is None or report(done, count) is not False
-
-    parameters, measures, status, completed = campaign.run(first, count, threads, 0, step)
-    if isinstance(report, ProgressBar):
-        report.close(completed, count)
+    parameters, measures, status, completed = campaign.run(first, count, threads, 0, go_on)
     if completed < count:
         # Copies, so that the memory of trials that never ran is given back.
         parameters, measures = parameters[:, :completed].copy(), measures[:, :completed].copy()
@@ -100,7 +94,7 @@ def run_columns(
     return Columns(parameters, measures, status, count)
 
 
-def run_chosen(campaign: Any, trials: NDArray[np.uint64], report: Report | None = None, threads: int = 0) -> Columns:
+def run_chosen(campaign: Any, trials: NDArray[np.uint64], go_on: GoOn | None = None, threads: int = 0) -> Columns:
     """Run listed trials, in the order of the list; see `run_columns`.
 
     Parameters
@@ -109,27 +103,10 @@ def run_chosen(campaign: Any, trials: NDArray[np.uint64], report: Report | None 
         From `make_campaign`.
     trials : ndarray of uint64
         Indices of trials that the study has.
-    report : callable, optional
-        As `progress` of `run_columns`.
+    go_on : callable, optional
     threads : int
         As for `run_columns`.
     """
     threads = threads or default_threads()
-    count = len(trials)
-
-    def step(done: int) -> bool:
-        return report is None or bool(report(done, count))
-
-    parameters, measures, status, done = campaign.run_chosen(trials, threads, 0, step)
-    return Columns(parameters[:, :done], measures[:, :done], status[:done], count)
-
-
-def reporter(progress: object) -> Report | None:
-    """Return what is to be told of progress: a bar, the caller's function, or nothing."""
-    if progress is True or (progress is None and sys.stderr is not None and sys.stderr.isatty()):
-        return ProgressBar()
-    if progress is None or progress is False:
-        return None
-    if not callable(progress):
-        raise DescriptionError("progress", progress, "True, False, None or a function of trials done and asked for")
-    return progress
+    parameters, measures, status, done = campaign.run_chosen(trials, threads, 0, go_on)
+    return Columns(parameters[:, :done], measures[:, :done], status[:done], len(trials))

@@ -21,9 +21,9 @@ from ._measures import Measure, Requirement
 from ._not_varied import Cautions, not_varied
 from ._numbers import Spread, checked_integer, high_of, low_of, nominal_of
 from ._outcome import Outcome
-from ._progress import ProgressBar
 from ._replay import Replay
-from ._runner import Columns, Report, make_campaign, reporter, run_columns
+from ._reporter import GoOn, Report, Reporter
+from ._runner import Columns, make_campaign, no_columns, run_columns
 from ._study_checks import (
     check_positive_definite,
     check_title,
@@ -120,8 +120,8 @@ class Study(Description):
             mend = "Use study.count(...) or study.batches(...), whose memory does not grow."
             expected = f"an outcome of at most {LARGEST_OUTCOME / 1e9:g} GB"
             raise DescriptionError("trials", trials, expected, mend)
-        columns = self._columns(0, count, threads, progress)
-        return Outcome(self, self._run_description, columns)
+        with Reporter(progress, count) as reporter:
+            return self._outcome(0, count, threads, reporter)
 
     def batches(
         self, trials: int, size: int = 100_000, threads: int = 0, progress: bool | Report | None = None
@@ -136,20 +136,18 @@ class Study(Description):
         """
         count = checked_integer(trials, "trials", 1, MOST_TRIALS)
         size = checked_integer(size, "size", 1, MOST_TRIALS)
-        report, done = reporter(progress), 0
-
-        def of_all(in_batch: int, _: int) -> object:
-            return report is None or report(done + in_batch, count)
-
-        while done < count:
-            columns = self._columns(done, min(size, count - done), threads, of_all)
-            outcome = Outcome(self, self._run_description, columns, done)
-            done += outcome.trials
-            if isinstance(report, ProgressBar) and (outcome.interrupted or done == count):
-                report.close(done, count)
-            yield outcome
-            if outcome.interrupted:
-                return
+        reporter = Reporter(progress, count)
+        outcomes = self._batches(count, size, threads, reporter)
+        try:
+            while True:
+                # Between two batches Ctrl-C belongs to the caller.
+                with reporter.listening():
+                    outcome = next(outcomes, None)
+                if outcome is None:
+                    return
+                yield outcome
+        finally:
+            reporter.close()
 
     def count(
         self,
@@ -169,11 +167,23 @@ class Study(Description):
             How many indices of failing trials to keep, the first ones.
         size, threads, progress
             As for `batches`.
+
+        Returns
+        -------
+        Tally
+            After Ctrl-C or a stop: of the trials counted so far.
         """
+        count = checked_integer(trials, "trials", 1, MOST_TRIALS)
+        size = checked_integer(size, "size", 1, MOST_TRIALS)
         counter = Counter(self, checked_integer(keep_failures, "keep_failures", 0, MOST_TRIALS))
-        for outcome in self.batches(trials, size, threads, progress):
-            counter.add(outcome)
-        return counter.tally(trials)
+        with Reporter(progress, count) as reporter:
+            try:
+                for outcome in self._batches(count, size, threads, reporter):
+                    counter.add(outcome)
+            except KeyboardInterrupt:  # of a program with a handler of its own
+                if not counter.tally(count).trials:
+                    raise
+            return counter.tally(count)
 
     def replay(self, trial: int) -> Replay:
         """Run one trial again and return every signal, with the same digits as in `run`."""
@@ -281,7 +291,8 @@ class Study(Description):
 
     @cached_property
     def _choice(self) -> Choice:
-        return chosen_steps((*self._bound, self.correlations or {}, self.seed))
+        with Reporter(False, 0) as reporter:
+            return chosen_steps((*self._bound, self.correlations or {}, self.seed), reporter)
 
     @cached_property
     def _run_description(self) -> Described:
@@ -292,7 +303,7 @@ class Study(Description):
         """Measures of the nominal unit in the order of a run's, NaN if it diverges; without its signals."""
         loop, requirements, measures = _at_nominal(self._bound)
         described = describe(loop, requirements, measures, {}, self.seed, self.resolved_steps())
-        columns = run_columns(make_campaign(described.study), 0, 1, 1, False)
+        columns = run_columns(make_campaign(described.study), 0, 1, 1)
         if columns.trials < 1:
             raise KeyboardInterrupt
         # Measures that differ in a spread only may be the same one here.
@@ -306,8 +317,32 @@ class Study(Description):
     def _describe(self, steps: int, *, every_signal: bool = False) -> Described:
         return describe(*self._bound, self.correlations or {}, self.seed, steps, every_signal=every_signal)
 
-    def _columns(self, first: int, count: int, threads: int, progress: bool | Report | None) -> Columns:
-        return run_columns(self._campaign, first, count, threads, progress)
+    def _batches(self, count: int, size: int, threads: int, reporter: Reporter) -> Iterator[Outcome]:
+        done = 0
+        while done < count:
+            outcome = self._outcome(done, min(size, count - done), threads, reporter)
+            done += outcome.trials
+            yield outcome
+            if outcome.interrupted:
+                return
+
+    def _outcome(self, first: int, count: int, threads: int, reporter: Reporter) -> Outcome:
+        """Run some of the trials that a reporter tells of, which has to be entered."""
+        columns = self._columns(first, count, threads, reporter, reporter.after(first))
+        described = self._run_description if "_choice" in self.__dict__ else self._describe(1)
+        return Outcome(self, described, columns, first)
+
+    def _columns(self, first: int, count: int, threads: int, reporter: Reporter, go_on: GoOn) -> Columns:
+        if "_choice" not in self.__dict__:
+            try:
+                # As the property, but told to whoever waits for the run, and stopped by them.
+                parts = (*self._bound, self.correlations or {}, self.seed)
+                self.__dict__["_choice"] = chosen_steps(parts, reporter)
+            except KeyboardInterrupt:
+                if not reporter.stopped:
+                    raise
+                return no_columns(self._describe(1), count)
+        return run_columns(self._campaign, first, count, threads, go_on)
 
 
 def _at_nominal(part: Any) -> Any:
@@ -324,11 +359,12 @@ def _check_memory(loop: Loop) -> None:
 
 def _replay(study: Study, loop: Loop, described: Described, index: int, trial: int | None) -> Replay:
     campaign = make_campaign(described.study)
-    columns = run_columns(campaign, index, 1, 1, False)
-    if columns.trials < 1:
+    with Reporter(False, 1) as reporter:
+        columns = run_columns(campaign, index, 1, 1, reporter.go_on)
+        values = campaign.replay(index, reporter.go_on)
+    if columns.trials < 1 or not values.size:
         raise KeyboardInterrupt
     names = campaign.signal_names()
-    values = campaign.replay(index)
     values.flags.writeable = False
     run = (columns.parameters, columns.measures, columns.status)
     signals = dict(zip(names, np.asarray(values), strict=True))

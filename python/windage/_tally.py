@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import dataclasses
 from collections.abc import Mapping
 from dataclasses import dataclass
 from typing import TYPE_CHECKING
@@ -76,26 +77,26 @@ class Counter:
     """Adds up outcomes into a tally."""
 
     def __init__(self, study: Study, keep_failures: int) -> None:
-        self._study = study
         self._keep = keep_failures
-        self._trials = self._failures = self._diverged = 0
-        self._missed = np.zeros(len(study.requirements), dtype=np.int64)
-        self._first: list[NDArray[np.int64]] = []
-        self._kept = 0
+        self._tally = Tally(
+            study, 0, 0, 0, {r.label: 0 for r in study.requirements}, np.empty(0, dtype=np.int64), requested=0
+        )
 
     def add(self, outcome: Outcome) -> None:
-        """Count one more outcome."""
-        self._trials += outcome.trials
-        self._failures += len(outcome.failures)
-        self._diverged += len(outcome.diverged)
-        self._missed += (~outcome.met).sum(axis=0)
-        if self._kept < self._keep:
-            self._first.append(outcome.failures[: self._keep - self._kept].copy())
-            self._kept += len(self._first[-1])
+        """Count one more outcome: wholly, or not at all if an exception arrives meanwhile."""
+        old, missed = self._tally, (~outcome.met).sum(axis=0).tolist()
+        room = self._keep - len(old.first_failures)
+        first = np.concatenate([old.first_failures, outcome.failures[:room]]) if room else old.first_failures
+        self._tally = Tally(
+            old.study,
+            old.trials + outcome.trials,
+            old.failures + len(outcome.failures),
+            old.diverged + len(outcome.diverged),
+            {label: n + more for (label, n), more in zip(old.requirement_failures.items(), missed, strict=True)},
+            first,
+            requested=0,
+        )
 
     def tally(self, requested: int) -> Tally:
-        """Return what was counted."""
-        labels = [requirement.label for requirement in self._study.requirements]
-        first = np.concatenate(self._first) if self._first else np.empty(0, dtype=np.int64)
-        missed = dict(zip(labels, self._missed.tolist(), strict=True))
-        return Tally(self._study, self._trials, self._failures, self._diverged, missed, first, requested)
+        """Return what was counted, of so many trials asked for."""
+        return dataclasses.replace(self._tally, requested=requested)

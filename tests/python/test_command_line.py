@@ -18,7 +18,7 @@ import pytest
 from rich.console import Console
 
 import windage as wd
-from windage import _command_line, _command_output, _runner
+from windage import _command_line, _command_output, _reporter
 from windage._command_line import main
 from windage._demo import DEMO_TRIALS, demo_study
 from windage._progress import ProgressBar
@@ -361,7 +361,7 @@ def test_interrupted_run_is_judged_as_interim(
                 raise KeyboardInterrupt
             return True
 
-    monkeypatch.setattr(_runner, "ProgressBar", Interrupted)
+    monkeypatch.setattr(_reporter, "ProgressBar", Interrupted)
     monkeypatch.setattr(sys.stderr, "isatty", lambda: True)
     trials = 3_000_000
     code = main(["run", study_file, "--trials", str(trials), "--at-least", "0.8", "--json", "interim.json"])

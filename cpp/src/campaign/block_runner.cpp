@@ -4,6 +4,12 @@
 #include <limits>
 
 namespace windage {
+namespace {
+
+// A stop is looked for after so few samples because one of the reference integrator may take milliseconds.
+constexpr std::int64_t look_for_stop_every = 4;
+
+} // namespace
 
 class block_runner::reference_targets final : public target_source {
 public:
@@ -50,7 +56,7 @@ bool block_runner::run(const trial_choice& chosen, std::uint64_t offset, std::si
             loop_.mark_diverged(diverged_);
             if (all_diverged()) break;
         }
-        if (k % 64 == 63 && !keep_going()) return false;
+        if (k % look_for_stop_every == 0 && !keep_going()) return false;
         if (k < last) loop_.advance();
     }
     write(count, to, std::size_t(offset));
@@ -74,7 +80,8 @@ void block_runner::write(std::size_t count, const result_columns& to, std::size_
     }
 }
 
-recording block_runner::replay(std::uint64_t trial, const std::vector<std::string>& names) {
+recording block_runner::replay(std::uint64_t trial, const std::vector<std::string>& names,
+                               const std::function<bool()>& keep_going) {
     begin({trial, 1}, 0, 1);
     std::vector<constant_signal> sources;
     for (const std::string& name : names) sources.push_back(loop_.find(name));
@@ -82,8 +89,9 @@ recording block_runner::replay(std::uint64_t trial, const std::vector<std::strin
     r.signals = names;
     // The block may hold longer trials only where lanes differ; here all lanes are the same trial.
     r.samples = std::size_t(loop_.clock().last_sample()) + 1;
-    r.values.resize(names.size() * r.samples);
+    r.values = std::make_unique_for_overwrite<double[]>(names.size() * r.samples);
     for (std::size_t k = 0; k < r.samples; ++k) {
+        if (std::int64_t(k) % look_for_stop_every == 0 && !keep_going()) return {};
         loop_.sample(std::int64_t(k));
         for (std::size_t s = 0; s < sources.size(); ++s) r.values[s * r.samples + k] = sources[s][0];
         if (k + 1 < r.samples) loop_.advance();

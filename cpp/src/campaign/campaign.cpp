@@ -10,6 +10,7 @@
 
 #include <windage/campaign/block_runner.hpp>
 
+#include "watch.hpp"
 #include "work_queue.hpp"
 
 namespace windage {
@@ -83,7 +84,7 @@ std::uint64_t campaign::run(const trial_choice& chosen, const result_columns& to
     const std::size_t block_size = one_by_one ? lanes : block_size_for(options, count, threads, usual_block_);
     const std::size_t trials_per_block = one_by_one ? 1 : block_size;
     const std::uint64_t blocks = (count + trials_per_block - 1) / trials_per_block;
-    work_queue queue(blocks, options.progress);
+    work_queue queue(blocks);
 
     const auto work = [&](int) {
         queue.guard([&] {
@@ -98,18 +99,41 @@ std::uint64_t campaign::run(const trial_choice& chosen, const result_columns& to
         });
     };
     // The arena bounds the threads of this run; the global limit lets it have more than the machine has cores. A thread
-    // without a block would do nothing, and if it were this one, nobody would report progress.
+    // without a block would do nothing. The thread that enters the arena works too: in a forked process it is the only
+    // one, since oneTBB's own are gone.
     const int workers = int(std::min<std::uint64_t>(std::uint64_t(threads), blocks));
-    const oneapi::tbb::global_control limit(oneapi::tbb::global_control::max_allowed_parallelism, std::size_t(workers));
-    oneapi::tbb::task_arena arena(workers);
-    arena.execute([&] { oneapi::tbb::parallel_for(0, workers, work, oneapi::tbb::simple_partitioner()); });
+    const auto all_work = [&] {
+        const oneapi::tbb::global_control limit(oneapi::tbb::global_control::max_allowed_parallelism,
+                                                std::size_t(workers));
+        oneapi::tbb::task_arena arena(workers);
+        arena.execute([&] { oneapi::tbb::parallel_for(0, workers, work, oneapi::tbb::simple_partitioner()); });
+    };
+    const auto ask = [&] {
+        queue.guard([&] {
+            if (options.progress && !options.progress(queue.done())) queue.cancel();
+        });
+    };
+    watch([&] { queue.guard(all_work); }, ask);
+    if (queue.keep_going()) ask(); // the last word: all is done
     queue.rethrow();
     return std::min(count, queue.finished_prefix() * trials_per_block);
 }
 
-recording campaign::replay(std::uint64_t trial) const {
+recording campaign::replay(std::uint64_t trial, const std::function<bool()>& keep_going) const {
     if (trial >= trials_available()) throw std::invalid_argument("replay: the study has no trial of this index");
-    return block_runner(study_, *source_, lanes).replay(trial, signals_);
+    recording result;
+    work_queue queue(1);
+    const auto work = [&] {
+        result = block_runner(study_, *source_, lanes).replay(trial, signals_, [&] { return queue.keep_going(); });
+    };
+    const auto ask = [&] {
+        queue.guard([&] {
+            if (!keep_going()) queue.cancel();
+        });
+    };
+    watch([&] { queue.guard(work); }, ask);
+    queue.rethrow();
+    return result;
 }
 
 } // namespace windage

@@ -1,56 +1,48 @@
 // Hands out blocks in order, gathers what is done, and stops everybody on a cancel or an error.
 //
-// Workers touch atomics only. The progress callback runs on the thread that called `run` and nowhere else, because it
-// may lead into Python: that thread looks at the clock whenever a block asks whether to go on.
+// Any thread may call any function at any time, except `rethrow` and `finished_prefix`: those are for the thread that
+// has joined all others.
 #pragma once
 
 #include <atomic>
-#include <chrono>
 #include <cstdint>
 #include <exception>
-#include <functional>
 #include <mutex>
-#include <thread>
 #include <vector>
 
 namespace windage {
 
 class work_queue {
 public:
-    work_queue(std::uint64_t blocks, std::function<bool(std::uint64_t)> progress)
-        : blocks_(blocks), finished_(std::size_t(blocks)), progress_(std::move(progress)),
-          caller_(std::this_thread::get_id()), last_report_(clock::now()) {}
+    explicit work_queue(std::uint64_t blocks) : blocks_(blocks), finished_(std::size_t(blocks)) {}
 
     /// The next block that nobody has; false when there is none or the run is over.
     bool take(std::uint64_t& block) {
-        if (cancelled_.load(std::memory_order_relaxed)) return false;
+        if (!keep_going()) return false;
         block = next_.fetch_add(1, std::memory_order_relaxed);
         return block < blocks_;
     }
 
-    /// A block has written its results. The flags are read after all workers have joined.
+    /// A block has written its results.
     void finish(std::uint64_t block, std::uint64_t trials) {
         finished_[std::size_t(block)] = 1;
         done_.fetch_add(trials, std::memory_order_relaxed);
-        keep_going();
     }
 
-    bool keep_going() {
-        if (progress_ && std::this_thread::get_id() == caller_ && clock::now() - last_report_ > interval) {
-            if (!progress_(done_.load(std::memory_order_relaxed))) cancelled_ = true;
-            last_report_ = clock::now();
-        }
-        return !cancelled_.load(std::memory_order_relaxed);
-    }
+    void cancel() { cancelled_.store(true, std::memory_order_relaxed); }
+    bool keep_going() const { return !cancelled_.load(std::memory_order_relaxed); }
 
-    /// Runs f; the first exception of any worker ends the run and is thrown again by `rethrow`.
-    template <class F> void guard(F&& f) {
+    /// Trials of finished blocks.
+    std::uint64_t done() const { return done_.load(std::memory_order_relaxed); }
+
+    /// Runs f; the first exception of any thread ends the run and is thrown again by `rethrow`.
+    template <class F> void guard(F&& f) noexcept {
         try {
             f();
         } catch (...) {
             const std::lock_guard lock(error_mutex_);
             if (!error_) error_ = std::current_exception();
-            cancelled_ = true;
+            cancel();
         }
     }
 
@@ -66,14 +58,8 @@ public:
     }
 
 private:
-    using clock = std::chrono::steady_clock;
-    static constexpr std::chrono::milliseconds interval{100};
-
     std::uint64_t blocks_;
     std::vector<char> finished_; // one writer each
-    std::function<bool(std::uint64_t)> progress_;
-    std::thread::id caller_;
-    clock::time_point last_report_;
     std::atomic<std::uint64_t> next_{0}, done_{0};
     std::atomic<bool> cancelled_{false};
     std::mutex error_mutex_;

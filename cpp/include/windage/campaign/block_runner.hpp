@@ -21,7 +21,9 @@ public:
     bool run(const trial_choice& chosen, std::uint64_t offset, std::size_t count, const result_columns& to,
              const std::function<bool()>& keep_going);
 
-    recording replay(std::uint64_t trial, const std::vector<std::string>& names);
+    /// One trial with the signals of these names; without samples once `keep_going` says no.
+    recording replay(std::uint64_t trial, const std::vector<std::string>& names,
+                     const std::function<bool()>& keep_going);
 
     std::size_t block_size() const { return arena_.block_size(); }
     /// Signals of a block, a measure of the memory that a sample touches.

@@ -36,14 +36,15 @@ struct result_columns {
 struct run_options {
     int threads = 0;            ///< 0: as many as the machine offers
     std::size_t block_size = 0; ///< trials simulated together; 0: chosen
-    /// Called about ten times a second on the calling thread with the trials done so far; false cancels.
+    /// Called on the calling thread with the trials done so far: at once, about twenty times a second, and at the end;
+    /// false cancels. What it throws ends the run and is thrown again.
     std::function<bool(std::uint64_t)> progress;
 };
 
 struct recording {
     std::vector<std::string> signals;
     std::size_t samples = 0;
-    std::vector<double> values; ///< signal s at sample k: [s * samples + k]
+    std::unique_ptr<double[]> values; ///< signal s at sample k: [s * samples + k]; none if it was stopped
 };
 
 class campaign {
@@ -65,8 +66,9 @@ public:
     /// Draws the parameters of the trials chosen and runs none of them; `to` needs parameters only.
     void draw(const trial_choice& chosen, const result_columns& to) const;
 
-    /// One trial with every signal at every sample; the same digits as in `run`.
-    recording replay(std::uint64_t trial) const;
+    /// One trial with every signal at every sample; the same digits as in `run`. `keep_going` is asked as the progress
+    /// of a run is; once it says no, there are no samples.
+    recording replay(std::uint64_t trial, const std::function<bool()>& keep_going) const;
 
 private:
     void check(const trial_choice& chosen) const;
