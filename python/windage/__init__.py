@@ -9,9 +9,7 @@ from ._errors import DescriptionError, EngineError, EquationError, StudyFileErro
 from ._evidence import pass_probability_bounds, tolerance_bound, trials_needed
 from ._loader import show_config
 from ._loop import Loop
-from ._measures import (
-    Measure,
-    Requirement,
+from ._measure_functions import (
     final,
     iae,
     integral_absolute,
@@ -24,16 +22,20 @@ from ._measures import (
     minimum,
     overshoot,
     peak,
+    peak_to_peak,
+    reversals,
     rise_time,
     rms,
     rms_change,
     settling_time,
     standard_deviation,
     time_in_saturation,
+    time_of_peak,
     time_outside,
     total_variation,
     undershoot,
 )
+from ._measures import Measure, Requirement
 from ._outcome import Outcome
 from ._plants import Plant
 from ._replay import Replay
@@ -123,6 +125,8 @@ __all__ = [
     "overshoot",
     "pass_probability_bounds",
     "peak",
+    "peak_to_peak",
+    "reversals",
     "rise_time",
     "rms",
     "rms_change",
@@ -133,6 +137,7 @@ __all__ = [
     "show_config",
     "standard_deviation",
     "time_in_saturation",
+    "time_of_peak",
     "time_outside",
     "tolerance",
     "tolerance_bound",

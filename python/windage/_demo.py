@@ -8,7 +8,7 @@ from __future__ import annotations
 
 from ._controllers import ErrorADRC
 from ._loop import Loop
-from ._measures import peak, rms
+from ._measure_functions import peak, rms
 from ._plants import Plant
 from ._sensor_actuator import Actuator, Sensor
 from ._spreads import normal, tolerance, triangular, uniform

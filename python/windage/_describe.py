@@ -144,7 +144,9 @@ def describe(
     """
     numbers = Numbers()
     distinct, rows, paths = _distinct_measures(requirements, measures)
-    signals = list(loop.signal_names) if every_signal else [measure.signal for measure in distinct]
+    signals = (
+        list(loop.signal_names) if every_signal else [part.signal for measure in distinct for part in measure.parts]
+    )
     described_loop = loop._describe(numbers, loop.expressions_for(signals))
     described_loop["steps_per_sample"] = steps
     described_measures = [
@@ -202,7 +204,7 @@ def _distinct_measures(
 
 
 def _draws(measure: Measure) -> bool:
-    values = (measure.after, measure.before, measure.low, measure.high, measure.band, measure.tolerance)
+    values = (value for part in measure.parts for value in part._key())
     return any(isinstance(value, Spread) and not isinstance(value, Shared | Column) for value in values)
 
 

@@ -1,4 +1,4 @@
-"""Measures and requirements.
+"""Measures and requirements: what they are. The functions that make measures are in `_measure_functions`.
 
 A measure is one number computed from a trial: a reducer over a signal in a window. Compared with a limit
 (`measure <= limit`, `measure >= limit`) it becomes a requirement. Windows are in seconds and include both
@@ -12,13 +12,11 @@ import math
 from dataclasses import dataclass, field
 from typing import TYPE_CHECKING, Any, NoReturn
 
-from ._arguments import explained
 from ._descriptions import Description
 from ._errors import DescriptionError
 from ._numbers import (
     ANY,
     NON_NEGATIVE,
-    POSITIVE,
     Number,
     Rule,
     Spread,
@@ -34,7 +32,6 @@ if TYPE_CHECKING:
     from ._describe import Numbers
 
 _BEFORE = Rule("a time in s, or infinity for the end of the trial", low=0.0, infinite=True)
-_FRACTION = Rule("a fraction of the change from 0 to 1", low=0.0, high=1.0)
 
 #: Engine kinds that differ from the public name.
 _ENGINE_KINDS = {"final": "final_value", "time_in_saturation": "time_at_limits"}
@@ -48,25 +45,34 @@ _WORDS = {
     "integral_square": "integral of the square",
     "integral_time_absolute": "integral of time times magnitude",
 }
+#: Arguments that some kinds have, beside signal and window.
+_EXTRAS = ("low", "high", "band", "tolerance", "dead_band")
+#: Kinds that are made of two measures, with the sign between them.
+COMBINATIONS = {"difference": "-", "ratio": "/"}
+DEEPEST_COMBINATION = 8
 _CLASSICAL = {"ise": "integral_square", "iae": "integral_absolute", "itae": "integral_time_absolute"}
 
 
 @dataclass(frozen=True, repr=False, eq=False)
 class Measure(Description):
-    """One number computed from a trial. Made by `peak`, `rms`, `overshoot` and the other functions here.
+    """One number computed from a trial. Made by `peak`, `rms`, `overshoot` and the other functions.
 
-    `measure <= limit` and `measure >= limit` make a `Requirement`; the limit is a number or a spread.
+    `measure <= limit` and `measure >= limit` make a `Requirement`; the limit is a number or a spread. `a - b` and
+    `a / b` of two measures are measures too. The ratio of two zeros is undefined, as is what comes from an
+    undefined measure, and meets no requirement; anything else over zero is infinite, of either sign.
 
     Attributes
     ----------
     kind : str
         Name of the function that makes it.
     signal : str
-        Name of the signal.
+        Name of the signal; empty for a difference or ratio.
     after, before : float or spread, s
         Window.
-    low, high, band, tolerance : float or spread, optional
+    low, high, band, tolerance, dead_band : float or spread, optional
         Further arguments, where the kind has them.
+    first, second : Measure, optional
+        What a difference or ratio is made of.
     """
 
     kind: str = field(metadata={"is_kind": True})
@@ -77,17 +83,56 @@ class Measure(Description):
     high: Number | None = None
     band: Number | None = None
     tolerance: Number | None = None
+    dead_band: Number | None = None
+    first: Measure | None = None
+    second: Measure | None = None
 
     def __post_init__(self) -> None:
+        if self.kind in COMBINATIONS:
+            self._check_operands()
+            return
+        if self.first is not None or self.second is not None:
+            expected = f"one of {', '.join(COMBINATIONS)} for a measure made of two"
+            raise DescriptionError("measure.kind", self.kind, expected)
         if checked_label(self.kind, "measure.kind") is None:
             raise DescriptionError("measure.kind", self.kind, "the name of a function that makes a measure")
         object.__setattr__(self, "signal", checked_title(self.signal, f"{self.kind}.signal"))
         for name, rule in (("after", NON_NEGATIVE), ("before", _BEFORE)):
             object.__setattr__(self, name, checked_number(getattr(self, name), f"{self.kind}.{name}", rule))
-        for name in ("low", "high", "band", "tolerance"):
+        for name in _EXTRAS:
             if getattr(self, name) is not None:
                 object.__setattr__(self, name, checked_number(getattr(self, name), f"{self.kind}.{name}", ANY))
         check_order(self.after, self.before, f"{self.kind}.before")
+
+    def _check_operands(self) -> None:
+        for name in ("first", "second"):
+            operand = getattr(self, name)
+            if not isinstance(operand, Measure):
+                mend = "A number belongs to the limit: measure <= limit." if is_plain_number(operand) else ""
+                raise DescriptionError(f"{self.kind}.{name}", operand, "a measure such as peak('error')", mend)
+        if self._depth() > DEEPEST_COMBINATION:
+            expected = f"at most {DEEPEST_COMBINATION} differences and ratios within each other"
+            raise DescriptionError(self.kind, f"{self._depth()} of them", expected)
+
+    def _depth(self) -> int:
+        if self.first is None or self.second is None:
+            return 0
+        return 1 + max(self.first._depth(), self.second._depth())
+
+    @property
+    def parts(self) -> tuple[Measure, ...]:
+        """The measures of one signal that this one is made of: itself, or those of a difference or ratio."""
+        return tuple(part for _, part in self._placed_parts())
+
+    def _placed_parts(self, place: str = "") -> list[tuple[str, Measure]]:
+        if self.first is None or self.second is None:
+            return [(place, self)]
+        return [*self.first._placed_parts(f"{place}.first"), *self.second._placed_parts(f"{place}.second")]
+
+    def __repr__(self) -> str:
+        if self.first is None or self.second is None:
+            return super().__repr__()
+        return f"({self.first!r} {COMBINATIONS[self.kind]} {self.second!r})"
 
     @property
     def _kind(self) -> str:
@@ -96,12 +141,13 @@ class Measure(Description):
     @property
     def label(self) -> str:
         """The measure in words, as in tables."""
+        if self.first is not None and self.second is not None:
+            sides = [f"({m.label})" if m.kind in COMBINATIONS else m.label for m in (self.first, self.second)]
+            return f" {COMBINATIONS[self.kind]} ".join(sides)
         words = _WORDS.get(self.kind, self.kind.replace("_", " "))
-        details = [
-            f"{name} {shown(value)}"
-            for name in ("low", "high", "band", "tolerance")
-            if (value := getattr(self, name)) is not None
-        ]
+        extras = {name.replace("_", " "): getattr(self, name) for name in _EXTRAS}
+        told = [(n, v) for n, v in extras.items() if v is not None and (n, v) != ("dead band", 0.0)]
+        details = [f"{name} {shown(value)}" for name, value in told]
         text = words + (f" ({', '.join(details)})" if details else "")
         if self.kind != "time_in_saturation":
             text += f" of {self.signal}"
@@ -112,8 +158,8 @@ class Measure(Description):
         return text
 
     def _key(self) -> tuple[Any, ...]:
-        limits = (self.low, self.high, self.band, self.tolerance)
-        return (self.kind, self.signal, self.after, self.before, *limits)
+        extras = (getattr(self, name) for name in _EXTRAS)
+        return (self.kind, self.signal, self.after, self.before, *extras, self.first, self.second)
 
     def __eq__(self, other: object) -> bool:
         if isinstance(other, Measure):
@@ -137,6 +183,18 @@ class Measure(Description):
     def __gt__(self, limit: Any) -> NoReturn:
         self._refuse_comparison(">", limit)
 
+    def __sub__(self, other: Any) -> Measure:
+        return Measure("difference", "", first=self, second=other)
+
+    def __truediv__(self, other: Any) -> Measure:
+        return Measure("ratio", "", first=self, second=other)
+
+    def __rsub__(self, other: Any) -> Measure:
+        return Measure("difference", "", first=other, second=self)
+
+    def __rtruediv__(self, other: Any) -> Measure:
+        return Measure("ratio", "", first=other, second=self)
+
     def __bool__(self) -> NoReturn:
         raise DescriptionError(
             "requirement", self, "a comparison with a limit", "Write measure <= limit or measure >= limit."
@@ -148,6 +206,9 @@ class Measure(Description):
 
     def _describe(self, numbers: Numbers, path: str, limits: Any) -> dict[str, Any]:
         """Return the measure as the engine wants it; `limits` are those of the actuator."""
+        if self.first is not None and self.second is not None:
+            operands = [(self.first, f"{path}.first"), (self.second, f"{path}.second")]
+            return {"kind": self.kind, "operands": [m._describe(numbers, place, limits) for m, place in operands]}
         kind = _CLASSICAL.get(self.kind, _ENGINE_KINDS.get(self.kind, self.kind))
         described: dict[str, Any] = {"signal": self.signal}
         described["after"] = numbers.take(self.after, f"{path}.after")
@@ -160,6 +221,8 @@ class Measure(Description):
             described["a"] = numbers.take(self.tolerance, f"{path}.tolerance")
         elif self.band is not None:
             described["a"] = numbers.take(self.band, f"{path}.band")
+        elif self.dead_band is not None:
+            described["a"] = numbers.take(self.dead_band, f"{path}.dead_band")
         elif self.low is not None and self.high is not None:
             described["a"] = numbers.take(self.low, f"{path}.low")
             described["b"] = numbers.take(self.high, f"{path}.high")
@@ -228,170 +291,6 @@ class Requirement(Description):
     def __bool__(self) -> NoReturn:
         mend = "A chain a <= measure <= b is two requirements: write measure >= a and measure <= b apart."
         raise DescriptionError("requirement", self.words, "a requirement used as such, not as true or false", mend)
-
-
-@explained
-def peak(signal: str, after: Any = 0.0, before: Any = math.inf) -> Measure:
-    """Measure the largest magnitude of a signal in a window."""
-    return Measure("peak", signal, after, before)
-
-
-@explained
-def minimum(signal: str, after: Any = 0.0, before: Any = math.inf) -> Measure:
-    """Measure the smallest value of a signal in a window."""
-    return Measure("minimum", signal, after, before)
-
-
-@explained
-def maximum(signal: str, after: Any = 0.0, before: Any = math.inf) -> Measure:
-    """Measure the largest value of a signal in a window."""
-    return Measure("maximum", signal, after, before)
-
-
-@explained
-def mean(signal: str, after: Any = 0.0, before: Any = math.inf) -> Measure:
-    """Measure the mean of a signal over the samples in a window."""
-    return Measure("mean", signal, after, before)
-
-
-@explained
-def rms(signal: str, after: Any = 0.0, before: Any = math.inf) -> Measure:
-    """Measure the root mean square of a signal over the samples in a window."""
-    return Measure("rms", signal, after, before)
-
-
-@explained
-def standard_deviation(signal: str, after: Any = 0.0, before: Any = math.inf) -> Measure:
-    """Measure the root mean square of a signal about its mean in a window."""
-    return Measure("standard_deviation", signal, after, before)
-
-
-@explained
-def final(signal: str, after: Any = 0.0, before: Any = math.inf) -> Measure:
-    """Measure the last value of a signal in a window."""
-    return Measure("final", signal, after, before)
-
-
-@explained
-def integral_absolute(signal: str, after: Any = 0.0, before: Any = math.inf) -> Measure:
-    """Measure the integral of the magnitude of a signal (trapezium rule over the samples)."""
-    return Measure("integral_absolute", signal, after, before)
-
-
-@explained
-def integral_square(signal: str, after: Any = 0.0, before: Any = math.inf) -> Measure:
-    """Measure the integral of the square of a signal (trapezium rule over the samples)."""
-    return Measure("integral_square", signal, after, before)
-
-
-@explained
-def integral_time_absolute(signal: str, after: Any = 0.0, before: Any = math.inf) -> Measure:
-    """Measure the integral of magnitude times the time since the window's start."""
-    return Measure("integral_time_absolute", signal, after, before)
-
-
-@explained
-def total_variation(signal: str, after: Any = 0.0, before: Any = math.inf) -> Measure:
-    """Measure the sum of the magnitudes of all changes of a signal from sample to sample."""
-    return Measure("total_variation", signal, after, before)
-
-
-@explained
-def rms_change(signal: str, after: Any = 0.0, before: Any = math.inf) -> Measure:
-    """Measure the root mean square of the change of a signal from sample to sample."""
-    return Measure("rms_change", signal, after, before)
-
-
-@explained
-def time_outside(signal: str, low: Any, high: Any, after: Any = 0.0, before: Any = math.inf) -> Measure:
-    """Measure the time that a signal spends outside [low, high], in steps of the sample period."""
-    low = checked_number(low, "time_outside.low", ANY)
-    high = checked_number(high, "time_outside.high", ANY)
-    check_order(low, high, "time_outside.low", strict=False)
-    return Measure("time_outside", signal, after, before, low=low, high=high)
-
-
-@explained
-def overshoot(signal: str = "output", after: Any = 0.0, before: Any = math.inf) -> Measure:
-    """Measure the largest excess over the final reference, as a fraction of the change.
-
-    The change goes from the signal at the window's first sample to the reference at its last one (IEC
-    60050-351:2013, 351-45-38). Where the window ends at the instant at which the reference jumps, it is the
-    reference before the jump. Without a change the overshoot is infinite.
-    """
-    return Measure("overshoot", signal, after, before)
-
-
-@explained
-def undershoot(signal: str = "output", after: Any = 0.0, before: Any = math.inf) -> Measure:
-    """Measure the largest move to the wrong side of the initial value, as a fraction of the change."""
-    return Measure("undershoot", signal, after, before)
-
-
-@explained
-def rise_time(
-    low: Any = 0.1, high: Any = 0.9, signal: str = "output", after: Any = 0.0, before: Any = math.inf
-) -> Measure:
-    """Measure the time from fraction `low` to `high` of the change (IEC 60050-351:2013, 351-45-36)."""
-    low = checked_number(low, "rise_time.low", _FRACTION)
-    high = checked_number(high, "rise_time.high", _FRACTION)
-    check_order(low, high, "rise_time.low")
-    return Measure("rise_time", signal, after, before, low=low, high=high)
-
-
-@explained
-def settling_time(
-    band: Any = None,
-    tolerance: Any = None,
-    signal: str | None = None,
-    after: Any = 0.0,
-    before: Any = math.inf,
-) -> Measure:
-    """Measure the time from the window's start until a signal stays within a band.
-
-    Parameters
-    ----------
-    band : float or spread, optional
-        Half width of the band around the final reference as a fraction of the change; 0.02 by default
-        (IEC 60050-351:2013, 351-45-37). The signal is "output" by default.
-    tolerance : float or spread, optional
-        Instead of `band`: half width of the band about zero, in the unit of the signal, "error" by default.
-    signal : str, optional
-        Name of the signal.
-    after, before : float or spread, s
-        Window. A signal outside the band at its end gives infinity.
-    """
-    if band is not None and tolerance is not None:
-        raise DescriptionError("settling_time.tolerance", tolerance, "either band or tolerance")
-    if tolerance is not None:
-        tolerance = checked_number(tolerance, "settling_time.tolerance", POSITIVE)
-        return Measure("settling_time", signal or "error", after, before, tolerance=tolerance)
-    band = checked_number(0.02 if band is None else band, "settling_time.band", POSITIVE)
-    return Measure("settling_time", signal or "output", after, before, band=band)
-
-
-@explained
-def time_in_saturation(after: Any = 0.0, before: Any = math.inf) -> Measure:
-    """Measure the time that the command spends at a limit of the actuator."""
-    return Measure("time_in_saturation", "command", after, before)
-
-
-@explained
-def ise(after: Any = 0.0, before: Any = math.inf) -> Measure:
-    """Measure the integral of the squared error."""
-    return Measure("ise", "error", after, before)
-
-
-@explained
-def iae(after: Any = 0.0, before: Any = math.inf) -> Measure:
-    """Measure the integral of the magnitude of the error."""
-    return Measure("iae", "error", after, before)
-
-
-@explained
-def itae(after: Any = 0.0, before: Any = math.inf) -> Measure:
-    """Measure the integral of time since the window's start times the magnitude of the error."""
-    return Measure("itae", "error", after, before)
 
 
 def shown(value: Number | None) -> str:

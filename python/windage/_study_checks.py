@@ -117,10 +117,10 @@ def check_positive_definite(described: Sequence[Mapping[str, Any]]) -> None:
 
 def check_windows(loop: Loop, requirements: Sequence[Requirement], measures: Sequence[Measure]) -> None:
     """Refuse measures of signals that do not exist, and windows outside the trial."""
-    places = [(f"study.requirements[{i}]", r.measure) for i, r in enumerate(requirements)]
-    places += [(f"study.measures[{i}]", m) for i, m in enumerate(measures)]
+    whole = [(f"study.requirements[{i}]", r.measure) for i, r in enumerate(requirements)]
+    whole += [(f"study.measures[{i}]", m) for i, m in enumerate(measures)]
     shortest = low_of(loop.duration)
-    for place, measure in places:
+    for place, measure in (placed for start, m in whole for placed in m._placed_parts(start)):
         if measure.signal not in loop.signal_names:
             mend = suggestion(measure.signal, loop.signal_names)
             raise DescriptionError(f"{place}.signal", measure.signal, "the name of a signal of the loop", mend)

@@ -13,12 +13,12 @@ import math
 from collections.abc import Callable, Mapping
 from typing import TYPE_CHECKING, Any
 
-from . import _measures, _spreads
+from . import _measure_functions, _spreads
 from ._controllers import ErrorADRC, OutputADRC
 from ._descriptions import Description, FrozenMapping, arguments, kind_of
 from ._errors import DescriptionError, StudyFileError, suggestion
 from ._loop import Loop
-from ._measures import Measure, Requirement
+from ._measures import COMBINATIONS, Measure, Requirement
 from ._numbers import Spread, is_plain_number
 from ._plants import Plant
 from ._sensor_actuator import Actuator, Sensor
@@ -68,27 +68,32 @@ SPREADS: Mapping[str, Maker] = {
 MEASURES: Mapping[str, Maker] = {
     f.__name__: f
     for f in (
-        _measures.peak,
-        _measures.minimum,
-        _measures.maximum,
-        _measures.mean,
-        _measures.rms,
-        _measures.standard_deviation,
-        _measures.final,
-        _measures.integral_absolute,
-        _measures.integral_square,
-        _measures.integral_time_absolute,
-        _measures.total_variation,
-        _measures.rms_change,
-        _measures.time_outside,
-        _measures.overshoot,
-        _measures.undershoot,
-        _measures.rise_time,
-        _measures.settling_time,
-        _measures.time_in_saturation,
-        _measures.ise,
-        _measures.iae,
-        _measures.itae,
+        _measure_functions.peak,
+        _measure_functions.minimum,
+        _measure_functions.maximum,
+        _measure_functions.mean,
+        _measure_functions.rms,
+        _measure_functions.standard_deviation,
+        _measure_functions.final,
+        _measure_functions.integral_absolute,
+        _measure_functions.integral_square,
+        _measure_functions.integral_time_absolute,
+        _measure_functions.total_variation,
+        _measure_functions.rms_change,
+        _measure_functions.time_outside,
+        _measure_functions.peak_to_peak,
+        _measure_functions.reversals,
+        _measure_functions.time_of_peak,
+        _measure_functions.difference,
+        _measure_functions.ratio,
+        _measure_functions.overshoot,
+        _measure_functions.undershoot,
+        _measure_functions.rise_time,
+        _measure_functions.settling_time,
+        _measure_functions.time_in_saturation,
+        _measure_functions.ise,
+        _measure_functions.iae,
+        _measure_functions.itae,
     )
 }
 PLANTS: Mapping[str, Maker] = {
@@ -267,6 +272,10 @@ def _spread(item: Mapping[str, Any], place: str) -> Any:
 def _measure(item: Any, place: str) -> Any:
     data = _table(item, place)
     kind = _word(data, "measure", MEASURES, place)
+    if kind in COMBINATIONS:
+        inside = {key: part for key, part in data.items() if key != "measure"}
+        operands = {k: _measure(x, f"{place}.{k}") if isinstance(x, dict) else x for k, x in inside.items()}
+        return _call(MEASURES[kind], operands, place)
     return _made(MEASURES[kind], {key: part for key, part in data.items() if key != "measure"}, place)
 
 

@@ -26,8 +26,8 @@ block_runner::block_runner(const study_description& study, const parameter_sourc
     : arena_(block_size), source_(source), loop_(study.loop, arena_), trials_(block_size),
       parameters_(source.count() * block_size), diverged_(arena_.take()), result_(arena_.take()) {
     const measure_timing timing{loop_.clock().period(), loop_.clock().end()};
-    for (const measure_description& m : study.measures)
-        measures_.push_back(make_measure(m, loop_.find(m.signal), timing, arena_));
+    const signal_finder find = [&](const std::string& name) { return loop_.find(name); };
+    for (const measure_description& m : study.measures) measures_.push_back(make_measure(m, find, timing, arena_));
     block_ = {block_size, study.seed, trials_.data(), parameters_.data()};
 }
 

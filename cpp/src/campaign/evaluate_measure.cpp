@@ -18,14 +18,19 @@ private:
     std::size_t size_;
 };
 
+void check_constant(const measure_description& d) {
+    if (!d.after.is_constant() || !d.before.is_constant() || !d.a.is_constant() || !d.b.is_constant())
+        throw std::invalid_argument("measure: a recorded signal has no drawn parameters");
+    for (const measure_description& operand : d.operands) check_constant(operand);
+}
+
 } // namespace
 
 double evaluate_measure(const measure_description& d, const std::vector<double>& time,
                         const std::vector<double>& values, double target, double sample_period) {
     if (time.size() != values.size() || time.empty())
         throw std::invalid_argument("measure: time and values need the same length, at least 1");
-    if (!d.after.is_constant() || !d.before.is_constant() || !d.a.is_constant() || !d.b.is_constant())
-        throw std::invalid_argument("measure: a recorded signal has no drawn parameters");
+    check_constant(d);
     signal_arena arena(lanes);
     const signal now = arena.take(), x = arena.take(), result = arena.take();
     held_value period(true, arena), end(true, arena);
@@ -36,7 +41,7 @@ double evaluate_measure(const measure_description& d, const std::vector<double>&
     end.fill([&](std::size_t) { return time.back(); });
     const std::vector<std::uint64_t> trials(lanes, 0);
     const trial_block block{lanes, 0, trials.data(), nullptr};
-    const auto m = make_measure(d, x, {period, end}, arena);
+    const auto m = make_measure(d, [&](const std::string&) { return x; }, {period, end}, arena);
     m->begin(block, constant_target(target, lanes));
     for (std::size_t k = 0; k < time.size(); ++k) {
         fill(now, time[k]);

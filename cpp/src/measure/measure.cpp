@@ -3,16 +3,31 @@
 #include <stdexcept>
 
 #include <windage/measure/band_time.hpp>
+#include <windage/measure/combination.hpp>
 #include <windage/measure/response.hpp>
+#include <windage/measure/shape.hpp>
 
 #include "reduction.hpp"
 
 namespace windage {
 
-std::unique_ptr<measure> make_measure(const measure_description& d, constant_signal values,
+namespace {
+
+std::unique_ptr<measure> make_combination(const measure_description& d, const signal_finder& find,
+                                          const measure_timing& timing, signal_arena& arena) {
+    if (d.operands.size() != 2)
+        throw std::invalid_argument("measure: a difference or ratio takes 2 operands, not " +
+                                    std::to_string(d.operands.size()));
+    return std::make_unique<combination>(d.kind, make_measure(d.operands[0], find, timing, arena),
+                                         make_measure(d.operands[1], find, timing, arena), arena);
+}
+
+} // namespace
+
+std::unique_ptr<measure> make_measure(const measure_description& d, const signal_finder& find,
                                       const measure_timing& timing, signal_arena& arena) {
     const auto plain = [&]<class Reducer>(Reducer reducer) -> std::unique_ptr<measure> {
-        return std::make_unique<reduction<Reducer>>(d, values, timing, arena, std::move(reducer));
+        return std::make_unique<reduction<Reducer>>(d, find(d.signal), timing, arena, std::move(reducer));
     };
     using namespace reducers;
     switch (d.kind) {
@@ -35,6 +50,11 @@ std::unique_ptr<measure> make_measure(const measure_description& d, constant_sig
     case measure_kind::rise_time: return plain(rise_time(d, arena));
     case measure_kind::settling_time: return plain(settling_time(d, true, arena));
     case measure_kind::settling_time_absolute: return plain(settling_time(d, false, arena));
+    case measure_kind::peak_to_peak: return plain(peak_to_peak{});
+    case measure_kind::reversals: return plain(reversals(d, arena));
+    case measure_kind::time_of_peak: return plain(time_of_peak{});
+    case measure_kind::difference:
+    case measure_kind::ratio: return make_combination(d, find, timing, arena);
     }
     throw std::invalid_argument("measure: unknown kind");
 }

@@ -3,6 +3,7 @@
 
 #include <limits>
 #include <string>
+#include <vector>
 
 #include <windage/lanes/number.hpp>
 
@@ -28,6 +29,11 @@ enum class measure_kind {
     rise_time,              ///< from fraction a to fraction b of the change
     settling_time, ///< IEC 60050-351, 351-45-37: until the deviation stays within the band a (fraction of the change)
     settling_time_absolute, ///< the same with the band a in the unit of the signal, about zero
+    peak_to_peak,           ///< largest value less smallest value
+    reversals,              ///< changes of direction by more than the dead band a
+    time_of_peak,           ///< time since the window's start of the first sample with the largest magnitude
+    difference,             ///< of two measures: operands[0] - operands[1]
+    ratio,                  ///< of two measures: operands[0] / operands[1]
 };
 
 struct measure_description {
@@ -36,6 +42,7 @@ struct measure_description {
     number after = 0.0;                                      ///< window start, s
     number before = std::numeric_limits<double>::infinity(); ///< window end, s
     number a, b;                                             ///< by kind
+    std::vector<measure_description> operands;               ///< of a difference or ratio, which reads no signal itself
 };
 
 } // namespace windage

@@ -1,7 +1,9 @@
 // Measures: one number a trial, computed while the trial runs. Nothing of the signal is kept.
 #pragma once
 
+#include <functional>
 #include <memory>
+#include <string>
 
 #include <windage/lanes/signal.hpp>
 #include <windage/measure/description.hpp>
@@ -38,8 +40,11 @@ public:
     virtual void finish(signal result) const = 0;
 };
 
-/// The measure described, reading the signal `values`; throws std::invalid_argument.
-std::unique_ptr<measure> make_measure(const measure_description& d, constant_signal values,
+/// The signal of a name; throws std::invalid_argument where there is none.
+using signal_finder = std::function<constant_signal(const std::string&)>;
+
+/// The measure described; throws std::invalid_argument.
+std::unique_ptr<measure> make_measure(const measure_description& d, const signal_finder& find,
                                       const measure_timing& timing, signal_arena& arena);
 
 } // namespace windage
