@@ -10,6 +10,7 @@ from ._evidence import pass_probability_bounds, tolerance_bound, trials_needed
 from ._loader import show_config
 from ._loop import Loop
 from ._measure_functions import (
+    difference,
     final,
     iae,
     integral_absolute,
@@ -23,6 +24,7 @@ from ._measure_functions import (
     overshoot,
     peak,
     peak_to_peak,
+    ratio,
     reversals,
     rise_time,
     rms,
@@ -109,6 +111,7 @@ __all__ = [
     "beta",
     "choice",
     "column",
+    "difference",
     "final",
     "iae",
     "integral_absolute",
@@ -126,6 +129,7 @@ __all__ = [
     "pass_probability_bounds",
     "peak",
     "peak_to_peak",
+    "ratio",
     "reversals",
     "rise_time",
     "rms",

@@ -84,6 +84,11 @@ EVERY_MEASURE = [
     wd.ise(),
     wd.iae(after=0.5),
     wd.itae(),
+    wd.peak_to_peak("command", after=0.1),
+    wd.reversals("measured"),
+    wd.time_of_peak("error", before=0.9),
+    (wd.reversals("output", dead_band=SPREAD) - wd.peak("error", after=SPREAD)) / wd.time_in_saturation(),
+    wd.peak("error", before=0.5) - wd.peak("error", after=0.5),
 ]
 CONTROLLER = wd.OutputADRC(
     2,
