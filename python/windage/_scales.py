@@ -73,7 +73,8 @@ def with_scales(described: Described) -> Sized:
             rows.append(wanted)
         return rows.index(wanted)
 
-    inside, whole = [], []
+    inside: list[int] = []
+    whole: list[tuple[int, ...]] = []
     for measure, made_of in zip(nodes, operands, strict=True):
         if made_of:
             inside.append(-1)
@@ -89,7 +90,8 @@ def with_scales(described: Described) -> Sized:
 
 
 def _with_operands(own: list[dict[str, Any]]) -> tuple[list[dict[str, Any]], tuple[tuple[int, ...], ...]]:
-    nodes, operands = list(own), []
+    nodes = list(own)
+    operands: list[tuple[int, ...]] = []
     for node in nodes:  # which grow while they are walked through
         inner = node.get("operands", [])
         operands.append(tuple(range(len(nodes), len(nodes) + len(inner))))

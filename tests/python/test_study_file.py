@@ -87,7 +87,7 @@ EVERY_MEASURE = [
     wd.peak_to_peak("command", after=0.1),
     wd.reversals("measured"),
     wd.time_of_peak("error", before=0.9),
-    (wd.reversals("output", dead_band=SPREAD) - wd.peak("error", after=SPREAD)) / wd.time_in_saturation(),
+    (wd.reversals("output", dead_band=SPREAD) - wd.peak("error", after=wd.uniform(0.1, 0.2))) / wd.time_in_saturation(),
     wd.peak("error", before=0.5) - wd.peak("error", after=0.5),
 ]
 CONTROLLER = wd.OutputADRC(
