@@ -7,6 +7,7 @@ or requirement leaves all other draws as they are.
 
 from __future__ import annotations
 
+from collections import Counter
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from typing import TYPE_CHECKING, Any
@@ -21,6 +22,8 @@ if TYPE_CHECKING:
 
 #: Names of columns of `Outcome.table()` that no parameter may take.
 TABLE_COLUMNS = ("trial", "passed", "status")
+MOST_DRAWN = 10_000
+MOST_CORRELATED = 500
 
 Taken = float | tuple[str, int]
 
@@ -48,6 +51,8 @@ class Numbers:
             return value
         key = _key(value, path)
         if key not in self._keys:
+            if len(self._spreads) >= MOST_DRAWN:
+                raise DescriptionError(path, "one more spread", f"a study of at most {MOST_DRAWN} drawn parameters")
             self._keys[key] = len(self._spreads)
             self._spreads.append((key, path, value))
         known = self._spreads[self._keys[key]]
@@ -72,31 +77,32 @@ class Numbers:
     def columns(self) -> tuple[DrawnColumn, ...]:
         """Return the drawn parameters under their names, in column order."""
         short = [_short_name(path, spread) for _, path, spread in self._spreads]
+        counts = Counter(short)
         named = [(spread.name, path) for _, path, spread in self._spreads if spread.name is not None]
         _refuse_equal_names(named)
         columns = []
         for name, (_, path, spread) in zip(short, self._spreads, strict=True):
-            is_clear = short.count(name) == 1 and name not in TABLE_COLUMNS
+            is_clear = counts[name] == 1 and name not in TABLE_COLUMNS
             columns.append(DrawnColumn(name if is_clear else path, path, spread))
         _refuse_equal_names([(column.name, column.path) for column in columns])
         return tuple(columns)
 
-    def describe_spreads(self) -> list[dict[str, Any]]:
+    def describe_spreads(self, columns: Sequence[DrawnColumn]) -> list[dict[str, Any]]:
         """Return the spreads as the engine wants them, in column order."""
         described = []
-        for (key, _, spread), column in zip(self._spreads, self.columns(), strict=True):
+        for (key, _, spread), column in zip(self._spreads, columns, strict=True):
             kind, numbers = spread._engine_form()
             stream = self.stream(f"spread:{key}")
             described.append({"name": column.name, "kind": kind, "numbers": numbers, "stream": stream})
         return described
 
-    def index_of(self, name: str, columns: Sequence[DrawnColumn], place: str) -> int:
-        """Return the column of a path, shared name or parameter name."""
+    def places(self, columns: Sequence[DrawnColumn]) -> dict[str, int]:
+        """Return the column that each path, shared name and parameter name stands for."""
+        places: dict[str, int] = {}
         for i, ((key, path, _), column) in enumerate(zip(self._spreads, columns, strict=True)):
-            if name in (key, path, column.name):
-                return i
-        known = sorted({column.path for column in columns} | {column.name for column in columns})
-        raise DescriptionError(place, name, "the path or name of a drawn parameter", suggestion(name, known))
+            for name in (key, path, column.name):
+                places.setdefault(name, i)
+        return places
 
 
 @dataclass(frozen=True)
@@ -112,13 +118,15 @@ class Described:
     @property
     def measure_names(self) -> list[str]:
         """A name for each measure: its words, with a number where they are the same."""
-        names: list[str] = []
+        names: dict[str, None] = {}
+        counts: dict[str, int] = {}
         for measure in self.measures:
-            label, count = measure.label, 2
+            words = label = measure.label
             while label in names:
-                label, count = f"{measure.label} [{count}]", count + 1
-            names.append(label)
-        return names
+                counts[words] = counts.get(words, 1) + 1
+                label = f"{words} [{counts[words]}]"
+            names[label] = None
+        return list(names)
 
 
 def describe(
@@ -160,7 +168,7 @@ def describe(
     study = {
         "loop": described_loop,
         "measures": described_measures,
-        "spreads": numbers.describe_spreads(),
+        "spreads": numbers.describe_spreads(columns),
         "correlations": _correlations(correlations, numbers, columns),
         "seed": seed,
     }
@@ -188,11 +196,13 @@ def _distinct_measures(
     Measures that hold spreads of their own are drawn each by itself.
     """
     distinct: list[Measure] = []
+    known: dict[Measure, int] = {}
     paths: list[str] = []
 
     def row(measure: Measure, path: str) -> int:
-        if measure in distinct and not _draws(measure):
-            return distinct.index(measure)
+        if measure in known and not _draws(measure):
+            return known[measure]
+        known.setdefault(measure, len(distinct))
         distinct.append(measure)
         paths.append(path)
         return len(distinct) - 1
@@ -239,8 +249,13 @@ def _correlations(
     must not be that of writing.
     """
     pairs: dict[frozenset[int], float] = {}
+    places = numbers.places(columns) if correlations else {}
+    for name in (name for pair in correlations for name in pair):
+        if name not in places:
+            mend = suggestion(name, places)
+            raise DescriptionError("study.correlations", name, "the path or name of a drawn parameter", mend)
     for (first, second), value in correlations.items():
-        a, b = (numbers.index_of(name, columns, "study.correlations") for name in (first, second))
+        a, b = places[first], places[second]
         pair = frozenset((a, b))
         if a == b or pair in pairs:
             found = f"({first!r}, {second!r})"
@@ -252,6 +267,9 @@ def _correlations(
         pairs[pair] = value
     described = []
     for group in _groups(pairs):
+        if len(group) > MOST_CORRELATED:
+            found = f"{len(group)} parameters that hang together"
+            raise DescriptionError("study.correlations", found, f"at most {MOST_CORRELATED}")
         order = sorted(group, key=lambda i: columns[i].path)
         matrix = [1.0 if a == b else pairs.get(frozenset((a, b)), 0.0) for a in order for b in order]
         described.append({"parameters": order, "rank_correlation": matrix})
@@ -259,8 +277,23 @@ def _correlations(
 
 
 def _groups(pairs: Mapping[frozenset[int], float]) -> list[set[int]]:
-    groups: list[set[int]] = []
+    """Return the parameters that hang together, group by group."""
+    neighbours: dict[int, set[int]] = {}
     for pair in pairs:
-        joined = set(pair).union(*(group for group in groups if group & pair))
-        groups = [group for group in groups if not group & pair] + [joined]
+        for which in pair:
+            neighbours.setdefault(which, set()).update(pair)
+    groups: list[set[int]] = []
+    seen: set[int] = set()
+    for start in neighbours:
+        if start in seen:
+            continue
+        group: set[int] = set()
+        pending = [start]
+        while pending:
+            which = pending.pop()
+            if which not in group:
+                group.add(which)
+                pending.extend(neighbours[which])
+        seen |= group
+        groups.append(group)
     return groups

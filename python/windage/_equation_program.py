@@ -13,7 +13,7 @@ from __future__ import annotations
 import math
 import operator
 from collections.abc import Callable, Sequence
-from dataclasses import dataclass, replace
+from dataclasses import dataclass
 
 # fmt: off
 #: Operations by the number of operands. An operand is true where it differs from 0; a truth value is 1 or 0.
@@ -155,22 +155,22 @@ class Tape:
 
     def finish(self, inputs: Sequence[str], outputs: Sequence[int]) -> Program:
         """Return the program of the given outputs, without instructions that none of them needs."""
-        is_needed = [False] * len(self._code)
-        for output in outputs:
-            is_needed[output] = True
-        for index in range(len(self._code) - 1, -1, -1):
-            if is_needed[index]:
-                for operand in _operands(self._code[index]):
-                    is_needed[operand] = True
+        # Only what is needed is visited: a tape may hold many programs.
+        needed: set[int] = set()
+        pending = list(outputs)
+        while pending:
+            index = pending.pop()
+            if index not in needed:
+                needed.add(index)
+                pending.extend(_operands(self._code[index]))
         moved: dict[int, int] = {-1: -1}
         code: list[Instruction] = []
-        for index, instruction in enumerate(self._code):
-            if not is_needed[index]:
-                continue
+        for index in sorted(needed):
+            instruction = self._code[index]
             moved[index] = len(code)
             if instruction.op != "load":
                 a, b, c = moved[instruction.a], moved[instruction.b], moved[instruction.c]
-                instruction = replace(instruction, a=a, b=b, c=c)
+                instruction = Instruction(instruction.op, a, b, c, instruction.constant)
             code.append(instruction)
         return Program(tuple(inputs), tuple(code), tuple(moved[output] for output in outputs))
 

@@ -16,7 +16,7 @@ import re
 from collections.abc import Mapping, Sequence
 from types import MappingProxyType
 
-from ._equation_language import CONSTANTS, FUNCTIONS, TIME
+from ._equation_language import CONSTANTS, FUNCTIONS, LONGEST_TEXT, TIME
 from ._equation_lowering import lower
 from ._equation_program import Instruction, Program, Tape
 from ._equation_reference import evaluate_reference
@@ -28,10 +28,16 @@ __all__ = [
     "Instruction",
     "Program",
     "check_name",
+    "compile_each",
     "compile_equations",
     "evaluate_reference",
     "names_used",
 ]
+
+#: Operations of all named expressions of a loop together.
+MOST_INSTRUCTIONS = 200_000
+#: Characters of all expressions of a plant, and of a loop, together.
+LONGEST_TEXTS = 200_000
 
 _NOTHING: Mapping[str, str] = MappingProxyType({})
 
@@ -132,7 +138,59 @@ def compile_equations(
     """
     if auxiliary_field is None:
         auxiliary_field = ".".join([*field.split(".")[:-1], "auxiliaries"])
+    tape, results = _tape_of(equations, inputs, field, auxiliaries, auxiliary_field)
+    chosen = list(equations) if outputs is None else _check_outputs(outputs, results, field)
+    return tape.finish(inputs, [results[name] for name in chosen])
+
+
+def compile_each(
+    expressions: Mapping[str, str], outputs: Sequence[str], inputs: Sequence[str], *, field: str
+) -> dict[str, Program]:
+    """Compile named expressions that may read each other, each output to a program of its own.
+
+    Parameters
+    ----------
+    expressions : mapping of str to str
+        Named expressions; all are checked.
+    outputs : sequence of str
+        Names of those that are wanted.
+    inputs, field
+        As for `compile_equations`.
+
+    Raises
+    ------
+    EquationError
+        As for `compile_equations`; and if the programs together are longer than `MOST_INSTRUCTIONS`, since
+        each holds all that it reads.
+    """
+    tape, results = _tape_of({}, inputs, field, expressions, field)
+    names = tuple(inputs)
+    programs: dict[str, Program] = {}
+    total = 0
+    for name in outputs:
+        programs[name] = tape.finish(names, [results[name]])
+        total += len(programs[name].code)
+        if total > MOST_INSTRUCTIONS:
+            mend = "Each expression is computed with all that it reads; leave some out."
+            expected = f"expressions of at most {MOST_INSTRUCTIONS} operations altogether"
+            raise EquationError(field, f"more than {MOST_INSTRUCTIONS} operations", expected, mend)
+    return programs
+
+
+def _tape_of(
+    equations: Mapping[str, str],
+    inputs: Sequence[str],
+    field: str,
+    auxiliaries: Mapping[str, str],
+    auxiliary_field: str,
+) -> tuple[Tape, dict[str, int]]:
+    """Return a tape that holds all expressions, and the value of each by name."""
     _check_inputs(inputs, field)
+    texts = [text for group in (equations, auxiliaries) for text in group.values() if isinstance(text, str)]
+    length = sum(min(len(text), LONGEST_TEXT) for text in texts)  # one that is too long is named by itself
+    if length > LONGEST_TEXTS:
+        expected = f"expressions of at most {LONGEST_TEXTS} characters altogether"
+        raise EquationError(field, f"{length} characters", expected)
     formulas = _parse_all(equations, field)
     named = _parse_all(auxiliaries, auxiliary_field)
     _check_auxiliaries(named, inputs, formulas, auxiliary_field)
@@ -144,8 +202,7 @@ def compile_equations(
         values[name] = lower(tape, named[name], values)
     results = {name: lower(tape, formula, values) for name, formula in formulas.items()}
     results.update({name: values[name] for name in named})
-    chosen = list(formulas) if outputs is None else _check_outputs(outputs, results, field)
-    return tape.finish(inputs, [results[name] for name in chosen])
+    return tape, results
 
 
 def _check_inputs(inputs: Sequence[str], field: str) -> None:

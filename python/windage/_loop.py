@@ -9,18 +9,19 @@ from typing import TYPE_CHECKING, Any
 
 from ._controllers import Controller, OutputADRC, _LinearADRC
 from ._descriptions import Description, FrozenMapping, frozen
-from ._equations import Program, check_name, compile_equations
+from ._equations import Program, check_name, compile_each
 from ._errors import DescriptionError, suggestion
 from ._loop_checks import advice, check_delay, check_length, delay_is_whole
 from ._numbers import (
     POSITIVE,
     Number,
     Rule,
+    check_count,
     checked_choice,
     checked_integer,
     checked_number,
 )
-from ._plants import LOOP_SIGNALS, AnyPlant, engine_program, is_loop_signal
+from ._plants import LOOP_SIGNALS, AnyPlant, engine_program, inputs_read, is_loop_signal
 from ._sensor_actuator import Actuator, Sensor
 from ._time_functions import Constant, Disturbance, Noise, TimeFunction
 
@@ -29,6 +30,7 @@ if TYPE_CHECKING:
 
 INTEGRATORS = ("rk4", "euler", "cash_karp5")
 MOST_STEPS = 1024
+MOST_SIGNALS = 1000
 
 
 @dataclass(frozen=True, repr=False)
@@ -58,7 +60,8 @@ class Loop(Description):
     steps_per_sample : "auto" or int
         Integration steps in a sample period; "auto" lets the study choose (`Study.resolved_steps`).
     signals : mapping of str to str
-        Named expressions over signals, auxiliaries and parameters of the plant; each is a signal.
+        Named expressions over signals, auxiliaries and parameters of the plant; each is a signal. At most
+        1000, and 200 000 characters and operations altogether.
 
     Raises
     ------
@@ -89,7 +92,7 @@ class Loop(Description):
         object.__setattr__(self, "signals", self._checked_signals())
         check_length(self)
         check_delay(self)
-        _ = [self._expression(name) for name in self.signals]
+        _ = self._expressions
 
     @cached_property
     def signal_names(self) -> tuple[str, ...]:
@@ -138,6 +141,7 @@ class Loop(Description):
 
     def _checked_signals(self) -> FrozenMapping[str]:
         signals = frozen(self.signals, "loop.signals", "a mapping from names to expressions")
+        check_count(signals, "loop.signals", MOST_SIGNALS)
         plant = self.plant
         taken = {*self._plain_signals(), plant.input_name, *plant.named_numbers, *plant.named_expressions}
         for name in signals:
@@ -152,16 +156,18 @@ class Loop(Description):
         estimates = [f"estimate_{i + 1}" for i in range(self.controller.order + 1)]
         return [*LOOP_SIGNALS, *self.plant.state_names, *self.plant.disturbance_names, *estimates]
 
-    def _expression(self, name: str) -> Program:
-        """Compile one named signal or auxiliary, with all that it reads written into it."""
+    @cached_property
+    def _expressions(self) -> dict[str, Program]:
+        """Each named signal and auxiliary as a program, with all that it reads written into it."""
+        own = {**self.plant.named_expressions, **self.signals}
+        if not own:
+            return {}
         inputs = [*self._plain_signals(), self.plant.input_name, *self.plant.named_numbers, "t"]
-        return compile_equations(
-            {},
+        return compile_each(
+            {**self.plant.named_expressions, **self._output_word(), **self.signals},
+            list(own),
             list(dict.fromkeys(inputs)),
             field="loop.signals",
-            auxiliaries={**self.plant.named_expressions, **self._output_word(), **self.signals},
-            auxiliary_field="loop.signals",
-            outputs=[name],
         )
 
     def _output_word(self) -> dict[str, str]:
@@ -194,9 +200,9 @@ class Loop(Description):
         return {"name": name, "kind": "time_function", "function": inner}
 
     def _describe_expression(self, name: str, numbers: Numbers) -> dict[str, Any]:
-        program = self._expression(name)
+        program = self._expressions[name]
         sources: dict[str, tuple[str, int, Any, str]] = {}
-        for used in program.inputs:
+        for used in inputs_read(program):
             if used in self.plant.named_numbers:
                 value = numbers.take(self.plant.named_numbers[used], f"plant.{used}")
                 sources[used] = ("value", 0, value, "")
@@ -208,8 +214,8 @@ class Loop(Description):
 
     def expressions_for(self, signals: list[str]) -> list[str]:
         """Return which of some signals are expressions that the engine has to be given."""
-        own = [*self.plant.named_expressions, *self.signals]
-        return [name for name in own if name in signals]
+        wanted = set(signals)
+        return [name for name in (*self.plant.named_expressions, *self.signals) if name in wanted]
 
 
 def _time_function(value: object) -> TimeFunction:

@@ -11,7 +11,7 @@ import math
 import numbers
 import operator
 from abc import ABC, abstractmethod
-from collections.abc import Iterable, Sequence
+from collections.abc import Iterable, Sequence, Sized
 from dataclasses import dataclass
 from typing import Any
 
@@ -202,6 +202,12 @@ def checked_sequence(value: object, place: str, expected: str) -> list[Any]:
     if hasattr(value, "ndim") and value.ndim == 0:
         raise DescriptionError(place, value, expected)
     return list(value)  # type: ignore[call-overload,no-any-return]
+
+
+def check_count(items: Sized, place: str, most: int) -> None:
+    """Refuse more items than a description may have, before anything is built from them."""
+    if len(items) > most:
+        raise DescriptionError(place, f"{len(items)} items", f"at most {most} items")
 
 
 def checked_integer(value: object, place: str, low: int, high: int) -> int:

@@ -12,7 +12,7 @@ from typing import TYPE_CHECKING, Any
 from ._descriptions import Description, FrozenMapping, frozen
 from ._equations import Program, check_name, compile_equations
 from ._errors import DescriptionError, suggestion
-from ._numbers import ANY, Number, checked_number, checked_sequence, is_text
+from ._numbers import ANY, Number, check_count, checked_number, checked_sequence, is_text
 
 if TYPE_CHECKING:
     from ._describe import Numbers
@@ -20,6 +20,8 @@ if TYPE_CHECKING:
 #: Names of signals that every loop has.
 LOOP_SIGNALS = ("time", "reference", "error", "output", "measured", "command", "input")
 MOST_STATES = 100
+MOST_AUXILIARIES = 1000
+MOST_PARAMETERS = 10_000
 #: Operations whose result can jump.
 _JUMPS = frozenset(
     ("sign", "less", "less_equal", "equal", "not_equal", "logical_and", "logical_or", "logical_not", "select")
@@ -80,7 +82,7 @@ class Plant(AnyPlant):
     Parameters
     ----------
     states : mapping of str to float or spread
-        Names of the states with their values at time 0. A sequence of names stands for zeros.
+        Names of the states with their values at time 0. A sequence of names stands for zeros. At most 100.
     equations : mapping of str to str
         The time derivative of each state. An equation may read states, the input, disturbances, parameters,
         auxiliaries, the time `t` and `pi`; see the equation language.
@@ -92,9 +94,10 @@ class Plant(AnyPlant):
     disturbances : sequence of str
         Names of the disturbances; the loop says what they are.
     parameters : mapping of str to float or spread
-        Parameters, SI units throughout.
+        Parameters, SI units throughout. At most 10 000.
     auxiliaries : mapping of str to str
-        Named expressions that equations, the output and each other may read.
+        Named expressions that equations, the output and each other may read. At most 1000; with the equations
+        at most 200 000 characters.
 
     Raises
     ------
@@ -125,6 +128,7 @@ class Plant(AnyPlant):
         parameters = _numbers(self.parameters, "plant.parameters")
         equations = frozen(self.equations, "plant.equations", "a mapping from each state to its derivative")
         auxiliaries = frozen(self.auxiliaries, "plant.auxiliaries", "a mapping from names to expressions")
+        check_count(auxiliaries, "plant.auxiliaries", MOST_AUXILIARIES)
         _check_one_equation_a_state(states, equations)
         for name, value in (
             ("states", states),
@@ -254,11 +258,16 @@ class Plant(AnyPlant):
 
 def engine_program(program: Program, sources: Mapping[str, tuple[str, int, Any, str]]) -> dict[str, Any]:
     """Return a program as the engine wants it, with the inputs that it loads and no others."""
-    loaded = _loaded(program)
-    order = [name for name in program.inputs if name in loaded]
-    place = {program.inputs.index(name): i for i, name in enumerate(order)}
+    loaded = sorted({s.a for s in program.code if s.op == "load"})
+    place = {index: i for i, index in enumerate(loaded)}
     code = [(s.op, place[s.a] if s.op == "load" else s.a, s.b, s.c, s.constant) for s in program.code]
-    return {"inputs": [sources[name] for name in order], "code": code, "outputs": list(program.outputs)}
+    inputs = [sources[program.inputs[index]] for index in loaded]
+    return {"inputs": inputs, "code": code, "outputs": list(program.outputs)}
+
+
+def inputs_read(program: Program) -> list[str]:
+    """Return the names of the inputs that a program reads, in its order."""
+    return [program.inputs[index] for index in sorted({s.a for s in program.code if s.op == "load"})]
 
 
 def is_loop_signal(name: str) -> bool:
@@ -267,7 +276,7 @@ def is_loop_signal(name: str) -> bool:
 
 
 def _loaded(program: Program) -> set[str]:
-    return {program.inputs[s.a] for s in program.code if s.op == "load"}
+    return set(inputs_read(program))
 
 
 def _states(value: object) -> FrozenMapping[Number]:
@@ -281,11 +290,13 @@ def _states(value: object) -> FrozenMapping[Number]:
 
 def _numbers(value: object, place: str) -> FrozenMapping[Number]:
     mapping = frozen(value, place, "a mapping from names to numbers or spreads")
+    check_count(mapping, place, MOST_PARAMETERS)
     return FrozenMapping({name: checked_number(x, f"{place}.{name}", ANY) for name, x in mapping.items()})
 
 
 def _names(value: object, place: str) -> tuple[str, ...]:
     names = checked_sequence(value, place, "a list of names")
+    check_count(names, place, MOST_PARAMETERS)
     for name in names:
         check_name(name, place)
     if len(set(names)) != len(names):

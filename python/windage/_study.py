@@ -51,18 +51,21 @@ class Study(Description):
     loop : Loop
         The control loop.
     requirements : sequence of Requirement
-        What each trial has to meet: `measure <= limit` or `measure >= limit`.
+        What each trial has to meet: `measure <= limit` or `measure >= limit`. At most 1000.
     seed : int
         0 to 2^64 - 1. A trial is a function of study and index alone: the same digits on every machine.
     measures : sequence of Measure
-        Further measures, without a limit.
+        Further measures, without a limit. At most 1000.
     table : mapping of str to array_like, shape (rows,), optional
         The user's own table of joint parameter values, read by `column(name)`.
     correlations : mapping of (str, str) to float, optional
         Rank correlations (Spearman) between drawn parameters, by their path ("plant.inertia") or shared name,
-        through a Gaussian copula. Pairs not given within a group count as uncorrelated.
+        through a Gaussian copula. Pairs not given within a group count as uncorrelated. At most 500
+        parameters may hang together.
     title : str
         What outcomes, verdicts and plots are headed with. It decides no digit and is no part of the digest.
+
+    A study has at most 10 000 drawn parameters.
 
     Raises
     ------

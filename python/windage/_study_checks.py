@@ -12,11 +12,12 @@ from ._descriptions import FrozenMapping, rebuilt
 from ._errors import DescriptionError, suggestion
 from ._loop import Loop
 from ._measures import Measure, Requirement
-from ._numbers import Spread, checked_label, checked_sequence, high_of, low_of, plain_number
+from ._numbers import Spread, check_count, checked_label, checked_sequence, high_of, low_of, plain_number
 from ._shared_numbers import Column
 from ._shown_text import LONGEST_NAME, hidden_character
 
-MOST_REQUIREMENTS = 1000
+MOST_REQUIREMENTS = MOST_MEASURES = 1000
+MOST_PAIRS = 200_000
 MOST_ROWS = 10_000_000
 Part = TypeVar("Part")
 
@@ -27,12 +28,11 @@ def checked_requirements(value: object) -> tuple[Requirement, ...]:
     if isinstance(value, Requirement):
         value = [value]
     items = checked_sequence(value, place, "a list of requirements")
+    check_count(items, place, MOST_REQUIREMENTS)
     for i, item in enumerate(items):
         if not isinstance(item, Requirement):
             mend = "Compare it with a limit: measure <= limit." if isinstance(item, Measure) else ""
             raise DescriptionError(f"{place}[{i}]", item, "a requirement such as peak('error') <= 0.01", mend)
-    if len(items) > MOST_REQUIREMENTS:
-        raise DescriptionError(place, f"{len(items)} requirements", f"at most {MOST_REQUIREMENTS}")
     labels: dict[str, int] = {}
     for i, item in enumerate(items):
         if item.label in labels:
@@ -48,6 +48,7 @@ def checked_measures(value: object) -> tuple[Measure, ...]:
     if isinstance(value, Measure):
         value = [value]
     items = checked_sequence(value, place, "a list of measures")
+    check_count(items, place, MOST_MEASURES)
     for i, item in enumerate(items):
         if not isinstance(item, Measure):
             raise DescriptionError(f"{place}[{i}]", item, "a measure such as rms('command')")
@@ -82,6 +83,7 @@ def checked_correlations(value: object) -> FrozenMapping[float] | None:
     place = "study.correlations"
     if not isinstance(value, Mapping):
         raise DescriptionError(place, value, "a mapping such as {('plant.inertia', 'plant.drag'): 0.6}")
+    check_count(value, place, MOST_PAIRS)
     pairs: dict[Any, float] = {}
     for key, item in value.items():
         is_pair = isinstance(key, tuple) and len(key) == 2 and all(isinstance(name, str) for name in key)
@@ -120,8 +122,9 @@ def check_windows(loop: Loop, requirements: Sequence[Requirement], measures: Seq
     whole = [(f"study.requirements[{i}]", r.measure) for i, r in enumerate(requirements)]
     whole += [(f"study.measures[{i}]", m) for i, m in enumerate(measures)]
     shortest = low_of(loop.duration)
+    known = set(loop.signal_names)
     for place, measure in (placed for start, m in whole for placed in m._placed_parts(start)):
-        if measure.signal not in loop.signal_names:
+        if measure.signal not in known:
             mend = suggestion(measure.signal, loop.signal_names)
             raise DescriptionError(f"{place}.signal", measure.signal, "the name of a signal of the loop", mend)
         if measure.kind == "time_in_saturation" and loop.actuator.limits is None:

@@ -9,6 +9,7 @@ from typing import Any
 from ._errors import DescriptionError, StudyFileError
 from ._study import Study
 from ._study_text import from_data, to_data
+from ._toml_depth import check_depth
 from ._toml_text import toml_text
 
 LARGEST_FILE = 5_000_000
@@ -79,9 +80,12 @@ def from_toml(text: str) -> Study:
     """Return the study that the text of a study file describes; errors as for `load`."""
     import tomllib  # costs import time and is seldom needed
 
+    if not isinstance(text, str) or len(text) > LARGEST_FILE:
+        raise StudyFileError("study file", text, f"a text of at most {LARGEST_FILE} characters")
+    check_depth(text)
     try:
         data: dict[str, Any] = tomllib.loads(text)
-    except (tomllib.TOMLDecodeError, RecursionError, ValueError) as error:
+    except (ValueError, RecursionError) as error:  # a number of too many digits is a ValueError, too
         reason = str(error) or type(error).__name__
         raise StudyFileError("study file", reason, "a file in TOML", "See toml.io for its rules.") from None
     return from_data(data)

@@ -8,9 +8,10 @@ calls the same public functions that a person would call, so every check is made
 
 from __future__ import annotations
 
+import functools
 import inspect
 import math
-from collections.abc import Callable, Mapping
+from collections.abc import Callable, Mapping, Sized
 from typing import TYPE_CHECKING, Any
 
 from . import _measure_functions, _spreads
@@ -32,6 +33,7 @@ from ._stock_plants import (
     TransferFunction,
     TwoMassDrive,
 )
+from ._study_checks import MOST_REQUIREMENTS
 from ._time_functions import (
     Constant,
     Gust,
@@ -50,6 +52,8 @@ if TYPE_CHECKING:
 
 #: Version of the format of study files, and of the meaning of what they say.
 FORMAT = 1
+#: Most keys of one table of a study file.
+MOST_KEYS = 10_000
 
 Maker = Callable[..., Any]
 SPREADS: Mapping[str, Maker] = {
@@ -173,7 +177,9 @@ def _arguments(value: Description) -> dict[str, Any]:
     found = arguments(value)
     if isinstance(value, Measure):
         # Its signal is no argument of a function that has only one.
-        known = inspect.signature(MEASURES[value.kind]).parameters
+        if value.kind not in MEASURES:
+            raise DescriptionError("measure.kind", value.kind, "a measure that a function makes")
+        known, _ = _parameters(MEASURES[value.kind])
         found = {name: part for name, part in found.items() if name in known}
     return found
 
@@ -191,10 +197,12 @@ def from_data(data: Any) -> Study:
     _check_version(data)
     known = ["windage_study", "title", "seed", "loop", "requirements", "measures", "table", "correlations"]
     _check_keys(data, known, ["loop"], "")
+    lists = {key: _list(data.get(key, []), key) for key in ("requirements", "measures")}
+    for key, items in lists.items():
+        _check_count(items, key, MOST_REQUIREMENTS)
     made: dict[str, Any] = {"loop": _made_loop(_table(data["loop"], "loop"))}
     for key, decode in (("requirements", _requirement), ("measures", _measure)):
-        items = _list(data.get(key, []), key)
-        made[key] = [decode(item, f"{key}[{i}]") for i, item in enumerate(items)]
+        made[key] = [decode(item, f"{key}[{i}]") for i, item in enumerate(lists[key])]
     made.update({key: data[key] for key in ("seed", "title") if key in data})
     if "table" in data:
         made["table"] = _table(data["table"], "table")
@@ -251,6 +259,7 @@ def _value(item: Any, place: str) -> Any:
         raise StudyFileError(place, item, "a finite number", "Leave it out where nothing is limited.")
     if not isinstance(item, dict):
         return item
+    _check_count(item, place, MOST_KEYS)
     # A parameter may be called "spread" or "column" itself; its value is no text.
     if isinstance(item.get("spread"), str) or isinstance(item.get("shared"), str):
         return _spread(item, place)
@@ -305,13 +314,19 @@ def _correlations(items: list[Any]) -> dict[tuple[Any, ...], Any]:
 
 def _call(maker: Maker, values: Mapping[str, Any], place: str) -> Any:
     """Call a public function or class, with errors that name the place in the file."""
-    signature = inspect.signature(maker)
-    required = [n for n, p in signature.parameters.items() if p.default is inspect.Parameter.empty]
-    _check_keys(values, list(signature.parameters), required, place)
+    known, required = _parameters(maker)
+    _check_keys(values, known, required, place)
     try:
         return maker(**values)
     except DescriptionError as error:
         raise _placed(error, place, maker.__name__) from error
+
+
+@functools.cache
+def _parameters(maker: Maker) -> tuple[list[str], list[str]]:
+    """Return the names of all arguments of a function or class, and of those without a default."""
+    parameters = inspect.signature(maker).parameters
+    return list(parameters), [n for n, p in parameters.items() if p.default is inspect.Parameter.empty]
 
 
 def _placed(error: DescriptionError, place: str, maker: str) -> StudyFileError:
@@ -350,7 +365,14 @@ def _word(data: Mapping[str, Any], key: str, known: Mapping[str, Maker], place: 
 def _table(value: Any, place: str) -> dict[str, Any]:
     if not isinstance(value, dict):
         raise StudyFileError(place, value, "a table")
+    _check_count(value, place, MOST_KEYS)
     return value
+
+
+def _check_count(items: Sized, place: str, most: int) -> None:
+    """Refuse more items than any part may have, before anything is made of them."""
+    if len(items) > most:
+        raise StudyFileError(place, f"{len(items)} items", f"at most {most} items")
 
 
 def _list(value: Any, place: str) -> list[Any]:

@@ -1,6 +1,7 @@
 #include <windage/loop/loop.hpp>
 
 #include <algorithm>
+#include <set>
 #include <stdexcept>
 
 #include <windage/control/linear_adrc.hpp>
@@ -157,11 +158,8 @@ std::vector<std::string> signal_names(const loop_description& d) {
     for (const std::string& s : d.plant.states) names.push_back(s);
     for (const disturbance_description& w : d.disturbances) names.push_back(w.name);
     for (int i = 0; i <= d.controller.order; ++i) names.push_back("estimate_" + std::to_string(i + 1));
-    const auto is_new = [&](const std::string& name) {
-        for (const std::string& known : names)
-            if (known == name) return false;
-        return !name.empty();
-    };
+    std::set<std::string> known(names.begin(), names.end());
+    const auto is_new = [&](const std::string& name) { return !name.empty() && known.insert(name).second; };
     for (const std::string& alias : {d.input_name, d.output_name})
         if (is_new(alias)) names.push_back(alias);
     for (const expression_description& e : d.expressions) {
