@@ -5,10 +5,14 @@ from __future__ import annotations
 from collections.abc import Sequence
 
 EXIT_CODES = (
-    "Exit codes: 0 pass, 1 fail, 2 inconclusive, 3 wrong description or usage, 4 interrupted, 5 a defect in windage."
+    "Exit codes: 0 pass, 1 fail, 2 inconclusive, 3 wrong description or usage, 4 interrupted, 5 a defect in windage, "
+    "6 nothing came out, since it could not be written."
 )
-REPLAY_CODES = "Exit codes: 0 replayed, 3 wrong description or usage, 4 interrupted, 5 a defect in windage."
-CONFIG_CODES = "Exit codes: 0 shown, 3 an environment variable is wrong."
+REPLAY_CODES = (
+    "Exit codes: 0 replayed, 3 wrong description or usage, 4 interrupted, 5 a defect in windage, "
+    "6 not all could be written."
+)
+CONFIG_CODES = "Exit codes: 0 shown, 3 an environment variable is wrong, 6 it could not be written."
 
 
 def _help(text: str, examples: Sequence[str]) -> str:

@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import os
 import sys
 from collections.abc import Sequence
 from pathlib import Path
@@ -18,11 +17,12 @@ from ._errors import DescriptionError, WindageError
 from ._loader import show_config
 from ._outcome import Outcome
 from ._plots import HOW_TO_INSTALL, has_matplotlib
+from ._shown_text import one_line
 from ._study import Study
 from ._study_file import load, save
 from ._verdict import Verdict, judge
 
-PASS, FAIL, INCONCLUSIVE, WRONG, INTERRUPTED, DEFECT = range(6)
+PASS, FAIL, INCONCLUSIVE, WRONG, INTERRUPTED, DEFECT, UNWRITTEN = range(7)
 CODES = {"pass": PASS, "fail": FAIL, "inconclusive": INCONCLUSIVE}
 DEMO_FILE, DEMO_PICTURE = "dish.toml", "windage-demo.png"
 
@@ -81,10 +81,12 @@ def demo(
     outcome = study.run(trials, threads)
     if not outcome.trials:
         return INTERRUPTED
-    _, code = _report(outcome, DEMO_AT_LEAST, DEMO_CONFIDENCE)
+    verdict, code = _judged(outcome, DEMO_AT_LEAST, DEMO_CONFIDENCE)
+    output.print_verdict(outcome, verdict)
     output.say(f"Wrote {file}")
     if has_matplotlib():
-        output.write_picture(outcome, picture)
+        with output.kept():
+            output.write_picture(outcome, picture)
     else:
         output.say(f"No picture. {HOW_TO_INSTALL}")
     _print_next_steps(outcome, file)
@@ -128,25 +130,27 @@ def run(
     outcome = study.run(trials, threads)
     if not outcome.trials:
         return INTERRUPTED
-    verdict, code = _report(outcome, at_least, confidence, short)
+    verdict, code = _judged(outcome, at_least, confidence)
+    # What other programs read comes first: nothing on the screen can be in its way.
+    if report is not None:
+        with output.on_error_stream(short), output.kept():
+            output.write_json(output.run_report(outcome, verdict, study_file, code), report)
+    output.print_verdict(outcome, verdict, short)
     with output.on_error_stream(short):
-        _write(outcome, verdict, code, study_file, (plot, table, report))
+        _write(outcome, plot, table)
     if len(outcome.failures) and not short:
         again = output.command_again("replay", study_file, *arguments_of(changes or (), seed))
-        output.say(f"See the first failing trial: {again} --trial {outcome.failures[0]}")
+        output.say_command(f"See the first failing trial: {again} --trial {outcome.failures[0]}")
     return code
 
 
-def _write(
-    outcome: Outcome, verdict: Verdict, code: int, study_file: Path, files: tuple[Path | None, Path | None, Path | None]
-) -> None:
-    plot, table, report = files
-    if plot is not None:
-        output.write_picture(outcome, plot)
+def _write(outcome: Outcome, plot: Path | None, table: Path | None) -> None:
     if table is not None:
-        output.write_table(output.outcome_table(outcome), table, table.suffix.lower())
-    if report is not None:
-        output.write_json(output.run_report(outcome, verdict, study_file, code), report)
+        with output.kept():
+            output.write_table(output.outcome_table(outcome), table, table.suffix.lower())
+    if plot is not None:
+        with output.kept():
+            output.write_picture(outcome, plot)
 
 
 @app.command(help=teach.REPLAY, epilog=teach.REPLAY_CODES)
@@ -184,12 +188,12 @@ def replay(
     output.say(repr(replayed))
     for name, value in replayed.parameters.items():
         output.say(f"  drawn   {name} = {value!r}")
-    if plot is not None:
-        output.write_picture(replayed, plot, after=after, before=before)
     for path in (csv, parquet):
         if path is not None:
             output.write_table(output.replay_table(replayed), path, path.suffix.lower())
-    return 0
+    if plot is not None:
+        output.write_picture(replayed, plot, after=after, before=before)
+    return UNWRITTEN if output.is_lost() else 0
 
 
 @app.command(help=teach.CONFIG, epilog=teach.CONFIG_CODES)
@@ -199,7 +203,7 @@ def config() -> int:
     width = max(map(len, shown))
     for name, value in shown.items():
         output.say(f"{name:<{width}}  {value}")
-    return 0
+    return UNWRITTEN if output.is_lost() else 0
 
 
 def main(arguments: Sequence[str] | None = None) -> int:
@@ -210,37 +214,32 @@ def main(arguments: Sequence[str] | None = None) -> int:
     arguments : sequence of str, optional
         By default those of the process.
     """
+    output.begin()
     try:
         code = app(arguments, prog_name=output.called_as(), standalone_mode=False)
     except UsageError as error:
         message, context = cast(Any, error).format_message(), getattr(error, "ctx", None)
         command = context.command_path if context else output.called_as()
-        output.print_failure(WindageError(f"{message}\n  mend      see {command} --help"))
+        output.print_failure(WindageError(f"{one_line(message)}\n  mend      see {command} --help"))
         return WRONG
     except (KeyboardInterrupt, typer.Abort):
         output.print_failure(WindageError("interrupted; what is not printed above was not finished"))
         return INTERRUPTED
-    except BrokenPipeError:
-        # The reader of our output is gone; without this the interpreter complains once more at its end.
-        os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
-        return WRONG
-    except (WindageError, OSError, MemoryError) as error:
+    except (WindageError, MemoryError) as error:
         output.print_failure(error)
         return WRONG
+    except OSError as error:  # what cannot be read is a WindageError
+        output.print_failure(error)
+        return UNWRITTEN
     except Exception as error:
         output.print_failure(error)
         return DEFECT
     return code if isinstance(code, int) else 0
 
 
-def _report(outcome: Outcome, at_least: float, confidence: float, short: bool = False) -> tuple[Verdict, int]:
-    """Print verdict and hints; return the verdict and the exit code."""
+def _judged(outcome: Outcome, at_least: float, confidence: float) -> tuple[Verdict, int]:
+    """Return the verdict and the exit code."""
     verdict = outcome.verdict(at_least, confidence)
-    if short:
-        output.print_short(outcome, verdict)
-    else:
-        output.print_verdict(outcome, verdict)
-        output.print_hints(outcome)
     return verdict, INTERRUPTED if outcome.interrupted else CODES[verdict.decision]
 
 
@@ -270,7 +269,7 @@ def _print_next_steps(outcome: Outcome, file: Path) -> None:
     width = max(len(command) for command, _ in steps)
     output.say("\nNext:")
     for command, reason in steps:
-        output.say(f"  {command:<{width}}  {reason}")
+        output.say_command(f"  {command:<{width}}  {reason}")
     output.say(f"  Change {file}, for example observer_bandwidth, and run it again.")
 
 

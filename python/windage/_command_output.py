@@ -12,13 +12,11 @@ from contextlib import contextmanager, nullcontext, redirect_stdout, suppress
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
-from rich.console import Console
-from rich.text import Text
-
+from ._command_screen import Screen
 from ._drivers import FAILING, FEW_FAILURES
 from ._errors import DescriptionError, WindageError
 from ._plots import HOW_TO_INSTALL, has_matplotlib
-from ._shown_text import shorten
+from ._shown_text import one_line, shorten
 from ._text_table import plainly_grouped
 
 if TYPE_CHECKING:
@@ -34,14 +32,36 @@ MOST_INDICES = 1_000
 _STYLES = {"pass": "bold green", "fail": "bold red", "inconclusive": "bold yellow"}
 
 
-def out() -> Console:
-    """Return the console of the standard output: nothing is wrapped, marked up or coloured by itself."""
-    return Console(soft_wrap=True, highlight=False, markup=False, emoji=False)
+_screen = Screen()
 
 
-def say(text: str = "") -> None:
-    """Print a text as it is."""
-    out().print(text)
+def begin() -> None:
+    """Forget what an earlier command could not write."""
+    _screen.lost.clear()
+
+
+def say(text: str = "", style: str = "") -> None:
+    """Print a text as it is; what is longer than a line of the terminal goes on in an indented one."""
+    _screen.show(text, style)
+
+
+def say_command(text: str) -> None:
+    """Print a line with a command to copy, in one piece."""
+    _screen.show(text, folds=False)
+
+
+@contextmanager
+def kept() -> Iterator[None]:
+    """Go on after something could not be written: the error is said, and the answer stays what it is."""
+    try:
+        yield
+    except Exception as error:
+        print_failure(error)
+
+
+def is_lost() -> bool:
+    """Tell whether something could not be printed."""
+    return bool(_screen.lost)
 
 
 def called_as() -> str:
@@ -61,7 +81,7 @@ def _on_path(program: Path) -> str:
 
 def command_again(command: str, *arguments: object) -> str:
     """Return a command line of windage that can be copied."""
-    return " ".join([called_as(), command, *(shlex.quote(str(argument)) for argument in arguments)])
+    return " ".join([called_as(), command, *(shlex.quote(one_line(str(argument))) for argument in arguments)])
 
 
 @contextmanager
@@ -71,16 +91,20 @@ def on_error_stream(wanted: bool) -> Iterator[None]:
         yield
 
 
-def print_short(outcome: Outcome, verdict: Verdict) -> None:
+def _print_short(outcome: Outcome, verdict: Verdict) -> None:
     """Print a verdict in one line."""
     counts = f"{plainly_grouped(len(outcome.failures))} of {plainly_grouped(outcome.trials)} trials failed"
     interim = "INTERIM " if outcome.interrupted else ""
-    title = f"{outcome.study.title}: " if outcome.study.title else ""
-    out().print(Text(f"{title}{interim}{verdict.headline} {counts}.", style=_STYLES[verdict.decision]))
+    # The title comes last: no word of it can pass for the verdict.
+    title = f" Study: {outcome.study.title}" if outcome.study.title else ""
+    say(f"{interim}{verdict.headline} {counts}.{title}", _STYLES[verdict.decision])
 
 
-def print_verdict(outcome: Outcome, verdict: Verdict) -> None:
-    """Print a verdict; that of a stopped run is marked as interim."""
+def print_verdict(outcome: Outcome, verdict: Verdict, short: bool = False) -> None:
+    """Print a verdict and hints, or one line; the verdict of a stopped run is marked as interim."""
+    if short:
+        _print_short(outcome, verdict)
+        return
     say(repr(outcome))
     say()
     head, _, body = str(verdict).partition("\n")
@@ -89,11 +113,12 @@ def print_verdict(outcome: Outcome, verdict: Verdict) -> None:
         say(f"Stopped after {asked}. What follows is interim and no verdict: the number of trials was")
         say("not fixed beforehand. Run the study again to its end.")
         head = f"INTERIM {head}"
-    out().print(Text(head, style=_STYLES[verdict.decision]))
+    say(head, _STYLES[verdict.decision])
     say(body)
+    _print_hints(outcome)
 
 
-def print_hints(outcome: Outcome) -> None:
+def _print_hints(outcome: Outcome) -> None:
     """Print the drawn parameters that go most strongly along with failing, or with slack."""
     drivers = outcome.drivers()
     against = [FAILING] if len(outcome.failures) >= FEW_FAILURES else list(outcome.requirements)
@@ -117,11 +142,10 @@ def print_advice(study: Study) -> None:
 
 def print_failure(error: BaseException) -> None:
     """Print an error in one block on the standard error stream."""
-    console = Console(stderr=True, soft_wrap=True, highlight=False, markup=False, emoji=False)
     title, rows = error_block(error)
-    console.print(Text(f"Error: {title}", style="bold red"))
+    _screen.show(f"Error: {title}", "bold red", is_error=True)
     for label, text in rows:
-        console.print(f"  {label:<9} {text}")
+        _screen.show(f"  {label:<9} {one_line(text)}", is_error=True)
 
 
 def error_block(error: BaseException) -> tuple[str, list[tuple[str, str]]]:
@@ -220,8 +244,8 @@ def replay_table(replay: Replay) -> Any:
 
 
 def write_json(report: Mapping[str, Any], path: Path) -> None:
-    """Write a report as JSON in its strict form: no infinities, no NaN."""
-    text = json.dumps(report, indent=2, ensure_ascii=False, allow_nan=False)
+    """Write a report as JSON in its strict form: no infinities, no NaN, and escapes for all but ASCII."""
+    text = json.dumps(report, indent=2, allow_nan=False)
     with in_one_piece(path) as part:
         part.write_text(text + "\n", encoding="utf-8")
 

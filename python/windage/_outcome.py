@@ -230,7 +230,7 @@ class Outcome:
         """Return the counts, and what each requirement asked for and what came of it."""
         from ._requirement_table import outcome_text
 
-        title = [self.study.title] if self.study.title else []
+        title = [f"Study: {self.study.title}"] if self.study.title else []
         return "\n".join([*title, self._headline(), *outcome_text(self, self._lines, width)])
 
     @cached_property

@@ -33,7 +33,7 @@ class ProgressBar:
         self._console = console
         self._progress: Progress | None = None
         self._task: TaskID | None = None
-        self._is_closed = False
+        self._is_closed = self._is_lost = False
 
     def __call__(self, done: int, total: int) -> bool:
         """Draw `done` of `total` trials. Always returns True: go on."""
@@ -43,18 +43,27 @@ class ProgressBar:
     def show(self, work: str, done: int, total: int) -> None:
         """Draw `done` of `total` trials of some work."""
         self._is_closed = False
-        progress, task = self._begun(total)
-        progress.update(task, completed=done, total=total, description=work, refresh=True)
+        self._draw(work, done, total)
 
     def close(self, done: int, total: int) -> None:
         """Draw the last state and end the line; a second call does nothing."""
         if self._is_closed:
             return
-        progress, task = self._begun(total)
         work = DESCRIPTION if done == total else f"{DESCRIPTION}, stopped"
-        progress.update(task, completed=done, total=total, description=work)
-        progress.stop()
+        self._draw(work, done, total, ends=True)
         self._progress, self._is_closed = None, True
+
+    def _draw(self, work: str, done: int, total: int, *, ends: bool = False) -> None:
+        # A terminal that goes away, or cannot show a letter, ends the drawing and not the run.
+        if self._is_lost:
+            return
+        try:
+            progress, task = self._begun(total)
+            progress.update(task, completed=done, total=total, description=work, refresh=not ends)
+            if ends:
+                progress.stop()
+        except (OSError, ValueError):
+            self._is_lost = True
 
     def _begun(self, total: int) -> tuple[Progress, TaskID]:
         if self._progress is None or self._task is None:
@@ -65,7 +74,6 @@ class ProgressBar:
 
 
 def _new_progress(console: Console | None, total: int) -> Progress:
-    from rich.console import Console as RichConsole
     from rich.progress import (
         BarColumn,
         Progress,
@@ -75,6 +83,8 @@ def _new_progress(console: Console | None, total: int) -> Progress:
         TimeRemainingColumn,
     )
     from rich.text import Text
+
+    from ._command_screen import PlainConsole
 
     class Counts(ProgressColumn):
         """Trials done and asked for, and how many a second."""
@@ -87,7 +97,7 @@ def _new_progress(console: Console | None, total: int) -> Progress:
             counts = f"{plainly_grouped(int(task.completed))} of {plainly_grouped(int(task.total or 0))}"
             return Text(f"{counts} {task.description}{rate}", no_wrap=True)
 
-    drawn_on = console or RichConsole(stderr=True)
+    drawn_on = console or PlainConsole(stderr=True)
     counts = 2 * len(plainly_grouped(total)) + len(f" of  {DESCRIPTION}")
     room = min(WIDTH, drawn_on.width) - counts - BESIDE
     return Progress(

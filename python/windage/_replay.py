@@ -155,7 +155,7 @@ class Replay:
         """Return what became of the trial, and limit, value and slack of each requirement."""
         from ._requirement_table import replay_text
 
-        title = [self.title] if self.title else []
+        title = [f"Study: {self.title}"] if self.title else []
         return "\n".join([*title, self._headline(), *replay_text(self, width)])
 
     def _headline(self) -> str:

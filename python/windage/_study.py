@@ -275,7 +275,7 @@ class Study(Description):
             chosen = self.__dict__.get("_choice")
             steps = "auto" if chosen is None else f"auto ({chosen.steps})"
         loop, plant = self.loop, type(self.loop.plant).__name__
-        lines = [self.title] if self.title else []
+        lines = [f"Title: {self.title}"] if self.title else []
         lines += [
             f"Study {self.digest[:12]}: {plant} under {type(loop.controller).__name__} of order "
             f"{loop.controller.order}, seed {self.seed}, steps per sample {steps}"

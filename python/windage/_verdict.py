@@ -546,7 +546,7 @@ def _to_decide(verdict: Verdict) -> str:
 
 def _table_headline(table: VerdictTable) -> str:
     together, title = percent(table.confidence), table.verdicts[0].title
-    of = f"{title}: " if title else ""
+    of = f"Study {title}: " if title else ""
     if len(table) == 1:
         return f"{of}1 requirement, judged at confidence {together} ({METHOD})."
     each = percent(table.verdicts[0].confidence)
