@@ -5,7 +5,15 @@ exact bound, replay any trial to the last digit, and see which spread breaks the
 """
 
 from ._controllers import ErrorADRC, OutputADRC
-from ._errors import DescriptionError, EngineError, EquationError, StudyFileError, WindageError
+from ._errors import (
+    DescriptionError,
+    EngineError,
+    EquationError,
+    OutcomeFileError,
+    OutputError,
+    StudyFileError,
+    WindageError,
+)
 from ._evidence import pass_probability_bounds, tolerance_bound, trials_needed
 from ._loader import show_config
 from ._loop import Loop
@@ -87,7 +95,9 @@ __all__ = [
     "Loop",
     "Measure",
     "Outcome",
+    "OutcomeFileError",
     "OutputADRC",
+    "OutputError",
     "Plant",
     "Pulse",
     "Quintic",

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Iterable
+from typing import Any
 
 from ._shown_text import one_line, shorten
 
@@ -12,7 +13,15 @@ LONGEST_GUESSED, MOST_GUESSES = 100, 1000
 
 
 class WindageError(Exception):
-    """Root of every error that windage raises on purpose."""
+    """Root of every error that windage raises on purpose.
+
+    Errors can be copied and sent between processes, whatever their constructors take: what does not travel by
+    itself is replaced by an object that is shown the same way.
+    """
+
+    def __reduce__(self) -> tuple[Any, ...]:
+        # As it is, not through the constructor: that would fail in the receiving process, which hangs a pool.
+        return _restored, (type(self), self.args, {name: _portable(part) for name, part in vars(self).items()})
 
 
 class DescriptionError(WindageError, ValueError):
@@ -39,8 +48,55 @@ class StudyFileError(DescriptionError):
     """A study file cannot be read."""
 
 
+class OutcomeFileError(DescriptionError):
+    """A file with an outcome cannot be read, or is not what was written."""
+
+
+class OutputError(WindageError, OSError):
+    """A file cannot be written.
+
+    The message names the file, the reason and, where there is one, what to do.
+    """
+
+    def __init__(self, file: str, reason: str, mend: str = "") -> None:
+        self.file = one_line(file, LONGEST_PIECE)
+        self.reason = one_line(reason, LONGEST_PIECE)
+        self.mend = one_line(mend, LONGEST_PIECE)
+        super().__init__(f"{self.file}: cannot be written: {self.reason}. {self.mend}".rstrip())
+
+    def __str__(self) -> str:
+        return str(self.args[0])
+
+
 class EngineError(WindageError, RuntimeError):
     """The engine cannot do what was asked (for example an instruction set that this machine lacks)."""
+
+
+class Shown:
+    """Stands for a value that could not be sent to another process, and is shown as it was."""
+
+    def __init__(self, text: str) -> None:
+        self._text = text
+
+    def __repr__(self) -> str:
+        return self._text
+
+
+def _portable(value: object) -> object:
+    import pickle  # costs import time and is seldom needed
+
+    try:
+        pickle.dumps(value)
+    except Exception:
+        return Shown(shorten(value))
+    return value
+
+
+def _restored(kind: type[WindageError], arguments: tuple[object, ...], state: dict[str, object]) -> WindageError:
+    error = kind.__new__(kind, *arguments)
+    error.args = arguments
+    vars(error).update(state)
+    return error
 
 
 def suggestion(name: str, known: Iterable[str]) -> str:

@@ -11,6 +11,7 @@ from ._study import Study
 from ._study_text import from_data, to_data
 from ._toml_depth import check_depth
 from ._toml_text import toml_text
+from ._written_file import written
 
 LARGEST_FILE = 5_000_000
 
@@ -18,31 +19,23 @@ LARGEST_FILE = 5_000_000
 def save(study: Study, path: str | os.PathLike[str]) -> None:
     """Write a study to a TOML file, which `load` turns into an equal study with the same digest.
 
-    The file is written beside its place and moved there, so that an interruption leaves the old one.
+    An interruption leaves the old file; see `windage._written_file`.
 
     Raises
     ------
     DescriptionError
         If it is no study, or too large for a study file.
+    OutputError
+        If the file cannot be written.
     """
-    import tempfile  # costs import time and is seldom needed
-
     if not isinstance(study, Study):
         raise DescriptionError("study", study, "a Study")
     text = to_toml(study)
     if len(text.encode()) > LARGEST_FILE:
         mend = "Keep long tables in a file of their own and give them to Study(table=...)."
         raise DescriptionError("study", f"{len(text.encode())} bytes", f"at most {LARGEST_FILE} bytes", mend)
-    target = Path(path)
-    handle, name = tempfile.mkstemp(dir=target.parent, prefix=f".{target.name}.", suffix=".part")
-    try:
-        with os.fdopen(handle, "w", encoding="utf-8", newline="\n") as file:
-            file.write(text)
-        Path(name).chmod(0o666 & ~_umask())
-        Path(name).replace(target)
-    except BaseException:
-        Path(name).unlink(missing_ok=True)
-        raise
+    with written(path) as file:
+        file.write(text.encode())
 
 
 def load(path: str | os.PathLike[str]) -> Study:
@@ -89,9 +82,3 @@ def from_toml(text: str) -> Study:
         reason = str(error) or type(error).__name__
         raise StudyFileError("study file", reason, "a file in TOML", "See toml.io for its rules.") from None
     return from_data(data)
-
-
-def _umask() -> int:
-    mask = os.umask(0)
-    os.umask(mask)
-    return mask
