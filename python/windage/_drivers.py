@@ -128,13 +128,13 @@ def find_drivers(outcome: Outcome) -> Drivers:
     """
     against = dict(zip(outcome.requirements, outcome.slack.T, strict=True))
     against[FAILING] = (~outcome.passed).astype(np.float64)
-    parameter_ranks = {name: ranks(values) for name, values in outcome.parameters.items()}
+    varying = {name: _unit_ranks(values) for name, values in outcome.parameters.items()}
     rows = []
     for result, values in against.items():
-        result_ranks = ranks(values)
-        for name, own in parameter_ranks.items():
-            correlation = _correlation(own, result_ranks)
-            if not math.isnan(correlation):
+        result_ranks = _unit_ranks(values)
+        for name, own in varying.items():
+            if own is not None and result_ranks is not None:
+                correlation = _product(own, result_ranks)
                 rows.append(Driver(name, result, correlation, *fisher_interval(correlation, outcome.trials)))
     rows.sort(key=lambda row: -abs(row.correlation))
     return Drivers(tuple(rows), _note(outcome), tuple(against))
@@ -162,10 +162,21 @@ def fisher_interval(correlation: float, count: int) -> tuple[float, float]:
     return math.tanh(z - half), math.tanh(z + half)
 
 
-def _correlation(a: Values, b: Values) -> float:
-    a, b = a - a.mean(), b - b.mean()
-    scale = math.sqrt(float(a @ a) * float(b @ b))
-    return min(max(float(a @ b) / scale, -1.0), 1.0) if scale > 0.0 else math.nan
+def _unit_ranks(values: Values) -> Values | None:
+    """Return ranks with mean 0 and length 1, whose product is their correlation; None where nothing varies."""
+    centred = ranks(values)
+    centred -= centred.mean()
+    length = math.sqrt(_sum_of_products(centred, centred))
+    return centred / length if length > 0.0 else None
+
+
+def _product(a: Values, b: Values) -> float:
+    return min(max(_sum_of_products(a, b), -1.0), 1.0)
+
+
+def _sum_of_products(a: Values, b: Values) -> float:
+    # Not by a matrix library: its threads would wait for each other longer than they work.
+    return float(np.einsum("i,i", a, b, optimize=False))
 
 
 def _no_rows(key: object) -> NoReturn:

@@ -13,6 +13,7 @@ from numpy.typing import NDArray
 from ._describe import Described
 from ._errors import DescriptionError, suggestion
 from ._numbers import checked_integer
+from ._portable import Portable, freeze
 from ._reporter import Report, Reporter
 from ._runner import Columns
 from ._slack import slack_of
@@ -29,7 +30,7 @@ Values = NDArray[np.float64]
 STATUS = ("finished", "diverged")
 
 
-class Outcome:
+class Outcome(Portable):
     """Drawn parameters, measures and slacks of a contiguous range of trials. Made by `Study.run`.
 
     Arrays are read-only views of the engine's columns. Position i of an array belongs to trial `first + i`;
@@ -50,8 +51,7 @@ class Outcome:
         self._described = described
         self._columns = columns
         self._judged = set(judged)
-        for array in (columns.parameters, columns.measures, columns.status):
-            array.flags.writeable = False
+        freeze(columns.parameters, columns.measures, columns.status)
 
     @property
     def trials(self) -> int:
@@ -201,6 +201,10 @@ class Outcome:
 
     def drivers(self) -> Drivers:
         """Return how strongly each drawn parameter goes along with slack and failure: a first hint."""
+        return self._drivers
+
+    @cached_property
+    def _drivers(self) -> Drivers:
         from ._drivers import find_drivers
 
         return find_drivers(self)

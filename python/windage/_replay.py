@@ -13,6 +13,7 @@ from ._describe import Described
 from ._errors import DescriptionError, suggestion
 from ._measures import Requirement
 from ._numbers import Number, Spread
+from ._portable import Portable, freeze
 from ._shared_numbers import Column, Shared
 from ._slack import slack_of
 from ._text_table import WIDTH, html_table, plainly_grouped
@@ -24,7 +25,7 @@ if TYPE_CHECKING:
 Values = NDArray[np.float64]
 
 
-class Replay:
+class Replay(Portable):
     """Every signal of one trial, one value a sample instant.
 
     `replay["error"]` is the array of a signal. Made by `Study.replay` and `Study.nominal`.
@@ -70,6 +71,7 @@ class Replay:
         self.slack: Values = slack_of(described, self.requirements, parameters, measures, status)[0]
         self.met: NDArray[np.bool_] = self.slack >= 0.0
         self.diverged = bool(status[0])
+        freeze(self.slack, self.met, *self._signals.values())
 
     @property
     def time(self) -> Values:

@@ -12,13 +12,14 @@ from ._describe import Described
 from ._errors import DescriptionError, EngineError
 from ._loader import default_threads, engine
 from ._numbers import checked_integer
+from ._portable import Portable
 from ._reporter import GoOn
 
 MOST_THREADS = 1024
 
 
 @dataclass(frozen=True)
-class Columns:
+class Columns(Portable):
     """What the engine returned for a contiguous range of trials.
 
     Attributes

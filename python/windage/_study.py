@@ -285,6 +285,11 @@ class Study(Description):
         lines += [f"  measures {measure.label}" for measure in self.measures]
         return "\n".join(lines)
 
+    def __getstate__(self) -> dict[str, Any]:
+        # The choice of steps takes time and decides digits, so a copy keeps it.
+        kept = {"_choice": self._choice} if "_choice" in self.__dict__ else {}
+        return super().__getstate__() | kept
+
     @cached_property
     def _bound(self) -> tuple[Loop, tuple[Requirement, ...], tuple[Measure, ...]]:
         """Loop, requirements and measures whose columns know their values."""

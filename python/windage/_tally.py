@@ -10,7 +10,9 @@ from typing import TYPE_CHECKING
 import numpy as np
 from numpy.typing import NDArray
 
+from ._descriptions import FrozenMapping
 from ._outcome import Outcome, joint_requirement
+from ._portable import Portable, freeze
 from ._text_table import plainly_grouped, text_table
 
 if TYPE_CHECKING:
@@ -19,7 +21,7 @@ if TYPE_CHECKING:
 
 
 @dataclass(frozen=True, repr=False)
-class Tally:
+class Tally(Portable):
     """Counts of failed trials, without the columns. Made by `Study.count`.
 
     Attributes
@@ -43,6 +45,10 @@ class Tally:
     requirement_failures: Mapping[str, int]
     first_failures: NDArray[np.int64]
     requested: int
+
+    def __post_init__(self) -> None:
+        object.__setattr__(self, "requirement_failures", FrozenMapping(self.requirement_failures))
+        freeze(self.first_failures)
 
     def verdict(self, at_least: float, confidence: float = 0.95) -> Verdict:
         """Judge the claim that at least a fraction of all trials passes; see `Outcome.verdict`."""
