@@ -7,6 +7,7 @@
 #include <windage/campaign/campaign.hpp>
 #include <windage/campaign/parameters.hpp>
 #include <windage/control/gains.hpp>
+#include <windage/plant/refused_trial.hpp>
 
 #include "bind_engine.hpp"
 #include "describe.hpp"
@@ -138,6 +139,13 @@ double measure_recording(const py::dict& measure, const std::vector<double>& tim
 } // namespace
 
 void bind_campaign(py::module_& m) {
+    py::register_local_exception_translator([](std::exception_ptr thrown) {
+        try {
+            if (thrown) std::rethrow_exception(thrown);
+        } catch (const refused_trial& e) {
+            py::set_error(py::module_::import("windage._errors").attr("EngineError"), e.what());
+        }
+    });
     py::class_<campaign>(m, "Campaign", "A study made ready to run.")
         .def(py::init([](const py::dict& study) { return campaign(read_study(study)); }), py::arg("study"))
         .def("signal_names", &campaign::signals, "Names of the signals in the order of a replay.")

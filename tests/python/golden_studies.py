@@ -114,6 +114,14 @@ def stock_plants() -> dict[str, wd.Study]:
                 reference=wd.Sine(0.5, 0.4, phase=0.3, offset=0.1),
             )
         ),
+        "fast lags": measured(  # some lanes with twice the digits, some without
+            loop_of(
+                wd.TransferFunction([20.0], [wd.samples([1e-13, 1e-8, 1e-4]), 3e-8, 3e-4, wd.uniform(0.5, 2.0), 1.0]),
+                first,
+                disturbances={"load": wd.Step(1.0, at=0.3)},
+                reference=wd.Step(0.5, at=0.1),
+            )
+        ),
         "state space": measured(
             loop_of(
                 wd.StateSpace([[0.0, 1.0], [-4.0, -0.4]], [0.0, 50.0], [1.0, 0.0], e=[[0.0], [1.0]]),

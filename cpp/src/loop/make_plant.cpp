@@ -2,6 +2,7 @@
 
 #include <windage/plant/dc_drive.hpp>
 #include <windage/plant/equation_plant.hpp>
+#include <windage/plant/linear_ode.hpp>
 #include <windage/plant/linear_plant.hpp>
 #include <windage/plant/native_plant.hpp>
 #include <windage/plant/two_mass_drive.hpp>
@@ -17,8 +18,11 @@ std::unique_ptr<plant> make_plant(const loop_description& d, const plant_timing&
     case plant_kind::dc_drive: return std::make_unique<native_plant<dc_drive>>(d.plant, settings, timing, w, arena);
     case plant_kind::two_mass_drive:
         return std::make_unique<native_plant<two_mass_drive>>(d.plant, settings, timing, w, arena);
-    default: return std::make_unique<linear_plant>(d.plant, settings.lag, timing, w, arena);
+    default: break;
     }
+    if (d.integrator == integrator_kind::reference)
+        return std::make_unique<linear_ode>(d.plant, settings, timing, w, arena);
+    return std::make_unique<linear_plant>(d.plant, settings.lag, timing, w, arena);
 }
 
 } // namespace windage

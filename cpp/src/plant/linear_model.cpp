@@ -90,6 +90,13 @@ void check_linear(const plant_description& d) {
     }
 }
 
+void check_linear_disturbances(const plant_description& d, int disturbances) {
+    if (disturbances <= (d.kind == plant_kind::state_space ? d.disturbances : 1)) return;
+    throw std::invalid_argument(d.kind == plant_kind::state_space
+                                    ? "plant: more disturbances than columns of E"
+                                    : "plant: this stock plant has one disturbance; use a state-space plant for more");
+}
+
 linear_model realise(const plant_description& d, const std::vector<wide>& numbers) {
     switch (d.kind) {
     case plant_kind::integrator_chain: return integrator_chain(d.order, numbers[0]);

@@ -4,14 +4,14 @@
 #include <stdexcept>
 
 #include <windage/plant/matrix_exponential.hpp>
+#include <windage/plant/refused_trial.hpp>
 
 namespace windage {
 namespace {
 
 const plant_description& checked(const plant_description& d, const plant_disturbances& w) {
-    if (d.kind != plant_kind::state_space && w.count() > 1)
-        throw std::invalid_argument("plant: this stock plant has one disturbance; use a state-space plant for more");
     check_linear(d);
+    check_linear_disturbances(d, w.count());
     if (d.initial_state.size() != d.states.size())
         throw std::invalid_argument("plant: one initial state a state is expected");
     return d;
@@ -25,6 +25,26 @@ std::vector<lane_value> lane_values(const std::vector<number>& numbers, signal_a
 
 bool has_general_output(plant_kind kind) {
     return kind == plant_kind::transfer_function || kind == plant_kind::state_space;
+}
+
+// Inputs that keep their values: the command, then the disturbances.
+drive held_inputs(const linear_model& m) {
+    drive v{lane_matrix(m.a.rows(), 1 + m.e.columns()), {}};
+    for (int i = 0; i < m.a.rows(); ++i) {
+        v.g(i, 0) = m.b(i, 0);
+        for (int k = 0; k < m.e.columns(); ++k) v.g(i, 1 + k) = m.e(i, k);
+    }
+    return v;
+}
+
+// A result that is not finite is no error: that trial diverges.
+void expect_accurate(const step_matrices& step, const trial_block& trials, std::size_t i) {
+    constexpr double largest_error = 1e-13;
+    for (int lane = 0; lane < lanes; ++lane)
+        if (step.error[lane] > largest_error)
+            throw refused_trial(trials, i + std::size_t(lane),
+                                "moves between two samples in a way that cannot be computed accurately enough: its "
+                                "modes are too many and too close together; write it as equations, or in other states");
 }
 
 } // namespace
@@ -61,32 +81,29 @@ void linear_plant::begin(const trial_block& trials, const held_value& initial_co
     }
     if (has_lag_) initial_command.copy_to(x_ + states_ * size_, size_);
     const std::size_t packs = is_same() ? lanes : size_;
-    for (std::size_t i = 0; i < packs; i += lanes) sample_exactly(i);
+    for (std::size_t i = 0; i < packs; i += lanes) sample_exactly(i, trials);
 }
 
-void linear_plant::sample_exactly(std::size_t i) {
+void linear_plant::sample_exactly(std::size_t i, const trial_block& trials) {
     std::vector<wide> numbers;
     for (const lane_value& n : numbers_) numbers.push_back(n.pack_at(i));
     const linear_model own = realise(d_, numbers), m = has_lag_ ? with_lag(own, lag_.pack_at(i)) : own;
-    const int n = order_;
-    const wide period = timing_.period.pack_at(i), fraction = timing_.fraction.pack_at(i);
-    const lane_matrix last = transition(m, timing_.is_split ? period - fraction : period);
-    const lane_matrix first = timing_.is_split ? transition(m, fraction) : lane_matrix();
-    // With a split interval the motion of its first part goes through the second.
-    const auto through = [&](int row, int column) {
-        wide sum = last(row, 0) * first(0, column);
-        for (int k = 1; k < n; ++k) sum += last(row, k) * first(k, column);
-        return sum;
-    };
-    for (int r = 0; r < n; ++r) {
-        for (int k = 0; k < n; ++k) phi_.set(r, k, i, timing_.is_split ? through(r, k) : last(r, k));
-        after_.set(r, 0, i, last(r, n));
-        if (timing_.is_split) before_.set(r, 0, i, through(r, n));
-        for (int k = 0; k < w_count_; ++k) {
-            const wide second = last(r, n + 1 + k);
-            gamma_w_.set(r, k, i, timing_.is_split ? through(r, n + 1 + k) + second : second);
-        }
+    const wide period = timing_.period.pack_at(i);
+    const step_matrices whole = transition(m.a, held_inputs(m), period);
+    expect_accurate(whole, trials, i);
+    for (int r = 0; r < order_; ++r) {
+        for (int k = 0; k < order_; ++k) phi_.set(r, k, i, whole.phi(r, k));
+        after_.set(r, 0, i, whole.gamma(r, 0));
+        for (int k = 0; k < w_count_; ++k) gamma_w_.set(r, k, i, whole.gamma(r, 1 + k));
         c_.set(0, r, i, m.c(0, r));
+    }
+    if (!timing_.is_split) return;
+    // The command before the change acts all the time, and the change for the rest of the interval.
+    const step_matrices rest = transition(m.a, {m.b, {}}, period - timing_.fraction.pack_at(i));
+    expect_accurate(rest, trials, i);
+    for (int r = 0; r < order_; ++r) {
+        after_.set(r, 0, i, rest.gamma(r, 0));
+        before_.set(r, 0, i, whole.gamma(r, 0) - rest.gamma(r, 0));
     }
 }
 

@@ -20,7 +20,8 @@ enum class plant_kind {
 };
 
 /// How the differential equations are integrated between two samples, at fixed steps.
-/// Linear plants are sampled exactly by the matrix exponential and need none of these.
+/// Linear plants are sampled exactly by the matrix exponential and need none of these, but for the reference
+/// (plant/linear_ode.hpp).
 enum class integrator_kind {
     euler,      ///< explicit Euler, order 1
     rk4,        ///< the classical Runge-Kutta method, order 4

@@ -11,21 +11,23 @@
 
 namespace windage {
 
-/// A small matrix of packs: one matrix a lane.
-class lane_matrix {
+/// A small matrix of packs, or of pairs of packs: one matrix a lane.
+template <class Number> class matrix_of {
 public:
-    lane_matrix() = default;
-    lane_matrix(int rows, int columns) : columns_(columns), values_(std::size_t(rows * columns), wide(0.0)) {}
-    wide& operator()(int row, int column) { return values_[std::size_t(row * columns_ + column)]; }
-    const wide& operator()(int row, int column) const { return values_[std::size_t(row * columns_ + column)]; }
+    matrix_of() = default;
+    matrix_of(int rows, int columns) : columns_(columns), values_(std::size_t(rows * columns), Number(0.0)) {}
+    Number& operator()(int row, int column) { return values_[std::size_t(row * columns_ + column)]; }
+    const Number& operator()(int row, int column) const { return values_[std::size_t(row * columns_ + column)]; }
     int rows() const { return columns_ > 0 ? int(values_.size()) / columns_ : 0; }
     int columns() const { return columns_; }
 
 private:
     int columns_ = 0;
     /// No allocation up to three states; the standard allocator aligns packs, that of boost does not.
-    boost::container::small_vector<wide, 16, std::allocator<wide>> values_;
+    boost::container::small_vector<Number, 16, std::allocator<Number>> values_;
 };
+
+using lane_matrix = matrix_of<wide>;
 
 struct linear_model {
     lane_matrix a, b, e, c;
@@ -33,6 +35,8 @@ struct linear_model {
 
 /// Throws std::invalid_argument where the description has the wrong count of numbers or states.
 void check_linear(const plant_description& d);
+/// The same for a count of disturbances that the plant does not have.
+void check_linear_disturbances(const plant_description& d, int disturbances);
 
 /// The model of a linear stock plant that `check_linear` accepts, for the numbers of each lane.
 linear_model realise(const plant_description& d, const std::vector<wide>& numbers);

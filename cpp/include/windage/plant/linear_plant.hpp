@@ -26,7 +26,7 @@ public:
 
 private:
     bool is_same() const;
-    void sample_exactly(std::size_t i);
+    void sample_exactly(std::size_t i, const trial_block& trials);
     void find_disturbances(const sample_interval& interval);
     wide next_state(int row, int order, const sample_interval& interval, std::size_t i) const;
     template <int Order> void advance_order(const sample_interval& interval);
