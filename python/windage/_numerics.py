@@ -32,3 +32,7 @@ class Numerics:
 
 #: Of counts whose origin is unknown.
 UNKNOWN = Numerics(text="")
+#: Of an outcome whose numerical error nobody wanted to know.
+UNEXAMINED = Numerics(
+    text="numerical error not examined", caution="Numerical error was not examined; it is in no bound."
+)

@@ -13,6 +13,7 @@ from numpy.typing import NDArray
 from ._describe import Described
 from ._errors import DescriptionError, suggestion
 from ._numbers import checked_integer
+from ._numerics import UNEXAMINED
 from ._portable import Portable, freeze
 from ._reporter import Report, Reporter
 from ._runner import Columns
@@ -20,6 +21,8 @@ from ._slack import slack_of
 from ._text_table import WIDTH, plainly_grouped
 
 if TYPE_CHECKING:
+    from ._audit import Audit
+    from ._audit_trials import Rows
     from ._drivers import Drivers
     from ._measures import Requirement
     from ._requirement_table import Line
@@ -51,6 +54,7 @@ class Outcome(Portable):
         self._described = described
         self._columns = columns
         self._judged = set(judged)
+        self._audit: Audit | None = None
         freeze(columns.parameters, columns.measures, columns.status)
 
     @property
@@ -120,7 +124,37 @@ class Outcome(Portable):
         """Return the indices of the trials that missed one requirement, given by its place or name."""
         return self._indices(~(self.slack[:, self._place(requirement)] >= 0.0))
 
-    def verdict(self, at_least: float, confidence: float = 0.95) -> Verdict:
+    def audit(self, threads: int = 0, progress: bool | Report = False) -> Audit:
+        """Find out what numerical error can have changed, once; later calls return what was found.
+
+        The trials that matter (near a limit, extreme in a spread, failing, and a sample of all) are integrated again
+        with a multiple of the steps, as many of them as the changes call for. `verdict` does so by itself.
+
+        Parameters
+        ----------
+        threads, progress
+            As for `Study.run`; by default no progress is shown.
+
+        Returns
+        -------
+        Audit
+            After Ctrl-C or a stop one without a result, and the next call begins anew.
+        """
+        from ._audit import audit
+        from ._audit_run import Run
+
+        if self._audit is None:
+            rows, scales = self._audit_rows()
+            missed = (~(rows.slack >= 0.0)).sum(axis=1).tolist()
+            run = Run(rows, scales, self.trials, len(self.failures), missed)
+            with Reporter(progress, self.trials) as reporter:
+                found = audit(self.study, self._described, run, threads, reporter)
+            if found.interrupted:
+                return found
+            self._audit = found
+        return self._audit
+
+    def verdict(self, at_least: float, confidence: float = 0.95, audit: bool = True) -> Verdict:
         """Judge the claim that at least a fraction of all trials passes, at a confidence.
 
         Parameters
@@ -129,6 +163,9 @@ class Outcome(Portable):
             Pass probability claimed, above 0 and below 1.
         confidence : float
             Confidence of the verdict, 0.5 up to but not including 1.
+        audit : bool
+            Whether numerical error is examined, by `audit`, and counted against either decision. If not, the verdict
+            says that it was not.
 
         Returns
         -------
@@ -147,9 +184,12 @@ class Outcome(Portable):
             requirement=joint_requirement(self.study.requirements),
             **self.study.cautions(),
             looks=self._look(),
+            numerics=self.audit().numerics if audit else UNEXAMINED,
         )
 
-    def verdicts(self, at_least: float | Mapping[str, float], confidence: float = 0.95) -> VerdictTable:
+    def verdicts(
+        self, at_least: float | Mapping[str, float], confidence: float = 0.95, audit: bool = True
+    ) -> VerdictTable:
         """Judge each requirement by itself, corrected so that all verdicts hold together (Bonferroni)."""
         from windage._verdict import judge_many
 
@@ -164,6 +204,7 @@ class Outcome(Portable):
             confidence,
             **self.study.cautions(),
             looks=self._look(),
+            numerics=self.audit().by_requirement if audit else dict.fromkeys(missed, UNEXAMINED),
         )
 
     def extend(self, trials: int, threads: int = 0, progress: bool | Report | None = None) -> Outcome:
@@ -262,6 +303,14 @@ class Outcome(Portable):
                 raise DescriptionError("requirement", requirement, "a requirement of the study", mend)
             return names.index(requirement)
         return checked_integer(requirement, "requirement", 0, len(names) - 1)
+
+    def _audit_rows(self) -> tuple[Rows, Values]:
+        """Return what an audit looks at in each trial, and the scale of each limit."""
+        from ._audit import rows_of, scales_for
+
+        trials = np.arange(self.first, self.first + self.trials, dtype=np.uint64)
+        rows = rows_of(self.study, self._described, self._columns, trials)
+        return rows, scales_for(self.study, self._described, self._columns)
 
     def _look(self) -> int:
         """Count this judgement: at a number of trials judged before it is no further look."""

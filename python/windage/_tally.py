@@ -4,18 +4,22 @@ from __future__ import annotations
 
 import dataclasses
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from typing import TYPE_CHECKING
 
 import numpy as np
 from numpy.typing import NDArray
 
+from ._audit_trials import Watch
 from ._descriptions import FrozenMapping
+from ._numerics import UNEXAMINED
 from ._outcome import Outcome, joint_requirement
 from ._portable import Portable, freeze
+from ._reporter import Report, Reporter
 from ._text_table import plainly_grouped, text_table
 
 if TYPE_CHECKING:
+    from ._audit import Audit
     from ._study import Study
     from ._verdict import Verdict, VerdictTable
 
@@ -36,6 +40,8 @@ class Tally(Portable):
         Indices of the first failing trials, as many as were asked to be kept.
     requested : int
         Trials asked for.
+    watch : Watch
+        What an audit needs of the trials.
     """
 
     study: Study
@@ -45,12 +51,29 @@ class Tally(Portable):
     requirement_failures: Mapping[str, int]
     first_failures: NDArray[np.int64]
     requested: int
+    watch: Watch = field(repr=False, compare=False)
 
     def __post_init__(self) -> None:
         object.__setattr__(self, "requirement_failures", FrozenMapping(self.requirement_failures))
         freeze(self.first_failures)
 
-    def verdict(self, at_least: float, confidence: float = 0.95) -> Verdict:
+    def audit(self, threads: int = 0, progress: bool | Report = False) -> Audit:
+        """Find out what numerical error can have changed, once; see `Outcome.audit`."""
+        from ._audit import audit
+        from ._audit_run import Run
+
+        known: Audit | None = self.__dict__.get("_audit")
+        if known is not None:
+            return known
+        missed = list(self.requirement_failures.values()) or [self.failures]
+        run = Run(self.watch.rows, self.watch.scales, self.trials, self.failures, missed, self.watch)
+        with Reporter(progress, self.trials) as reporter:
+            found = audit(self.study, self.study._run_description, run, threads, reporter)
+        if not found.interrupted:
+            self.__dict__["_audit"] = found
+        return found
+
+    def verdict(self, at_least: float, confidence: float = 0.95, audit: bool = True) -> Verdict:
         """Judge the claim that at least a fraction of all trials passes; see `Outcome.verdict`."""
         from windage._verdict import judge
 
@@ -62,14 +85,20 @@ class Tally(Portable):
             confidence,
             requirement=joint_requirement(self.study.requirements),
             **self.study.cautions(),
+            numerics=self.audit().numerics if audit else UNEXAMINED,
         )
 
-    def verdicts(self, at_least: float | Mapping[str, float], confidence: float = 0.95) -> VerdictTable:
+    def verdicts(
+        self, at_least: float | Mapping[str, float], confidence: float = 0.95, audit: bool = True
+    ) -> VerdictTable:
         """Judge each requirement by itself; see `Outcome.verdicts`."""
         from windage._verdict import judge_many
 
         counts = dict(self.requirement_failures)
-        return judge_many(counts, self.trials, self.diverged, at_least, confidence, **self.study.cautions())
+        numerics = self.audit().by_requirement if audit else dict.fromkeys(counts, UNEXAMINED)
+        return judge_many(
+            counts, self.trials, self.diverged, at_least, confidence, **self.study.cautions(), numerics=numerics
+        )
 
     def __repr__(self) -> str:
         asked = f" (stopped; {plainly_grouped(self.requested)} asked for)" if self.trials < self.requested else ""
@@ -85,7 +114,14 @@ class Counter:
     def __init__(self, study: Study, keep_failures: int) -> None:
         self._keep = keep_failures
         self._tally = Tally(
-            study, 0, 0, 0, {r.label: 0 for r in study.requirements}, np.empty(0, dtype=np.int64), requested=0
+            study,
+            0,
+            0,
+            0,
+            {r.label: 0 for r in study.requirements},
+            np.empty(0, dtype=np.int64),
+            requested=0,
+            watch=Watch(),
         )
 
     def add(self, outcome: Outcome) -> None:
@@ -101,6 +137,7 @@ class Counter:
             {label: n + more for (label, n), more in zip(old.requirement_failures.items(), missed, strict=True)},
             first,
             requested=0,
+            watch=old.watch.joined(*outcome._audit_rows()) if outcome.trials else old.watch,
         )
 
     def tally(self, requested: int) -> Tally:
