@@ -109,8 +109,7 @@ column replay(const campaign& c, std::uint64_t trial, const py::object& progress
 }
 
 column quantiles(const py::dict& source, const column& probabilities) {
-    const spread_description s = read_spread(source, "spread");
-    check(s);
+    const spread_description s = prepared(read_spread(source, "spread"));
     column out(probabilities.size());
     for (py::ssize_t i = 0; i < probabilities.size(); ++i)
         out.mutable_data()[i] = quantile(s, probabilities.data()[i], std::uint64_t(i));

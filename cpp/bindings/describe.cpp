@@ -24,7 +24,7 @@ template <> std::vector<std::string> enumerators<disturbance_kind>() {
     return {"time_function", "gauss_markov", "white"};
 }
 template <> std::vector<std::string> enumerators<spread_kind>() {
-    return {"normal", "uniform", "triangular", "lognormal", "beta", "choice", "samples", "rows"};
+    return {"normal", "uniform", "triangular", "lognormal", "beta", "choice", "samples", "rows", "drawn_rows"};
 }
 template <> std::vector<std::string> enumerators<source_kind>() {
     return {"time", "state", "plant_input", "disturbance", "value", "signal"};

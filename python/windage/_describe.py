@@ -92,7 +92,8 @@ class Numbers:
         described = []
         for (key, _, spread), column in zip(self._spreads, columns, strict=True):
             kind, numbers = spread._engine_form()
-            stream = self.stream(f"spread:{key}")
+            # One stream for all columns: a trial takes them from one row.
+            stream = self.stream("rows of the table" if isinstance(spread, Column) else f"spread:{key}")
             described.append({"name": column.name, "kind": kind, "numbers": numbers, "stream": stream})
         return described
 

@@ -40,11 +40,11 @@ class Description(metaclass=ExplainedCalls):
         DescriptionError
             If there is no such argument, or a new value is not allowed.
         """
-        known = [f.name for f in dataclasses.fields(self)]  # type: ignore[arg-type]
+        known = {argument_of(f): f.name for f in dataclasses.fields(self)}  # type: ignore[arg-type]
         for name in changes:
             if name not in known:
-                raise unknown_name(kind_of(self), name, known)
-        return dataclasses.replace(self, **changes)  # type: ignore[type-var]
+                raise unknown_name(kind_of(self), name, list(known))
+        return dataclasses.replace(self, **{known[name]: value for name, value in changes.items()})  # type: ignore[type-var]
 
 
 class FrozenMapping(dict[str, Value]):
@@ -67,6 +67,11 @@ def kind_of(description: object) -> str:
     return str(getattr(description, "_kind", None) or type(description).__name__)
 
 
+def argument_of(f: dataclasses.Field[Any]) -> str:
+    """Return what a field is called as an argument: its own name, unless that is taken by what is made of it."""
+    return str(f.metadata.get("argument", f.name))
+
+
 def arguments(description: Any) -> dict[str, Any]:
     """Return the arguments that make a description, without those that have their default."""
     found: dict[str, Any] = {}
@@ -81,7 +86,7 @@ def arguments(description: Any) -> dict[str, Any]:
         else:
             default = dataclasses.MISSING
         if default is dataclasses.MISSING or not _is_default(value, default):
-            found[f.name] = value
+            found[argument_of(f)] = value
     return found
 
 

@@ -12,10 +12,48 @@ from ._numbers import Spread, checked_choice, checked_label, checked_sequence, p
 #: Smallest part of a normal distribution that a truncation may leave.
 LEAST_MASS = 1e-12
 MOST_VALUES = 10_000_000
+#: No draw is farther from a mean than this many standard deviations (the uniform number is at least 2^-53).
+FARTHEST = 8.21
+#: Where the logarithm of a draw may lie: above it there is no double, below it one with fewer digits.
+LARGEST_LOGARITHM = 708.0
+#: Shapes for which the engine inverts the beta distribution to 1e-9 of its standard deviation.
+BETA_SHAPES = (1e-3, 1e9)
+#: The field of a nominal value that is stated; as an argument it is called `nominal`.
+STATED: dict[str, Any] = {"argument": "nominal"}
+
+
+class Distribution(Spread):
+    """A spread whose nominal value may be stated: the drawing's number need not be the middle."""
+
+    _kind: ClassVar[str]
+    stated_nominal: Any
+
+    @property
+    def nominal(self) -> float:
+        """The value that was stated, else the one that the distribution suggests."""
+        return float(self._usual_nominal() if self.stated_nominal is None else self.stated_nominal)
+
+    def _usual_nominal(self) -> float:
+        raise NotImplementedError
+
+    def _check_nominal(self) -> None:
+        if self.stated_nominal is not None:
+            object.__setattr__(self, "stated_nominal", checked_nominal(self, self.stated_nominal))
+
+
+def checked_nominal(spread: Distribution, value: object) -> float:
+    """Return a stated nominal value that is within the spread, so that what holds for trials holds for it."""
+    place = f"{spread._kind}.nominal"
+    plain = plain_number(value, place)
+    below = plain < spread.low or (plain == spread.low and spread._excludes_low())
+    if below or plain > spread.high:
+        expected = f"a number within the spread, from {spread.low:g} to {spread.high:g}"
+        raise DescriptionError(place, value, expected, "Widen the spread until it holds the nominal unit.")
+    return plain
 
 
 @dataclass(frozen=True, repr=False)
-class Normal(Spread):
+class Normal(Distribution):
     """Normal distribution, possibly truncated. Made by `normal`."""
 
     _kind: ClassVar[str] = "normal"
@@ -26,6 +64,7 @@ class Normal(Spread):
     sigmas: Any = None
     _: KW_ONLY
     name: str | None = None
+    stated_nominal: Any = field(default=None, metadata=STATED)
 
     def __post_init__(self) -> None:
         mean, sd = plain_number(self.mean, "normal.mean"), _non_negative(self.sd, "normal.sd")
@@ -38,11 +77,14 @@ class Normal(Spread):
                 raise DescriptionError("normal.sigmas", self.sigmas, "no other truncation beside it", mend)
             low, high = mean - sigmas * sd, mean + sigmas * sd
         _check_truncation(mean, sd, low, high)
+        reach = (max(low, mean - FARTHEST * sd), min(high, mean + FARTHEST * sd))
+        if not all(map(math.isfinite, reach)):
+            raise DescriptionError("normal.sd", self.sd, "a distribution whose draws double precision can hold")
         _set(self, mean=mean, sd=sd, low=low, high=high, sigmas=None, name=_name(self))
+        self._check_nominal()
 
-    @property
-    def nominal(self) -> float:
-        """The mean, or the bound nearest to it where the mean itself is cut off."""
+    def _usual_nominal(self) -> float:
+        # The mean, or the bound nearest to it where the mean itself is cut off.
         return float(min(max(self.mean, self.low), self.high))
 
     def _engine_form(self) -> tuple[str, list[float]]:
@@ -53,7 +95,7 @@ class Normal(Spread):
 
 
 @dataclass(frozen=True, repr=False)
-class Uniform(Spread):
+class Uniform(Distribution):
     """Every value between two bounds is equally likely. Made by `uniform`."""
 
     _kind: ClassVar[str] = "uniform"
@@ -61,15 +103,16 @@ class Uniform(Spread):
     high: float
     _: KW_ONLY
     name: str | None = None
+    stated_nominal: Any = field(default=None, metadata=STATED)
 
     def __post_init__(self) -> None:
         low, high = plain_number(self.low, "uniform.low"), plain_number(self.high, "uniform.high")
         _check_bounds("uniform", low, high)
         _set(self, low=low, high=high, name=_name(self))
+        self._check_nominal()
 
-    @property
-    def nominal(self) -> float:
-        """The middle."""
+    def _usual_nominal(self) -> float:
+        # The middle.
         return _middle(self.low, self.high)
 
     def _engine_form(self) -> tuple[str, list[float]]:
@@ -77,7 +120,7 @@ class Uniform(Spread):
 
 
 @dataclass(frozen=True, repr=False)
-class Triangular(Spread):
+class Triangular(Distribution):
     """Triangular distribution. Made by `triangular`."""
 
     _kind: ClassVar[str] = "triangular"
@@ -86,6 +129,7 @@ class Triangular(Spread):
     high: float
     _: KW_ONLY
     name: str | None = None
+    stated_nominal: Any = field(default=None, metadata=STATED)
 
     def __post_init__(self) -> None:
         low, mode, high = (plain_number(getattr(self, n), f"triangular.{n}") for n in ("low", "mode", "high"))
@@ -93,10 +137,10 @@ class Triangular(Spread):
         if not low <= mode <= high:
             raise DescriptionError("triangular.mode", self.mode, f"a number from low = {low:g} to high = {high:g}")
         _set(self, low=low, mode=mode, high=high, name=_name(self))
+        self._check_nominal()
 
-    @property
-    def nominal(self) -> float:
-        """The mode."""
+    def _usual_nominal(self) -> float:
+        # The mode.
         return self.mode
 
     def _engine_form(self) -> tuple[str, list[float]]:
@@ -104,7 +148,7 @@ class Triangular(Spread):
 
 
 @dataclass(frozen=True, repr=False)
-class LogNormal(Spread):
+class LogNormal(Distribution):
     """Lognormal distribution. Made by `lognormal`."""
 
     _kind: ClassVar[str] = "lognormal"
@@ -112,16 +156,21 @@ class LogNormal(Spread):
     sd_log: float
     _: KW_ONLY
     name: str | None = None
+    stated_nominal: Any = field(default=None, metadata=STATED)
     low: float = field(init=False, default=0.0)
     high: float = field(init=False, default=math.inf)
 
     def __post_init__(self) -> None:
-        median = _positive(self.median, "lognormal.median")
-        _set(self, median=median, sd_log=_non_negative(self.sd_log, "lognormal.sd_log"), name=_name(self))
+        median, sd_log = _positive(self.median, "lognormal.median"), _non_negative(self.sd_log, "lognormal.sd_log")
+        if not abs(math.log(median)) + FARTHEST * sd_log <= LARGEST_LOGARITHM:
+            expected = "a distribution whose draws double precision can hold"
+            mend = "It is the standard deviation of the natural logarithm; 0.1 is a spread of about 10 percent."
+            raise DescriptionError("lognormal.sd_log", self.sd_log, expected, mend)
+        _set(self, median=median, sd_log=sd_log, name=_name(self))
+        self._check_nominal()
 
-    @property
-    def nominal(self) -> float:
-        """The median."""
+    def _usual_nominal(self) -> float:
+        # The median.
         return self.median
 
     def _excludes_low(self) -> bool:
@@ -132,7 +181,7 @@ class LogNormal(Spread):
 
 
 @dataclass(frozen=True, repr=False)
-class Beta(Spread):
+class Beta(Distribution):
     """Beta distribution between two bounds. Made by `beta`."""
 
     _kind: ClassVar[str] = "beta"
@@ -142,17 +191,18 @@ class Beta(Spread):
     high: float = 1.0
     _: KW_ONLY
     name: str | None = None
+    stated_nominal: Any = field(default=None, metadata=STATED)
 
     def __post_init__(self) -> None:
-        a, b = _positive(self.a, "beta.a"), _positive(self.b, "beta.b")
+        a, b = _shape(self.a, "beta.a"), _shape(self.b, "beta.b")
         low, high = plain_number(self.low, "beta.low"), plain_number(self.high, "beta.high")
         _check_bounds("beta", low, high)
         _set(self, a=a, b=b, low=low, high=high, name=_name(self))
+        self._check_nominal()
 
-    @property
-    def nominal(self) -> float:
-        """The mean."""
-        return self.low + (self.high - self.low) * (self.a / (self.a + self.b))
+    def _usual_nominal(self) -> float:
+        # The mean.
+        return min(max(self.low + (self.high - self.low) * (self.a / (self.a + self.b)), self.low), self.high)
 
     def _engine_form(self) -> tuple[str, list[float]]:
         return "beta", [self.a, self.b, self.low, self.high]
@@ -193,7 +243,7 @@ class Tolerance(Spread):
 
 
 @dataclass(frozen=True, repr=False)
-class Choice(Spread):
+class Choice(Distribution):
     """One of several values. Made by `choice`."""
 
     _kind: ClassVar[str] = "choice"
@@ -201,6 +251,7 @@ class Choice(Spread):
     probabilities: Any = None
     _: KW_ONLY
     name: str | None = None
+    stated_nominal: Any = field(default=None, metadata=STATED)
 
     def __post_init__(self) -> None:
         values = _finite_values(self.values, "choice.values")
@@ -209,6 +260,7 @@ class Choice(Spread):
             probabilities = _finite_values(self.probabilities, "choice.probabilities")
             _check_probabilities(probabilities, len(values))
         _set(self, values=values, probabilities=probabilities, name=_name(self))
+        self._check_nominal()
 
     @property
     def low(self) -> float:
@@ -220,9 +272,8 @@ class Choice(Spread):
         """Largest value with a probability above 0."""
         return max(self._values())
 
-    @property
-    def nominal(self) -> float:
-        """The most probable value, of several the first."""
+    def _usual_nominal(self) -> float:
+        # The most probable value, of several the first.
         weights = self._weights()
         return self.values[weights.index(max(weights))]
 
@@ -238,16 +289,18 @@ class Choice(Spread):
 
 
 @dataclass(frozen=True, repr=False)
-class Samples(Spread):
+class Samples(Distribution):
     """Observed values, each as likely as any other. Made by `samples`."""
 
     _kind: ClassVar[str] = "samples"
     values: tuple[float, ...]
     _: KW_ONLY
     name: str | None = None
+    stated_nominal: Any = field(default=None, metadata=STATED)
 
     def __post_init__(self) -> None:
         _set(self, values=_finite_values(self.values, "samples.values"), name=_name(self))
+        self._check_nominal()
 
     @property
     def low(self) -> float:
@@ -259,9 +312,8 @@ class Samples(Spread):
         """Largest value."""
         return max(self.values)
 
-    @property
-    def nominal(self) -> float:
-        """The median, of an even number of values the lower one of the two in the middle."""
+    def _usual_nominal(self) -> float:
+        # The median, of an even number of values the lower one of the two in the middle.
         return lower_median(self.values)
 
     def _values(self) -> tuple[float, ...]:
@@ -293,6 +345,16 @@ def _positive(value: object, place: str) -> float:
     plain = plain_number(value, place, "a number above 0")
     if plain <= 0.0:
         raise DescriptionError(place, value, "a number above 0")
+    return plain
+
+
+def _shape(value: object, place: str) -> float:
+    plain = _positive(value, place)
+    least, most = BETA_SHAPES
+    if plain < least:
+        raise DescriptionError(place, value, f"a shape of at least {least:g}", "Write choice([low, high], [...]).")
+    if plain > most:
+        raise DescriptionError(place, value, f"a shape of at most {most:g}", "Write normal(mean, sd, low, high).")
     return plain
 
 

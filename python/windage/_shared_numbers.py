@@ -3,12 +3,13 @@
 from __future__ import annotations
 
 import math
-from dataclasses import dataclass, field
+from dataclasses import KW_ONLY, dataclass, field
 from typing import Any, ClassVar
 
 from ._arguments import explained
+from ._distributions import STATED, Distribution, lower_median
 from ._errors import DescriptionError
-from ._numbers import NAME_EXPECTED, Spread, checked_label
+from ._numbers import NAME_EXPECTED, Spread, checked_label, plain_number
 
 
 @dataclass(frozen=True, repr=False)
@@ -65,38 +66,48 @@ class Shared(Spread):
 
 
 @dataclass(frozen=True, repr=False)
-class Column(Spread):
-    """A column of the study's table: trial i has the value in row i. Made by `column`."""
+class Column(Distribution):
+    """A column of the study's table. Made by `column`."""
 
     _kind: ClassVar[str] = "column"
     name: str
+    _: KW_ONLY
+    stated_nominal: Any = field(default=None, metadata=STATED)
     # Known once the study brings the table; checks are repeated there.
     low: float = field(init=False, default=math.nan, compare=False)
     high: float = field(init=False, default=math.nan, compare=False)
-    nominal: float = field(init=False, default=math.nan, compare=False)
     rows: tuple[float, ...] | None = field(init=False, default=None, compare=False)
+    in_order: bool = field(init=False, default=False, compare=False)
 
     def __post_init__(self) -> None:
         _check_name(self.name, "column.name")
+        if self.stated_nominal is not None:
+            object.__setattr__(self, "stated_nominal", plain_number(self.stated_nominal, "column.nominal"))
 
-    def bound(self, rows: tuple[float, ...]) -> Column:
+    def bound(self, rows: tuple[float, ...], in_order: bool) -> Column:
         """Return the column with the values that the table of a study has for it."""
-        column = Column(self.name)
-        bounds = {"low": min(rows), "high": max(rows), "nominal": sorted(rows)[(len(rows) - 1) // 2]}
-        for key, value in {**bounds, "rows": rows}.items():
+        column = Column(self.name, stated_nominal=self.stated_nominal)
+        known = {"low": min(rows), "high": max(rows), "rows": rows, "in_order": in_order}
+        for key, value in known.items():
             object.__setattr__(column, key, value)
+        column._check_nominal()
         return column
+
+    def _usual_nominal(self) -> float:
+        # The lower median, itself one of the values.
+        return math.nan if self.rows is None else lower_median(self.rows)
 
     def _values(self) -> tuple[float, ...] | None:
         return self.rows
 
     def __repr__(self) -> str:
-        return f"column({self.name!r})"
+        stated = "" if self.stated_nominal is None else f", nominal={self.stated_nominal!r}"
+        return f"column({self.name!r}{stated})"
 
     def _engine_form(self) -> tuple[str, list[float]]:
         if self.rows is None:
             raise DescriptionError("column", self.name, "a column of the study's table", "Give it to Study(table=...).")
-        return "rows", list(self.rows)
+        return "rows" if self.in_order else "drawn_rows", list(self.rows)
 
 
 @explained
@@ -121,15 +132,24 @@ def shared(name: str, spread: Any) -> Shared:
 
 
 @explained
-def column(name: str) -> Column:
-    """Take a number from the study's table: trial i has the value in row i of this column.
+def column(name: str, *, nominal: float | None = None) -> Column:
+    """Take a number from a column of the study's table, `Study(..., table={name: values})`.
+
+    Parameters
+    ----------
+    name : str
+        Name of the column, and of the drawn parameter.
+    nominal : float, optional
+        Value of the nominal unit, within the column; by default the (lower) median.
 
     Notes
     -----
-    The table is given to `Study(..., table={name: values})`. Columns keep the joint distribution of measured
-    parameters, whatever it is. A study cannot run more trials than the table has rows.
+    Each trial draws one row, by its own random number and each row equally likely, and takes all columns from
+    it: the joint distribution of measured parameters is kept, whatever it is, and the order of the rows has
+    no meaning. `Study(..., table_rows="in_order")` runs the rows one after another instead, each once; its
+    verdict is a count of that list.
     """
-    return Column(name)
+    return Column(name, stated_nominal=nominal)
 
 
 def _check_name(name: object, place: str) -> None:

@@ -19,12 +19,14 @@ from ._errors import DescriptionError
 from ._loop import Loop
 from ._measures import Measure, Requirement
 from ._not_varied import Cautions, not_varied
-from ._numbers import Spread, checked_integer, high_of, low_of, nominal_of
+from ._numbers import Spread, checked_choice, checked_integer, high_of, low_of, nominal_of
 from ._outcome import Outcome
 from ._replay import Replay
 from ._reporter import GoOn, Report, Reporter
 from ._runner import Columns, make_campaign, no_columns, run_columns
 from ._study_checks import (
+    DRAWN,
+    IN_ORDER,
     check_positive_definite,
     check_title,
     check_windows,
@@ -58,10 +60,15 @@ class Study(Description):
         Further measures, without a limit. At most 1000.
     table : mapping of str to array_like, shape (rows,), optional
         The user's own table of joint parameter values, read by `column(name)`.
+    table_rows : {"drawn", "in_order"}
+        "drawn": each trial draws a row, all equally likely, by its own random number. "in_order": trial i has
+        row i, there are as many trials as rows, and the verdict is an exact count of the list, no claim about
+        units beyond it.
     correlations : mapping of (str, str) to float, optional
         Rank correlations (Spearman) between drawn parameters, by their path ("plant.inertia") or shared name,
-        through a Gaussian copula. Pairs not given within a group count as uncorrelated. At most 500
-        parameters may hang together.
+        through a Gaussian copula. Pairs not given within a group count as uncorrelated; at most 500
+        parameters may hang together. Listed values (`choice`, `samples`) are taken in ascending order, however
+        they are listed; ties between them weaken the correlation that is found, the more the fewer there are.
     title : str
         What outcomes, verdicts and plots are headed with. It decides no digit and is no part of the digest.
 
@@ -81,6 +88,7 @@ class Study(Description):
     table: Mapping[str, Sequence[float]] | None = None
     correlations: Mapping[tuple[str, str], float] | None = None
     title: str = ""
+    table_rows: str = DRAWN
 
     def __post_init__(self) -> None:
         if not isinstance(self.loop, Loop):
@@ -90,6 +98,7 @@ class Study(Description):
         put(self, "measures", checked_measures(self.measures))
         put(self, "seed", checked_integer(self.seed, "study.seed", 0, 2**64 - 1))
         put(self, "table", checked_table(self.table))
+        put(self, "table_rows", checked_choice(self.table_rows, "study.table_rows", (DRAWN, IN_ORDER)))
         put(self, "correlations", checked_correlations(self.correlations))
         check_title(self.title)
         if not self.requirements and not self.measures:
@@ -221,7 +230,8 @@ class Study(Description):
     def digest(self) -> str:
         """SHA-256 of everything that decides the digits of a trial, in hexadecimal digits.
 
-        The order of names in a mapping has no meaning; the version of the study format is included.
+        The order of names in a mapping has no meaning; the version of the study format is included. Nominal
+        values that are stated decide no trial and are left out.
         """
         from ._study_text import digest_of
 
@@ -264,7 +274,10 @@ class Study(Description):
         )
 
     def __eq__(self, other: object) -> bool:
-        return self.digest == other.digest if isinstance(other, Study) else NotImplemented
+        """Tell whether all trials have the same digits, and the nominal units too."""
+        if not isinstance(other, Study):
+            return NotImplemented
+        return self.digest == other.digest and self._nominal_values == other._nominal_values
 
     def __hash__(self) -> int:
         return hash(self.digest)
@@ -294,8 +307,12 @@ class Study(Description):
     def _bound(self) -> tuple[Loop, tuple[Requirement, ...], tuple[Measure, ...]]:
         """Loop, requirements and measures whose columns know their values."""
         parts: Any = (self.loop, self.requirements, self.measures)
-        bound: tuple[Loop, tuple[Requirement, ...], tuple[Measure, ...]] = with_table(parts, self.table)  # type: ignore[arg-type]
-        return bound
+        bound: Any = with_table(parts, self.table, self.table_rows)  # type: ignore[arg-type]
+        return bound  # type: ignore[no-any-return]
+
+    @cached_property
+    def _nominal_values(self) -> dict[str, float]:
+        return {name: spread.nominal for name, spread in self.parameters.items()}
 
     @cached_property
     def _choice(self) -> Choice:

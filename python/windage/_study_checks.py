@@ -19,6 +19,7 @@ from ._shown_text import LONGEST_NAME, hidden_character
 MOST_REQUIREMENTS = MOST_MEASURES = 1000
 MOST_PAIRS = 200_000
 MOST_ROWS = 10_000_000
+DRAWN, IN_ORDER = "drawn", "in_order"
 Part = TypeVar("Part")
 
 
@@ -147,8 +148,8 @@ def _check_holds_sample(place: str, measure: Measure, loop: Loop) -> None:
         raise DescriptionError(f"{place}.before", found, expected, "Widen the window.")
 
 
-def with_table(part: Part, table: Mapping[str, tuple[float, ...]] | None) -> Part:
-    """Return a description whose columns know their values; all checks are made anew."""
+def with_table(part: Part, table: Mapping[str, tuple[float, ...]] | None, rows: str) -> Part:
+    """Return a description whose columns know their values and order; all checks are made anew."""
     known = table or {}
 
     def change(value: Any) -> Any:
@@ -157,7 +158,7 @@ def with_table(part: Part, table: Mapping[str, tuple[float, ...]] | None) -> Par
         if value.name not in known:
             mend = suggestion(value.name, known) if known else "Give Study(..., table={name: values})."
             raise DescriptionError("study.table", value.name, "a column for each column(...)", mend)
-        return value.bound(known[value.name])
+        return value.bound(known[value.name], rows == IN_ORDER)
 
     result: Part = rebuilt(part, change)
     return result

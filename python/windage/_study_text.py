@@ -14,9 +14,10 @@ import math
 from collections.abc import Callable, Mapping, Sized
 from typing import TYPE_CHECKING, Any
 
-from . import _measure_functions, _spreads
+from . import _measure_functions, _shared_numbers, _spreads
 from ._controllers import ErrorADRC, OutputADRC
-from ._descriptions import Description, FrozenMapping, arguments, kind_of
+from ._descriptions import Description, FrozenMapping, arguments, kind_of, rebuilt
+from ._distributions import Distribution, Tolerance
 from ._errors import DescriptionError, StudyFileError, suggestion
 from ._loop import Loop
 from ._measures import COMBINATIONS, Measure, Requirement
@@ -33,7 +34,7 @@ from ._stock_plants import (
     TransferFunction,
     TwoMassDrive,
 )
-from ._study_checks import MOST_REQUIREMENTS
+from ._study_checks import DRAWN, MOST_REQUIREMENTS
 from ._time_functions import (
     Constant,
     Gust,
@@ -143,6 +144,8 @@ def to_data(study: Study) -> dict[str, Any]:
     data["measures"] = [_encoded(measure) for measure in study.measures]
     if study.table is not None:
         data["table"] = {name: list(rows) for name, rows in study.table.items()}
+    if study.table_rows != DRAWN:
+        data["table_rows"] = study.table_rows
     return {key: value for key, value in data.items() if value not in ([], "")}
 
 
@@ -151,16 +154,30 @@ def digest_of(study: Study) -> str:
     import hashlib  # both cost import time and are seldom needed
     import json
 
-    data = {key: part for key, part in to_data(study).items() if key != "title"}
+    data = {key: part for key, part in to_data(_without_nominal(study)).items() if key != "title"}
     text = json.dumps(data, sort_keys=True, separators=(",", ":"), allow_nan=False)
     return hashlib.sha256(text.encode()).hexdigest()
+
+
+def _without_nominal(study: Study) -> Study:
+    """Return the study without the nominal values that are stated; that of a tolerance is its middle."""
+
+    def change(value: Any) -> Any:
+        if isinstance(value, Distribution):
+            return value if value.stated_nominal is None else value.with_(nominal=None)
+        return value if isinstance(value, Tolerance) else None
+
+    parts = {name: getattr(study, name) for name in ("loop", "requirements", "measures")}
+    plain = {name: rebuilt(part, change) for name, part in parts.items()}
+    return study if all(plain[name] is parts[name] for name in parts) else study.with_(**plain)
 
 
 def _encoded(value: Any) -> Any:
     if isinstance(value, Shared):
         return {**_encoded(value.spread), "shared": value.name}
     if isinstance(value, Column):
-        return {"column": value.name}
+        stated = value.stated_nominal
+        return {"column": value.name} | ({} if stated is None else {"nominal": stated})
     if isinstance(value, Requirement):
         inside = {name: _encoded(part) for name, part in arguments(value).items() if name != "measure"}
         return {**_encoded(value.measure), **inside}
@@ -195,15 +212,16 @@ def from_data(data: Any) -> Study:
     from ._study import Study
 
     _check_version(data)
-    known = ["windage_study", "title", "seed", "loop", "requirements", "measures", "table", "correlations"]
-    _check_keys(data, known, ["loop"], "")
+    as_they_are = ("seed", "title", "table_rows")
+    parts = ("windage_study", "loop", "requirements", "measures", "table", "correlations")
+    _check_keys(data, [*parts, *as_they_are], ["loop"], "")
     lists = {key: _list(data.get(key, []), key) for key in ("requirements", "measures")}
     for key, items in lists.items():
         _check_count(items, key, MOST_REQUIREMENTS)
     made: dict[str, Any] = {"loop": _made_loop(_table(data["loop"], "loop"))}
     for key, decode in (("requirements", _requirement), ("measures", _measure)):
         made[key] = [decode(item, f"{key}[{i}]") for i, item in enumerate(lists[key])]
-    made.update({key: data[key] for key in ("seed", "title") if key in data})
+    made.update({key: data[key] for key in as_they_are if key in data})
     if "table" in data:
         made["table"] = _table(data["table"], "table")
     if "correlations" in data:
@@ -264,8 +282,8 @@ def _value(item: Any, place: str) -> Any:
     if isinstance(item.get("spread"), str) or isinstance(item.get("shared"), str):
         return _spread(item, place)
     if isinstance(item.get("column"), str):
-        _check_keys(item, ["column"], ["column"], place)
-        return _call(Column, {"name": item["column"]}, place)
+        inside = {"name" if key == "column" else key: part for key, part in item.items()}
+        return _call(_shared_numbers.column, inside, place)
     return {name: _value(part, f"{place}.{name}") for name, part in item.items()}
 
 

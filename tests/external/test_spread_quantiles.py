@@ -87,11 +87,17 @@ def test_beta(a: float, b: float) -> None:
 def test_choice_and_samples_are_step_functions() -> None:
     p = np.array([1e-9, 0.2499, 0.2501, 0.4999, 0.5001, 1.0 - 1e-9])
     np.testing.assert_array_equal(quantiles("choice", [7.0, 8.0, 9.0, 0.25, 0.25, 0.5], p), [7, 7, 8, 8, 9, 9])
-    np.testing.assert_array_equal(quantiles("samples", [4.0, 3.0, 1.0, 2.0], p), [4, 4, 3, 3, 1, 2])
+    np.testing.assert_array_equal(quantiles("choice", [9.0, 7.0, 8.0, 0.5, 0.25, 0.25], p), [7, 7, 8, 8, 9, 9])
+    np.testing.assert_array_equal(quantiles("samples", [4.0, 3.0, 1.0, 2.0], p), [1, 1, 2, 2, 3, 4])
 
 
 def parameters(
-    seed: int = 11, correlations: Any = None, table: Any = None, trials: int = TRIALS, **spreads: Any
+    seed: int = 11,
+    correlations: Any = None,
+    table: Any = None,
+    table_rows: str = "drawn",
+    trials: int = TRIALS,
+    **spreads: Any,
 ) -> Any:
     """Draw the parameters of a plant that does nothing with them."""
     plant = wd.Plant(
@@ -109,7 +115,9 @@ def parameters(
         reference=0.0,
         steps_per_sample=1,
     )
-    study = wd.Study(loop, measures=[wd.peak("error")], seed=seed, correlations=correlations, table=table)
+    study = wd.Study(
+        loop, measures=[wd.peak("error")], seed=seed, correlations=correlations, table=table, table_rows=table_rows
+    )
     return study.run(trials, progress=False).parameters
 
 
@@ -223,8 +231,13 @@ def test_a_shared_parameter_has_one_value_at_all_its_places() -> None:
 def test_rows_of_a_table_stay_together() -> None:
     rng = np.random.default_rng(3)
     table = {"stiffness": rng.normal(size=40).tolist(), "inertia": rng.normal(size=40).tolist()}
-    drawn = parameters(
-        trials=40, table=table, a=wd.column("stiffness"), b=wd.column("inertia"), c=wd.column("stiffness")
-    )
-    np.testing.assert_array_equal(drawn["stiffness"], table["stiffness"])
-    np.testing.assert_array_equal(drawn["inertia"], table["inertia"])
+    columns = {"a": wd.column("stiffness"), "b": wd.column("inertia"), "c": wd.column("stiffness")}
+    listed = parameters(trials=40, table=table, table_rows="in_order", **columns)
+    np.testing.assert_array_equal(listed["stiffness"], table["stiffness"])
+    np.testing.assert_array_equal(listed["inertia"], table["inertia"])
+    drawn = parameters(table=table, **columns)
+    rows = [table["stiffness"].index(value) for value in drawn["stiffness"]]
+    np.testing.assert_array_equal(drawn["inertia"], np.array(table["inertia"])[rows])
+    # Each row is equally likely, whatever stands before it, and one trial's row tells nothing of the next one's.
+    assert stats.chisquare(np.bincount(rows, minlength=40)).pvalue > 1e-6
+    assert abs(np.corrcoef(rows[1:], rows[:-1])[0, 1]) < 5.0 / math.sqrt(TRIALS)

@@ -274,7 +274,10 @@ def test_rows_of_a_table_do_not_depend_on_how_trials_are_cut() -> None:
     rng = np.random.default_rng(1)
     table = {"gain": rng.uniform(0.5, 1.5, 150).tolist()}
     study = linear(table=table, plant=wd.SecondOrder(wd.column("gain"), 0.3, 0.5))
-    expected = run(study, 0, 150, 1, 128)
-    np.testing.assert_array_equal(expected[0][list(study.parameters).index("gain")], table["gain"])
-    part = tuple(np.ascontiguousarray(column[..., 70:150]) for column in expected)
-    assert_same_bits(run(study, 70, 80, 2, 16), part)  # type: ignore[arg-type]
+    for rows in ("drawn", "in_order"):
+        one = study.with_(table_rows=rows)
+        expected = run(one, 0, 150, 1, 128)
+        gains = expected[0][list(study.parameters).index("gain")]
+        assert np.array_equal(gains, table["gain"]) is (rows == "in_order")
+        part = tuple(np.ascontiguousarray(column[..., 70:150]) for column in expected)
+        assert_same_bits(run(one, 70, 80, 2, 16), part)  # type: ignore[arg-type]

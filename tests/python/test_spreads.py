@@ -138,11 +138,17 @@ def test_shared_name_with_two_spreads_is_refused() -> None:
 
 def test_columns_take_their_rows() -> None:
     table = {"mass": [3.0, 1.0, 2.0], "drag": np.array([0.1, 0.2, 0.3])}
-    got = drawn(3, a=wd.column("mass"), b=wd.column("drag"), c=wd.column("mass"), table=table)
+    columns = study(a=wd.column("mass"), b=wd.column("drag"), c=wd.column("mass"), table=table)
+    in_order = columns.with_(table_rows="in_order")
+    got = in_order.run(3, progress=False).parameters
     assert got["mass"].tolist() == [3.0, 1.0, 2.0]
     assert got["drag"].tolist() == [0.1, 0.2, 0.3]
     with pytest.raises(wd.DescriptionError, match="trials: found 4; expected at most 3, the rows"):
-        drawn(4, a=wd.column("mass"), table=table)
+        in_order.run(4, progress=False)
+    assert set(columns.run(100, progress=False).parameters["mass"]) == {1.0, 2.0, 3.0}
+    assert columns.digest != in_order.digest
+    with pytest.raises(wd.DescriptionError, match=r"study\.table_rows: found 'listed'"):
+        columns.with_(table_rows="listed")
 
 
 def test_columns_are_checked_where_they_stand() -> None:

@@ -23,9 +23,9 @@ double gaussian_correlation(double rank_correlation) {
 } // namespace
 
 parameter_source::parameter_source(const study_description& study)
-    : seed_(study.seed), available_(std::numeric_limits<std::uint64_t>::max()), spreads_(study.spreads) {
-    for (const spread_description& s : spreads_) {
-        check(s);
+    : seed_(study.seed), available_(std::numeric_limits<std::uint64_t>::max()) {
+    for (const spread_description& s : study.spreads) {
+        spreads_.push_back(prepared(s));
         if (s.kind == spread_kind::rows) available_ = std::min<std::uint64_t>(available_, s.numbers.size());
     }
     for (const correlation_description& c : study.correlations) {

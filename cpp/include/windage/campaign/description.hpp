@@ -19,7 +19,8 @@ enum class spread_kind {
     beta,       ///< a, b, low, high
     choice,     ///< values, then as many probabilities
     samples,    ///< values, each as likely as any other
-    rows,       ///< values; trial i takes value i (the user's own table)
+    rows,       ///< values; trial i takes value i (the user's own table, row after row)
+    drawn_rows, ///< values, each as likely as any other, in the order of the table: one stream keeps its rows together
 };
 
 struct spread_description {

@@ -11,8 +11,10 @@
 
 namespace windage {
 
+/// The spread as `quantile` reads it: values that are listed stand in ascending order, so that a larger uniform number
+/// never draws a smaller value, and probabilities are added up.
 /// Throws std::invalid_argument naming the spread and what is wrong with its numbers.
-void check(const spread_description& s);
+spread_description prepared(spread_description s);
 
 class parameter_source {
 public:
@@ -34,11 +36,12 @@ private:
 
     std::uint64_t seed_;
     std::uint64_t available_;
-    std::vector<spread_description> spreads_;
+    std::vector<spread_description> spreads_; // prepared
     std::vector<copula> copulas_;
 };
 
-/// The value of a spread at probability p (for `rows`: of trial `trial`).
+/// The value of a prepared spread at probability p (for `rows`: of trial `trial`). Between its bounds and monotone in p
+/// for every p in [2^-53, 1 - 2^-53].
 double quantile(const spread_description& s, double p, std::uint64_t trial);
 
 } // namespace windage
