@@ -47,6 +47,7 @@ from ._measure_functions import (
 )
 from ._measures import Measure, Requirement
 from ._outcome import Outcome
+from ._outcome_file import load_outcome
 from ._plants import Plant
 from ._replay import Replay
 from ._sensor_actuator import Actuator, Sensor
@@ -130,6 +131,7 @@ __all__ = [
     "ise",
     "itae",
     "load",
+    "load_outcome",
     "lognormal",
     "maximum",
     "mean",

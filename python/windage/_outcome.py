@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import os
 from collections.abc import Mapping, Sequence
 from functools import cached_property
 from types import MappingProxyType
@@ -218,6 +219,7 @@ class Outcome(Portable):
             As for `Study.run`.
         """
         trials = checked_integer(trials, "trials", 1, 1 << 40)
+        self.study._check_fits(trials, held=self.trials)
         mine = self._columns
         with Reporter(progress, trials) as reporter:
             more = self.study._columns(self.first + self.trials, trials, threads, reporter, reporter.go_on)
@@ -239,6 +241,23 @@ class Outcome(Portable):
         from ._arrow import outcome_table
 
         return outcome_table(self)
+
+    def save(self, path: str | os.PathLike[str]) -> None:
+        """Write the outcome to a Parquet file with its study inside, which `load_outcome` reads.
+
+        Parameters
+        ----------
+        path : str or path
+            The file; an old one is replaced when the new one is complete.
+
+        Raises
+        ------
+        OutputError
+            If the file cannot be written.
+        """
+        from ._outcome_file import save_outcome
+
+        save_outcome(self, path)
 
     def drivers(self) -> Drivers:
         """Return how strongly each drawn parameter goes along with slack and failure: a first hint."""

@@ -18,6 +18,7 @@ from ._descriptions import Description, rebuilt
 from ._errors import DescriptionError
 from ._loop import Loop
 from ._measures import Measure, Requirement
+from ._memory import check_memory
 from ._not_varied import Cautions, not_varied
 from ._numbers import Spread, checked_choice, checked_integer, high_of, low_of, nominal_of
 from ._outcome import Outcome
@@ -39,9 +40,6 @@ from ._study_checks import (
 from ._tally import Counter, Tally
 
 MOST_TRIALS = 1 << 40
-#: Largest replay and largest outcome held in memory, bytes.
-LARGEST_REPLAY = 4_000_000_000
-LARGEST_OUTCOME = 64_000_000_000
 
 
 @dataclass(frozen=True, repr=False, eq=False)
@@ -127,11 +125,7 @@ class Study(Description):
             After Ctrl-C or a stop: of the trials finished so far.
         """
         count = checked_integer(trials, "trials", 1, MOST_TRIALS)
-        size = 8.0 * count * (len(self.parameters) + len(self.measures) + 2 * len(self.requirements))
-        if size > LARGEST_OUTCOME:
-            mend = "Use study.count(...) or study.batches(...), whose memory does not grow."
-            expected = f"an outcome of at most {LARGEST_OUTCOME / 1e9:g} GB"
-            raise DescriptionError("trials", trials, expected, mend)
+        self._check_fits(count)
         with Reporter(progress, count) as reporter:
             return self._outcome(0, count, threads, reporter)
 
@@ -148,6 +142,7 @@ class Study(Description):
         """
         count = checked_integer(trials, "trials", 1, MOST_TRIALS)
         size = checked_integer(size, "size", 1, MOST_TRIALS)
+        self._check_fits(min(size, count), "size")
         reporter = Reporter(progress, count)
         outcomes = self._batches(count, size, threads, reporter)
         try:
@@ -187,6 +182,7 @@ class Study(Description):
         """
         count = checked_integer(trials, "trials", 1, MOST_TRIALS)
         size = checked_integer(size, "size", 1, MOST_TRIALS)
+        self._check_fits(min(size, count), "size")
         counter = Counter(self, checked_integer(keep_failures, "keep_failures", 0, MOST_TRIALS))
         with Reporter(progress, count) as reporter:
             try:
@@ -200,14 +196,14 @@ class Study(Description):
     def replay(self, trial: int) -> Replay:
         """Run one trial again and return every signal, with the same digits as in `run`."""
         trial = checked_integer(trial, "trial", 0, MOST_TRIALS)
-        _check_memory(self._bound[0])
+        _check_replay_fits(self._bound[0])
         described = self._describe(self.resolved_steps(), every_signal=True)
         return _replay(self, self._bound[0], described, trial, trial)
 
     def nominal(self) -> Replay:
         """Run the nominal unit: every spread at its nominal value, noise as in trial 0."""
         loop, requirements, measures = _at_nominal(self._bound)
-        _check_memory(loop)
+        _check_replay_fits(loop)
         described = describe(loop, requirements, measures, {}, self.seed, self.resolved_steps(), every_signal=True)
         return _replay(self, loop, described, 0, None)
 
@@ -342,6 +338,18 @@ class Study(Description):
     def _describe(self, steps: int, *, every_signal: bool = False) -> Described:
         return describe(*self._bound, self.correlations or {}, self.seed, steps, every_signal=every_signal)
 
+    def _check_fits(self, trials: int, field: str = "trials", held: int = 0) -> None:
+        """Refuse an outcome that the memory does not hold beside the trials that are held already."""
+        described = self._describe(1)
+        numbers, judged = len(described.columns) + len(described.measures), len(self.requirements)
+        # Columns from the engine, then slacks and what follows from them; a longer outcome is a copy of both parts.
+        each, worked_out = 8 * numbers + 1, 9 * judged + 2
+        needed = float(trials) * each + (held and float(held + trials) * each) + float(held + trials) * worked_out
+        mend = "Use study.count(...) or study.batches(...), whose memory does not grow with the trials."
+        if field == "size":
+            mend = "Take smaller batches."
+        check_memory(field, trials, needed, mend)
+
     def _batches(self, count: int, size: int, threads: int, reporter: Reporter) -> Iterator[Outcome]:
         done = 0
         while done < count:
@@ -375,11 +383,10 @@ def _at_nominal(part: Any) -> Any:
     return rebuilt(part, lambda x: nominal_of(x) if isinstance(x, Spread) else None)
 
 
-def _check_memory(loop: Loop) -> None:
+def _check_replay_fits(loop: Loop) -> None:
     samples = high_of(loop.duration) / low_of(loop.sample_period)
-    if 8.0 * len(loop.signal_names) * samples > LARGEST_REPLAY:
-        found = f"{len(loop.signal_names)} signals of {samples:.3g} samples"
-        raise DescriptionError("replay", found, f"at most {LARGEST_REPLAY / 1e9:g} GB", "Shorten the trial.")
+    found = f"{len(loop.signal_names)} signals of {samples:.3g} samples"
+    check_memory("replay", found, 8.0 * len(loop.signal_names) * samples, "Shorten the trial.")
 
 
 def _replay(study: Study, loop: Loop, described: Described, index: int, trial: int | None) -> Replay:
