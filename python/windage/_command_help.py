@@ -50,8 +50,8 @@ RUN = _help(
     Run a study and judge the claim that at least a fraction P of all trials passes.
 
     A trial passes if it finishes and meets every requirement. Fix the number of trials beforehand: running
-    again and again until the verdict is the wanted one does not keep the confidence. Ctrl-C keeps what is
-    done: the finished trials are judged, marked as interim, and the exit code is 4.
+    again and again until the verdict is the wanted one does not keep the confidence. Ctrl-C, or a request to
+    terminate, keeps what is done: the finished trials are judged, marked as interim, and the exit code is 4.
 
     windage replay shows a failing trial; in continuous integration the exit code decides.
     """,

@@ -18,6 +18,7 @@ from ._loader import show_config
 from ._outcome import Outcome
 from ._plots import HOW_TO_INSTALL, has_matplotlib
 from ._shown_text import one_line
+from ._stopping import heard_like_ctrl_c
 from ._study import Study
 from ._study_file import load, save
 from ._verdict import Verdict, judge
@@ -215,6 +216,11 @@ def main(arguments: Sequence[str] | None = None) -> int:
         By default those of the process.
     """
     output.begin()
+    with heard_like_ctrl_c():
+        return _run(arguments)
+
+
+def _run(arguments: Sequence[str] | None) -> int:
     try:
         code = app(arguments, prog_name=output.called_as(), standalone_mode=False)
     except UsageError as error:
@@ -225,12 +231,12 @@ def main(arguments: Sequence[str] | None = None) -> int:
     except (KeyboardInterrupt, typer.Abort):
         output.print_failure(WindageError("interrupted; what is not printed above was not finished"))
         return INTERRUPTED
+    except OSError as error:  # what cannot be read is no OSError of ours
+        output.print_failure(error)
+        return UNWRITTEN
     except (WindageError, MemoryError) as error:
         output.print_failure(error)
         return WRONG
-    except OSError as error:  # what cannot be read is a WindageError
-        output.print_failure(error)
-        return UNWRITTEN
     except Exception as error:
         output.print_failure(error)
         return DEFECT

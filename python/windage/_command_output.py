@@ -8,9 +8,9 @@ import shlex
 import shutil
 import sys
 from collections.abc import Iterator, Mapping
-from contextlib import contextmanager, nullcontext, redirect_stdout, suppress
+from contextlib import contextmanager, nullcontext, redirect_stdout
 from pathlib import Path
-from typing import TYPE_CHECKING, Any
+from typing import TYPE_CHECKING, Any, BinaryIO
 
 from ._command_screen import Screen
 from ._drivers import FAILING, FEW_FAILURES
@@ -18,6 +18,7 @@ from ._errors import DescriptionError, WindageError
 from ._plots import HOW_TO_INSTALL, has_matplotlib
 from ._shown_text import one_line, shorten
 from ._text_table import plainly_grouped
+from ._written_file import is_written_in_place, written
 
 if TYPE_CHECKING:
     from ._outcome import Outcome
@@ -177,37 +178,43 @@ def check_target(option: str, path: Path | None, suffixes: tuple[str, ...]) -> N
     """Refuse a file that could not be written, before any trial is run."""
     if path is None:
         return
-    if path.suffix.lower() not in suffixes:
+    try:
+        is_in_place = not path.is_dir() and is_written_in_place(path)
+    except (OSError, ValueError) as error:
+        raise DescriptionError(option, str(path), "a file that can be written", f"{error}.") from error
+    # A device or pipe may be called anything, as long as it is clear what goes into it.
+    if path.suffix.lower() not in suffixes and not (is_in_place and len(suffixes) == 1):
         raise DescriptionError(option, str(path), "a file name that ends in " + " or ".join(suffixes))
     if path.is_dir():
         raise DescriptionError(option, str(path), "a file", "It is a folder.")
-    if not path.parent.is_dir():
-        raise DescriptionError(option, str(path), "a file in a folder that exists", f"Make {path.parent}.")
-    if not os.access(path.parent, os.W_OK):
-        raise DescriptionError(option, str(path), "a folder that can be written to")
+    if not is_in_place:
+        _check_folder(option, path)
     if suffixes == PICTURES and not has_matplotlib():
         raise WindageError(HOW_TO_INSTALL)
 
 
+def _check_folder(option: str, path: Path) -> None:
+    folder = (Path(os.path.realpath(path)) if path.is_symlink() else path).parent
+    if not folder.is_dir():
+        raise DescriptionError(option, str(path), "a file in a folder that exists", f"Make {folder}.")
+    if not os.access(folder, os.W_OK):
+        raise DescriptionError(option, str(path), "a folder that can be written to")
+
+
 @contextmanager
-def in_one_piece(path: Path) -> Iterator[Path]:
-    """Give a file beside the wanted one, which takes its place only when it is complete."""
-    part = path.with_name(f".{path.name}.{os.getpid()}.part")
-    try:
-        yield part
-        part.replace(path)
-    except BaseException:
-        with suppress(OSError):
-            part.unlink(missing_ok=True)
-        raise
-    say(f"Wrote {path}")
+def in_one_piece(path: Path) -> Iterator[BinaryIO]:
+    """Give a file that takes the place of the old one when it is complete, and say that it was written."""
+    with written(path) as file:
+        yield file
+    if path.is_file():  # no words of ours into a pipe or a terminal
+        say(f"Wrote {path}")
 
 
 def write_picture(plotted: Outcome | Replay, path: Path, **options: Any) -> None:
     """Write the plot of an outcome or a replay."""
     figure = plotted.plot(**options)
-    with in_one_piece(path) as part:
-        figure.savefig(part, format=path.suffix[1:].lower(), dpi=120)
+    with in_one_piece(path) as file:
+        figure.savefig(file, format=path.suffix[1:].lower(), dpi=120)
 
 
 def write_table(table: Any, path: Path, kind: str) -> None:
@@ -216,12 +223,12 @@ def write_table(table: Any, path: Path, kind: str) -> None:
     import pyarrow.csv  # type: ignore[import-untyped]
     import pyarrow.parquet  # type: ignore[import-untyped]
 
-    with in_one_piece(path) as part:
+    with in_one_piece(path) as file:
         if kind == ".parquet":
-            pa.parquet.write_table(table, part)
+            pa.parquet.write_table(table, file)
         else:
             plain = [c.cast(pa.string()) if pa.types.is_dictionary(c.type) else c for c in table.columns]
-            pa.csv.write_csv(pa.table(plain, names=table.column_names), part)
+            pa.csv.write_csv(pa.table(plain, names=table.column_names), file)
 
 
 def outcome_table(outcome: Outcome) -> Any:
@@ -246,8 +253,8 @@ def replay_table(replay: Replay) -> Any:
 def write_json(report: Mapping[str, Any], path: Path) -> None:
     """Write a report as JSON in its strict form: no infinities, no NaN, and escapes for all but ASCII."""
     text = json.dumps(report, indent=2, allow_nan=False)
-    with in_one_piece(path) as part:
-        part.write_text(text + "\n", encoding="utf-8")
+    with in_one_piece(path) as file:
+        file.write(f"{text}\n".encode())
 
 
 def run_report(outcome: Outcome, verdict: Verdict, source: Path, code: int) -> dict[str, Any]:

@@ -11,6 +11,8 @@ from __future__ import annotations
 import signal
 import threading
 import time
+from collections.abc import Iterator
+from contextlib import contextmanager
 from types import TracebackType
 from typing import Self
 
@@ -72,3 +74,16 @@ def interrupt(*_: object) -> None:
         raise KeyboardInterrupt
     for requests in _open:
         requests.note()
+
+
+@contextmanager
+def heard_like_ctrl_c() -> Iterator[None]:
+    """Hear the request to terminate (SIGTERM) like Ctrl-C, for a whole program."""
+    if threading.current_thread() is not threading.main_thread():
+        yield
+        return
+    before = signal.signal(signal.SIGTERM, interrupt)
+    try:
+        yield
+    finally:
+        signal.signal(signal.SIGTERM, before)

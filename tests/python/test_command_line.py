@@ -342,10 +342,25 @@ def test_files_are_written_in_one_piece(tmp_path: Path) -> None:
     with pytest.raises(ValueError, match="Out of range float values"):
         _command_output.write_json({"bound": float("nan")}, target)
     writing = _command_output.in_one_piece(target)
-    writing.__enter__().write_text("half")
+    writing.__enter__().write(b"half")
     assert writing.__exit__(KeyboardInterrupt, KeyboardInterrupt(), None) is False
     assert target.read_text() == "old"
     assert [path.name for path in tmp_path.iterdir()] == ["verdict.json"]
+
+
+@pytest.mark.skipif(not Path("/dev/null").exists(), reason="no devices")
+def test_reports_go_into_pipes_and_devices_as_they_stand(study_file: str, tmp_path: Path) -> None:
+    (tmp_path / "link.json").symlink_to("real.json")
+    assert run_study(study_file, "--at-least", "0.8", "--json", "/dev/null", "--table", "link.parquet") == 0
+    assert run_study(study_file, "--at-least", "0.8", "--json", "link.json") == 0
+    assert json.loads((tmp_path / "real.json").read_text())["exit_code"] == 0
+    assert not Path("/dev/null").is_file()
+    assert run_study(study_file, "--table", "/dev/null") == 3  # which kind?
+    assert run_study(study_file, "--json", "missing/link.json") == 3
+    code = f"from windage._command_line import main; raise SystemExit(main(['run', {study_file!r}, '--short', "
+    code += "'--trials', '100', '--json', '/dev/stdout']))"
+    done = subprocess.run([sys.executable, "-c", code], capture_output=True, text=True, check=False)
+    assert json.loads(done.stdout[done.stdout.index("{") : done.stdout.rindex("}") + 1])["trials"]["run"] == 100
 
 
 # --- interruption and progress
@@ -378,7 +393,8 @@ def test_interrupted_run_is_judged_as_interim(
     assert "INTERIM PASS: at least 80 %" in printed
 
 
-def test_ctrl_c_ends_the_process_with_what_is_done(tmp_path: Path) -> None:
+@pytest.mark.parametrize("number", [signal.SIGINT, signal.SIGTERM])
+def test_ctrl_c_and_termination_end_the_process_with_what_is_done(number: signal.Signals, tmp_path: Path) -> None:
     # The observer is too fast for advice to be absent: its line tells that the run begins.
     wd.save(servo(0.1, observer_bandwidth=150.0), tmp_path / "servo.toml")
     command = [sys.executable, "-u", "-c", "from windage._command_line import main; raise SystemExit(main())"]
@@ -388,7 +404,7 @@ def test_ctrl_c_ends_the_process_with_what_is_done(tmp_path: Path) -> None:
         assert process.stdout.readline().startswith("Advice:")
         with pytest.raises(subprocess.TimeoutExpired):
             process.wait(1.0)
-        process.send_signal(signal.SIGINT)
+        process.send_signal(number)
         printed, errors = process.communicate(timeout=60.0)
     assert process.returncode == 4, errors
     assert "INTERIM" in printed
