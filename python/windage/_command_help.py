@@ -73,6 +73,7 @@ REPLAY = _help(
     """,
     [
         "windage replay dish.toml --trial 48 --plot trial-48.png",
+        "windage replay dish.toml --trial 48 --plot onset.png --onset --signal wind",
         "windage replay dish.toml --trial 48 --plot start.png --before 2",
         "windage replay dish.toml --nominal --csv nominal.csv",
     ],

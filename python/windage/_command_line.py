@@ -87,7 +87,7 @@ def demo(
     output.say(f"Wrote {file}")
     if has_matplotlib():
         with output.kept():
-            output.write_picture(outcome, picture)
+            output.write_picture(outcome, picture, verdict=verdict)
     else:
         output.say(f"No picture. {HOW_TO_INSTALL}")
     _print_next_steps(outcome, file)
@@ -138,20 +138,20 @@ def run(
             output.write_json(output.run_report(outcome, verdict, study_file, code), report)
     output.print_verdict(outcome, verdict, short)
     with output.on_error_stream(short):
-        _write(outcome, plot, table)
+        _write(outcome, verdict, plot, table)
     if len(outcome.failures) and not short:
         again = output.command_again("replay", study_file, *arguments_of(changes or (), seed))
         output.say_command(f"See the first failing trial: {again} --trial {outcome.failures[0]}")
     return code
 
 
-def _write(outcome: Outcome, plot: Path | None, table: Path | None) -> None:
+def _write(outcome: Outcome, verdict: Verdict, plot: Path | None, table: Path | None) -> None:
     if table is not None:
         with output.kept():
             output.write_table(output.outcome_table(outcome), table, table.suffix.lower())
     if plot is not None:
         with output.kept():
-            output.write_picture(outcome, plot)
+            output.write_picture(outcome, plot, verdict=verdict)
 
 
 @app.command(help=teach.REPLAY, epilog=teach.REPLAY_CODES)
@@ -167,6 +167,13 @@ def replay(
     after: Annotated[float, typer.Option(metavar="S", help="Plot from this time on, s.")] = 0.0,
     before: Annotated[
         float | None, typer.Option(metavar="S", help="Plot until this time, s.", show_default=False)
+    ] = None,
+    onset: Annotated[
+        bool, typer.Option("--onset", help="Plot around the instant at which a requirement is first missed.")
+    ] = False,
+    signals: Annotated[
+        list[str] | None,
+        typer.Option("--signal", metavar="NAME", help="Plot a further signal; may be given again."),
     ] = None,
     csv: Annotated[
         Path | None, typer.Option("--csv", metavar="FILE", help="Write every signal, one row a sample.")
@@ -193,7 +200,7 @@ def replay(
         if path is not None:
             output.write_table(output.replay_table(replayed), path, path.suffix.lower())
     if plot is not None:
-        output.write_picture(replayed, plot, after=after, before=before)
+        output.write_picture(replayed, plot, after=after, before=before, onset=onset, signals=signals or ())
     return UNWRITTEN if output.is_lost() else 0
 
 

@@ -26,6 +26,7 @@ if TYPE_CHECKING:
     from ._audit_trials import Rows
     from ._drivers import Drivers
     from ._measures import Requirement
+    from ._plot_style import StudyFigure
     from ._requirement_table import Line
     from ._study import Study
     from ._verdict import Verdict, VerdictTable
@@ -269,11 +270,50 @@ class Outcome(Portable):
 
         return find_drivers(self)
 
-    def plot(self, *args: Any, **options: Any) -> Any:
-        """Plot the outcome; see `windage._plots.plot_outcome`."""
-        import importlib
+    def plot(
+        self,
+        *,
+        requirements: Sequence[int | str] | None = None,
+        parameters: int = 3,
+        confidence: float = 0.95,
+        verdict: Verdict | None = None,
+    ) -> StudyFigure:
+        """Plot how the measures are distributed, and which spreads they depend on.
 
-        return importlib.import_module("windage._plots").plot_outcome(self, *args, **options)
+        Each requirement has a row. On the left: the fraction of trials that are at least so near to missing the
+        limit, or beyond it, on a logarithmic axis because it is the tail that decides; where the curve crosses
+        the limit the missed fraction is read. The axis below is the measure, that above the slack. The band
+        holds the true fraction, at each point by itself. On the right: the measure over the drawn parameters with
+        the largest rank correlation. Where each trial draws its own limit, the slack takes the measure's place.
+
+        Parameters
+        ----------
+        requirements : sequence of int or str, optional
+            Which requirements to show, by place or name; by default all, or the six missed most often.
+        parameters : int
+            Panels a requirement, 0 to 6.
+        confidence : float
+            Of the band: two-sided Clopper-Pearson, point by point.
+        verdict : Verdict, optional
+            Its claim and decision head the picture.
+
+        Returns
+        -------
+        matplotlib.figure.Figure
+            Belongs to the caller; notebooks show it, `outcome.plot().savefig("outcome.png")` writes it.
+
+        Raises
+        ------
+        WindageError
+            If Matplotlib is not installed.
+        DescriptionError
+            If there is no trial or no requirement, or an argument is out of range.
+        """
+        from ._plots import plot_outcome
+
+        return plot_outcome(
+            self, requirements=requirements, parameters=parameters, confidence=confidence, verdict=verdict
+        )
 
     def __len__(self) -> int:
         return self.trials

@@ -1,101 +1,92 @@
-"""The plot of an outcome: distribution of slack, and slack over the strongest parameters."""
+"""The plot of an outcome: distribution of each measure, and the measure over the strongest parameters."""
 
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass
 from typing import TYPE_CHECKING
 
 import numpy as np
 from matplotlib.axes import Axes
 from matplotlib.lines import Line2D
 from matplotlib.patches import Patch
-from matplotlib.ticker import FuncFormatter, MaxNLocator
+from matplotlib.ticker import FuncFormatter, NullFormatter
 from numpy.typing import NDArray
 
 from windage import _statistics
 
+from ._cautions import percent_above, percent_below
+from ._drivers import Driver
 from ._errors import DescriptionError
 from ._evidence import checked_probability
 from ._numbers import checked_integer
-from ._plot_style import (
-    BLUE,
-    INK,
-    SKY,
-    VERMILLION,
-    StudyFigure,
-    Values,
-    dress,
-    title_lines,
-    wrapped,
-)
+from ._plot_dependence import Dependence
+from ._plot_row import Row, row_of
+from ._plot_style import BLUE, GREY, INK, SKY, VERMILLION, StudyFigure, dress, panel_title, title_lines, wrapped
+from ._plot_ticks import set_ticks
+from ._shown_text import plot_text
+from ._text_table import plainly_grouped
 
 if TYPE_CHECKING:
     from ._outcome import Outcome
+    from ._verdict import Verdict
 
 MOST_ROWS = 6
 MOST_PARAMETERS = 6
-#: Points drawn of those that passed and of those that failed.
-MOST_DOTS, MOST_MARKS = 3_000, 600
 #: Points of the distribution's curve.
 CURVE = 300
-BINS = 16
-
-Flags = NDArray[np.bool_]
-
-
-@dataclass(frozen=True)
-class _Row:
-    """One requirement: its slack in each trial and the range of slack that is shown."""
-
-    label: str
-    words: str
-    slack: Values
-    low: float
-    high: float
-
-    @property
-    def missed(self) -> Flags:
-        """Which trials missed it."""
-        return ~(self.slack >= 0.0)
-
-    @property
-    def shown(self) -> Values:
-        """The slack, moved to the edge where it lies outside the range."""
-        return np.clip(np.nan_to_num(self.slack, nan=-np.inf), self.low, self.high)
+#: Inches of a panel, and characters of its tick labels that fit side by side.
+CURVE_WIDTH, CURVE_ROOM = 4.2, 46.0
+PANEL_WIDTH, PANEL_ROOM = 2.9, 30.0
 
 
 def draw_outcome(
-    outcome: Outcome, requirements: Sequence[int | str] | None, parameters: int, confidence: float
+    outcome: Outcome,
+    requirements: Sequence[int | str] | None,
+    parameters: int,
+    confidence: float,
+    verdict: Verdict | None,
 ) -> StudyFigure:
     """Draw the figure; see `windage._plots.plot_outcome`."""
     parameters = checked_integer(parameters, "parameters", 0, MOST_PARAMETERS)
     confidence = checked_probability("confidence", confidence)
     if not outcome.trials:
         raise DescriptionError("outcome", "0 trials", "at least 1 trial to plot")
-    rows = [_row(outcome, place) for place in _places(outcome, requirements)]
+    rows = [row_of(outcome, place) for place in _places(outcome, requirements)]
     columns = 1 + min(parameters, len(outcome.parameters))
-    figure = StudyFigure(4.2 + 2.9 * (columns - 1), 1.5 + 3.0 * len(rows))
+    figure = StudyFigure(CURVE_WIDTH + PANEL_WIDTH * (columns - 1), 1.7 + 3.2 * len(rows))
     grid = figure.add_gridspec(len(rows), columns, width_ratios=[1.35] + [1.0] * (columns - 1))
+    drivers = outcome.drivers() if columns > 1 else None
+    kinds: dict[str, Line2D | Patch] = {}
     for i, row in enumerate(rows):
-        curve = figure.add_subplot(grid[i, 0])
-        _draw_distribution(curve, row, confidence)
-        drivers = outcome.drivers().of(row.label)[: columns - 1]
-        for j, driver in enumerate(drivers):
+        _draw_distribution(figure.add_subplot(grid[i, 0]), row, confidence)
+        if drivers is None:
+            continue
+        dependence = Dependence(row, ~outcome.passed)
+        for j, (name, driver) in enumerate(_strongest(outcome, drivers.of(row.label), columns - 1)):
             axes = figure.add_subplot(grid[i, j + 1])
-            _draw_dependence(axes, row, outcome.parameters[driver.parameter], ~outcome.passed)
-            dress(axes, wrapped(driver.parameter, 34), "slack" if j == 0 else "")
-            correlation = f"rank correlation {driver.correlation:+z.2f}".replace("-", "−")
-            axes.set_title(correlation, fontsize=9, loc="left", color=INK)
-    figure.legend(
-        handles=_legend(confidence, columns > 1), loc="outside lower left", ncols=4, fontsize=8, frameon=False
-    )
-    failed = len(outcome.failures)
-    share = f"{failed:,} of {outcome.trials:,} trials failed ({100.0 * failed / outcome.trials:.3g} %)"
-    if outcome.interrupted:
-        share += f", interim: {outcome.requested:,} asked for"
-    title_lines(figure, share, f"study {outcome.study.digest[:12]}, seed {outcome.study.seed}")
+            values = outcome.parameters[name]
+            dependence.draw(axes, values)
+            set_ticks(axes.xaxis, *axes.get_xlim(), PANEL_ROOM)
+            set_ticks(axes.yaxis, row.low, row.high)
+            dress(axes, plot_text(wrapped(name, 27)), plot_text(wrapped(row.axis_words, 34)) if j == 0 else "")
+            panel_title(axes, _correlation_words(driver))
+        kinds |= dependence.legend()
+    handles = [*_curve_legend(confidence), *kinds.values()]
+    across = max(1, int(figure.get_figwidth() / 3.4))
+    figure.legend(handles=handles, loc="outside lower left", ncols=across, fontsize=8, frameon=False)
+    _write_title(figure, outcome, verdict)
     return figure
+
+
+def _write_title(figure: StudyFigure, outcome: Outcome, verdict: Verdict | None) -> None:
+    """Write claim and verdict if there is one, the counts, and what was run."""
+    failed, run = len(outcome.failures), outcome.trials
+    counts = f"{plainly_grouped(failed)} of {plainly_grouped(run)} trials failed ({_percent(failed / run)})"
+    if outcome.interrupted:
+        counts += f", interim: {plainly_grouped(outcome.requested)} asked for"
+    study = outcome.study
+    lines = [study.title, verdict.headline if verdict is not None else "", counts]
+    title_lines(figure, [line for line in lines if line], f"study {study.digest[:12]}, seed {study.seed}")
 
 
 def _places(outcome: Outcome, requirements: Sequence[int | str] | None) -> list[int]:
@@ -108,25 +99,21 @@ def _places(outcome: Outcome, requirements: Sequence[int | str] | None) -> list[
     return sorted(int(place) for place in most_missed)
 
 
-def _row(outcome: Outcome, place: int) -> _Row:
-    slack, label = outcome.slack[:, place], outcome.requirements[place]
-    words = outcome.study.requirements[place].words
-    finite = slack[np.isfinite(slack)]
-    if not finite.size:
-        return _Row(label, words, slack, -1.0, 1.0)
-    # A few wild trials must not squeeze all others into a line; they are drawn at the edge.
-    first, low, high, last = np.quantile(finite, [0.005, 0.05, 0.95, 0.995])
-    scale = (high - low) or abs(high) or 1.0
-    bottom = max(float(finite.min()), min(float(first), 0.0) - 3.0 * scale)
-    top = min(float(finite.max()), float(last) + 3.0 * scale)
-    bottom, top = min(bottom, 0.0), max(top, 0.0)
-    margin = 0.04 * (top - bottom)
-    return _Row(label, words, slack, bottom - margin, top + margin)
+def _strongest(outcome: Outcome, drivers: Sequence[Driver], count: int) -> list[tuple[str, Driver | None]]:
+    """Return the parameters to show: those with a correlation first, then the others in their order."""
+    known: dict[str, Driver | None] = {driver.parameter: driver for driver in drivers}
+    return list({**known, **{name: known.get(name) for name in outcome.parameters}}.items())[:count]
 
 
-def _draw_distribution(axes: Axes, row: _Row, confidence: float) -> None:
-    trials = len(row.slack)
-    ordered = np.sort(np.nan_to_num(row.slack, nan=-np.inf))
+def _correlation_words(driver: Driver | None) -> str:
+    if driver is None:
+        return "slack: no rank correlation"
+    return f"slack: rank correlation {driver.correlation:+z.2f}".replace("-", "\u2212")
+
+
+def _draw_distribution(axes: Axes, row: Row, confidence: float) -> None:
+    trials = row.trials
+    ordered = row.worst_first()
     ranks = _curve_ranks(trials)
     bounds = [_statistics.clopper_pearson_interval(int(rank), trials, confidence) for rank in ranks]
     lower, upper = np.array(bounds).T
@@ -136,18 +123,27 @@ def _draw_distribution(axes: Axes, row: _Row, confidence: float) -> None:
     floor = 0.5 / trials
     axes.fill_between(at, np.maximum(lower, floor), upper, step="post", color=SKY, alpha=0.35, linewidth=0)
     axes.step(at, ranks / trials, where="post", color=BLUE, linewidth=1.6)
-    _mark_limit(axes, row, vertical=True)
+    row.mark_limit(axes, vertical=True)
     axes.set_yscale("log")
     axes.set_ylim(floor, 1.6)
     axes.set_xlim(row.low, row.high)
-    axes.yaxis.set_major_formatter(FuncFormatter(lambda share, _: f"{100.0 * share:g} %"))
-    axes.xaxis.set_major_locator(MaxNLocator(5, steps=[1, 2, 5, 10]))
-    # A requirement with a name of its own still has to say what it asks for.
-    named = row.label != row.words
-    x_label = wrapped(f"slack of {row.words}", 52) if named else "slack (unit of the measure)"
-    dress(axes, x_label, "trials with at most this slack")
-    axes.set_title(wrapped(row.label, 46), fontsize=10, loc="left", color=INK, weight="bold")
-    _write_missed(axes, row, trials, confidence)
+    axes.yaxis.set_major_formatter(FuncFormatter(lambda share, _: _percent(share)))
+    axes.yaxis.set_minor_formatter(NullFormatter())
+    set_ticks(axes.xaxis, row.low, row.high, CURVE_ROOM)
+    dress(axes, plot_text(wrapped(row.axis_words, 52)), row.share_words)
+    if not row.is_slack:
+        _add_slack_axis(axes, row)
+    panel_title(axes, plot_text(wrapped(row.words, 42)), is_heading=True)
+    _write_missed(axes, row, confidence)
+
+
+def _add_slack_axis(axes: Axes, row: Row) -> None:
+    """Show the slack as a second reading of the same axis, above it."""
+    above = axes.secondary_xaxis("top", functions=(row.slack_at, row.value_at))
+    set_ticks(above.xaxis, row.slack_at(row.low), row.slack_at(row.high), CURVE_ROOM)
+    above.tick_params(labelsize=7, colors=GREY)
+    above.spines["top"].set_color(GREY)
+    above.set_xlabel("slack", fontsize=7, color=GREY, labelpad=3.0)
 
 
 def _curve_ranks(trials: int) -> NDArray[np.int64]:
@@ -157,77 +153,34 @@ def _curve_ranks(trials: int) -> NDArray[np.int64]:
     return np.unique(np.rint(np.concatenate([tail, body])).astype(np.int64))
 
 
-def _mark_limit(axes: Axes, row: _Row, *, vertical: bool) -> None:
-    span, line = (axes.axvspan, axes.axvline) if vertical else (axes.axhspan, axes.axhline)
-    span(row.low, 0.0, facecolor=VERMILLION, alpha=0.07, hatch="//", edgecolor=VERMILLION, linewidth=0)
-    line(0.0, color=INK, linewidth=1.2, linestyle="--")
-
-
-def _write_missed(axes: Axes, row: _Row, trials: int, confidence: float) -> None:
-    missed = int(np.count_nonzero(row.missed))
-    low, high = _statistics.clopper_pearson_interval(missed, trials, confidence)
-    lines = [f"{missed:,} missed", f"{100 * (1 - high):.2g} to {100 * (1 - low):.2g} %"]
-    undefined = int(np.count_nonzero(~np.isfinite(row.slack)))
-    if undefined:
-        lines.append(f"{undefined:,} without a value")
-    # Where the curve is not: it rises to the right, and lies at the top where most trials miss.
-    is_low = np.count_nonzero(row.shown < row.low + 0.5 * (row.high - row.low)) < 0.2 * trials
-    x, y, across, down = (0.03, 0.96, "left", "top") if is_low else (0.97, 0.05, "right", "bottom")
+def _write_missed(axes: Axes, row: Row, confidence: float) -> None:
+    low, high = _statistics.clopper_pearson_interval(row.missed, row.trials, confidence)
+    share = f"{percent_below(1.0 - high)} to {percent_above(1.0 - low)}"
+    lines = [f"{plainly_grouped(row.missed)} missed", share.replace("\u00a0%", " %")]
+    if row.undefined:
+        lines.append(f"{plainly_grouped(row.undefined)} without a value")
+    # Where the curve is not. It falls towards the missed side, and is high there where most trials miss.
+    is_missed_side_free = row.share_beyond(0.5 * (row.low + row.high)) < 0.2
+    is_right = (row.missed_side > 0) == is_missed_side_free
+    y, down = (0.96, "top") if is_missed_side_free else (0.05, "bottom")
+    # Beside the limit, not upon it.
+    place = (row.limit - row.low) / (row.high - row.low)
+    x, across = (0.97 if place < 0.7 else min(place - 0.03, 0.97), "right")
+    if not is_right:
+        x, across = (0.03 if place > 0.3 else max(place + 0.03, 0.03), "left")
     box = {"facecolor": "white", "edgecolor": "none", "alpha": 0.9, "pad": 2.5}
     axes.text(x, y, "\n".join(lines), transform=axes.transAxes, ha=across, va=down, fontsize=9, bbox=box)
 
 
-def _draw_dependence(axes: Axes, row: _Row, values: Values, failed: Flags) -> None:
-    shown, missed = row.shown, row.missed
-    elsewhere = failed & ~missed
-    for chosen, most, style in (
-        (~failed, MOST_DOTS, {"s": 5, "marker": "o", "color": SKY, "alpha": 0.45, "linewidths": 0}),
-        (elsewhere, MOST_MARKS, {"s": 18, "marker": "o", "facecolors": "none", "edgecolors": INK}),
-        (missed, MOST_MARKS, {"s": 20, "marker": "x", "color": VERMILLION}),
-    ):
-        places = _some(chosen, most)
-        style.setdefault("linewidths", 0.9)
-        axes.scatter(values[places], shown[places], rasterized=True, **style)  # type: ignore[arg-type]
-    _draw_trend(axes, values, shown)
-    _mark_limit(axes, row, vertical=False)
-    axes.set_ylim(row.low, row.high)
+def _percent(share: float) -> str:
+    return f"{100.0 * share:.3g} %" if share >= 1e-6 or not share else f"{100.0 * share:.0e} %"
 
 
-def _some(chosen: Flags, most: int) -> NDArray[np.int64]:
-    """Return the places of some of the chosen trials, the same in every plot of the outcome."""
-    places = np.flatnonzero(chosen)
-    return places if len(places) <= most else places[:: -(-len(places) // most)]
-
-
-def _draw_trend(axes: Axes, values: Values, slack: Values) -> None:
-    """Draw the median and the 5 % quantile of slack in bins of equally many trials."""
-    if len(values) < 20 * BINS or len(np.unique(values)) < BINS:
-        return
-    order = np.argsort(values, kind="stable")
-    groups = np.array_split(order, BINS)
-    middle = [float(np.median(values[group])) for group in groups]
-    for quantile, style in ((0.5, "-"), (0.05, ":")):
-        course = [float(np.quantile(slack[group], quantile)) for group in groups]
-        axes.plot(middle, course, color=INK, linewidth=1.3, linestyle=style)
-
-
-def _legend(confidence: float, with_parameters: bool) -> list[Line2D | Patch]:
-    handles: list[Line2D | Patch] = [
+def _curve_legend(confidence: float) -> list[Line2D | Patch]:
+    band = f"{100 * confidence:g} % Clopper-Pearson band, pointwise"
+    return [
         Line2D([], [], color=BLUE, linewidth=1.6, label="observed fraction"),
-        Patch(
-            facecolor=SKY,
-            alpha=0.35,
-            label=f"{100 * confidence:g} % Clopper-Pearson band, each point by itself",
-        ),
-        Line2D([], [], color=INK, linestyle="--", label="limit (slack 0)"),
+        Patch(facecolor=SKY, alpha=0.35, label=band),
+        Line2D([], [], color=INK, linestyle="--", label="limit"),
         Patch(facecolor=VERMILLION, alpha=0.25, hatch="//", edgecolor=VERMILLION, label="missed"),
     ]
-    if with_parameters:
-        dot = {"linestyle": "none", "markersize": 5}
-        handles += [
-            Line2D([], [], marker="o", color=SKY, label="passing trial (some of them)", **dot),  # type: ignore[arg-type]
-            Line2D([], [], marker="x", color=VERMILLION, label="trial that missed this limit", **dot),  # type: ignore[arg-type]
-            Line2D([], [], marker="o", color=INK, mfc="none", label="trial that missed another", **dot),  # type: ignore[arg-type]
-            Line2D([], [], color=INK, linestyle="-", label="median, and dotted 5 % quantile, of slack"),
-        ]
-    return handles

@@ -1,9 +1,9 @@
-"""The plot of a replay: what one trial did, signal by signal."""
+"""The plot of a replay: what one trial did, signal by signal, before the nominal unit."""
 
 from __future__ import annotations
 
 import math
-from collections.abc import Iterator
+from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
 from typing import TYPE_CHECKING
 
@@ -11,77 +11,153 @@ import numpy as np
 from matplotlib.axes import Axes
 from numpy.typing import NDArray
 
-from ._errors import DescriptionError
-from ._measures import Requirement
-from ._numbers import Spread, plain_number
+from ._errors import DescriptionError, WindageError
+from ._numbers import checked_flag, checked_sequence, plain_number
+from ._plot_facts import Fact, facts, facts_height, write_facts
+from ._plot_marks import draw_actuator_limits, draw_marks, hold_spikes
+from ._plot_reading import first_missed
 from ._plot_style import (
     BLUE,
     GREEN,
-    GREY,
     INK,
+    PALE,
     SKY,
-    VERMILLION,
     StudyFigure,
     Values,
     dress,
+    legend_above,
     thinned,
     title_lines,
     wrapped,
 )
+from ._plot_ticks import set_ticks
+from ._shown_text import plot_text
+from ._text_table import plainly_grouped
 
 if TYPE_CHECKING:
     from ._replay import Replay
 
-#: Measures whose limit is a limit of the signal itself, with the signs of the signal that it bounds.
-LIMITED = {"peak": (1.0, -1.0), "maximum": (1.0,), "minimum": (1.0,)}
-MOST_FACTS = 14
+#: Inches: the figure, panels and what is between them.
+WIDTH, PANEL_WIDTH, PANEL_HEIGHT, LEFT, GAP, FOOT = 11.0, 6.7, 1.75, 1.05, 0.12, 0.6
+TITLE_LINE, LEGEND_ROW = 0.2, 0.17
+#: Characters of tick labels that fit below a panel.
+TIME_ROOM = 90.0
+#: Around the instant at which a requirement is first missed: parts of the trial before and after it, and the
+#: fewest samples on either side.
+BEFORE_ONSET, AFTER_ONSET, FEWEST_SAMPLES = 0.03, 0.07, 40
 
 Flags = NDArray[np.bool_]
 
 
 @dataclass(frozen=True)
 class _Line:
-    """A signal to draw; `signals` are the names that a requirement may use for it."""
+    """A signal to draw."""
 
     label: str
     values: Values
     color: str
-    signals: tuple[str, ...] = ()
     style: str = "-"
     width: float = 1.2
 
 
-def draw_replay(replay: Replay, after: float, before: float | None) -> StudyFigure:
-    """Draw the figure; see `windage._plots.plot_replay`."""
+@dataclass(frozen=True)
+class _Panel:
+    """Signals that share axes; `names` are those that a requirement may use for the one that it reads there."""
+
+    title: str
+    lines: list[_Line]
+    names: tuple[str, ...] = ()
+    nominal: Values | None = None
+    is_drive: bool = False
+    has_spikes: bool = False
+
+
+def draw_replay(
+    replay: Replay,
+    after: float,
+    before: float | None,
+    onset: bool,
+    signals: Sequence[str],
+    nominal: bool,
+) -> StudyFigure:
+    """Draw the figure; see `Replay.plot`."""
+    if checked_flag(onset, "onset"):
+        after, before = onset_window(replay, after, before)
     shown = _section(replay, after, before)
+    unit = _nominal_unit(replay) if checked_flag(nominal, "nominal") else None
     with np.errstate(invalid="ignore"):  # of a trial that left the finite range
-        panels = list(_panels(replay))
-    figure = StudyFigure(11.0, 2.3 * len(panels) + 0.8)
-    grid = figure.add_gridspec(len(panels), 2, width_ratios=[1.0, 0.36])
-    first: Axes | None = None
-    for i, (title, lines) in enumerate(panels):
-        axes = figure.add_subplot(grid[i, 0], sharex=first)
-        first = first or axes
-        is_last = i == len(panels) - 1
-        dress(axes, "time, s" if is_last else "", title)
-        axes.tick_params(labelbottom=is_last)
-        for line in lines:
-            _draw_line(axes, replay.time[shown], line, shown)
-            _draw_limits(axes, replay, line, shown)
-        if "command" in title:
-            _draw_actuator_limits(axes, replay)
-        axes.legend(fontsize=8, loc="lower left", bbox_to_anchor=(0.0, 1.0), ncols=4, frameon=False, borderpad=0)
-        axes.margins(x=0.01)
-    figure.align_ylabels()
-    _write_facts(figure.add_subplot(grid[:, 1]), replay)
-    name = "Nominal unit" if replay.trial is None else f"Trial {replay.trial:,}"
-    title_lines(figure, f"{name} {_fate(replay)}", f"study {replay.digest[:12]}, seed {replay.seed}")
+        panels = list(_panels(replay, unit, _wanted(replay, signals)))
+    figure = StudyFigure(WIDTH, 1.0, is_constrained=False)
+    rows: list[int] = []
+    for panel in panels:
+        first = figure.get_axes()[0] if rows else None
+        axes = figure.add_axes((0.0, 0.0, 1.0, 1.0), sharex=first, label=panel.title)
+        rows.append(_draw_panel(axes, replay, panel, shown, unit))
+    name = "Nominal unit" if replay.trial is None else f"Trial {plainly_grouped(replay.trial)}"
+    lines = [line for line in (replay.title, f"{name} {_fate(replay)}") if line]
+    titles = title_lines(figure, lines, f"study {replay.digest[:12]}, seed {replay.seed}")
+    _lay_out(figure, rows, titles, facts(replay))
+    _set_time_axis(figure.get_axes()[: len(panels)], replay.time[shown])
     return figure
+
+
+def _lay_out(figure: StudyFigure, rows: Sequence[int], titles: int, told: list[Fact]) -> None:
+    """Place the panels under their legends, and the facts beside them; all in inches."""
+    tops = [TITLE_LINE * titles + 0.2]
+    for count in rows:
+        tops.append(tops[-1] + LEGEND_ROW * count + 0.1 + PANEL_HEIGHT + GAP)
+    height = max(tops[-1] - GAP, tops[0] + LEGEND_ROW + facts_height(told)) + FOOT
+    figure.set_size_inches(WIDTH, height)
+    for axes, count, top in zip(list(figure.get_axes()), rows, tops, strict=False):
+        bottom = top + LEGEND_ROW * count + 0.1 + PANEL_HEIGHT
+        axes.set_position((LEFT / WIDTH, 1.0 - bottom / height, PANEL_WIDTH / WIDTH, PANEL_HEIGHT / height))
+        axes.yaxis.set_label_coords(-0.68 * LEFT / PANEL_WIDTH, 0.5)
+    start = tops[0] + LEGEND_ROW
+    left = LEFT + PANEL_WIDTH + 0.25
+    beside = figure.add_axes((left / WIDTH, FOOT / height, 1.0 - left / WIDTH, 1.0 - (start + FOOT) / height))
+    write_facts(beside, told, height - start - FOOT)
+    title = figure._suptitle  # type: ignore[attr-defined]
+    title.set_y(1.0 - 0.1 / height)
+
+
+def _set_time_axis(panels: Sequence[Axes], time: Values) -> None:
+    first, last = float(time[0]), float(time[-1])
+    panels[0].set_xlim(first, last)
+    set_ticks(panels[0].xaxis, first, last, TIME_ROOM)
+    for axes in panels:
+        axes.tick_params(labelbottom=axes is panels[-1])
+    panels[-1].set_xlabel("time, s", fontsize=9)
+
+
+def onset_window(replay: Replay, after: float, before: float | None) -> tuple[float, float]:
+    """Return the section around the instant at which a requirement is first missed."""
+    if after != 0.0 or before is not None:
+        raise DescriptionError("onset", True, "either onset or after and before")
+    instant = first_missed(replay)
+    if replay.passed or instant is None:
+        expected = "a trial that misses a requirement at some instant"
+        raise DescriptionError("onset", True, expected, "Choose the section by after and before.")
+    time = replay.time
+    period, duration = float(time[1] - time[0]), float(time[-1] - time[0])
+    fewest = FEWEST_SAMPLES * period
+    start = instant - max(BEFORE_ONSET * duration, fewest)
+    stop = instant + max(AFTER_ONSET * duration, fewest)
+    return max(start, float(time[0])), min(stop, float(time[-1]))
+
+
+def _nominal_unit(replay: Replay) -> Replay | None:
+    """Return the nominal unit to draw behind; none where it is the trial itself or cannot be run."""
+    if replay.trial is None:
+        return None
+    try:
+        return replay._nominal()
+    except WindageError:
+        return None
 
 
 def _section(replay: Replay, after: float, before: float | None) -> Flags:
     start = plain_number(after, "after", "a time in s")
-    stop = math.inf if before is None else plain_number(before, "before", "a time in s")
+    stop = _end(replay) if before is None else plain_number(before, "before", "a time in s")
     shown: Flags = (replay.time >= start) & (replay.time <= stop)
     if np.count_nonzero(shown) < 2:
         expected = f"two samples or more; the trial ends at {float(replay.time[-1]):g} s"
@@ -89,32 +165,65 @@ def _section(replay: Replay, after: float, before: float | None) -> Flags:
     return shown
 
 
-def _panels(replay: Replay) -> Iterator[tuple[str, list[_Line]]]:
-    """Yield title and lines of each panel. Units are the user's own: signals go by their names."""
+def _end(replay: Replay) -> float:
+    """Return where the picture ends by itself: with the trial, or soon after it has diverged."""
+    finite = np.flatnonzero(np.isfinite(replay["output"]))
+    if not replay.diverged or not finite.size:
+        return math.inf
+    return float(replay.time[min(int(1.15 * finite[-1]) + 2, len(replay.time) - 1)])
+
+
+def _wanted(replay: Replay, signals: Sequence[str]) -> list[str]:
+    """Return the signals that need a panel if they have none: those that requirements read, and those asked for."""
+    asked = checked_sequence(signals, "signals", "a list of names of signals")
+    for name in asked:
+        _ = replay[name]
+    read = [part.signal for requirement in replay.requirements for part in requirement.measure.parts]
+    return list(dict.fromkeys([*read, *asked]))
+
+
+def _panels(replay: Replay, unit: Replay | None, wanted: Sequence[str]) -> Iterator[_Panel]:
+    """Yield the panels. Units are the user's own: signals go by their names."""
     plant = replay._loop.plant
     output, drive = _output_word(replay), plant.input_name
-    yield (
-        output,
-        [
-            _Line("reference", replay["reference"], INK, ("reference",), "--"),
-            _Line("output", replay["output"], BLUE, ("output", output)),
-        ],
-    )
-    yield "error", [_Line("error = reference − output", replay["error"], BLUE, ("error",))]
-    yield (
-        "command, input",
-        [
-            _Line("command", replay["command"], SKY, ("command",), width=2.2),
-            _Line(f"input{'' if drive == 'input' else f' ({drive})'}", replay["input"], INK, ("input", drive)),
-        ],
-    )
-    yield (
-        "total disturbance",
-        [
-            _Line("estimated by the observer", replay.estimated_disturbance, GREEN, width=2.2),
-            _Line("true", replay.total_disturbance, INK),
-        ],
-    )
+    standard = [
+        _Panel(
+            output,
+            [_Line("reference", replay["reference"], INK, "--"), _Line("output", replay["output"], BLUE)],
+            ("output", output, "reference"),
+            None if unit is None else unit["output"],
+        ),
+        _Panel(
+            "error",
+            [_Line("error = reference \u2212 output", replay["error"], BLUE)],
+            ("error",),
+            None if unit is None else unit["error"],
+        ),
+        _Panel(
+            "command, input",
+            [
+                _Line("command", replay["command"], SKY, width=2.2),
+                _Line(f"input{'' if drive == 'input' else f' ({drive})'}", replay["input"], INK),
+            ],
+            ("command", "input", drive),
+            None if unit is None else unit["command"],
+            is_drive=True,
+        ),
+        _Panel(
+            "total disturbance",
+            [
+                _Line("estimated by the observer", replay.estimated_disturbance, GREEN, width=2.2),
+                _Line("true", replay.total_disturbance, INK),
+            ],
+            has_spikes=True,
+        ),
+    ]
+    yield from standard
+    known = {name for panel in standard for name in panel.names}
+    for name in wanted:
+        if name not in known:
+            nominal = None if unit is None else unit[name]
+            yield _Panel(name, [_Line(name, replay[name], BLUE)], (name,), nominal)
 
 
 def _output_word(replay: Replay) -> str:
@@ -123,115 +232,34 @@ def _output_word(replay: Replay) -> str:
     return word if word.isidentifier() else "output"
 
 
-def _draw_line(axes: Axes, time: Values, line: _Line, shown: Flags) -> None:
-    x, y = thinned(time, line.values[shown])
-    axes.plot(x, y, color=line.color, linestyle=line.style, linewidth=line.width, label=line.label)
-
-
-def _draw_limits(axes: Axes, replay: Replay, line: _Line, shown: Flags) -> None:
-    """Draw the limits of the requirements on a signal, and mark where they are missed."""
-    for requirement in replay.requirements:
-        measure = requirement.measure
-        if measure.signal not in line.signals or measure.kind not in LIMITED:
-            continue
-        limit = _limit(replay, requirement)
-        if isinstance(measure.after, Spread) or isinstance(measure.before, Spread) or not math.isfinite(limit):
-            continue
-        inside = shown & (replay.time >= measure.after) & (replay.time <= measure.before)
-        if not inside.any():
-            continue
-        ends = replay.time[inside][[0, -1]]
-        dashed = {"color": VERMILLION, "linestyle": "--", "linewidth": 1.2}
-        for sign in LIMITED[measure.kind]:
-            # Those whose label begins with an underscore are left out of the legend.
-            label = "_limit" if any(drawn.get_label() == "limit" for drawn in axes.lines) else "limit"
-            axes.plot(ends, [sign * limit] * 2, label=label, **dashed)  # type: ignore[arg-type]
-        _mark_missed(axes, replay.time[inside], line.values[inside], requirement, limit)
-
-
-def _mark_missed(axes: Axes, time: Values, values: Values, requirement: Requirement, limit: float) -> None:
-    """Draw over what lies beyond the limit, and mark the worst sample."""
-    sizes = np.abs(values) if requirement.measure.kind == "peak" else values
-    excess = sizes - limit if requirement.at_most is not None else limit - sizes
-    # A lower limit of a maximum or peak is met by a single sample: all others may lie below.
-    if requirement.measure.kind != "minimum" and requirement.at_most is None:
-        return
-    beyond = excess > 0.0
-    if beyond.any():
-        axes.plot(time, np.where(beyond, values, np.nan), color=VERMILLION, linewidth=2.0)
-        worst = int(np.argmax(np.where(beyond, excess, -np.inf)))
-        axes.plot(time[worst], values[worst], marker="x", color=VERMILLION, markersize=8, mew=2.0)
-
-
-def _limit(replay: Replay, requirement: Requirement) -> float:
-    """Return the limit of this trial, which may be drawn."""
-    if isinstance(requirement.limit, float):
-        return requirement.limit
-    slack = float(replay.slack[replay.requirements.index(requirement)])
-    value = float(replay.measures[requirement.measure.label])
-    return value + slack if requirement.at_most is not None else value - slack
-
-
-def _draw_actuator_limits(axes: Axes, replay: Replay) -> None:
-    limits = replay._loop.actuator.limits
-    if limits is None:
-        return
+def _draw_panel(axes: Axes, replay: Replay, panel: _Panel, shown: Flags, unit: Replay | None) -> int:
+    """Draw a panel; return the rows of its legend."""
+    dress(axes, "", plot_text(wrapped(panel.title, 22)))
+    time = replay.time[shown]
+    for line in panel.lines:
+        x, y = thinned(time, line.values[shown])
+        axes.plot(x, y, color=line.color, linestyle=line.style, linewidth=line.width, label=plot_text(line.label))
+    if panel.has_spikes or replay.diverged:
+        hold_spikes(axes, [line.values[shown] for line in panel.lines])
+    if unit is not None and panel.nominal is not None:
+        _draw_nominal(axes, unit.time, panel.nominal, time)
+    for place in range(len(replay.requirements)):
+        draw_marks(axes, replay, place, panel.names, shown)
+    if panel.is_drive:
+        draw_actuator_limits(axes, replay)
     low, high = axes.get_ylim()
-    near = max(abs(low), abs(high))
-    for i, limit in enumerate(limits):
-        value = replay._value(limit, f"actuator.limits[{i}]")
-        # Limits far outside would squeeze the signals into a line.
-        if abs(value) <= 1.5 * near:
-            label = "limits of the actuator" if i == 0 else None
-            axes.axhline(value, color=INK, linestyle=":", linewidth=1.2, label=label)
+    axes.set_ylim(low, high)
+    set_ticks(axes.yaxis, low, high)
+    return legend_above(axes)
 
 
-def _write_facts(axes: Axes, replay: Replay) -> None:
-    """Write beside the panels what was met, and what was drawn from which spread."""
-    axes.set_axis_off()
-    pen = _Pen(axes)
-    if replay.requirements:
-        pen.write("Requirements", weight="bold")
-    for requirement, slack in zip(replay.requirements, replay.slack.tolist(), strict=True):
-        is_met = slack >= 0.0
-        pen.write(f"{'met' if is_met else 'MISSED'}: {requirement.label}", INK if is_met else VERMILLION)
-        pen.write(f"slack {slack:.4g}", GREY, after=0.5)
-    columns = replay._described.columns
-    nominal = "Every spread at its nominal value" if replay.trial is None else "No drawn parameters"
-    pen.write("Drawn parameters" if columns else nominal, weight="bold", before=1.0)
-    for column in columns[:MOST_FACTS]:
-        pen.write(f"{column.name} = {replay.parameters[column.name]:.5g}")
-        pen.write(repr(column.spread), GREY, after=0.5)
-    if len(columns) > MOST_FACTS:
-        pen.write(f"and {len(columns) - MOST_FACTS} more")
-
-
-class _Pen:
-    """Writes line below line into axes that show nothing else."""
-
-    LINE = 0.019  # of the height of the axes
-
-    def __init__(self, axes: Axes) -> None:
-        self._axes = axes
-        self._y = 1.0
-
-    def write(
-        self, text: str, color: str = INK, *, weight: str = "normal", before: float = 0.0, after: float = 0.0
-    ) -> None:
-        broken = wrapped(text, 42)
-        size = 8.5 if color != GREY else 8.0
-        self._y -= self.LINE * before
-        self._axes.text(
-            0.0,
-            self._y,
-            broken,
-            fontsize=size,
-            weight=weight,
-            color=color,
-            va="top",
-            transform=self._axes.transAxes,
-        )
-        self._y -= self.LINE * (1.0 + after + 0.85 * broken.count("\n"))
+def _draw_nominal(axes: Axes, time: Values, values: Values, shown: Values) -> None:
+    """Draw the nominal unit behind; where it leaves the range of the trial by far, it does not set the scale."""
+    low, high = axes.get_ylim()
+    span = (time >= shown[0]) & (time <= shown[-1])
+    near = (values >= low - (high - low)) & (values <= high + (high - low))
+    x, y = thinned(time[span], np.where(near, values, np.nan)[span])
+    axes.plot(x, y, color=PALE, linewidth=2.6, label="nominal unit", zorder=1.5)
 
 
 def _fate(replay: Replay) -> str:

@@ -12,6 +12,7 @@ if TYPE_CHECKING:
     from ._outcome import Outcome
     from ._plot_style import StudyFigure
     from ._replay import Replay
+    from ._verdict import Verdict
 
 HOW_TO_INSTALL = "Plots need Matplotlib, which is not installed here. Install it with: pip install 'windage[plots]'"
 
@@ -27,29 +28,9 @@ def plot_outcome(
     requirements: Sequence[int | str] | None = None,
     parameters: int = 3,
     confidence: float = 0.95,
+    verdict: Verdict | None = None,
 ) -> StudyFigure:
-    """Plot how much slack the trials have, and which spreads it depends on.
-
-    Each requirement has a row. On the left: the fraction of trials with at most so much slack, on a
-    logarithmic axis because it is the tail that decides; where the curve crosses 0 the missed fraction is
-    read. The band holds the true fraction, at each point by itself. On the right: slack over the drawn
-    parameters with the largest rank correlation.
-
-    Parameters
-    ----------
-    outcome : Outcome
-        At least one trial of a study with requirements.
-    requirements : sequence of int or str, optional
-        Which requirements to show, by place or name; by default all, or the six missed most often.
-    parameters : int
-        Panels a requirement, 0 to 6.
-    confidence : float
-        Of the band: two-sided Clopper-Pearson, point by point.
-
-    Returns
-    -------
-    matplotlib.figure.Figure
-        Belongs to the caller; notebooks show it, `savefig` writes it.
+    """Plot an outcome; the arguments are those of `Outcome.plot`.
 
     Raises
     ------
@@ -61,38 +42,31 @@ def plot_outcome(
     _need_matplotlib()
     from ._plot_outcome import draw_outcome
 
-    return draw_outcome(outcome, requirements, parameters, confidence)
+    return draw_outcome(outcome, requirements, parameters, confidence, verdict)
 
 
-def plot_replay(replay: Replay, *, after: float = 0.0, before: float | None = None) -> StudyFigure:
-    """Plot one trial: reference and output, error, command and input, estimated and true total disturbance.
-
-    Limits of requirements are drawn where they limit the peak, minimum or maximum of a plotted signal, over
-    the window in which they hold.
-
-    Parameters
-    ----------
-    replay : Replay
-        From `Study.replay` or `Study.nominal`.
-    after, before : float, s
-        Section of the trial to show; by default all of it.
-
-    Returns
-    -------
-    matplotlib.figure.Figure
-        Belongs to the caller; notebooks show it, `savefig` writes it.
+def plot_replay(
+    replay: Replay,
+    *,
+    after: float = 0.0,
+    before: float | None = None,
+    onset: bool = False,
+    signals: Sequence[str] = (),
+    nominal: bool = True,
+) -> StudyFigure:
+    """Plot one trial; the arguments are those of `Replay.plot`.
 
     Raises
     ------
     WindageError
         If Matplotlib is not installed.
     DescriptionError
-        If the section holds fewer than two samples.
+        If the section holds fewer than two samples, a signal does not exist, or nothing is missed at an onset.
     """
     _need_matplotlib()
     from ._plot_replay import draw_replay
 
-    return draw_replay(replay, after, before)
+    return draw_replay(replay, after, before, onset, signals, nominal)
 
 
 def _need_matplotlib() -> None:

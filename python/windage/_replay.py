@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Mapping
+from collections.abc import Callable, Mapping, Sequence
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
@@ -20,6 +20,7 @@ from ._text_table import WIDTH, html_table, plainly_grouped
 
 if TYPE_CHECKING:
     from ._loop import Loop
+    from ._plot_style import StudyFigure
     from ._study import Study
 
 Values = NDArray[np.float64]
@@ -64,6 +65,7 @@ class Replay(Portable):
         self.requirements: tuple[Requirement, ...] = tuple(study.requirements)
         self.seed, self.digest, self.title = study.seed, study.digest, study.title
         self._loop = loop
+        self._nominal: Callable[[], Replay] = study.nominal
         self._signals = dict(signals)
         self._described = described
         self.parameters = {c.name: float(v) for c, v in zip(described.columns, parameters[:, 0], strict=True)}
@@ -135,11 +137,47 @@ class Replay(Portable):
         period = self._value(self._loop.sample_period, "sample_period")
         return central_difference(self["reference"], n, period) - last
 
-    def plot(self, *args: Any, **options: Any) -> Any:
-        """Plot the trial; see `windage._plots.plot_replay`."""
-        import importlib
+    def plot(
+        self,
+        *,
+        after: float = 0.0,
+        before: float | None = None,
+        onset: bool = False,
+        signals: Sequence[str] = (),
+        nominal: bool = True,
+    ) -> StudyFigure:
+        """Plot reference and output, error, command and input, estimated and true total disturbance.
 
-        return importlib.import_module("windage._plots").plot_replay(self, *args, **options)
+        Further signals that requirements read have panels of their own. Each requirement is marked where it is read
+        off: its limit over its window, and the samples that decide. A few samples of the disturbance far outside the
+        others do not set the scale; how far they go is written.
+
+        Parameters
+        ----------
+        after, before : float, s
+            Section of the trial to show; by default all of it.
+        onset : bool
+            Show instead the section around the instant at which a requirement is first seen to be missed.
+        signals : sequence of str
+            Further signals to show.
+        nominal : bool
+            Draw the nominal unit behind, which is run for that.
+
+        Returns
+        -------
+        matplotlib.figure.Figure
+            Belongs to the caller; notebooks show it, `replay.plot().savefig("trial.png")` writes it.
+
+        Raises
+        ------
+        WindageError
+            If Matplotlib is not installed.
+        DescriptionError
+            If the section holds fewer than two samples, a signal does not exist, or nothing is missed at an onset.
+        """
+        from ._plots import plot_replay
+
+        return plot_replay(self, after=after, before=before, onset=onset, signals=signals, nominal=nominal)
 
     def __repr__(self) -> str:
         return self._text()

@@ -141,6 +141,12 @@ def limit_in(replay: Replay, place: int) -> float:
     return replay.parameters[replay._described.columns[limit[1]].name]
 
 
+def requirement_limit(replay: Replay, place: int) -> tuple[str, float]:
+    """Return the limit of a requirement in the trial of a replay, in words and as a number."""
+    limit = limit_in(replay, place)
+    return f"{_sign(replay.requirements[place])} {shown(limit)}", limit
+
+
 def name_of(requirement: Requirement) -> str:
     """Return the measure in words, after the requirement's own name if it has one."""
     label = requirement.measure.label
