@@ -21,7 +21,19 @@ from ._evidence import checked_probability
 from ._numbers import checked_integer
 from ._plot_dependence import Dependence
 from ._plot_row import Row, row_of
-from ._plot_style import BLUE, GREY, INK, SKY, VERMILLION, StudyFigure, dress, panel_title, title_lines, wrapped
+from ._plot_style import (
+    BLUE,
+    GREY,
+    INK,
+    SKY,
+    VERMILLION,
+    StudyFigure,
+    dress,
+    panel_title,
+    source_line,
+    title_lines,
+    wrapped,
+)
 from ._plot_ticks import set_ticks
 from ._shown_text import plot_text
 from ._text_table import plainly_grouped
@@ -85,8 +97,8 @@ def _write_title(figure: StudyFigure, outcome: Outcome, verdict: Verdict | None)
     if outcome.interrupted:
         counts += f", interim: {plainly_grouped(outcome.requested)} asked for"
     study = outcome.study
-    lines = [study.title, verdict.headline if verdict is not None else "", counts]
-    title_lines(figure, [line for line in lines if line], f"study {study.digest[:12]}, seed {study.seed}")
+    lines = [counts] if verdict is None else [verdict.headline, counts]
+    title_lines(figure, lines, source_line(study.digest, study.seed, study.title))
 
 
 def _places(outcome: Outcome, requirements: Sequence[int | str] | None) -> list[int]:

@@ -26,6 +26,7 @@ from ._plot_style import (
     Values,
     dress,
     legend_above,
+    source_line,
     thinned,
     title_lines,
     wrapped,
@@ -94,8 +95,8 @@ def draw_replay(
         axes = figure.add_axes((0.0, 0.0, 1.0, 1.0), sharex=first, label=panel.title)
         rows.append(_draw_panel(axes, replay, panel, shown, unit))
     name = "Nominal unit" if replay.trial is None else f"Trial {plainly_grouped(replay.trial)}"
-    lines = [line for line in (replay.title, f"{name} {_fate(replay)}") if line]
-    titles = title_lines(figure, lines, f"study {replay.digest[:12]}, seed {replay.seed}")
+    source = source_line(replay.digest, replay.seed, replay.title)
+    titles = title_lines(figure, [f"{name} {_fate(replay)}"], source)
     _lay_out(figure, rows, titles, facts(replay))
     _set_time_axis(figure.get_axes()[: len(panels)], replay.time[shown])
     return figure

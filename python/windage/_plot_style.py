@@ -65,6 +65,11 @@ def title_lines(figure: Figure, lines: Sequence[str], source: str) -> int:
     return text.count("\n") + 1
 
 
+def source_line(digest: str, seed: int, title: str) -> str:
+    """Return what a picture was made of. The study's title comes last: no word of it can pass for a verdict."""
+    return f"study {digest[:12]}, seed {seed}" + (f": {title}" if title else "")
+
+
 def panel_title(axes: Axes, text: str, *, is_heading: bool = False) -> None:
     """Set the title of a panel at its left."""
     size, weight = (10, "bold") if is_heading else (9, "normal")

@@ -186,18 +186,18 @@ def test_a_title_heads_everything_and_decides_no_digit(
     wd.save(titled, tmp_path / "titled.toml")
     assert wd.load(tmp_path / "titled.toml").title == titled.title
     outcome, plain = titled.run(64, progress=False), study.run(64, progress=False)
-    assert repr(outcome) == f"Dish <3>, winter\n{plain!r}"
-    assert repr(titled.replay(0)) == f"Dish <3>, winter\n{study.replay(0)!r}"
+    assert repr(outcome) == f"Study: Dish <3>, winter\n{plain!r}"
+    assert repr(titled.replay(0)) == f"Study: Dish <3>, winter\n{study.replay(0)!r}"
     assert "Dish <3>, winter" in repr(titled).splitlines()[0]
     assert "Study        Dish <3>, winter" in str(outcome.verdict(0.9))
-    assert str(outcome.verdicts(0.9)).startswith("Dish <3>, winter: 2 requirements")
+    assert "Dish <3>, winter" in str(outcome.verdicts(0.9)).splitlines()[0]
     assert outcome.verdict(0.9).to_dict()["title"] == titled.title
     assert "Study  " not in str(plain.verdict(0.9))
     for page in (outcome._repr_html_(), titled.replay(0)._repr_html_(), outcome.verdict(0.9)._repr_html_()):
         assert "Dish &lt;3&gt;, winter" in page
     monkeypatch.chdir(tmp_path)
     main(["run", "titled.toml", "--trials", "64", "--short"])
-    assert capsys.readouterr().out.startswith("Dish <3>, winter: ")
+    assert capsys.readouterr().out.endswith(" Study: Dish <3>, winter\n")
 
 
 @pytest.mark.parametrize("title", [3, None, "two\nlines", "a\x1b[2Kb", "x" * 201])
