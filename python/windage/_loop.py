@@ -54,7 +54,8 @@ class Loop(Description):
     actuator : Actuator
         By default ideal, with the command acting at once.
     disturbances : mapping of str to time function, noise or float
-        What each disturbance of the plant is; every one has to be given.
+        What each disturbance of the plant is. Every one of a plant written as equations has to be given; on a
+        stock plant nothing acts where none is.
     integrator : {"rk4", "euler", "cash_karp5"}
         How equations are integrated between samples. Linear stock plants are sampled exactly instead.
     steps_per_sample : "auto" or int
@@ -125,11 +126,11 @@ class Loop(Description):
                 mend = suggestion(name, names) if names else "This plant has no disturbance."
                 raise DescriptionError("loop.disturbances", name, "the name of a disturbance of the plant", mend)
         for name in names:
-            if name not in given:
+            if name not in given and not self.plant.is_undisturbed:
                 mend = f"Add {name!r}; if nothing acts there, as Constant(0)."
                 raise DescriptionError("loop.disturbances", sorted(given), f"a description of {name!r}", mend)
         # The order of the plant, so that the order of writing has no meaning.
-        return FrozenMapping({name: _disturbance(given[name], name) for name in names})
+        return FrozenMapping({name: _disturbance(given.get(name, 0.0), name) for name in names})
 
     def _check_steps(self) -> None:
         if self.steps_per_sample != "auto":

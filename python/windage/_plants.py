@@ -33,6 +33,8 @@ class AnyPlant(Description, ABC):
 
     #: Linear plants are sampled exactly and need no integrator.
     is_linear: bool = False
+    #: Whether nothing acts where a loop does not describe a disturbance; otherwise it has to say so.
+    is_undisturbed: bool = False
     dead_time: Number = 0.0
 
     @property

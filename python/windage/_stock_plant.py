@@ -16,6 +16,7 @@ if TYPE_CHECKING:
 class StockPlant(AnyPlant):
     """Root of the stock plants."""
 
+    is_undisturbed = True
     engine_kind: ClassVar[str]
     #: Arguments that are the engine's numbers, in its order.
     engine_order: ClassVar[tuple[str, ...]] = ()

@@ -208,3 +208,38 @@ def test_plants_are_values() -> None:
         DOUBLE.parameters["gain"] = 3.0  # type: ignore[index]
     with pytest.raises(AttributeError):
         DOUBLE.input = "v"  # type: ignore[misc]
+
+
+STOCK = [
+    wd.IntegratorChain(2, gain=2.0),
+    wd.FirstOrder(1.5, 0.4),
+    wd.SecondOrder(1.5, 0.4, 0.6),
+    wd.TransferFunction([1.0], [0.2, 1.0]),
+    wd.StateSpace([[0.0, 1.0], [-4.0, -1.0]], [0.0, 2.0], [1.0, 0.0], e=[[0.0, 1.0], [1.0, 0.0]]),
+    wd.DCDrive(2.0, 5e-3, 0.05, 3e-5, 1e-5, 2e-3, 0.5),
+    wd.TwoMassDrive(4e-4, 6e-4, 150.0, 0.02, 0.02, 0.03, 0.5, 0.1, 1e-3),
+]
+
+
+@pytest.mark.parametrize("plant", STOCK, ids=lambda plant: type(plant).__name__)
+def test_nothing_acts_on_a_stock_plant_whose_disturbance_is_not_described(plant: Any) -> None:
+    options: dict[str, Any] = {"duration": 0.3, "sample_period": 0.01}
+    silent, zero = (
+        wd.Study(loop_of(plant, disturbances=loads, **options), [wd.peak("error") <= 1.0])
+        for loads in ({}, dict.fromkeys(plant.disturbance_names, 0.0))
+    )
+    assert silent == zero
+    assert silent.digest == zero.digest
+    found, expected = silent.replay(0), zero.replay(0)
+    assert found.signals == expected.signals
+    for name in found.signals:
+        np.testing.assert_array_equal(found[name], expected[name])
+    for name in plant.disturbance_names:
+        assert not found[name].any()
+
+
+def test_disturbances_that_are_described_act_beside_those_that_are_not() -> None:
+    names = STOCK[4].disturbance_names
+    loop = loop_of(STOCK[4], disturbances={names[1]: wd.Step(0.5)})
+    assert loop.disturbances == {names[0]: wd.Constant(0.0), names[1]: wd.Step(0.5)}
+    assert wd.Loop(wd.FirstOrder(1.0, 0.3), CONTROLLER, 0.01, 1.0, 1.0).disturbances == {"load": wd.Constant(0.0)}
