@@ -46,7 +46,7 @@ def make_study(noise: bool) -> Any:
             controller_bandwidth=N.controller_bandwidth,
             observer_bandwidth=N.observer_bandwidth,
             b0=N.b0,
-            reference_derivatives=False,
+            reference_derivatives=0,
         ),
         sample_period=N.sample_period,
         duration=N.duration,

@@ -130,31 +130,41 @@ class OutputADRC(_LinearADRC):
         What the observer is told of the command: after limits, rate limit and resolution, or before.
     observer_start : {"zero", "measured"}
         All estimates zero, or the first one at the first measurement.
-    reference_derivatives : bool
-        Feed the derivatives of the reference forward, or take them as zero. They are those of the time
-        function: a step has none, a table of straight lines has the first, a jerk-limited profile three.
+    reference_derivatives : int, optional
+        How many derivatives of the reference are fed, 0 to n; all n by default. The command is
+        u = (k_1 (r - x_1) + k_2 (r' - x_2) + ... + k_n (r^(n-1) - x_n) + r^(n) - x_(n+1)) / b0,
+        in which the derivatives above that number count as zero: 0 feeds the reference alone, n - 1 leaves out
+        the feedforward r^(n). They are those of the time function: a step has none, a table of straight lines
+        has the first, a jerk-limited profile three.
     cancel_disturbance : bool
         False leaves the estimated total disturbance uncancelled.
     """
 
     form: ClassVar[str] = "output"
 
-    reference_derivatives: bool = field(default=True, kw_only=True)
+    reference_derivatives: int | None = field(default=None, kw_only=True)
 
     def __post_init__(self) -> None:
         super().__post_init__()
-        checked_flag(self.reference_derivatives, "controller.reference_derivatives")
+        place = "controller.reference_derivatives"
+        if isinstance(self.reference_derivatives, bool):
+            mend = "Write 0 to feed none; leave it out to feed all."
+            raise DescriptionError(place, self.reference_derivatives, f"a whole number from 0 to {self.order}", mend)
+        if self.reference_derivatives is not None:
+            self._put("reference_derivatives", checked_integer(self.reference_derivatives, place, 0, self.order))
 
     def _describe(self, numbers: Numbers) -> dict[str, Any]:
-        return {**super()._describe(numbers), "reference_derivatives": self.reference_derivatives}
+        fed = self.order if self.reference_derivatives is None else self.reference_derivatives
+        return {**super()._describe(numbers), "reference_derivatives": fed}
 
 
 @dataclass(frozen=True, repr=False)
 class ErrorADRC(_LinearADRC):
     """Linear ADRC in error form: the observer follows the control error, reference minus measured output.
 
-    It needs no derivatives of the reference: what they would feed forward is part of the estimated total
-    disturbance. Parameters as for `OutputADRC`, without `reference_derivatives`.
+    u = (k_1 x_1 + ... + k_n x_n + x_(n+1)) / b0 with x_1 ... x_n the estimates of the error and its derivatives.
+    It needs no derivatives of the reference: they are part of those estimates, and what they would feed forward
+    is part of the estimated total disturbance. Parameters as for `OutputADRC`, without `reference_derivatives`.
     """
 
     form: ClassVar[str] = "error"

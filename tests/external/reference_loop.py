@@ -79,7 +79,7 @@ class Adrc:
     discretisation: str = "zero_order_hold"
     observer_input: str = "limited"
     observer_start: str = "zero"
-    reference_derivatives: bool = True
+    reference_derivatives: int | None = None  # how many are fed; None: all
     cancel_disturbance: bool = True
     estimates: Values = field(init=False)
     output: float = field(init=False, default=0.0)
@@ -114,8 +114,9 @@ class Adrc:
         x, n = self.estimates, self.order
         if self.form == "error":
             return float(np.dot(self.k, x[:n]) + (x[n] if self.cancel_disturbance else 0.0))
-        wanted = np.array([r[0], *(r[1:n] if self.reference_derivatives else [0.0] * (n - 1))])
-        forward = r[n] if self.reference_derivatives else 0.0
+        fed = n if self.reference_derivatives is None else self.reference_derivatives
+        wanted = np.array([r[i] if i <= fed else 0.0 for i in range(n)])
+        forward = r[n] if fed == n else 0.0
         return float(np.dot(self.k, wanted - x[:n]) + forward - (x[n] if self.cancel_disturbance else 0.0))
 
 

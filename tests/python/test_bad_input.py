@@ -185,7 +185,19 @@ CONTROLLERS: list[Case] = [
         "controller.observer_input",
         "Did you mean 'limited'?",
     ),
-    (lambda: wd.OutputADRC(1, **TUNING, reference_derivatives=1), "controller.reference_derivatives", "1"),  # type: ignore[arg-type]
+    (lambda: wd.OutputADRC(1, **TUNING, reference_derivatives=2), "controller.reference_derivatives", "from 0 to 1"),
+    (lambda: wd.OutputADRC(2, **TUNING, reference_derivatives=-1), "controller.reference_derivatives", "from 0 to 2"),
+    (lambda: wd.OutputADRC(2, **TUNING, reference_derivatives=1.0), "controller.reference_derivatives", "1.0"),  # type: ignore[arg-type]
+    (
+        lambda: wd.OutputADRC(1, **TUNING, reference_derivatives=True),
+        "controller.reference_derivatives",
+        "Write 0",
+    ),
+    (
+        lambda: wd.OutputADRC(1, **TUNING, reference_derivatives=False),
+        "controller.reference_derivatives",
+        "leave it",
+    ),
     (lambda: wd.ErrorADRC(1, **TUNING, cancel_disturbance=None), "controller.cancel_disturbance", "None"),  # type: ignore[arg-type]
     (lambda: wd.ErrorADRC(1, **TUNING, observer_gain_factor=0.0), "controller.observer_gain_factor", "0.0"),
 ]

@@ -61,7 +61,7 @@ def test_observer_poles_lie_where_the_bandwidth_puts_them(order: int) -> None:
 
 def test_reference_derivatives_make_the_output_form_track() -> None:
     with_them = wd.OutputADRC(2, b0=1.3, controller_bandwidth=4.0, observer_bandwidth=40.0)
-    without = with_them.with_(reference_derivatives=False)
+    without = with_them.with_(reference_derivatives=0)
     late = slice(0, 110)
     assert np.abs(replay(with_them)["error"][late]).max() < 0.2 * np.abs(replay(without)["error"][late]).max()
 

@@ -99,7 +99,7 @@ CONTROLLER = wd.OutputADRC(
     discretisation="euler",
     observer_input="commanded",
     observer_start="measured",
-    reference_derivatives=False,
+    reference_derivatives=1,
     cancel_disturbance=False,
 )
 

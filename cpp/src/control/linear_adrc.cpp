@@ -20,6 +20,8 @@ void check(const controller_description& d) {
     if (!d.observer_gains.empty() && int(d.observer_gains.size()) != d.order + 1)
         refuse("observer_gains has " + std::to_string(d.observer_gains.size()) + " numbers; expected " +
                std::to_string(d.order + 1) + ", one a state and one for the total disturbance");
+    if (d.reference_derivatives > d.order)
+        refuse("reference_derivatives is " + std::to_string(d.reference_derivatives) + "; expected at most the order");
 }
 
 bool are_all_same(const std::vector<lane_value>& values) {
@@ -46,7 +48,8 @@ linear_adrc::linear_adrc(const controller_description& d, const held_value& samp
 }
 
 int linear_adrc::reference_derivatives() const {
-    return d_.form == adrc_form::output && d_.reference_derivatives ? d_.order : 0;
+    if (d_.form == adrc_form::error) return 0;
+    return d_.reference_derivatives < 0 ? d_.order : d_.reference_derivatives;
 }
 
 void linear_adrc::begin(const trial_block& block, const held_value& initial_command) {
@@ -108,22 +111,23 @@ template <int Order> struct linear_adrc::number_reader {
     }
 };
 
-// Output form: u = (k_1 (r - x_1) + ... + k_n (r^(n-1) - x_n) + r^(n) - x_{n+1}) / b0.
+// Output form: u = (k_1 (r - x_1) + ... + k_n (r^(n-1) - x_n) + r^(n) - x_{n+1}) / b0, where the derivatives of r that
+// are not fed count as zero.
 // Error form:  u = (k_1 x_1 + ... + k_n x_n + x_{n+1}) / b0.
 // The gains k_i are divided by b0 beforehand.
 template <int Order, adrc_form Form> WINDAGE_INLINE wide linear_adrc::command(const wide* x, const numbers<Order>& n,
                                                                               const signal* reference,
                                                                               std::size_t i) const {
     constexpr bool error_form = Form == adrc_form::error;
-    const bool fed = !error_form && d_.reference_derivatives;
+    const int fed = error_form ? 0 : reference_derivatives();
     wide u = 0.0;
     for (int s = 0; s < Order; ++s) {
         wide deviation = error_form ? x[s] : -x[s];
-        if (!error_form && (s == 0 || fed)) deviation = wide::load(reference[s] + i) - x[s];
+        if (!error_form && s <= fed) deviation = wide::load(reference[s] + i) - x[s];
         const wide share = n.controller_gain[s] * deviation;
         u = s == 0 ? share : u + share;
     }
-    if (fed) u += n.inverse_b0 * wide::load(reference[Order] + i);
+    if (!error_form && fed == Order) u += n.inverse_b0 * wide::load(reference[Order] + i);
     if (!d_.cancel_disturbance) return u;
     return error_form ? u + n.inverse_b0 * x[Order] : u - n.inverse_b0 * x[Order];
 }
