@@ -39,8 +39,8 @@ struct controller_description {
     discretisation_kind discretisation = discretisation_kind::zero_order_hold;
     observer_input_kind observer_input = observer_input_kind::limited;
     observer_start_kind observer_start = observer_start_kind::zero;
-    int reference_derivatives = -1;    ///< output form: how many are fed, the others taken as zero; -1: all n
-    bool cancel_disturbance = true;    ///< false: leave the estimated total disturbance uncancelled
+    int reference_derivatives = -1; ///< output form: how many are fed, the others taken as zero; -1: all n
+    bool cancel_disturbance = true; ///< false: leave the estimated total disturbance uncancelled
 };
 
 } // namespace windage
