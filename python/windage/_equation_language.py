@@ -19,7 +19,7 @@ TIME = "t"
 # fmt: off
 _OF_ONE = (
     "sin", "cos", "tan", "asin", "acos", "atan", "exp", "log", "tanh", "sinh", "cosh", "sqrt", "abs", "sign",
-    "step",
+    "step", "floor", "round",
 )
 # fmt: on
 #: Functions of the language: how each is written and the number of arguments it takes (fewest, most).
@@ -27,6 +27,7 @@ FUNCTIONS: dict[str, tuple[str, int, int]] = {
     **{name: (f"{name}(x)", 1, 1) for name in _OF_ONE},
     "atan2": ("atan2(y, x)", 2, 2),
     "pow": ("pow(x, exponent)", 2, 2),
+    "mod": ("mod(x, divisor)", 2, 2),
     "min": ("min(a, b, ...)", 2, MOST_TOKENS),
     "max": ("max(a, b, ...)", 2, MOST_TOKENS),
     "clip": ("clip(x, low, high)", 3, 3),

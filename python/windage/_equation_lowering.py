@@ -5,8 +5,9 @@ from __future__ import annotations
 import ast
 from collections.abc import Callable, Mapping, Sequence
 
+from ._equation_constants import ConstantError
 from ._equation_language import CONSTANTS, TIME
-from ._equation_program import ConstantError, Tape
+from ._equation_program import Tape
 from ._equation_text import Formula, operands
 from ._errors import EquationError, suggestion
 

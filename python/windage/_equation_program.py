@@ -3,26 +3,27 @@
 A program is in static single assignment form: value i is the result of instruction i, and operands are
 earlier values. While it is built, equal instructions are shared and a few rewritings are applied. Each of
 them gives the bits that the plain evaluation would give, for every double including zeros of either sign,
-infinities and undefined numbers (whose payload alone may differ). Constants are folded only through
-operations that IEEE 754 rounds correctly: folding a sine would freeze the digits of the mathematical library
-of one machine. Hoisting is left to the engine.
+infinities and undefined numbers (whose payload alone may differ). Constants are folded only through exact
+operations and those that IEEE 754 rounds correctly; what constants give through the others, the engine's own
+functions tell, and only to refuse what is no finite number. Hoisting is left to the engine.
 """
 
 from __future__ import annotations
 
 import math
-import operator
-from collections.abc import Callable, Sequence
+from collections.abc import Sequence
 from dataclasses import dataclass
+
+from ._equation_constants import FOLDED, ConstantError, value_of
 
 # fmt: off
 #: Operations by the number of operands. An operand is true where it differs from 0; a truth value is 1 or 0.
 UNARY = frozenset((
     "neg", "sqrt", "sin", "cos", "tan", "asin", "acos", "atan", "exp", "log", "tanh", "sinh", "cosh", "abs",
-    "sign", "logical_not",
+    "sign", "floor", "round", "logical_not",
 ))
 BINARY = frozenset((
-    "add", "sub", "mul", "div", "atan2", "pow", "min", "max", "less", "less_equal", "equal", "not_equal",
+    "add", "sub", "mul", "div", "atan2", "pow", "mod", "min", "max", "less", "less_equal", "equal", "not_equal",
     "logical_and", "logical_or",
 ))
 # fmt: on
@@ -31,19 +32,6 @@ OPERATIONS = UNARY | BINARY | {"constant", "load", "select"}
 
 #: Largest integer exponent written out as products.
 LARGEST_CHAIN = 16
-
-_FOLDED: dict[str, Callable[..., float]] = {
-    "add": operator.add,
-    "sub": operator.sub,
-    "mul": operator.mul,
-    "div": operator.truediv,
-    "neg": operator.neg,
-    "sqrt": math.sqrt,
-    "less": lambda a, b: float(a < b),
-    "less_equal": lambda a, b: float(a <= b),
-    "equal": lambda a, b: float(a == b),
-    "not_equal": lambda a, b: float(a != b),
-}
 
 
 @dataclass(frozen=True, slots=True)
@@ -88,26 +76,21 @@ class Program:
     outputs: tuple[int, ...]
 
 
-class ConstantError(ValueError):
-    """Constants alone give no finite number, or a constant cannot stand where it does."""
-
-    def __init__(self, expected: str, mend: str = "") -> None:
-        self.expected = expected
-        self.mend = mend
-        super().__init__(expected)
-
-
 class Tape:
     """A program in the making."""
 
     def __init__(self) -> None:
         self._code: list[Instruction] = []
+        # What depends on constants alone, folded or not.
+        self._values: dict[int, float] = {}
         # Constants are told apart by their hexadecimal form, since 0.0 == -0.0.
         self._known: dict[tuple[str, int, int, int, str], int] = {}
 
     def constant(self, value: float) -> int:
         """Return the value that is always `value`."""
-        return self._emit(Instruction("constant", constant=value))
+        index = self._emit(Instruction("constant", constant=value))
+        self._values[index] = value
+        return index
 
     def load(self, index: int) -> int:
         """Return the value of an input."""
@@ -126,12 +109,19 @@ class Tape:
         ConstantError
             If constants alone give no finite number.
         """
-        self._refuse_zero_divisor(op, b)
-        constants = [self.constant_of(value) for value in (a, b, c) if value >= 0]
-        if op in _FOLDED and None not in constants:
-            return self.constant(_fold(op, constants))
-        simpler = self._simplify(op, a, b)
-        return self._emit(Instruction(op, a, b, c)) if simpler is None else simpler
+        if op in ("div", "mod") and self._values.get(b) == 0.0:
+            raise ConstantError("a divisor other than 0")
+        operands = [operand for operand in (a, b, c) if operand >= 0]
+        known = [self._values[operand] for operand in operands if operand in self._values]
+        value = value_of(op, known) if len(known) == len(operands) else None
+        if value is not None and op in FOLDED and all(self.constant_of(x) is not None for x in operands):
+            return self.constant(value)
+        index = self._simplify(op, a, b)
+        if index is None:
+            index = self._emit(Instruction(op, a, b, c))
+        if value is not None:
+            self._values[index] = value
+        return index
 
     def power(self, base: int, exponent: int) -> int:
         """Return base ** exponent.
@@ -144,7 +134,6 @@ class Tape:
         if number == 0.0:
             return self.constant(1.0)
         if number is None or number != int(number) or abs(number) > LARGEST_CHAIN:
-            self._refuse_bad_power(base, number)
             return self.apply("pow", base, exponent)
         product = base
         for digit in f"{abs(int(number)):b}"[1:]:
@@ -205,31 +194,6 @@ class Tape:
         if op == "neg" and self._code[a].op == "neg":
             return self._code[a].a
         return None
-
-    def _refuse_zero_divisor(self, op: str, divisor: int) -> None:
-        if op == "div" and self.constant_of(divisor) == 0.0:
-            raise ConstantError("a divisor other than 0")
-
-    def _refuse_bad_power(self, base: int, exponent: float | None) -> None:
-        number = self.constant_of(base)
-        if number is None or exponent is None:
-            return
-        if number == 0.0 and exponent < 0.0:
-            raise ConstantError("a base other than 0 under a negative exponent")
-        if number < 0.0 and exponent != int(exponent):
-            raise ConstantError("a base that is not negative under an exponent that is not whole")
-        # An estimate catches 9**9**9; what lies near the limit of double precision is left to the engine.
-        if number != 0.0 and exponent * math.log2(abs(number)) > 1100.0:
-            raise ConstantError("constants whose power double precision can hold (at most 1.8e308)")
-
-
-def _fold(op: str, constants: Sequence[float | None]) -> float:
-    if op == "sqrt" and constants[0] is not None and constants[0] < 0.0:
-        raise ConstantError("the square root of a number that is not negative")
-    value = _FOLDED[op](*constants)
-    if not math.isfinite(value):
-        raise ConstantError("constants whose result double precision can hold (at most 1.8e308)")
-    return value
 
 
 def _has_exact_reciprocal(number: float) -> bool:

@@ -21,6 +21,11 @@ def _number(condition: object) -> Values:
     return np.asarray(condition, dtype=np.float64)
 
 
+def _remainder(x: Values, divisor: Values) -> Values:
+    """Return the remainder with the sign of the divisor; undefined where its quotient has no digit behind the point."""
+    return np.where(np.abs(np.floor(x / divisor)) < 2.0**51, np.mod(x, divisor), np.nan)
+
+
 _FUNCTIONS: dict[str, Callable[..., object]] = {
     "add": np.add,
     "sub": np.subtract,
@@ -43,6 +48,9 @@ _FUNCTIONS: dict[str, Callable[..., object]] = {
     "sinh": np.sinh,
     "cosh": np.cosh,
     "abs": np.abs,
+    "floor": np.floor,
+    "round": np.rint,  # ties to even
+    "mod": _remainder,
     # An undefined number passes through, and so does the sign of a zero.
     "sign": lambda x: np.where(x > 0.0, 1.0, np.where(x < 0.0, -1.0, x)),
     # An undefined first argument passes through, an undefined second one is dropped.

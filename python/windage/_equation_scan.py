@@ -33,8 +33,8 @@ _GLUED = re.compile(r"[A-Za-z0-9_.]*", re.ASCII)
 #: What is not part of the language, and what to write instead.
 _HINTS = {
     "^": "Write ** for a power.",
-    "%": "There is no remainder; for a percentage divide by 100.",
-    "//": "Write / for a division; there is no rounding down.",
+    "%": "Write mod(x, divisor) for a remainder; for a percentage divide by 100.",
+    "//": "Write / for a division, floor(a / b) to round it down.",
     "@": "There are no matrices; write the sum of products.",
     "=": "Write the right-hand side only; == compares two values.",
     ":=": "Write the right-hand side only; give a part its own name as a named expression.",

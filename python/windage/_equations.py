@@ -186,7 +186,8 @@ def _tape_of(
 ) -> tuple[Tape, dict[str, int]]:
     """Return a tape that holds all expressions, and the value of each by name."""
     _check_inputs(inputs, field)
-    texts = [text for group in (equations, auxiliaries) for text in group.values() if isinstance(text, str)]
+    groups = [group for group in (equations, auxiliaries) if isinstance(group, Mapping)]  # others are named below
+    texts = [text for group in groups for text in group.values() if isinstance(text, str)]
     length = sum(min(len(text), LONGEST_TEXT) for text in texts)  # one that is too long is named by itself
     if length > LONGEST_TEXTS:
         expected = f"expressions of at most {LONGEST_TEXTS} characters altogether"

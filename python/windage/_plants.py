@@ -24,7 +24,20 @@ MOST_AUXILIARIES = 1000
 MOST_PARAMETERS = 10_000
 #: Operations whose result can jump.
 _JUMPS = frozenset(
-    ("sign", "less", "less_equal", "equal", "not_equal", "logical_and", "logical_or", "logical_not", "select")
+    (
+        "sign",
+        "floor",
+        "round",
+        "mod",
+        "less",
+        "less_equal",
+        "equal",
+        "not_equal",
+        "logical_and",
+        "logical_or",
+        "logical_not",
+        "select",
+    )
 )
 
 
@@ -87,7 +100,7 @@ class Plant(AnyPlant):
         Names of the states with their values at time 0. A sequence of names stands for zeros. At most 100.
     equations : mapping of str to str
         The time derivative of each state. An equation may read states, the input, disturbances, parameters,
-        auxiliaries, the time `t` and `pi`; see the equation language.
+        auxiliaries, the time `t` and `pi`; see the notes.
     input : str
         Name of the input, which the actuator drives.
     output : str
@@ -106,6 +119,24 @@ class Plant(AnyPlant):
     DescriptionError
         If an equation is missing or of no state, a name has two meanings, or an expression cannot be
         understood.
+
+    Notes
+    -----
+    Equations are numbers, names, `+ - * / **`, comparisons, `and`, `or`, `not`, `a if condition else b`, and the
+    functions `sin cos tan asin acos atan atan2 exp log pow tanh sinh cosh sqrt abs sign step floor round mod min
+    max clip deadzone where`. Comparisons give 1 or 0; both sides of a choice are evaluated. `round` takes a tie to
+    the even number; `mod(x, divisor)` is `x - divisor*floor(x/divisor)` of the exact quotient, with the sign of
+    the divisor. Limits, where the engine differs from a pocket calculator:
+
+    - `sin`, `cos` and `tan` are accurate up to an angle of 2e5, lose digits up to 2^30 = 1.07e9, and are undefined
+      (NaN) beyond; wrap an angle that grows with `mod(angle, 2*pi)`.
+    - `exp` is 0 below -708 and infinite above 709.78.
+    - `mod` is undefined for a quotient of 2^51 and more, and for a divisor of 0.
+    - Division by what does not change within a trial (numbers and parameters) is multiplication by its
+      reciprocal: its last digit may differ from that of a division, and a divisor below 5.6e-309 in magnitude
+      counts as 0.
+    - Constants that alone give no finite number (`1/0`, `log(-1)`, `2**1024`) are an error. What a state or
+      parameter makes undefined or infinite makes the trial diverge, or its measures undefined: it fails.
 
     Examples
     --------
@@ -200,7 +231,7 @@ class Plant(AnyPlant):
 
     @property
     def may_jump(self) -> bool:
-        """Whether the equations hold a sign, a step, a comparison or a choice."""
+        """Whether the equations hold a sign, a step, a rounding, a remainder, a comparison or a choice."""
         return any(step.op in _JUMPS for step in self._programs[0].code)
 
     def unused(self) -> list[str]:

@@ -185,6 +185,8 @@ def cases() -> dict[str, Case]:
             neighbours([math.log(2.0) / 4 * k for k in (1, -1, 3, 5, 35, 37)] + [19.0, 19.06, 20.0]),
         ),
         "square_root": Case(mpmath.sqrt, 0.5, [positive]),
+        "floor": Case(mpmath.floor, 0.0, [Range(-1e3, 1e3), every]),
+        "nearest_integer": Case(mpmath.nint, 0.0, [Range(-1e3, 1e3), every], np.arange(-40.5, 41.5)),
         "normal_upper_tail": Case(exact_upper_tail, 9.0, [Range(0.0, 6.0), Range(0.0, 37.5)]),
         "normal_cdf": Case(lambda x: exact_upper_tail(-x), 9.0, [Range(-8.0, 8.0), Range(-37.5, 0.0)]),
         "normal_quantile": Case(
@@ -200,6 +202,15 @@ def cases() -> dict[str, Case]:
                 (Range(-1.0, 1.0), Range(-1.0, 1.0)),
                 (Range(1e-3, 1e3, True, True), Range(1e-3, 1e3, True, True)),
                 (Range(1e-300, 1.7e308, True, True), Range(1e-300, 1.7e308, True, True)),
+            ],
+        ),
+        # Exact where the quotient is 1 or more.
+        "floored_remainder": Case(
+            lambda x, divisor: x - divisor * mpmath.floor(x / divisor),
+            0.0,
+            [
+                (Range(1e3, 1e9, True, True), Range(1e-3, 1e3, True, True)),
+                (Range(1e100, 1e110, True, True), Range(1e97, 1e100, True, True)),
             ],
         ),
         "power": Case(

@@ -37,10 +37,10 @@ LEAVES = st.one_of(
 # fmt: off
 ONE = [
     "sin", "cos", "tan", "asin", "acos", "atan", "exp", "log", "tanh", "sinh", "cosh", "sqrt", "abs", "sign",
-    "step",
+    "step", "floor", "round",
 ]
 # fmt: on
-TWO = ["atan2", "pow", "deadzone", "min", "max"]
+TWO = ["atan2", "pow", "mod", "deadzone", "min", "max"]
 THREE = ["clip", "where", "min", "max"]
 
 
@@ -104,12 +104,13 @@ class Refused(Exception):
 
 
 class Number:
-    """The value of a tree, and whether constants alone decide it through operations that are folded."""
+    """The value of a tree; whether constants alone decide it, and through operations that are all folded."""
 
-    def __init__(self, value: Any, is_constant: bool) -> None:
+    def __init__(self, value: Any, is_constant: bool, *operands: Number) -> None:
         self.value = np.asarray(value, dtype=np.float64)
         self.is_constant = is_constant
-        if is_constant and not np.isfinite(self.value):
+        self.is_known = is_constant or (bool(operands) and all(operand.is_known for operand in operands))
+        if self.is_known and not np.isfinite(self.value):
             raise Refused
 
     @property
@@ -118,18 +119,13 @@ class Number:
 
 
 def _power(base: Number, exponent: Number) -> Number:
-    b, e = base.constant, exponent.constant
+    e = exponent.constant
     if e is not None and e == int(e) and abs(e) <= 16:
         if e == 0:
             return Number(1.0, True)
-        product = Number(_product(base.value, abs(int(e))), base.is_constant)
+        product = Number(_product(base.value, abs(int(e))), base.is_constant, base)
         return product if e > 0 else _divide(Number(1.0, True), product)
-    if b is not None and e is not None:
-        if (b == 0 and e < 0) or (b < 0 and e != int(e)):
-            raise Refused
-        if b != 0 and e * math.log2(abs(b)) > 1100:
-            raise Refused
-    return Number(np.float_power(base.value, exponent.value), False)
+    return Number(np.float_power(base.value, exponent.value), False, base, exponent)
 
 
 def _product(base: Any, exponent: int) -> Any:
@@ -140,9 +136,16 @@ def _product(base: Any, exponent: int) -> Any:
 
 
 def _divide(a: Number, b: Number) -> Number:
-    if b.constant == 0.0:
+    if b.is_known and b.value == 0.0:
         raise Refused
-    return Number(a.value / b.value, a.is_constant and b.is_constant)
+    return Number(a.value / b.value, a.is_constant and b.is_constant, a, b)
+
+
+def _remainder(a: Number, b: Number) -> Number:
+    if b.is_known and b.value == 0.0:
+        raise Refused
+    rest = np.where(np.abs(np.floor(a.value / b.value)) < 2.0**51, np.mod(a.value, b.value), np.nan)
+    return Number(rest, a.is_constant and b.is_constant, a, b)
 
 
 COMPARE = {
@@ -173,28 +176,34 @@ def _call(name: str, arguments: list[Number]) -> Number:
     if name == "sqrt":
         if arguments[0].is_constant and x < 0:
             raise Refused
-        return Number(np.sqrt(x), arguments[0].is_constant)
+        return Number(np.sqrt(x), arguments[0].is_constant, *arguments)
+    if name in ("floor", "round"):
+        return Number(np.floor(x) if name == "floor" else np.rint(x), arguments[0].is_constant, *arguments)
+    if name == "mod":
+        return _remainder(*arguments)
     if name == "step":
-        return Number(np.where(x >= 0, 1.0, 0.0), arguments[0].is_constant)
+        return Number(np.where(x >= 0, 1.0, 0.0), arguments[0].is_constant, *arguments)
     if name == "sign":
-        return Number(np.where(x == 0, x, np.copysign(np.where(np.isnan(x), np.nan, 1.0), x)), False)
+        return Number(np.where(x == 0, x, np.copysign(np.where(np.isnan(x), np.nan, 1.0), x)), False, *arguments)
     if name in ("min", "max"):
         for other in values[1:]:
             x = np.where(other < x, other, x) if name == "min" else np.where(x < other, other, x)
-        return Number(x, False)
+        return Number(x, False, *arguments)
     if name == "clip":
         low, high = arguments[1].constant, arguments[2].constant
         if low is not None and high is not None and low > high:
             raise Refused
-        return Number(_clip(*values), False)
+        return Number(_clip(*values), False, *arguments)
     if name == "deadzone":
         width = arguments[1].constant
         if width is not None and width < 0:
             raise Refused
-        return Number(x - _clip(x, -values[1], values[1]), False)
+        return Number(x - _clip(x, -values[1], values[1]), False, *arguments)
     if name == "where":
-        return Number(np.where(x == 0, values[2], values[1]), False)
-    return Number(LIBRARY[name](*values), False)
+        return Number(np.where(x == 0, values[2], values[1]), False, *arguments)
+    if name in ("sin", "cos", "tan") and arguments[0].is_known and abs(x) > 2.0**30:
+        raise Refused
+    return Number(LIBRARY[name](*values), False, *arguments)
 
 
 def _compare(tree: Tree, values: dict[str, Any]) -> Number:
@@ -202,7 +211,7 @@ def _compare(tree: Tree, values: dict[str, Any]) -> Number:
     holds = np.asarray(True)
     for (op, _), a, b in zip(tree[2], operands[:-1], operands[1:], strict=True):
         holds = holds & COMPARE[op](a.value, b.value)
-    return Number(holds, len(operands) == 2 and all(operand.is_constant for operand in operands))
+    return Number(holds, len(operands) == 2 and all(operand.is_constant for operand in operands), *operands)
 
 
 def evaluate(tree: Tree, values: dict[str, Any]) -> Number:
@@ -223,20 +232,20 @@ def evaluate(tree: Tree, values: dict[str, Any]) -> Number:
         return _divide(a, b)
     if kind in ("+", "-", "*"):
         result = {"+": np.add, "-": np.subtract, "*": np.multiply}[kind](a.value, b.value)
-        return Number(result, a.is_constant and b.is_constant)
+        return Number(result, a.is_constant and b.is_constant, a, b)
     if kind == "positive":
         return a
     if kind == "negative":
-        return Number(-a.value, a.is_constant)
+        return Number(-a.value, a.is_constant, a)
     if kind == "not":
-        return Number(a.value == 0, False)
+        return Number(a.value == 0, False, a)
     if kind == "if":
-        return Number(np.where(operands[1].value == 0, b.value, a.value), False)
+        return Number(np.where(operands[1].value == 0, b.value, a.value), False, *operands)
     truths = [operand.value != 0 for operand in operands]
     result = truths[0]
     for truth in truths[1:]:
         result = result & truth if kind == "and" else result | truth
-    return Number(result, False)
+    return Number(result, False, *operands)
 
 
 def _compiled(text: str, inputs: Sequence[str]) -> Program | EquationError:

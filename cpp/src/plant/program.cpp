@@ -13,7 +13,7 @@ struct entry {
     int operands;
 };
 
-constexpr std::array<entry, 36> table{{
+constexpr std::array<entry, 39> table{{
     {"constant", operation::constant, 0},
     {"load", operation::load, 0},
     {"add", operation::add, 2},
@@ -37,6 +37,9 @@ constexpr std::array<entry, 36> table{{
     {"cosh", operation::cosh, 1},
     {"abs", operation::abs, 1},
     {"sign", operation::sign, 1},
+    {"floor", operation::floor, 1},
+    {"round", operation::round, 1},
+    {"mod", operation::mod, 2},
     {"min", operation::min, 2},
     {"max", operation::max, 2},
     {"less", operation::less, 2},

@@ -34,6 +34,9 @@ template <operation Op, class Pack> WINDAGE_INLINE Pack apply(Pack a, Pack b, Pa
     if constexpr (Op == operation::cosh) return hyperbolic_cosine(a);
     if constexpr (Op == operation::abs) return absolute(a);
     if constexpr (Op == operation::sign) return sign(a);
+    if constexpr (Op == operation::floor) return floor(a);
+    if constexpr (Op == operation::round) return nearest_integer(a);
+    if constexpr (Op == operation::mod) return floored_remainder(a, b);
     if constexpr (Op == operation::min) return minimum(a, b);
     if constexpr (Op == operation::max) return maximum(a, b);
     if constexpr (Op == operation::less) return as_number(a < b);
@@ -135,6 +138,9 @@ tape::kernel tape::kernel_of(operation op) {
         WINDAGE_KERNEL(cosh, 1);
         WINDAGE_KERNEL(abs, 1);
         WINDAGE_KERNEL(sign, 1);
+        WINDAGE_KERNEL(floor, 1);
+        WINDAGE_KERNEL(round, 1);
+        WINDAGE_KERNEL(mod, 2);
         WINDAGE_KERNEL(min, 2);
         WINDAGE_KERNEL(max, 2);
         WINDAGE_KERNEL(less, 2);

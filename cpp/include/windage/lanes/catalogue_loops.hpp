@@ -69,10 +69,13 @@ template <int W, class Function> void apply_binary(const double* x, const double
     X(square_root)                                                                                                     \
     X(normal_upper_tail)                                                                                               \
     X(normal_cdf)                                                                                                      \
-    X(normal_quantile)
+    X(normal_quantile)                                                                                                 \
+    X(floor)                                                                                                           \
+    X(nearest_integer)
 #define WINDAGE_BINARY_FUNCTIONS(X)                                                                                    \
     X(arc_tangent2)                                                                                                    \
-    X(power)
+    X(power)                                                                                                           \
+    X(floored_remainder)
 
 template <int W> WINDAGE_INLINE pack<W> sine_of_turn(pack<W> u) { return sine_cosine_turn(u).sine; }
 template <int W> WINDAGE_INLINE pack<W> cosine_of_turn(pack<W> u) { return sine_cosine_turn(u).cosine; }

@@ -5,4 +5,5 @@
 #include <windage/lanes/hyperbolic.hpp>
 #include <windage/lanes/inverse_trigonometric.hpp>
 #include <windage/lanes/power.hpp>
+#include <windage/lanes/rounding.hpp>
 #include <windage/lanes/trigonometric.hpp>
