@@ -113,7 +113,33 @@ def drive(**loop: Any) -> wd.Study:
     )
 
 
-STUDIES = {"equations": equations, "linear": linear, "drive": drive}
+def broken(**loop: Any) -> wd.Study:
+    """Loads that jump and bend at drawn instants, beside one that is the same in every lane."""
+    plant = wd.Plant(
+        states={"x": wd.uniform(-0.1, 0.1), "v": 0.0},
+        equations={"x": "v", "v": "2*u - v*abs(v) + w1 + w2 + w3"},
+        input="u",
+        output="x",
+        disturbances=["w1", "w2", "w3"],
+    )
+    settings: dict[str, Any] = {
+        "plant": plant,
+        "controller": wd.OutputADRC(order=2, controller_bandwidth=5.0, observer_bandwidth=20.0, b0=2.0),
+        "sample_period": 0.01,
+        "duration": 1.0,
+        "reference": wd.Step(1.0),
+        "disturbances": {
+            "w1": wd.Pulse(wd.uniform(-3.0, 3.0), start=wd.uniform(0.0, 0.8), width=wd.uniform(0.0, 0.05)),
+            "w2": wd.Table([0.1, wd.uniform(0.3, 0.5), 0.7], [0.0, wd.uniform(0.5, 1.0), -1.0]),
+            "w3": wd.Table([0.1234, 0.2471, 0.2477, 0.25, 0.6], [0.0, 1.0, -1.0, 0.0, 0.3]),
+        },
+        "steps_per_sample": 2,
+    }
+    measures = [wd.final("x"), wd.peak("v"), wd.minimum("w1"), wd.maximum("w3")]
+    return wd.Study(wd.Loop(**(settings | loop)), measures=measures, seed=12)
+
+
+STUDIES = {"equations": equations, "linear": linear, "drive": drive, "breaks": broken}
 
 
 def run(study: wd.Study, first: int, count: int, threads: int = 1, block: int = 0) -> Result:
@@ -140,6 +166,19 @@ def case(request: pytest.FixtureRequest) -> tuple[wd.Study, Result]:
 def test_threads_and_block_size_have_no_influence(case: tuple[wd.Study, Result], threads: int, block: int) -> None:
     study, expected = case
     assert_same_bits(run(study, 0, TRIALS, threads, block), expected)
+
+
+def test_a_break_in_one_lane_leaves_the_digits_of_its_neighbours() -> None:
+    """Trials whose pulse never comes are what they are without one."""
+    late = wd.choice([0.5001, 50.0])
+    pulses = broken().loop.disturbances | {"w1": wd.Pulse(1.0, start=late, width=0.0203)}
+    with_pulse = run(broken(disturbances=pulses), 0, TRIALS, 1, 128)
+    without = run(broken(disturbances=pulses | {"w1": wd.Constant(0.0)}), 0, TRIALS, 1, 128)
+    never = with_pulse[0][0] == 50.0 if np.any(with_pulse[0][0] == 50.0) else with_pulse[0][1] == 50.0
+    assert 0.3 * TRIALS < np.sum(never) < 0.7 * TRIALS
+    same = with_pulse[1][:2] == without[1][:2]
+    assert np.all(same[:, never])
+    assert not np.any(same[0, ~never])
 
 
 @pytest.mark.parametrize("cuts", [[0, 1, 2, 3, 17, 300], [0, 129, 131, 299, 300], [0, 64, 128, 300]])

@@ -51,7 +51,8 @@ void disturbance::sample(std::int64_t k) {
     for_each_pack_with(size_, move_on, *keep_, *gain_, numbers_[0]);
 }
 
-void disturbance::evaluate(constant_signal time, jump_side side, signal out) const {
+void disturbance::evaluate(constant_signal time, jump_side side, signal out, bool own_times) const {
+    if (own_times) return function_->evaluate_at_own_times(time, side, out);
     signal outs[1] = {out};
     function_->evaluate(time, outs, 0, side);
 }

@@ -6,38 +6,10 @@
 
 #include <windage/control/linear_adrc.hpp>
 
+#include "disturbance_bank.hpp"
 #include "make_plant.hpp"
 
 namespace windage {
-
-class loop::disturbance_bank final : public plant_disturbances {
-public:
-    disturbance_bank(const loop_description& d, const sample_clock& clock, bool time_is_uniform, signal_arena& arena) {
-        for (const disturbance_description& w : d.disturbances) all_.emplace_back(w, clock, time_is_uniform, arena);
-    }
-    void begin(const trial_block& block) {
-        for (disturbance& w : all_) w.begin(block);
-    }
-    void sample(std::int64_t k) {
-        for (disturbance& w : all_) w.sample(k);
-    }
-    int count() const override { return int(all_.size()); }
-    bool are_held() const override {
-        for (const disturbance& w : all_)
-            if (!w.is_held()) return false;
-        return true;
-    }
-    bool holds(int which) const override { return all_[which].holds(); }
-    bool is_zero(int which) const override { return all_[which].is_zero(); }
-    constant_signal now(int which) const override { return all_[which].now(); }
-    void evaluate(int which, constant_signal time, bool ends_a_step, signal out) const override {
-        all_[which].evaluate(time, ends_a_step ? jump_side::before : jump_side::after, out);
-    }
-
-private:
-    std::vector<disturbance> all_;
-};
-
 namespace {
 
 // A command that changes inside the interval does so at an instant that may differ from lane to lane, and so do the
@@ -50,7 +22,7 @@ bool stages_are_uniform(const loop_description& d) {
 
 loop::loop(const loop_description& d, signal_arena& arena)
     : size_(arena.block_size()), clock_(d.sample_period, d.duration, arena),
-      disturbances_(std::make_unique<disturbance_bank>(d, clock_, stages_are_uniform(d), arena)),
+      disturbances_(std::make_unique<disturbance_bank>(d.disturbances, clock_, stages_are_uniform(d), arena)),
       delay_(d, clock_.period(), arena),
       plant_(make_plant(d, {clock_.period(), delay_.fraction(), delay_.is_split()}, *disturbances_, arena)),
       reference_(d.reference, d.sample_period.is_constant(), clock_.period(), arena),

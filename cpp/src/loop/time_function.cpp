@@ -6,6 +6,7 @@
 
 #include <windage/control/limits.hpp>
 #include <windage/lanes/elementary.hpp>
+#include <windage/plant/plant.hpp>
 
 #include "profile.hpp"
 
@@ -24,7 +25,7 @@ bool all_constant(const std::vector<number>& numbers) {
 time_function::time_function(const time_function_description& d, bool time_is_uniform, const held_value& period,
                              signal_arena& arena)
     : kind_(d.kind), size_(arena.block_size()), uniform_(time_is_uniform && all_constant(d.numbers)), period_(period),
-      allowance_(period.is_same(), arena) {
+      has_common_numbers_(all_constant(d.numbers)), allowance_(period.is_same(), arena) {
     for (const number& n : d.numbers) numbers_.emplace_back(n, arena);
     const int derived = kind_ == time_function_kind::sine ? 1 : kind_ == time_function_kind::jerk_limited ? 5 : 0;
     for (int i = 0; i < derived; ++i) derived_.push_back(arena.take());
@@ -33,7 +34,7 @@ time_function::time_function(const time_function_description& d, bool time_is_un
 void time_function::begin(const trial_block& block) {
     holds_until_ = -infinity;
     for (lane_value& n : numbers_) n.begin(block);
-    allowance_.fill([&](std::size_t i) { return 1e-9 * period_.pack_at(i); });
+    allowance_.fill([&](std::size_t i) { return same_instant * period_.pack_at(i); });
     for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP {
         if (kind_ == time_function_kind::sine) (wide(two_pi) / number_at(1, i)).store(derived_[0] + i);
         if (kind_ == time_function_kind::jerk_limited)
@@ -107,9 +108,7 @@ void time_function::evaluate(constant_signal time, signal* out, int derivatives,
         return;
     }
     const instant at = instant_at(wide::load(time), 0, side);
-    const bool is_table = kind_ == time_function_kind::table_linear || kind_ == time_function_kind::table_hold;
-    for (int d = 1; d <= derivatives; ++d) values[d] = 0.0;
-    is_table ? table_uniform(at.t[0], at.sided[0], values, derivatives) : evaluate_pack(0, at, values, derivatives);
+    evaluate_pack(0, at, values, derivatives);
     for (int d = 0; d <= derivatives; ++d) write_where_new(values[d], out[d]);
 }
 
@@ -117,6 +116,14 @@ void time_function::evaluate(constant_signal time, signal* out, int derivatives,
 void time_function::write_where_new(wide value, signal out) const {
     if (bits_of(value)[0] == bits_of(wide::load(out))[0]) return;
     for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP { value.store(out + i); });
+}
+
+void time_function::evaluate_at_own_times(constant_signal time, jump_side side, signal out) const {
+    for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP {
+        wide value;
+        evaluate_pack(i, instant_at(wide::load(time + i), i, side), &value, 0);
+        value.store(out + i);
+    });
 }
 
 void time_function::evaluate_at_own_times(const held_value& time, const held_value& before_jump, signal out) const {
@@ -196,43 +203,39 @@ void time_function::jerk_limited_pack(std::size_t i, instant at, wide* out, int 
     for (int d = 1; d <= std::min(derivatives, 3); ++d) out[d] = direction * motion[d];
 }
 
-// Walks over the whole table, since each lane may be elsewhere in it.
+// Each lane looks up its own row, first the one of the lane before it.
 void time_function::table_pack(std::size_t i, instant at, wide* out, int derivatives) const {
-    const std::size_t n = numbers_.size() / 2;
-    wide value = number_at(n, i), slope = 0.0;
-    for (std::size_t k = 0; k < n; ++k) {
-        const wide t0 = number_at(k, i), v0 = number_at(n + k, i);
-        const auto reached = at.sided >= t0;
-        wide here = v0, rate = 0.0;
-        if (kind_ == time_function_kind::table_linear && k + 1 < n) {
-            const wide span = number_at(k + 1, i) - t0;
-            rate = select(span > 0.0, (number_at(n + k + 1, i) - v0) / select(span > 0.0, span, 1.0), 0.0);
-            here = v0 + rate * (at.t - t0);
-        }
-        value = select(reached, here, value);
-        slope = select(reached, rate, slope);
+    wide value, slope;
+    std::size_t row = 0;
+    for (int l = 0; l < lanes; ++l) {
+        const std::size_t lane = i + std::size_t(l);
+        const table_point here = table_at(at.t[l], at.sided[l], lane, row = table_row(at.sided[l], lane, row));
+        value.set(l, here.value);
+        slope.set(l, here.slope);
     }
     out[0] = value;
     if (derivatives > 0) out[1] = slope;
 }
 
-void time_function::table_uniform(double t, double sided, wide* out, int derivatives) const {
-    const std::size_t n = numbers_.size() / 2;
-    auto time = [&](std::size_t k) { return numbers_[k][0]; };
-    auto value = [&](std::size_t k) { return numbers_[n + k][0]; };
-    std::size_t low = 0, high = n; // time(low) <= sided < time(high)
+// The last row whose time has come, the first one before that; `guess` is tried first.
+std::size_t time_function::table_row(double sided, std::size_t lane, std::size_t guess) const {
+    const auto has_come = [&](std::size_t k) { return sided >= numbers_[k][lane]; };
+    std::size_t low = 0, high = numbers_.size() / 2;
+    if (guess + 1 < high && (guess == 0 || has_come(guess)) && !has_come(guess + 1)) return guess;
     while (high - low > 1) {
         const std::size_t middle = (low + high) / 2;
-        (sided >= time(middle) ? low : high) = middle;
+        (has_come(middle) ? low : high) = middle;
     }
-    double rate = 0.0, here = value(low);
-    if (kind_ == time_function_kind::table_linear && low + 1 < n && sided >= time(low)) {
-        const double span = time(low + 1) - time(low);
-        rate = span > 0.0 ? (value(low + 1) - here) / span : 0.0;
-        here = here + rate * (t - time(low));
-    }
-    out[0] = here;
-    if (derivatives > 0) out[1] = rate;
+    return low;
+}
+
+time_function::table_point time_function::table_at(double t, double sided, std::size_t lane, std::size_t row) const {
+    const std::size_t n = numbers_.size() / 2;
+    const double time = numbers_[row][lane], value = numbers_[n + row][lane];
+    if (kind_ == time_function_kind::table_hold || row + 1 == n || !(sided >= time)) return {value, 0.0};
+    const double span = numbers_[row + 1][lane] - time;
+    const double slope = span > 0.0 ? (numbers_[n + row + 1][lane] - value) / span : 0.0;
+    return {value + slope * (t - time), slope};
 }
 
 } // namespace windage

@@ -48,6 +48,10 @@ ode_plant::ode_plant(const plant_description& d, const integration_settings& set
         stage_values_.emplace_back();
         for (int i = 0; i < w.count(); ++i) stage_values_[c].push_back(arena.take());
     }
+    if (!w.are_held()) {
+        piece_ = block_state(4, size_);
+        kept_ = x_;
+    }
     stages_.resize(stage_buffer_.size());
     for (stage& s : stages_) s.disturbances.resize(w.count());
 }
@@ -69,11 +73,58 @@ void ode_plant::begin(const trial_block& block, const held_value& initial_comman
 void ode_plant::advance(const sample_interval& interval) {
     if (integrator_ == integrator_kind::reference) return advance_reference(interval);
     find_moving();
+    const bool break_soon = w_.break_soon();
     for (int j = 0; j < plan_.steps(); ++j) {
         plan_.prepare(j, interval, needs_times());
-        prepare_stages();
+        if (break_soon && take_step_in_pieces()) continue;
+        prepare_stages(plan_.start(), plan_.step(), false);
         take_step(stages_);
     }
+}
+
+// False, and nothing done, if no lane has a break in this step.
+bool ode_plant::take_step_in_pieces() {
+    const signal until = piece_[1], length = piece_[2], end = piece_[3];
+    for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP {
+        (wide::load(plan_.start() + i) + wide::load(plan_.step() + i)).store(end + i);
+    });
+    if (!w_.piece_end(plan_.start(), end, until)) return false;
+    for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP {
+        const wide to = wide::load(until + i);
+        select(to < wide::load(end + i), to - wide::load(plan_.start() + i), wide::load(plan_.step() + i))
+            .store(length + i);
+    });
+    prepare_stages(plan_.start(), length, true);
+    take_step(stages_);
+    take_rest_of_step();
+    restore_common_times();
+    return true;
+}
+
+// Lanes whose step is done take pieces of length zero, of which nothing is kept.
+void ode_plant::take_rest_of_step() {
+    const signal from = piece_[0], until = piece_[1], length = piece_[2], end = piece_[3];
+    for (bool is_left = true; is_left;) {
+        std::copy_n(until, size_, from);
+        is_left = w_.piece_end(from, end, until);
+        for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP {
+            (wide::load(until + i) - wide::load(from + i)).store(length + i);
+        });
+        std::copy_n(x_.data(), x_.size(), kept_.data());
+        prepare_stages(from, length, true);
+        take_step(stages_);
+        for (std::size_t s = 0; s < x_.signals(); ++s)
+            for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP {
+                const auto is_done = wide::load(from + i) >= wide::load(end + i);
+                select(is_done, wide::load(kept_[s] + i), wide::load(x_[s] + i)).store(x_[s] + i);
+            });
+    }
+}
+
+// A function of common times is written anew only where its first lane changes: make the others the same again.
+void ode_plant::restore_common_times() {
+    for (const auto& values : stage_values_)
+        for (int k : moving_) std::fill_n(values[k], size_, values[k][0]);
 }
 
 void ode_plant::find_moving() {
@@ -82,18 +133,18 @@ void ode_plant::find_moving() {
         if (!w_.holds(k)) moving_.push_back(k);
 }
 
-void ode_plant::prepare_stages() {
+void ode_plant::prepare_stages(constant_signal start, constant_signal length, bool own_times) {
     if (needs_times())
         for (std::size_t c = 0; c < abscissae_.size(); ++c) {
             const double fraction = abscissae_[c];
             for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP {
-                (wide::load(plan_.start() + i) + fraction * wide::load(plan_.step() + i)).store(stage_time_[c] + i);
+                (wide::load(start + i) + fraction * wide::load(length + i)).store(stage_time_[c] + i);
             });
-            for (int k : moving_) w_.evaluate(k, stage_time_[c], fraction == 1.0, stage_values_[c][k]);
+            for (int k : moving_) w_.evaluate(k, stage_time_[c], fraction == 1.0, stage_values_[c][k], own_times);
         }
     for (std::size_t s = 0; s < stages_.size(); ++s) {
         stage& here = stages_[s];
-        here.step = plan_.step();
+        here.step = length;
         here.command = plan_.command();
         here.time = needs_times() ? stage_time_[stage_buffer_[s]] : nullptr;
         for (int k = 0; k < w_.count(); ++k) here.disturbances[k] = w_.now(k);
@@ -127,8 +178,25 @@ void ode_plant::advance_reference(const sample_interval& interval) {
         (timing_.period.pack_at(i) - fraction).store(buffer[1] + i);
         (wide::load(interval.time + i) + fraction).store(buffer[2] + i);
     });
-    if (timing_.is_split) integrate_reference(interval.time, buffer[0], interval.before);
-    integrate_reference(buffer[2], buffer[1], interval.after);
+    if (timing_.is_split) integrate_pieces(interval.time, buffer[0], interval.before);
+    integrate_pieces(buffer[2], buffer[1], interval.after);
+}
+
+void ode_plant::integrate_pieces(constant_signal start, constant_signal length, constant_signal command) {
+    if (!w_.break_soon()) return integrate_reference(start, length, command);
+    block_state piece(4, size_);
+    const signal from = piece[0], until = piece[1], whole = piece[2], end = piece[3];
+    for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP {
+        wide::load(start + i).store(from + i);
+        (wide::load(start + i) + wide::load(length + i)).store(end + i);
+    });
+    for (bool is_left = true; is_left; std::copy_n(until, size_, from)) {
+        is_left = w_.piece_end(from, end, until);
+        for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP {
+            (wide::load(until + i) - wide::load(from + i)).store(whole + i);
+        });
+        integrate_reference(from, whole, command);
+    }
 }
 
 // Steps are halved and doubled, never scaled by a computed power, so that the digits of the audit are the same on

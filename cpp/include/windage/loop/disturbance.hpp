@@ -2,6 +2,7 @@
 // integrator asks for it; a noise changes at each sample and is held in between.
 #pragma once
 
+#include <limits>
 #include <memory>
 #include <optional>
 #include <vector>
@@ -20,7 +21,12 @@ public:
     /// Value at the sample instant, into `now`; noises move on to sample k.
     void sample(std::int64_t k);
     /// Value at any other time of this sample interval.
-    void evaluate(constant_signal time, jump_side side, signal out) const;
+    void evaluate(constant_signal time, jump_side side, signal out, bool own_times) const;
+    /// The lane's first break later than t; infinity if there is none. A noise has none between two samples.
+    double next_break(double t, std::size_t lane) const {
+        return function_ ? function_->next_break(t, lane) : std::numeric_limits<double>::infinity();
+    }
+    bool has_common_breaks() const { return !function_ || function_->has_common_breaks(); }
 
     /// Keeps its value until the next sample.
     bool holds() const { return !function_ || function_->holds(clock_); }

@@ -21,6 +21,8 @@
 
 namespace windage {
 
+class disturbance_bank;
+
 /// Names of every signal of a loop, in the order of a recording; throws std::invalid_argument where two are the same.
 std::vector<std::string> signal_names(const loop_description& d);
 
@@ -44,7 +46,6 @@ public:
     void mark_diverged(signal diverged) const;
 
 private:
-    class disturbance_bank;
     struct named_expression {
         tape formula;
         signal value;

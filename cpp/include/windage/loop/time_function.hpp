@@ -34,6 +34,15 @@ public:
     /// The value alone, at times that may differ from lane to lane even where those of `evaluate` do not. At a jump it
     /// is the one before it where `before_jump` is not zero.
     void evaluate_at_own_times(const held_value& time, const held_value& before_jump, signal out) const;
+    /// The same on one side of a jump. A signal written so must be the same in all lanes again before `evaluate` or
+    /// `sample` may write it.
+    void evaluate_at_own_times(constant_signal time, jump_side side, signal out) const;
+
+    /// The lane's first break later than t and not the same instant; infinity if there is none. At a break the value
+    /// jumps, or a derivative of it. Costs a search in a table, whatever its length.
+    double next_break(double t, std::size_t lane) const;
+    /// All lanes have their breaks at the same times.
+    bool has_common_breaks() const;
 
     /// Never changes within a trial.
     bool is_constant() const { return kind_ == time_function_kind::constant; }
@@ -54,7 +63,12 @@ private:
     void quintic_pack(std::size_t i, instant at, wide* out, int derivatives) const;
     void jerk_limited_pack(std::size_t i, instant at, wide* out, int derivatives) const;
     void table_pack(std::size_t i, instant at, wide* out, int derivatives) const;
-    void table_uniform(double t, double sided, wide* out, int derivatives) const;
+    struct table_point {
+        double value, slope;
+    };
+    double next_table_time(double now, std::size_t lane) const;
+    std::size_t table_row(double sided, std::size_t lane, std::size_t guess) const;
+    table_point table_at(double t, double sided, std::size_t lane, std::size_t row) const;
 
     time_function_kind kind_;
     std::size_t size_;
@@ -62,6 +76,7 @@ private:
     double holds_until_ = 0.0; // from the last sample that was evaluated
     const held_value& period_;
     std::vector<lane_value> numbers_;
+    bool has_common_numbers_;
     held_value allowance_;        // within which two instants are the same
     std::vector<signal> derived_; // angular frequency of a sine; phase times of a jerk-limited profile
 };

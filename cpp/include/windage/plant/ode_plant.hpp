@@ -1,5 +1,7 @@
 // A plant whose differential equations are integrated at fixed steps between samples, together with the first-order
 // lag of the actuator where there is one. What the equations are is left to the derived plants.
+// A step in which a disturbance breaks is taken in pieces that end where the lane's own disturbances do, so that no
+// method loses its order there. Lanes without a break take it in one piece, with the digits that they have alone.
 #pragma once
 
 #include <vector>
@@ -63,8 +65,12 @@ private:
     void full_derivative(const block_state& x, block_state& dx, const stage& s);
     void find_moving();
     bool needs_times() const { return reads_time_ || !moving_.empty(); }
-    void prepare_stages();
+    void prepare_stages(constant_signal start, constant_signal length, bool own_times);
+    bool take_step_in_pieces();
+    void take_rest_of_step();
+    void restore_common_times();
     void advance_reference(const sample_interval& interval);
+    void integrate_pieces(constant_signal start, constant_signal length, constant_signal command);
     void integrate_reference(constant_signal start, constant_signal length, constant_signal command);
 
     const plant_disturbances& w_;
@@ -80,6 +86,7 @@ private:
     std::vector<stage> stages_;
     std::vector<signal> stage_time_;                // one a distinct abscissa
     std::vector<std::vector<signal>> stage_values_; // per abscissa, one a disturbance
+    block_state piece_, kept_;                      // start, end, length and end of the step; states before a piece
     odeint::euler<block_state, double, block_state, double, block_algebra> euler_;
     odeint::runge_kutta4_classic<block_state, double, block_state, double, block_algebra> rk4_;
     odeint::runge_kutta_cash_karp54<block_state, double, block_state, double, block_algebra> cash_karp_;

@@ -7,7 +7,17 @@
 
 namespace windage {
 
-/// Disturbances as the plant sees them.
+/// Two instants closer than this fraction of a sample period are the same instant.
+inline constexpr double same_instant = 1e-9;
+
+/// Disturbances as the plant sees them. Between two samples they are smooth but for their breaks: instants at which one
+/// of them, or a derivative of it, jumps (a step, the ends of a pulse or ramp, the corners of a table or profile). To
+/// be exact, or to keep its order, a plant moves from break to break; each lane has its own:
+///
+///     if (w.break_soon())                                  // seldom; else the whole interval is one smooth piece
+///         for (from = start; w.piece_end(from, end, until); from = until) ...   // a last, smooth piece follows
+///
+/// Values at the start of a piece are those after a break there, at its end those before one (`evaluate`).
 class plant_disturbances {
 public:
     virtual ~plant_disturbances() = default;
@@ -20,8 +30,14 @@ public:
     virtual bool is_zero(int which) const = 0;
     virtual constant_signal now(int which) const = 0;
     /// Value of one that moves at a time within the sample interval; at the end of a step a jump at that very time is
-    /// still to come.
-    virtual void evaluate(int which, constant_signal time, bool ends_a_step, signal out) const = 0;
+    /// still to come. `own_times`: the times differ between lanes although those of whole steps do not.
+    virtual void evaluate(int which, constant_signal time, bool ends_a_step, signal out,
+                          bool own_times = false) const = 0;
+    /// In some lane there may be a break between this sample and the next one.
+    virtual bool break_soon() const = 0;
+    /// The end of the smooth piece that starts at `from`: the lane's first break after it and before `end`, else `end`.
+    /// False where no lane has a break. A break that is the same instant as `from` or `end` counts as none.
+    virtual bool piece_end(constant_signal from, constant_signal end, signal until) const = 0;
 };
 
 /// The interval between two sample instants; the command changes `fraction` seconds after its start where it is split.
