@@ -192,8 +192,9 @@ def _columns(stored: Any, described: Described, facts: dict[str, Any], name: str
 
 
 def _groups(stored: Any) -> Iterator[Arrays]:
-    for batch in stored.iter_batches(batch_size=ROWS):
-        yield [column.to_numpy(zero_copy_only=False) for column in batch.columns]
+    # One after the other: batches of rows would be read ahead, and held twice.
+    for group in range(stored.num_row_groups):
+        yield [column.to_numpy() for column in stored.read_row_group(group).columns]
 
 
 def _check_release(outcome: Outcome, version: str, name: str) -> None:

@@ -17,7 +17,7 @@ from types import TracebackType
 from typing import Self
 
 #: Asked once more after this time, s, an open call is given up with what it has: it may hang elsewhere.
-PATIENCE = 1.0
+PATIENCE = 5.0
 
 
 class StopRequests:
@@ -50,19 +50,19 @@ class StopRequests:
 
     def __enter__(self) -> Self:
         if threading.current_thread() is threading.main_thread():
-            if signal.getsignal(signal.SIGINT) is signal.default_int_handler:
+            self._replaces = signal.getsignal(signal.SIGINT) is signal.default_int_handler
+            if self._replaces:
                 signal.signal(signal.SIGINT, interrupt)
-                self._replaces = True
             _open.append(self)
         return self
 
     def __exit__(self, kind: type[BaseException] | None, error: BaseException | None, at: TracebackType | None) -> None:
-        if self in _open:
-            _open.remove(self)
         if self._replaces:
             # Signals that came before are noted: Python handles them before it exchanges the handler.
             self._replaces = False
             signal.signal(signal.SIGINT, signal.default_int_handler)
+        if self in _open:
+            _open.remove(self)
 
 
 _open: list[StopRequests] = []

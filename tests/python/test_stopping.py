@@ -172,7 +172,7 @@ import numpy as np
 import test_stopping as here
 
 study, random_number = here.quick_study(), random.Random(int(sys.argv[1]))
-ASKED = 600_000
+ASKED = 300_000
 full = study.run(ASKED, progress=False)
 started = time.perf_counter()
 study.count(ASKED, size=20_000, progress=False)
@@ -224,7 +224,7 @@ print(seen["whole"], seen["part"], seen["early"])
 def test_interrupts_at_random_instants_lose_nothing_that_is_done() -> None:
     environment = {**os.environ, "PYTHONPATH": os.pathsep.join([str(Path(__file__).parent), *sys.path])}
     done = subprocess.run(
-        [sys.executable, "-c", SHOTS, "7", "40"],
+        [sys.executable, "-c", SHOTS, "7", "30"],
         capture_output=True,
         text=True,
         check=False,
@@ -233,7 +233,7 @@ def test_interrupts_at_random_instants_lose_nothing_that_is_done() -> None:
     )
     assert done.returncode == 0, done.stderr[-3000:]
     _, part, _ = map(int, done.stdout.split())
-    assert part >= 10
+    assert part >= 6
 
 
 def test_ctrl_c_is_heard_within_one_slow_block_and_in_replays() -> None:
