@@ -397,15 +397,20 @@ def test_interrupted_run_is_judged_as_interim(
 def test_ctrl_c_and_termination_end_the_process_with_what_is_done(number: signal.Signals, tmp_path: Path) -> None:
     # The observer is too fast for advice to be absent: its line tells that the run begins.
     wd.save(servo(0.1, observer_bandwidth=150.0), tmp_path / "servo.toml")
-    command = [sys.executable, "-u", "-c", "from windage._command_line import main; raise SystemExit(main())"]
-    arguments = ["run", str(tmp_path / "servo.toml"), "--trials", "100000000"]
-    with subprocess.Popen([*command, *arguments], stdout=subprocess.PIPE, stderr=subprocess.PIPE, text=True) as process:
+    # A shell that starts tests in the background makes them deaf to Ctrl-C.
+    program = "import signal; signal.signal(signal.SIGINT, signal.default_int_handler)\n"
+    program += "from windage._command_line import main; raise SystemExit(main())"
+    command = [sys.executable, "-u", "-c", program, "run", str(tmp_path / "servo.toml"), "--trials", "100000000"]
+    with subprocess.Popen(command, stdout=subprocess.PIPE, stderr=subprocess.PIPE, text=True) as process:
         assert process.stdout is not None
-        assert process.stdout.readline().startswith("Advice:")
-        with pytest.raises(subprocess.TimeoutExpired):
-            process.wait(1.0)
-        process.send_signal(number)
-        printed, errors = process.communicate(timeout=60.0)
+        try:
+            assert process.stdout.readline().startswith("Advice:")
+            with pytest.raises(subprocess.TimeoutExpired):
+                process.wait(1.0)
+            process.send_signal(number)
+            printed, errors = process.communicate(timeout=60.0)
+        finally:
+            process.kill()
     assert process.returncode == 4, errors
     assert "INTERIM" in printed
     assert errors == ""

@@ -9,7 +9,7 @@ import subprocess
 import sys
 import threading
 import time
-from collections.abc import Callable
+from collections.abc import Callable, Iterator
 from pathlib import Path
 from typing import Any
 
@@ -18,6 +18,14 @@ import pytest
 
 import windage as wd
 from windage import _stopping
+
+
+@pytest.fixture(autouse=True)
+def python_hears_ctrl_c() -> Iterator[None]:
+    """A shell that starts tests in the background makes them deaf to Ctrl-C."""
+    before = signal.signal(signal.SIGINT, signal.default_int_handler)
+    yield
+    signal.signal(signal.SIGINT, before)
 
 
 def quick_study(**changes: Any) -> wd.Study:
@@ -171,6 +179,7 @@ import os, random, signal, sys, threading, time
 import numpy as np
 import test_stopping as here
 
+signal.signal(signal.SIGINT, signal.default_int_handler)
 study, random_number = here.quick_study(), random.Random(int(sys.argv[1]))
 ASKED = 300_000
 full = study.run(ASKED, progress=False)
