@@ -27,10 +27,14 @@ class ProgressBar:
     ----------
     console : rich.console.Console, optional
         Where to draw; by default the standard error stream.
+    room_for : int
+        Largest number of trials that is to come, so that the bar leaves room for it from the beginning.
     """
 
-    def __init__(self, console: Console | None = None) -> None:
+    def __init__(self, console: Console | None = None, room_for: int = 0) -> None:
         self._console = console
+        self._room_for = room_for
+        self._work = DESCRIPTION
         self._progress: Progress | None = None
         self._task: TaskID | None = None
         self._is_closed = self._is_lost = False
@@ -59,6 +63,10 @@ class ProgressBar:
             return
         try:
             progress, task = self._begun(total)
+            if work != self._work and not ends:
+                # Other work has another pace.
+                progress.reset(task)
+                self._work = work
             progress.update(task, completed=done, total=total, description=work, refresh=not ends)
             if ends:
                 progress.stop()
@@ -67,7 +75,7 @@ class ProgressBar:
 
     def _begun(self, total: int) -> tuple[Progress, TaskID]:
         if self._progress is None or self._task is None:
-            self._progress = _new_progress(self._console, total)
+            self._progress = _new_progress(self._console, max(total, self._room_for))
             self._task = self._progress.add_task(DESCRIPTION, total=total)
             self._progress.start()
         return self._progress, self._task

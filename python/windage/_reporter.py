@@ -43,7 +43,7 @@ class Reporter:
     """
 
     def __init__(self, progress: bool | Report | None, total: int) -> None:
-        self._tell = _receiver(progress)
+        self._tell = _receiver(progress, total)
         self._requests = StopRequests()
         self._total = total
         self._done = 0
@@ -117,9 +117,9 @@ class Reporter:
         self._said_no |= isinstance(answer, bool | np.bool_) and not answer
 
 
-def _receiver(progress: object) -> ProgressBar | Report | None:
+def _receiver(progress: object, total: int) -> ProgressBar | Report | None:
     if progress is True or (progress is None and sys.stderr is not None and sys.stderr.isatty()):
-        return ProgressBar()
+        return ProgressBar(room_for=total)
     if progress is None or progress is False:
         return None
     if not callable(progress):
