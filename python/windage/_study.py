@@ -138,7 +138,7 @@ class Study(Description):
         ------
         Outcome
             Of up to `size` trials each; `Outcome.first` is the index of its first trial. After an interrupted
-            batch there is none.
+            batch, which may have no trial at all, there is none. Ctrl-C between two batches is the caller's.
         """
         count = checked_integer(trials, "trials", 1, MOST_TRIALS)
         size = checked_integer(size, "size", 1, MOST_TRIALS)

@@ -22,6 +22,7 @@ from pathlib import Path
 from typing import BinaryIO
 
 from ._errors import OutputError
+from ._shown_text import shorten
 
 _READ_ONLY = "Choose a file and a folder that can be written to."
 _MENDS = {
@@ -49,7 +50,10 @@ def written(path: str | os.PathLike[str]) -> Iterator[BinaryIO]:
     OutputError
         If the file cannot be written; the old one is left as it was.
     """
-    wanted = Path(path)
+    try:
+        wanted = Path(path)
+    except TypeError as error:
+        raise OutputError(shorten(path), "no name of a file", "Give a text or a path.") from error
     try:
         if is_written_in_place(wanted):
             # Writers may go back and forth in what they write, pipes cannot.
@@ -64,9 +68,10 @@ def written(path: str | os.PathLike[str]) -> Iterator[BinaryIO]:
     except OSError as error:
         raise OutputError(str(path), error.strerror or str(error), _MENDS.get(error.errno or 0, "")) from error
     except ValueError as error:
-        if "\0" not in str(path):
+        # The writer of the content may have reasons of its own.
+        if "\0" not in str(path) and not isinstance(error, UnicodeEncodeError):
             raise
-        raise OutputError(str(path), "no name of a file", "Leave out the null character.") from error
+        raise OutputError(str(path), "no name of a file", "No file can have such characters in its name.") from error
 
 
 def is_written_in_place(path: Path) -> bool:
