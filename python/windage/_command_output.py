@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import io
 import json
 import os
 import shlex
@@ -213,8 +214,11 @@ def in_one_piece(path: Path) -> Iterator[BinaryIO]:
 def write_picture(plotted: Outcome | Replay, path: Path, **options: Any) -> None:
     """Write the plot of an outcome or a replay."""
     figure = plotted.plot(**options)
+    # Matplotlib hides the reason where it cannot write.
+    whole = io.BytesIO()
+    figure.savefig(whole, format=path.suffix[1:].lower(), dpi=120)
     with in_one_piece(path) as file:
-        figure.savefig(file, format=path.suffix[1:].lower(), dpi=120)
+        file.write(whole.getbuffer())
 
 
 def write_table(table: Any, path: Path, kind: str) -> None:

@@ -121,20 +121,21 @@ def _replacement(path: Path) -> Iterator[BinaryIO]:
     beginning = f".windage-{zlib.crc32(target.name.encode(errors='replace')):08x}"
     _sweep(target.parent, beginning)
     part = target.parent / f"{beginning}-{secrets.token_hex(8)}.part"
-    with _opened(part) as file:
-        try:
-            yield file
-            if old is not None:
-                _take_over(file.fileno(), old)
-            file.flush()
-            os.fsync(file.fileno())
+    file = _opened(part)
+    try:
+        yield file
+        if old is not None:
+            _take_over(file.fileno(), old)
+        file.flush()
+        os.fsync(file.fileno())
+        file.close()
+        part.replace(target)
+    except BaseException:
+        with suppress(OSError):  # what could not be written before cannot be written now
             file.close()
-            part.replace(target)
-        except BaseException:
-            file.close()
-            with suppress(OSError):
-                part.unlink()
-            raise
+        with suppress(OSError):
+            part.unlink()
+        raise
     _flush_folder(target.parent)
 
 

@@ -196,6 +196,45 @@ def test_a_failure_while_writing_leaves_the_old_file_and_nothing_else(tmp_path: 
     assert names_in(tmp_path) == ["study.toml"]
 
 
+FULL = """
+import os, resource, sys
+import windage as wd
+from windage import _command_line
+import test_written_files as here
+
+os.chdir(sys.argv[1])
+wd.save(here.study(), "study.toml")
+outcome = here.study().run(20_000, progress=False)
+files = ["outcome.parquet", "table.parquet", "table.csv", "picture.png", "picture.svg", "picture.pdf", "verdict.json"]
+for name in files:
+    open(name, "w").write("old")
+resource.setrlimit(resource.RLIMIT_FSIZE, (1_000, 1_000))
+try:
+    outcome.save("outcome.parquet")
+except wd.OutputError as error:
+    print(error, file=sys.stderr)
+for name in files[1:]:
+    option = {"t": "--table", "p": "--plot", "v": "--json"}[name[0]]
+    _command_line.main(["run", "study.toml", "--trials", "500", "--short", option, name])
+assert sorted(os.listdir()) == sorted([*files, "study.toml"]), os.listdir()
+assert all(open(name).read() == "old" for name in files)
+"""
+
+
+@POSIX
+def test_files_that_outgrow_their_place_leave_the_old_ones_and_nothing_else(tmp_path: Path) -> None:
+    path = os.pathsep.join([str(Path(__file__).parent), *sys.path])
+    done = subprocess.run(
+        [sys.executable, "-c", FULL, str(tmp_path)],
+        capture_output=True,
+        text=True,
+        check=False,
+        env={**os.environ, "PYTHONPATH": path},
+    )
+    assert done.returncode == 0, done.stderr
+    assert done.stderr.count("cannot be written: File too large") == 7
+
+
 def test_the_content_is_on_the_disk_before_the_name_is_moved(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
     done: list[str] = []
     flush, replace = os.fsync, Path.replace
