@@ -26,7 +26,7 @@ int main() {
     std::vector<double> gains(trials), peaks(trials);
     std::vector<std::uint8_t> status(trials);
     const windage::campaign campaign(study);
-    campaign.run(0, trials, {gains.data(), peaks.data(), status.data(), trials}, {});
+    campaign.run({0, trials}, {gains.data(), peaks.data(), status.data(), trials}, {});
     std::uint64_t failures = 0;
     for (double peak : peaks) {
         std::printf("%.17g\n", peak);
