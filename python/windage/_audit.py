@@ -15,9 +15,10 @@ import numpy as np
 from numpy.typing import NDArray
 
 from ._audit_run import REST, Counts, Examination, Run, RunAgain, changes, shares
-from ._audit_trials import SCALE_TRIALS, Rows, Values, scales_of
+from ._audit_trials import ONE_BY_ONE, SCALE_TRIALS, Rows, Values, scales_of
 from ._cautions import grouped, trials_in_words
 from ._describe import Described
+from ._errors import EngineError
 from ._loop import MOST_STEPS
 from ._numerics import Numerics
 from ._pilots import FIXED_STEPS, limits_of
@@ -57,7 +58,7 @@ class Audit(Portable):
     trials : int
         Trials that were run again.
     steps : int
-        Integration steps in a sample period of the runs again.
+        Integration steps in a sample period of the runs again; 0 where the step was controlled.
     flips : ndarray of uint64
         Indices of trials that pass one way and fail the other.
     undecided : int
@@ -158,16 +159,29 @@ def audit(study: Study, described: Described, run: Run, threads: int, reporter: 
     labels = tuple(requirement.label for requirement in study.requirements)
     if not run.trials:
         return not_examined(labels, "nothing to examine: no trial was run")
-    if study.loop.plant.is_linear:
-        return not_examined(labels, "nothing to examine: the plant is linear and sampled exactly")
+    work = _Work(study, described, run, threads, reporter)
     try:
-        return _audited(_Work(study, described, run, threads, reporter), labels)
+        return _sampled_exactly(work, labels) if study.loop.plant.is_linear else _integrated(work, labels)
     except Stopped:
         caution = "The examination of the numerical error was stopped: call verdict again to have it done."
         return not_examined(labels, "not examined: stopped before it was done", caution, interrupted=True)
 
 
-def _audited(work: _Work, labels: tuple[str, ...]) -> Audit:
+def _sampled_exactly(work: _Work, labels: tuple[str, ...]) -> Audit:
+    """Examine a linear plant by step control, which shares nothing with the matrix exponential."""
+    try:
+        examination = Examination(work.run, work.again(1, "reference"), ONE_BY_ONE)
+        examination.first_round()
+        examination.further_rounds()
+    except (ValueError, EngineError) as error:
+        if "cannot be audited" not in str(error):
+            raise
+        caution = "Numerical error was not examined: the plant is too fast to be integrated beside its exact sampling."
+        return not_examined(labels, "not audited: the plant is too fast for an independent integration", caution)
+    return _concluded(work, examination, labels, 0)
+
+
+def _integrated(work: _Work, labels: tuple[str, ...]) -> Audit:
     steps = work.steps
     for attempt in range(1, ATTEMPTS + 1):
         steps *= TIGHTER
@@ -238,15 +252,17 @@ def _numerics(work: _Work, examination: Examination, counts: Counts, steps: int)
     largest = float(np.max(share, where=np.isfinite(share), initial=0.0))
     flipped = len(counts.lost) + len(counts.won)
     undecided = counts.undecided_passing + counts.undecided_failing
+    how = f"{grouped(steps)} steps of order 5 a sample period" if steps else "step control, not sampled exactly"
     text = (
-        f"{trials_in_words(len(examination.places))} run again with {grouped(steps)} steps of order 5 a sample period: "
+        f"{trials_in_words(len(examination.places))} run again with {how}: "
         f"largest change {largest:.1g} of slack and limit; {grouped(flipped)} flipped, {grouped(undecided)} undecided"
     )
     cautions = [work.study._choice.caution]
     if flipped + undecided > MANY * work.run.trials:
+        advice = f": {_advice(work)}." if steps else "."
         cautions.append(
             f"Numerical error can change the outcome of {trials_in_words(flipped + undecided)}, which count against "
-            f"either decision: {_advice(work)}."
+            f"either decision{advice}"
         )
     return Numerics(
         text=text,

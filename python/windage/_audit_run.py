@@ -20,13 +20,11 @@ import numpy as np
 from numpy.typing import NDArray
 
 from ._audit_trials import (
-    EXTREMES,
-    FAILING_SAMPLE,
-    NEAREST,
-    PASSING_SAMPLE,
+    USUAL,
     Flags,
     Places,
     Rows,
+    Sizes,
     Values,
     Watch,
     extremes,
@@ -44,17 +42,10 @@ REST = 1.0 / 8.0
 LEAST_BOUND = 1e-9
 #: Rounds after the first, and the share of the run's trials that may be left in question after them.
 ROUNDS, LEFT_OVER = 4, 1e-4
-#: Trials that may be run again: so many, or one of so many of the run.
-LEAST_BUDGET, BUDGET_SHARE = 256, 80
 #: Trials of one look along the tail, and how clear a rank correlation has to be for the look.
 TAIL, CLEAR_CORRELATION = 32, 0.3
 
 RunAgain = Callable[[Rows], Rows]
-
-
-def budget_for(trials: int) -> int:
-    """Return how many of a run's trials may be run again."""
-    return max(LEAST_BUDGET, trials // BUDGET_SHARE)
 
 
 def changes(before: Values, after: Values) -> Values:
@@ -128,9 +119,9 @@ class Examination:
     irregularly; and for each limit of two sides, met and missed.
     """
 
-    def __init__(self, run: Run, again: RunAgain) -> None:
+    def __init__(self, run: Run, again: RunAgain, sizes: Sizes = USUAL) -> None:
         self.run, self.rows, self.scales, self.rest = run, run.rows, run.scales, REST
-        self._again, self._budget = again, budget_for(run.trials)
+        self._again, self._sizes, self._budget = again, sizes, sizes.budget(run.trials)
         self._near = nearness(self.rows.slack, self.scales)
         self._done = np.zeros(len(self.rows.trials), dtype=bool)
         self.places: Places = np.empty(0, dtype=np.int64)
@@ -139,10 +130,10 @@ class Examination:
 
     def first_round(self) -> None:
         """Run the trials of the first round again."""
-        count = max(2, NEAREST // len(self.scales))
-        passing, failing = sample(self.rows, PASSING_SAMPLE, FAILING_SAMPLE)
+        count = max(2, self._sizes.nearest // len(self.scales))
+        passing, failing = sample(self.rows, self._sizes.passing, self._sizes.failing)
         self._typical = np.unique(np.concatenate([nearest(self._near, count), passing, failing]))
-        self._run(np.unique(np.concatenate([self._typical, extremes(self.rows, 1, EXTREMES)])))
+        self._run(np.unique(np.concatenate([self._typical, extremes(self.rows, 1, self._sizes.extremes)])))
 
     def further_rounds(self) -> None:
         """Follow the largest changes to be expected, then run the trials again whose fate is in question."""

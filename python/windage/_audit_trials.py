@@ -14,15 +14,45 @@ Values = NDArray[np.float64]
 Flags = NDArray[np.bool_]
 Places = NDArray[np.int64]
 
-#: Trials of the first round: nearest to each limit (shared out among the limits), extreme in each spread (both ends,
-#: at most so many in all), and drawn by hash from those that pass and those that fail.
-NEAREST, EXTREMES, PASSING_SAMPLE, FAILING_SAMPLE = 32, 32, 32, 16
 #: What is kept of a stream for each limit, and for each end of a spread.
 KEPT_NEAREST, KEPT_EXTREMES = 256, 16
 #: Trials that the scale of a limit of zero is taken from.
 SCALE_TRIALS = 128
 #: Powers of two of nearness by which trials that are not kept are counted.
 NEAR_BINS = 40
+
+
+@dataclass(frozen=True)
+class Sizes:
+    """How many trials are run again.
+
+    Attributes
+    ----------
+    nearest : int
+        In the first round those nearest to each limit, shared out among the limits.
+    extremes : int
+        The most extreme in each spread, both ends, at most so many in all.
+    passing, failing : int
+        Drawn by hash from those that pass and those that fail.
+    least, one_of : int
+        In all rounds at most so many, or one of so many of the run's trials.
+    """
+
+    nearest: int
+    extremes: int
+    passing: int
+    failing: int
+    least: int
+    one_of: int
+
+    def budget(self, trials: int) -> int:
+        """Return how many of a run's trials may be run again."""
+        return max(self.least, trials // self.one_of)
+
+
+USUAL = Sizes(nearest=32, extremes=32, passing=32, failing=16, least=256, one_of=80)
+#: Where each trial is run again by itself, with step control.
+ONE_BY_ONE = Sizes(nearest=4, extremes=4, passing=2, failing=2, least=24, one_of=2000)
 
 
 @dataclass(frozen=True)
@@ -172,6 +202,6 @@ class Watch:
 
     def _kept(self, rows: Rows) -> Rows:
         near = nearest(nearness(rows.slack, self.scales), KEPT_NEAREST)
-        ends = extremes(rows, KEPT_EXTREMES, EXTREMES * KEPT_EXTREMES)
-        drawn = sample(rows, 2 * PASSING_SAMPLE, 2 * FAILING_SAMPLE)
+        ends = extremes(rows, KEPT_EXTREMES, USUAL.extremes * KEPT_EXTREMES)
+        drawn = sample(rows, 2 * USUAL.passing, 2 * USUAL.failing)
         return rows.at(_joined([near, ends, *drawn]))

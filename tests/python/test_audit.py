@@ -189,11 +189,28 @@ def test_an_interrupted_audit_decides_nothing_and_loses_nothing(monkeypatch: pyt
     assert not heard.audit().interrupted
 
 
-def test_linear_plants_and_empty_outcomes_say_why_there_is_nothing_to_examine() -> None:
-    loop = loop_of(wd.IntegratorChain(1, gain=wd.uniform(0.9, 1.1)), disturbances={"load": 0.0})
-    outcome = wd.Study(loop, [wd.peak("error", after=3.0) <= 0.1], seed=1).run(50, progress=False)
-    assert outcome.audit().trials == 0
-    assert "linear" in words(outcome.verdict(0.5))
+def linear(gain: float) -> wd.Study:
+    plant = wd.FirstOrder(gain=gain, time_constant=wd.lognormal(0.1, 0.4))
+    controller = wd.ErrorADRC(1, controller_bandwidth=4.0, observer_bandwidth=20.0, b0=10.0)
+    loop = loop_of(plant, controller=controller, disturbances={"load": wd.Step(0.1, at=2.0)})
+    return wd.Study(loop, [wd.peak("error", after=1.5) <= 0.033, wd.overshoot() <= 0.05], seed=1)
+
+
+def test_linear_plants_are_integrated_beside_their_exact_sampling() -> None:
+    outcome = linear(1.0).run(500, progress=False)
+    audit = outcome.audit()
+    assert 6 <= audit.trials <= 24
+    assert (audit.flipped, audit.undecided) == (0, 0)
+    assert all(0.0 < change < 1e-6 for change in audit.largest_change.values())
+    assert "step control, not sampled exactly" in words(outcome.verdict(0.5))
+
+
+def test_linear_plants_too_fast_to_be_integrated_are_not_audited_and_that_is_said() -> None:
+    plant = wd.FirstOrder(gain=1.0, time_constant=1e-9)
+    study = linear(1.0).with_(plant=plant)
+    verdict = study.run(50, progress=False).verdict(0.5)
+    assert "not audited: the plant is too fast" in words(verdict)
+    assert "Numerical error was not examined" in verdict.cautions[0]
 
 
 def test_a_study_without_requirements_is_audited_for_finishing() -> None:

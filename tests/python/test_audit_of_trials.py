@@ -87,7 +87,7 @@ def test_the_first_round_takes_nearest_extremes_and_samples() -> None:
 def test_many_spreads_share_the_extremes() -> None:
     slack = np.ones((1, 2000))
     parameters = np.random.default_rng(3).normal(size=(100, 2000))
-    ends = set(audit_trials.extremes(rows_of(slack, parameters), 1, audit_trials.EXTREMES).tolist())
+    ends = set(audit_trials.extremes(rows_of(slack, parameters), 1, audit_trials.USUAL.extremes).tolist())
     assert 28 <= len(ends) <= 32
     assert {int(np.argmin(parameters[0])), int(np.argmax(parameters[-1]))} <= ends
 
@@ -99,7 +99,7 @@ def test_every_trial_that_the_changes_seen_could_reach_is_run_again() -> None:
     assert set(counts.lost.tolist()) == set(np.flatnonzero(slack[0] - 0.005 * (slack[0] + 1.0) < 0.0).tolist())
     unsure = np.abs(slack - share_of(slack, 0.005)) < share_of(slack, 0.005) / 8
     assert counts.undecided_passing == np.sum(unsure & (slack >= share_of(slack, 0.005)))
-    assert len(counts.lost) < len(made.asked) <= audit_run.LEAST_BUDGET
+    assert len(counts.lost) < len(made.asked) <= audit_trials.USUAL.least
 
 
 def test_a_change_three_times_as_large_as_any_seen_is_found_near_a_limit() -> None:
@@ -132,7 +132,7 @@ def test_what_the_budget_leaves_counts_as_undecided(watch: int) -> None:
     made = Made(slack, after, watch=watch)
     counts = made.counts()
     truly = int(np.sum(after < 0.0))
-    assert audit_run.budget_for(60_000) == 750
+    assert audit_trials.USUAL.budget(60_000) == 750
     assert len(made.asked) <= 750
     assert truly > 1100
     assert truly <= len(counts.lost) + counts.undecided_passing <= 8 * truly
