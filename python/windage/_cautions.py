@@ -6,10 +6,14 @@ outside, so that the number is not read as more than it is.
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from decimal import ROUND_CEILING, ROUND_FLOOR, ROUND_HALF_EVEN, Decimal
+from typing import TYPE_CHECKING
 
 from windage import _statistics
+
+if TYPE_CHECKING:
+    from windage._verdict import Verdict
 
 REPEATED_LOOKS = (
     "Deciding again and again at this bound does not keep the confidence: plan the number of trials "
@@ -19,63 +23,70 @@ PERMISSION = (
     "Simulation is evidence, not permission: local codes, the applicable functional-safety standard and "
     "licensed practice decide."
 )
+#: What holds for trials that are no independent ones of a number fixed beforehand.
+_OF_KIND = {
+    "sample": "The confidence holds for one look, at a number of trials that was fixed beforehand.",
+    "list": "A list was run, each row once, with one draw of whatever else varies: nothing is claimed of other units.",
+    "one trial": "No spread and no noise: all trials are the same one, and their number is no evidence.",
+    "interim": (
+        "Whoever stops a run when it looks good gets a bound that is too good: no bound is given. What was observed "
+        "so far is of those trials only."
+    ),
+}
+#: Listed values that have to lie in the fraction that may fail; below, they say little about that fraction.
+VALUES_IN_THE_TAIL = 10
 
 
-def standing_cautions(diverged: int, not_varied: Sequence[str], looks: int) -> tuple[str, ...]:
-    """Return the lines that every verdict carries.
-
-    Parameters
-    ----------
-    diverged : int
-        Trials that diverged.
-    not_varied : sequence of str
-        Names of the numbers that were held at one value.
-    looks : int
-        Times these trials have been judged, this one included.
-
-    Returns
-    -------
-    tuple of str
-        Six sentences.
-    """
-    held = listed(not_varied) if not_varied else "nothing was listed; a number without spread kept its value"
-    return (
+def standing_cautions(verdict: Verdict) -> tuple[str, ...]:
+    """Return the lines that every verdict carries: six sentences, fewer where another one says it already."""
+    held = listed(verdict.not_varied) or "nothing was listed; a number without spread kept its value"
+    kind = _OF_KIND[verdict.basis.kind] if verdict.looks == 1 or verdict.basis.kind != "sample" else ""
+    lines = (
         "The claim is about the model and the stated spreads; the error of the model is in no bound.",
         f"Not varied: {held}.",
-        f"Diverged trials count as failures ({grouped(diverged)} here); none is left out.",
-        f"Interim results are no verdicts; looks at these trials so far: {grouped(looks)}.",
+        f"Diverged trials count as failures ({grouped(verdict.diverged)} here); none is left out.",
+        kind,
         "Hardware and software faults, misuse and human error are not covered.",
         PERMISSION,
     )
+    return tuple(filter(None, lines))
 
 
-def situational_cautions(
-    failures: int, trials: int, confidence: float, looks: int, truncated: Sequence[str]
-) -> tuple[str, ...]:
+def situational_cautions(verdict: Verdict, *, unfailed: bool = True) -> tuple[str, ...]:
     """Return the lines that this outcome calls for, in the order of their weight.
 
     Parameters
     ----------
-    failures, trials : int
-        What was observed.
-    confidence : float
-        Confidence of the bound.
-    looks : int
-        Times these trials have been judged, this one included.
-    truncated : sequence of str
-        Names of the spreads whose tails are cut off.
-
-    Returns
-    -------
-    tuple of str
-        Zero to three sentences.
+    verdict : Verdict
+        With what was observed.
+    unfailed : bool
+        Say what is left open where no failure was seen.
     """
+    is_sample = verdict.basis.kind == "sample"
     lines = (
-        no_failure_seen(failures, trials, confidence),
-        repeated_looks(looks),
-        truncated_spreads(truncated),
+        no_failure_seen(verdict.failures, verdict.trials, verdict.confidence) if unfailed and is_sample else "",
+        repeated_looks(verdict.looks) if is_sample else "",
+        *(f"Advice: {line}." for line in verdict.advice),
+        truncated_spreads(verdict.truncated),
+        few_values(verdict.few_values) if is_sample else "",
     )
-    return tuple(line for line in lines if line)
+    return tuple(filter(None, lines))
+
+
+def few_listed(values: Mapping[str, int], at_least: float) -> tuple[str, ...]:
+    """Return the spreads that draw from too few listed values to tell of the fraction that a claim lets fail."""
+    fraction = _statistics.complement(at_least)
+    few = {name: count for name, count in values.items() if count * fraction < VALUES_IN_THE_TAIL}
+    return tuple(f"{name} ({grouped(count)} value{'' if count == 1 else 's'})" for name, count in few.items())
+
+
+def few_values(few: Sequence[str]) -> str:
+    """Name the spreads that draw from few observed values; empty if there is none."""
+    if not few:
+        return ""
+    return (
+        f"Drawn from few observed values, nothing beyond them was tried and their tails are not known: {listed(few)}."
+    )
 
 
 def no_failure_seen(failures: int, trials: int, confidence: float) -> str:

@@ -5,8 +5,8 @@ from __future__ import annotations
 from collections.abc import Sequence
 
 EXIT_CODES = (
-    "Exit codes: 0 pass, 1 fail, 2 inconclusive, 3 wrong description or usage, 4 interrupted, 5 a defect in windage, "
-    "6 nothing came out, since it could not be written."
+    "Exit codes: 0 pass, 1 fail, 2 inconclusive (or nothing varies), 3 wrong description or usage, 4 interrupted, "
+    "5 a defect in windage, 6 nothing came out, since it could not be written."
 )
 REPLAY_CODES = (
     "Exit codes: 0 replayed, 3 wrong description or usage, 4 interrupted, 5 a defect in windage, "
@@ -51,7 +51,7 @@ RUN = _help(
 
     A trial passes if it finishes and meets every requirement. Fix the number of trials beforehand: running
     again and again until the verdict is the wanted one does not keep the confidence. Ctrl-C, or a request to
-    terminate, keeps what is done: the finished trials are judged, marked as interim, and the exit code is 4.
+    terminate, keeps what is done: it is printed as interim, neither a pass nor a fail, and the exit code is 4.
 
     windage replay shows a failing trial; in continuous integration the exit code decides.
     """,

@@ -96,25 +96,19 @@ def on_error_stream(wanted: bool) -> Iterator[None]:
 def _print_short(outcome: Outcome, verdict: Verdict) -> None:
     """Print a verdict in one line."""
     counts = f"{plainly_grouped(len(outcome.failures))} of {plainly_grouped(outcome.trials)} trials failed"
-    interim = "INTERIM " if outcome.interrupted else ""
     # The title comes last: no word of it can pass for the verdict.
     title = f" Study: {outcome.study.title}" if outcome.study.title else ""
-    say(f"{interim}{verdict.headline} {counts}.{title}", _STYLES[verdict.decision])
+    say(f"{verdict.headline} {counts}.{title}", _STYLES[verdict.decision])
 
 
 def print_verdict(outcome: Outcome, verdict: Verdict, short: bool = False) -> None:
-    """Print a verdict and hints, or one line; the verdict of a stopped run is marked as interim."""
+    """Print the counts, the verdict and hints, or one line."""
     if short:
         _print_short(outcome, verdict)
         return
     say(repr(outcome))
     say()
     head, _, body = str(verdict).partition("\n")
-    if outcome.interrupted:
-        asked = f"{plainly_grouped(outcome.trials)} of {plainly_grouped(outcome.requested)} trials"
-        say(f"Stopped after {asked}. What follows is interim and no verdict: the number of trials was")
-        say("not fixed beforehand. Run the study again to its end.")
-        head = f"INTERIM {head}"
     say(head, _STYLES[verdict.decision])
     say(body)
     _print_hints(outcome)
@@ -129,7 +123,7 @@ def _print_hints(outcome: Outcome) -> None:
         if not rows:
             continue
         name = "failing" if result == FAILING else f"the slack of: {result}"
-        say(f"First hint, rank correlation of drawn parameters with {name}")
+        say(f"First hint, rank correlation of drawn parameters with {name} (clear among {len(drivers)})")
         for row in rows:
             say(f"  {row.correlation:+.2f}  ({row.low:+.2f} .. {row.high:+.2f})  {row.parameter}")
     if drivers.note and outcome.trials:
@@ -294,6 +288,8 @@ def run_report(outcome: Outcome, verdict: Verdict, source: Path, code: int) -> d
                 "rank_correlation": row.correlation,
                 "low": row.low,
                 "high": row.high,
+                "p_value": row.p_value,
+                "clear": row.is_clear,
             }
             for row in outcome.drivers()
         ],

@@ -87,6 +87,9 @@ class Normal(Distribution):
         # The mean, or the bound nearest to it where the mean itself is cut off.
         return float(min(max(self.mean, self.low), self.high))
 
+    def _varies(self) -> bool:
+        return self.sd > 0.0
+
     def _engine_form(self) -> tuple[str, list[float]]:
         return "normal", [self.mean, self.sd, self.low, self.high]
 
@@ -175,6 +178,9 @@ class LogNormal(Distribution):
 
     def _excludes_low(self) -> bool:
         return True
+
+    def _varies(self) -> bool:
+        return self.sd_log > 0.0
 
     def _engine_form(self) -> tuple[str, list[float]]:
         return "lognormal", [self.median, self.sd_log]

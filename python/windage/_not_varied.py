@@ -1,13 +1,18 @@
-"""Which numbers of a loop are held at one value: printed with every verdict."""
+"""What a verdict has to name of a study: what was drawn, what was held at one value, and what the trials are."""
 
 from __future__ import annotations
 
-from collections.abc import Iterator
+from collections.abc import Iterator, Mapping, Sequence
 from typing import Any, TypedDict
 
+from ._basis import SAMPLE, Basis
+from ._describe import DrawnColumn
 from ._descriptions import Description, FrozenMapping, arguments
+from ._distributions import Samples
 from ._loop import Loop
 from ._numbers import Spread
+from ._shared_numbers import Column, Shared
+from ._time_functions import Noise
 
 
 class Cautions(TypedDict):
@@ -17,6 +22,44 @@ class Cautions(TypedDict):
     spreads: tuple[str, ...]
     truncated: tuple[str, ...]
     title: str
+    listed_values: Mapping[str, int]
+    advice: tuple[str, ...]
+    basis: Basis
+
+
+def basis_of(loop: Loop, columns: Sequence[DrawnColumn]) -> Basis:
+    """Return what the trials are: a sample, the list of a table's rows, or one trial that nothing changes.
+
+    Parameters
+    ----------
+    loop : Loop
+        With the columns of the study's table bound.
+    columns : sequence of DrawnColumn
+        The drawn parameters.
+    """
+    spreads = [column.spread for column in columns]
+    rows = [len(spread.rows) for spread in spreads if isinstance(spread, Column) and spread.in_order and spread.rows]
+    if rows:
+        return Basis(kind="list", planned=rows[0])
+    is_drawn = any(spread._varies() for spread in spreads)
+    return SAMPLE if is_drawn or _has_noise(loop) else Basis(kind="one trial")
+
+
+def listed_values(columns: Sequence[DrawnColumn]) -> dict[str, int]:
+    """Return the drawn parameters that take observed values, and how many different ones each has."""
+    observed = [(column.name, column.spread) for column in columns if _is_observed(column.spread)]
+    return {name: len(set(spread._values() or ())) for name, spread in observed}
+
+
+def _is_observed(spread: Spread) -> bool:
+    inner = spread.spread if isinstance(spread, Shared) else spread
+    return isinstance(inner, Samples | Column)
+
+
+def _has_noise(loop: Loop) -> bool:
+    noises = [part for part in loop.disturbances.values() if isinstance(part, Noise)]
+    sizes = [loop.sensor.noise, *(getattr(noise, noise.engine_order[0]) for noise in noises)]
+    return any(isinstance(size, Spread) or size != 0.0 for size in sizes)
 
 
 def not_varied(loop: Loop) -> tuple[str, ...]:

@@ -49,6 +49,10 @@ class Spread(Description, ABC):
         """Tell whether the lower bound itself is never drawn."""
         return False
 
+    def _varies(self) -> bool:
+        """Tell whether more than one number can be drawn."""
+        return bool(self.low < self.high)
+
     def _is_truncated(self) -> bool:
         """Tell whether tails were cut off."""
         return False

@@ -11,8 +11,10 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 from numpy.typing import NDArray
 
+from ._basis import SAMPLE, Basis
 from ._describe import Described
 from ._errors import DescriptionError, suggestion
+from ._looks import look
 from ._numbers import checked_integer
 from ._numerics import UNEXAMINED
 from ._portable import Portable, freeze
@@ -26,6 +28,7 @@ if TYPE_CHECKING:
     from ._audit_trials import Rows
     from ._drivers import Drivers
     from ._measures import Requirement
+    from ._not_varied import Cautions
     from ._plot_style import StudyFigure
     from ._requirement_table import Line
     from ._study import Study
@@ -33,6 +36,7 @@ if TYPE_CHECKING:
 
 Values = NDArray[np.float64]
 STATUS = ("finished", "diverged")
+ALL_THE_SAME = "all trials measured the same; see whether any spread or noise reaches what is measured"
 
 
 class Outcome(Portable):
@@ -172,8 +176,9 @@ class Outcome(Portable):
         Returns
         -------
         Verdict
-            Pass, fail or inconclusive, by exact one-sided Clopper-Pearson bounds. Judging again after
-            `extend` counts as a further look, and the verdict says so.
+            Pass, fail or inconclusive, by exact one-sided Clopper-Pearson bounds. Another number of trials of
+            the same study, by `extend`, a longer run or a tally, is a further look, and the verdict says so.
+            Of a run that was stopped it is inconclusive: the number of trials was not fixed beforehand.
         """
         from windage._verdict import judge
 
@@ -184,7 +189,7 @@ class Outcome(Portable):
             at_least,
             confidence,
             requirement=joint_requirement(self.study.requirements),
-            **self.study.cautions(),
+            **self._cautions(),
             looks=self._look(),
             numerics=self.audit().numerics if audit else UNEXAMINED,
         )
@@ -204,7 +209,7 @@ class Outcome(Portable):
             len(self.diverged),
             at_least,
             confidence,
-            **self.study.cautions(),
+            **self._cautions(),
             looks=self._look(),
             numerics=self.audit().by_requirement if audit else dict.fromkeys(missed, UNEXAMINED),
         )
@@ -231,7 +236,10 @@ class Outcome(Portable):
                 mine.trials + trials,
             )
             described = self.study._run_description if more.trials else self._described
-            return Outcome(self.study, described, joined, self.first, frozenset(self._judged))
+            # Another number than was asked for is chosen with what was seen of a run that was stopped.
+            is_as_planned = not self.interrupted or self.trials + trials == self.requested
+            judged = self._judged if is_as_planned else self._judged | {self.trials}
+            return Outcome(self.study, described, joined, self.first, frozenset(judged))
 
     def table(self) -> Any:
         """Return a `pyarrow.Table`, one row a trial.
@@ -371,9 +379,21 @@ class Outcome(Portable):
         rows = rows_of(self.study, self._described, self._columns, trials)
         return rows, scales_for(self.study, self._described, self._columns)
 
+    def _cautions(self) -> Cautions:
+        """Return what a verdict has to name of the study and of this run of it."""
+        found = self.study.cautions()
+        if self.interrupted:
+            found["basis"] = Basis(kind="interim", planned=self.requested)
+        values = self._columns.measures
+        if self.trials > 1 and found["basis"] == SAMPLE and bool((values[:, 1:] == values[:, :1]).all()):
+            found["advice"] += (ALL_THE_SAME,)
+        return found
+
     def _look(self) -> int:
-        """Count this judgement: at a number of trials judged before it is no further look."""
-        self._judged.add(self.trials)
+        """Count this judgement; one that decides nothing is no look."""
+        if self.interrupted:
+            return max(1, len(self._judged))
+        self._judged |= look(self.study.digest, self.first, self.trials, self._judged)
         return len(self._judged)
 
 

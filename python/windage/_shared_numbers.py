@@ -53,6 +53,9 @@ class Shared(Spread):
     def _excludes_low(self) -> bool:
         return bool(self.spread._excludes_low())
 
+    def _varies(self) -> bool:
+        return bool(self.spread._varies())
+
     def _is_truncated(self) -> bool:
         return bool(self.spread._is_truncated())
 

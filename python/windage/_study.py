@@ -19,7 +19,7 @@ from ._errors import DescriptionError
 from ._loop import Loop
 from ._measures import Measure, Requirement
 from ._memory import check_memory
-from ._not_varied import Cautions, not_varied
+from ._not_varied import Cautions, basis_of, listed_values, not_varied
 from ._numbers import Spread, checked_choice, checked_integer, high_of, low_of, nominal_of
 from ._outcome import Outcome
 from ._replay import Replay
@@ -260,13 +260,16 @@ class Study(Description):
         return self.with_(controller=controller)
 
     def cautions(self) -> Cautions:
-        """Return what a verdict has to name: numbers held at one value, spreads, truncated spreads."""
+        """Return what a verdict has to name: what is drawn and how, what is held, what the trials are."""
         columns = self._describe(1).columns
         return Cautions(
             not_varied=not_varied(self.loop),
             spreads=tuple(f"{c.name}: {c.spread!r}" for c in columns),
             truncated=tuple(c.name for c in columns if c.spread._is_truncated()),
             title=self.title,
+            listed_values=listed_values(columns),
+            advice=tuple(self.warnings()),
+            basis=basis_of(self._bound[0], columns),
         )
 
     def __eq__(self, other: object) -> bool:

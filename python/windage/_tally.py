@@ -11,7 +11,9 @@ import numpy as np
 from numpy.typing import NDArray
 
 from ._audit_trials import Watch
+from ._basis import Basis
 from ._descriptions import FrozenMapping
+from ._looks import look
 from ._numerics import UNEXAMINED
 from ._outcome import Outcome, joint_requirement
 from ._portable import Portable, freeze
@@ -20,6 +22,7 @@ from ._text_table import plainly_grouped, text_table
 
 if TYPE_CHECKING:
     from ._audit import Audit
+    from ._not_varied import Cautions
     from ._study import Study
     from ._verdict import Verdict, VerdictTable
 
@@ -84,7 +87,8 @@ class Tally(Portable):
             at_least,
             confidence,
             requirement=joint_requirement(self.study.requirements),
-            **self.study.cautions(),
+            **self._cautions(),
+            looks=self._look(),
             numerics=self.audit().numerics if audit else UNEXAMINED,
         )
 
@@ -97,8 +101,24 @@ class Tally(Portable):
         counts = dict(self.requirement_failures)
         numerics = self.audit().by_requirement if audit else dict.fromkeys(counts, UNEXAMINED)
         return judge_many(
-            counts, self.trials, self.diverged, at_least, confidence, **self.study.cautions(), numerics=numerics
+            counts,
+            self.trials,
+            self.diverged,
+            at_least,
+            confidence,
+            **self._cautions(),
+            looks=self._look(),
+            numerics=numerics,
         )
+
+    def _cautions(self) -> Cautions:
+        found = self.study.cautions()
+        if self.trials < self.requested:
+            found["basis"] = Basis(kind="interim", planned=self.requested)
+        return found
+
+    def _look(self) -> int:
+        return 1 if self.trials < self.requested else len(look(self.study.digest, 0, self.trials))
 
     def __repr__(self) -> str:
         asked = f" (stopped; {plainly_grouped(self.requested)} asked for)" if self.trials < self.requested else ""

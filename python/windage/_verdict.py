@@ -3,41 +3,27 @@
 One rule decides everything here. A claim "at least P of all trials pass, at confidence C" is a *pass* if the
 exact one-sided lower Clopper-Pearson bound at confidence C reaches P, a *fail* if the one-sided upper bound
 at the same confidence stays below P, and *inconclusive* otherwise. Whatever the true pass probability, a
-wrong verdict has at most the probability 1 - C, provided that the number of trials was fixed beforehand.
+wrong verdict has at most the probability 1 - C, provided that the number of trials was fixed beforehand. What
+holds for trials of another kind is in `windage._basis`.
 """
 
 from __future__ import annotations
 
-import textwrap
 from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import asdict, dataclass
-from typing import Any, Literal
+from math import nextafter
+from typing import Any
 
 from windage import _statistics
-from windage._cautions import (
-    REPEATED_LOOKS,
-    grouped,
-    listed,
-    no_failure_seen,
-    percent,
-    percent_above,
-    percent_below,
-    percent_near,
-    repeated_looks,
-    situational_cautions,
-    standing_cautions,
-    trials_in_words,
-    truncated_spreads,
-)
+from windage import _verdict_layout as layout
+from windage import _verdict_words as words
+from windage._basis import SAMPLE, Basis, Decision, find
+from windage._cautions import few_listed
 from windage._errors import DescriptionError, suggestion
 from windage._evidence import checked_count, checked_counts, checked_probability
 from windage._numerics import UNKNOWN, Numerics
 
-Decision = Literal["pass", "fail", "inconclusive"]
-
-METHOD = "Clopper-Pearson, exact, one-sided"
 ALL_REQUIREMENTS = "all requirements met"
-WIDTH = 100
 MOST_LOOKS = 10**9
 
 
@@ -68,8 +54,15 @@ class Verdict:
         What a trial has to meet.
     not_varied, spreads, truncated : tuple of str
         Numbers held at one value, spreads drawn from, and those spreads whose tails are cut off.
+    few_values : tuple of str
+        Spreads that draw from too few observed values to tell of the fraction that may fail.
+    advice : tuple of str
+        What looks wrong with the study but is allowed.
     looks : int
-        Times these trials have been judged, this one included.
+        Numbers of trials at which the study has been judged, this one included.
+    basis : Basis
+        What the trials are: a sample, a list, one trial repeated, or those of a run that was stopped. Only for a
+        sample do the bounds have a confidence.
     family : int
         Number of claims judged together; 1 for a claim by itself.
     family_confidence : float
@@ -99,36 +92,31 @@ class Verdict:
     family_confidence: float
     numerics: Numerics = UNKNOWN
     title: str = ""
+    few_values: tuple[str, ...] = ()
+    advice: tuple[str, ...] = ()
+    basis: Basis = SAMPLE
 
     @property
     def headline(self) -> str:
         """The decision and the claim in one sentence."""
-        return _plain(_headline(self))
+        return layout.plain(words.headline(self))
 
     @property
     def cautions(self) -> tuple[str, ...]:
         """Sentences on what the verdict does not cover; those that this outcome calls for come first."""
-        situation = situational_cautions(self.failures, self.trials, self.confidence, self.looks, self.truncated)
-        numerical = (self.numerics.caution,) if self.numerics.caution else ()
-        return (*numerical, *situation, *standing_cautions(self.diverged, self.not_varied, self.looks))
+        return words.cautions_of(self)
 
     def __bool__(self) -> bool:
         return self.decision == "pass"
 
     def __str__(self) -> str:
-        lines = _wrapped(_headline(self), indent=2)
-        for label, text in _rows(self):
-            lines += _labelled(label, text)
-        return _finished([*lines, *_cautions_as_text(self.cautions)])
+        lines = layout.wrapped(words.headline(self), indent=2)
+        for label, text in words.rows_of(self):
+            lines += layout.labelled(label, text)
+        return layout.finished([*lines, *layout.cautions_as_text(self.cautions)])
 
     def _repr_html_(self) -> str:
-        rows = "".join(
-            f"<tr><th style='text-align:left'>{_escaped(label)}</th>"
-            f"<td style='text-align:left'>{_escaped(text)}</td></tr>"
-            for label, text in _rows(self)
-        )
-        head = f"<p><strong>{_escaped(_headline(self))}</strong></p>"
-        return f"<div>{head}<table>{rows}</table>{_cautions_as_html(self.cautions)}</div>"
+        return layout.html_of_rows(words.headline(self), words.rows_of(self), self.cautions)
 
     def to_dict(self) -> dict[str, Any]:
         """Return the verdict as plain data for JSON: the attributes, the method and the cautions.
@@ -140,7 +128,8 @@ class Verdict:
         """
         plain = {key: list(item) if isinstance(item, tuple) else item for key, item in asdict(self).items()}
         plain["estimate"] = self.estimate if self.trials else None
-        return {**plain, "method": METHOD, "cautions": [_plain(line) for line in self.cautions]}
+        cautions = [layout.plain(line) for line in self.cautions]
+        return {**plain, "method": words.METHODS[self.basis.kind], "cautions": cautions}
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -181,41 +170,17 @@ class VerdictTable:
     @property
     def cautions(self) -> tuple[str, ...]:
         """Sentences on what the verdicts do not cover, each once; "no failure seen" with its requirement."""
-        unfailed = [
-            f"{verdict.requirement}: {no_failure_seen(0, verdict.trials, verdict.confidence)}"
-            for verdict in self.verdicts
-            if verdict.trials and not verdict.failures
-        ]
-        first = self.verdicts[0]
-        numerical = list(dict.fromkeys(verdict.numerics.caution for verdict in self.verdicts))
-        situation = [*numerical, repeated_looks(first.looks), truncated_spreads(first.truncated)]
-        standing = standing_cautions(first.diverged, first.not_varied, first.looks)
-        return (*unfailed, *filter(None, situation), *standing)
+        return words.cautions_of_table(self)
 
     def __str__(self) -> str:
-        header, *body = _table_cells(self)
-        widths = [max(len(row[column]) for row in (header, *body)) for column in range(len(header))]
-        lines = _wrapped(_table_headline(self), indent=2)
-        lines += [
-            ("  " + "  ".join(cell.ljust(w) for cell, w in zip(row, widths, strict=True))).rstrip()
-            for row in (header, *body)
-        ]
+        lines = layout.wrapped(words.table_headline(self), indent=2) + layout.aligned(words.table_cells(self))
         text = self.verdicts[0].numerics.text
-        lines += _labelled("Numerics", text) if text else []
-        return _finished([*lines, *_cautions_as_text(self.cautions)])
+        lines += layout.labelled("Numerics", text) if text else []
+        return layout.finished([*lines, *layout.cautions_as_text(self.cautions)])
 
     def _repr_html_(self) -> str:
-        header, *body = _table_cells(self, shortened=False)
-        head = "".join(f"<th style='text-align:left'>{_escaped(cell)}</th>" for cell in header)
-        rows = "".join(
-            "<tr>" + "".join(f"<td style='text-align:left'>{_escaped(cell)}</td>" for cell in row) + "</tr>"
-            for row in body
-        )
-        title = f"<p><strong>{_escaped(_table_headline(self))}</strong></p>"
-        return (
-            f"<div>{title}<table><thead><tr>{head}</tr></thead><tbody>{rows}</tbody></table>"
-            f"{_cautions_as_html(self.cautions)}</div>"
-        )
+        cells = words.table_cells(self, shortened=False)
+        return layout.html_of_table(words.table_headline(self), cells, self.cautions)
 
     def to_dict(self) -> dict[str, Any]:
         """Return the table as plain data for JSON."""
@@ -238,7 +203,10 @@ def judge(
     spreads: Sequence[str] = (),
     truncated: Sequence[str] = (),
     title: str = "",
+    listed_values: Mapping[str, int] | None = None,
+    advice: Sequence[str] = (),
     looks: int = 1,
+    basis: Basis = SAMPLE,
     numerics: Numerics = UNKNOWN,
 ) -> Verdict:
     """Judge the claim that at least a stated fraction of all trials passes.
@@ -261,9 +229,15 @@ def judge(
         Numbers held at one value, spreads drawn from, and spreads with cut tails: printed with the verdict.
     title : str
         Of the study, printed with the verdict.
+    listed_values : mapping of str to int
+        Spreads that draw from observed values, and how many values each has.
+    advice : sequence of str
+        What looks wrong with the study but is allowed: printed with the verdict.
     looks : int
         Times these trials have been judged, this one included; 1 or more. More than one voids the confidence,
         and the verdict says so.
+    basis : Basis
+        What the trials are; by default independent ones, their number fixed beforehand.
     numerics : Numerics
         What is known of the numerical error behind the counts; by default nothing, and nothing is said of it.
 
@@ -301,11 +275,14 @@ def judge(
         not_varied=_checked_names("not_varied", not_varied),
         spreads=_checked_names("spreads", spreads),
         truncated=_checked_names("truncated", truncated),
+        few_values=few_listed(listed_values or {}, at_least),
+        advice=_checked_names("advice", advice),
         title=title,
         looks=checked_count("looks", looks, 1, MOST_LOOKS),
         family=1,
         family_confidence=confidence,
         numerics=numerics,
+        basis=basis,
     )
 
 
@@ -320,7 +297,10 @@ def judge_many(
     spreads: Sequence[str] = (),
     truncated: Sequence[str] = (),
     title: str = "",
+    listed_values: Mapping[str, int] | None = None,
+    advice: Sequence[str] = (),
     looks: int = 1,
+    basis: Basis = SAMPLE,
     numerics: Mapping[str, Numerics] | None = None,
 ) -> VerdictTable:
     """Judge several requirements, each by itself, so that all verdicts hold together at one confidence.
@@ -335,7 +315,7 @@ def judge_many(
         Pass probability claimed, one for all or one a requirement.
     confidence : float
         Confidence that no verdict of the table is wrong, 0.5 up to but not including 1.
-    not_varied, spreads, truncated, title, looks
+    not_varied, spreads, truncated, title, listed_values, advice, looks, basis
         As for `judge`.
     numerics : mapping of str to Numerics, optional
         What is known of the numerical error behind the count of each requirement.
@@ -361,14 +341,13 @@ def judge_many(
         raise DescriptionError("failures", failures, "the failed trials of at least one requirement")
     limits = _limits(at_least, failures)
     confidence = _checked_confidence(confidence)
-    each = 1.0 - _statistics.complement(confidence) / len(failures)
-    # A family of one is the plain claim; the detour through the risk could change the last digit.
-    each = confidence if len(failures) == 1 else checked_probability("confidence", each)
+    each = _shared(confidence, len(failures))
     looks = checked_count("looks", looks, 1, MOST_LOOKS)
     names = {
         "not_varied": _checked_names("not_varied", not_varied),
         "spreads": _checked_names("spreads", spreads),
         "truncated": _checked_names("truncated", truncated),
+        "advice": _checked_names("advice", advice),
     }
     verdicts = []
     for requirement, failed in failures.items():
@@ -386,6 +365,8 @@ def judge_many(
                 family=len(failures),
                 family_confidence=confidence,
                 numerics=(numerics or {}).get(requirement, UNKNOWN),
+                few_values=few_listed(listed_values or {}, limits[requirement]),
+                basis=basis,
                 **names,
             )
         )
@@ -403,48 +384,56 @@ def _judged(
     not_varied: tuple[str, ...],
     spreads: tuple[str, ...],
     truncated: tuple[str, ...],
+    few_values: tuple[str, ...],
+    advice: tuple[str, ...],
     title: str,
     looks: int,
     family: int,
     family_confidence: float,
     numerics: Numerics,
+    basis: Basis,
 ) -> Verdict:
     """Decide on checked arguments: against numerical error on either side."""
     most = failures + checked_count("numerics.hidden", numerics.hidden, 0, trials - failures)
     fewest = failures - checked_count("numerics.doubtful", numerics.doubtful, 0, failures)
-    lower = _statistics.clopper_pearson_lower(most, trials, confidence)
-    upper = _statistics.clopper_pearson_upper(fewest, trials, confidence)
-    decision: Decision = "inconclusive"
-    if numerics.is_open:
-        pass
-    elif _statistics.claim_demonstrated(most, trials, at_least, confidence):
-        decision = "pass"
-        # The decision compares tail probabilities. Where the bound equals the limit its last digit may fall
-        # below it; reported is what was decided.
-        lower = max(lower, at_least)
-    elif _statistics.claim_refuted(fewest, trials, at_least, confidence):
-        decision = "fail"
+    found = find(basis, fewest, most, failures, trials, at_least, confidence)
     return Verdict(
-        decision=decision,
+        decision="inconclusive" if numerics.is_open else found.decision,
         at_least=at_least,
         confidence=confidence,
         trials=trials,
         failures=most,
         diverged=diverged,
-        lower_bound=lower,
-        upper_bound=upper,
+        lower_bound=found.lower,
+        upper_bound=found.upper,
         estimate=(trials - failures) / trials if trials else float("nan"),
-        further_trials=_statistics.further_trials(failures, trials, at_least, confidence),
+        further_trials=found.further,
         requirement=requirement,
         not_varied=not_varied,
         spreads=spreads,
         truncated=truncated,
+        few_values=few_values,
+        advice=advice,
         title=title,
         looks=looks,
         family=family,
         family_confidence=family_confidence,
         numerics=numerics,
+        basis=basis,
     )
+
+
+def _shared(confidence: float, count: int) -> float:
+    """Return the confidence of each of several verdicts whose risks add up to that of all."""
+    risk = _statistics.complement(confidence) / count
+    # A family of one is the plain claim; the detour through the risk could change the last digit.
+    each = confidence if count == 1 else 1.0 - risk
+    while each < 1.0 and _statistics.complement(each) > risk:
+        each = nextafter(each, 1.0)
+    if each == 1.0:
+        expected = f"a confidence whose risk {count} verdicts can share in double precision"
+        raise DescriptionError("confidence", confidence, expected)
+    return each
 
 
 def _checked_confidence(confidence: object) -> float:
@@ -478,133 +467,6 @@ def _limits(at_least: float | Mapping[str, float], failures: Mapping[str, int]) 
             known = suggestion(name, failures)
             raise DescriptionError("at_least", name, "a requirement that was judged", known)
     return {name: checked_probability(f"at_least[{name!r}]", at_least[name]) for name in failures}
-
-
-def _headline(verdict: Verdict) -> str:
-    at_least, sure = percent(verdict.at_least), f"at confidence {percent(verdict.confidence)}"
-    if verdict.looks > 1:
-        sure += f" for a single look, but this is look {grouped(verdict.looks)}"
-    if verdict.decision == "pass":
-        return f"PASS: at least {at_least} of all trials pass, {sure}."
-    if verdict.decision == "fail":
-        return f"FAIL: fewer than {at_least} of all trials pass, {sure}."
-    run = trials_in_words(verdict.trials)
-    return f"INCONCLUSIVE: {run} cannot tell whether at least {at_least} of all trials pass, {sure}."
-
-
-def _rows(verdict: Verdict) -> list[tuple[str, str]]:
-    """Return the labelled lines between the headline and the cautions."""
-    rows = [("Study", verdict.title)] if verdict.title else []
-    rows += [("Requirement", verdict.requirement), ("Bound", _bound(verdict)), ("Method", METHOD)]
-    if verdict.family > 1:
-        together = f"{grouped(verdict.family)} claims hold together at {percent(verdict.family_confidence)}"
-        rows.append(("Correction", f"Bonferroni: {together}"))
-    rows.append(("Observed", _observed(verdict)))
-    if verdict.numerics.text:
-        rows.append(("Numerics", verdict.numerics.text))
-    if verdict.spreads:
-        rows.append(("Spreads", listed(verdict.spreads)))
-    if verdict.decision == "inconclusive":
-        rows.append(("To decide", _to_decide(verdict)))
-    return rows
-
-
-def _bound(verdict: Verdict) -> str:
-    if verdict.decision == "pass":
-        return f"at least {percent_below(verdict.lower_bound)} of all trials pass"
-    if verdict.decision == "fail":
-        return f"at most {percent_above(verdict.upper_bound)} of all trials pass"
-    low, high = percent_below(verdict.lower_bound), percent_above(verdict.upper_bound)
-    return f"at least {low} and at most {high} pass; each bound by itself at {percent(verdict.confidence)}"
-
-
-def _observed(verdict: Verdict) -> str:
-    run = trials_in_words(verdict.trials)
-    if not verdict.trials:
-        return run
-    seen = verdict.failures - verdict.numerics.hidden
-    failed = f"{grouped(seen)} of {run} failed, {grouped(verdict.diverged)} of them diverged"
-    return f"{failed}; {percent_near(verdict.estimate)} passed"
-
-
-def _to_decide(verdict: Verdict) -> str:
-    # With several looks the cautions carry this sentence already.
-    warning = "" if verdict.looks > 1 else f" {REPEATED_LOOKS}"
-    further = verdict.further_trials
-    if verdict.numerics.is_open or (further == 0 and (verdict.numerics.hidden or verdict.numerics.doubtful)):
-        return f"the numerical error has to be known better; see below.{warning}"
-    if further is None:
-        return f"the observed rate is too near the limit for any practicable number of trials.{warning}"
-    ending = "a pass" if not verdict.failures or verdict.estimate >= verdict.at_least else "a fail"
-    rate = "without any failure" if not verdict.failures else "with failures at the observed rate"
-    total = grouped(verdict.trials + further)
-    return (
-        f"about {grouped(further)} further trials ({total} in all) {rate} would make it {ending}; "
-        f"that is a projection, not a promise.{warning}"
-    )
-
-
-def _table_headline(table: VerdictTable) -> str:
-    together, title = percent(table.confidence), table.verdicts[0].title
-    of = f"Study {title}: " if title else ""
-    if len(table) == 1:
-        return f"{of}1 requirement, judged at confidence {together} ({METHOD})."
-    each = percent(table.verdicts[0].confidence)
-    return (
-        f"{of}{grouped(len(table))} requirements, each judged by itself; all verdicts hold together at "
-        f"confidence {together} ({table.correction} correction: each at {each}; {METHOD})."
-    )
-
-
-def _table_cells(table: VerdictTable, shortened: bool = True) -> list[tuple[str, ...]]:
-    rows: list[tuple[str, ...]] = [("Verdict", "Requirement", "Claimed", "Failed", "Pass bounds")]
-    for verdict in table:
-        name = verdict.requirement
-        rows.append(
-            (
-                verdict.decision.upper(),
-                textwrap.shorten(name, 34, placeholder="...") if shortened else name,
-                percent(verdict.at_least),
-                f"{grouped(verdict.failures)}/{grouped(verdict.trials)}",
-                f"{percent_below(verdict.lower_bound)} .. {percent_above(verdict.upper_bound)}",
-            )
-        )
-    return rows
-
-
-def _wrapped(text: str, indent: int, first: str = "") -> list[str]:
-    return textwrap.wrap(text, WIDTH, initial_indent=first, subsequent_indent=" " * indent, break_on_hyphens=False)
-
-
-def _labelled(label: str, text: str) -> list[str]:
-    return _wrapped(text, indent=15, first=f"  {label:<13}")
-
-
-def _cautions_as_text(cautions: Sequence[str]) -> list[str]:
-    lines = ["Read with care:"]
-    for caution in cautions:
-        lines += _wrapped(caution, indent=4, first="  - ")
-    return lines
-
-
-def _cautions_as_html(cautions: Sequence[str]) -> str:
-    items = "".join(f"<li>{_escaped(line)}</li>" for line in cautions)
-    return f"<p>Read with care:</p><ul>{items}</ul>"
-
-
-def _escaped(text: str) -> str:
-    import html  # costs import time and is seldom needed
-
-    return html.escape(text, quote=True)
-
-
-def _plain(text: str) -> str:
-    """Replace the no-break spaces, which have done their work once the lines are broken."""
-    return text.replace("\u00a0", " ")
-
-
-def _finished(lines: Sequence[str]) -> str:
-    return _plain("\n".join(lines))
 
 
 __all__ = ["Decision", "Verdict", "VerdictTable", "judge", "judge_many"]

@@ -128,7 +128,7 @@ def test_looks_count_numbers_of_trials_judged() -> None:
     assert outcome.verdict(0.5).looks == outcome.verdict(0.9, 0.99).looks == 1
     further = outcome.extend(50, progress=False)
     assert further.verdict(0.5).looks == 2
-    assert outcome.verdict(0.5).looks == 1
+    assert outcome.verdict(0.5).looks == 2
 
 
 def test_verdict_names_what_was_held_and_what_was_drawn() -> None:

@@ -209,12 +209,12 @@ def test_text_fits_a_terminal_and_carries_every_standing_caution(verdict: Verdic
     assert "\u00a0" not in text
     assert "Clopper-Pearson, exact, one-sided" in text
     assert text.startswith(verdict.decision.upper() + ":")
-    for caution in standing_cautions(verdict.diverged, verdict.not_varied, verdict.looks):
+    for caution in standing_cautions(verdict):
         assert _flat(caution.replace("\u00a0", " ")) in _flat(text)
 
 
 def test_standing_cautions_are_at_most_six_and_name_what_a_verdict_does_not_cover() -> None:
-    lines = standing_cautions(3, ["drag", "sample period"], 1)
+    lines = standing_cautions(judge(3, 100, 3, 0.9, 0.9, not_varied=["drag", "sample period"]))
     assert len(lines) <= 6
     text = " ".join(lines)
     for part in (
@@ -222,7 +222,7 @@ def test_standing_cautions_are_at_most_six_and_name_what_a_verdict_does_not_cove
         "stated spreads",
         "Not varied: drag, sample period.",
         "Diverged trials count as failures (3 here)",
-        "looks at these trials so far: 1",
+        "holds for one look, at a number of trials that was fixed beforehand",
         "Hardware and software faults",
         "evidence, not permission",
         "local codes",
@@ -342,12 +342,12 @@ def test_each_requirement_is_judged_at_the_corrected_confidence() -> None:
         assert (verdict.family, verdict.family_confidence) == (3, 0.95)
         alone = pass_probability_bounds(failures[verdict.requirement], 4000, 1 - 0.05 / 3)
         assert verdict.lower_bound == pytest.approx(alone.lower, rel=1e-12)
-        assert "Bonferroni: 3 claims hold together at 95 %" in _flat(verdict)
+        assert "Bonferroni: 3 verdicts hold together at 95 %" in _flat(verdict)
     assert table["rms torque <= 12"] is table[1]
     assert len(table) == 3
     text = str(table)
     assert max(len(line) for line in text.splitlines()) <= 100
-    assert "Bonferroni correction: each at 98.3333 %" in _flat(text)
+    assert "Bonferroni correction: each verdict, and each bound by itself, at 98.3333 %" in _flat(text)
     assert re.search(r"FAIL +overshoot <= 0.1 +99 % +90/4 000", text)
     assert json.loads(json.dumps(table.to_dict(), allow_nan=False))["correction"] == "Bonferroni"
 

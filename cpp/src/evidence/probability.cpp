@@ -31,7 +31,7 @@ double complement(double probability) {
 void check_probability(const char* field, double value) {
     // The comparison also refuses NaN. Certainty (0 or 1) can be claimed by no number of trials.
     if (!(value >= smallest_probability && value <= 1.0 - smallest_probability))
-        refuse(field, value, "a number above 0 and below 1, not nearer than 1e-12 to either");
+        refuse(field, value, "a number above 0 and below 1, not nearer than 1e-15 to either");
 }
 
 void check_count(const char* field, std::int64_t value, std::int64_t least, std::int64_t most) {

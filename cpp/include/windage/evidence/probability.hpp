@@ -14,7 +14,7 @@ namespace windage::evidence {
 inline constexpr std::int64_t largest_count = std::int64_t{1} << 53;
 
 /// Smallest probability, and smallest distance from certainty, that a claim may state.
-inline constexpr double smallest_probability = 1e-12;
+inline constexpr double smallest_probability = 1e-15;
 
 /// A tail probability within this relative distance of the risk counts as equal to it, so that a claim that holds with
 /// equality in decimals (0.9^3 = 1 - 0.271) is not lost to rounding. The guarantee loses this fraction of the risk.
