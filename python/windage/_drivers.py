@@ -2,10 +2,8 @@
 
 from __future__ import annotations
 
-import math
 from collections.abc import Iterator
 from dataclasses import dataclass
-from statistics import NormalDist
 from typing import TYPE_CHECKING, NoReturn
 
 import numpy as np
@@ -13,6 +11,7 @@ from numpy.typing import NDArray
 
 from ._errors import DescriptionError, suggestion
 from ._numbers import checked_integer
+from ._rank_correlation import CONFIDENCE, correlation, fisher_interval, holm, p_value, ranked
 
 if TYPE_CHECKING:
     from ._outcome import Outcome
@@ -20,7 +19,6 @@ if TYPE_CHECKING:
 #: Below this many failures a ranking of causes is mostly noise.
 FEW_FAILURES = 20
 FAILING = "failing"
-CONFIDENCE = 0.95
 
 Values = NDArray[np.float64]
 
@@ -39,6 +37,9 @@ class Driver:
         Spearman's rank correlation; positive: a larger value goes with more slack (or with failing).
     low, high : float
         Interval with 95 % confidence, each by itself.
+    p_value : float
+        Chance of a correlation this strong where there is none, adjusted for the number of rows that were looked
+        at together (Holm).
     """
 
     parameter: str
@@ -46,11 +47,12 @@ class Driver:
     correlation: float
     low: float
     high: float
+    p_value: float
 
     @property
     def is_clear(self) -> bool:
-        """Whether the interval leaves 0 out."""
-        return self.low > 0.0 or self.high < 0.0
+        """Whether there is a correlation: where nothing matters, any row of a table is clear in 5 % of studies."""
+        return self.p_value <= 1.0 - CONFIDENCE
 
 
 @dataclass(frozen=True, slots=True)
@@ -103,13 +105,14 @@ class Drivers:
 
     def __str__(self) -> str:
         lines = [
-            f"{row.correlation:+.2f}  ({row.low:+.2f} .. {row.high:+.2f})  {row.parameter} with "
-            + (FAILING if row.against == FAILING else f"slack of {row.against}")
+            f"{'*' if row.is_clear else ' '} {row.correlation:+.2f}  ({row.low:+.2f} .. {row.high:+.2f})  "
+            f"{row.parameter} with " + (FAILING if row.against == FAILING else f"slack of {row.against}")
             for row in self.rows
         ]
-        return "\n".join(
-            ["Rank correlation (95 % interval, each by itself)", *lines, *([self.note] if self.note else [])]
-        )
+        head = "Rank correlation (95 % interval, each by itself)"
+        if any(row.is_clear for row in self.rows):
+            head += f"; * clear at 95 %, all {len(self.rows)} rows together"
+        return "\n".join([head, *lines, *([self.note] if self.note else [])])
 
     def _repr_html_(self) -> str:
         import html  # costs import time and is seldom needed
@@ -122,61 +125,26 @@ def find_drivers(outcome: Outcome) -> Drivers:
 
     Notes
     -----
-    Intervals: Fisher's z with variance 1.06/(n - 3) for Spearman's correlation (Fieller, Hartley & Pearson
-    1957, Biometrika 44:470-481, from memory). Parameters or results without any variation are left out. Ties
-    share their mean rank; diverged trials rank lowest in slack.
+    Parameters or results without any variation are left out. Ties share their mean rank; diverged trials rank
+    lowest in slack. P-values are adjusted over all rows (Holm).
     """
     against = dict(zip(outcome.requirements, outcome.slack.T, strict=True))
     against[FAILING] = (~outcome.passed).astype(np.float64)
-    varying = {name: _unit_ranks(values) for name, values in outcome.parameters.items()}
-    rows = []
+    parameters = {name: ranked(values) for name, values in outcome.parameters.items()}
+    found: list[tuple[str, str, float, float]] = []
     for result, values in against.items():
-        result_ranks = _unit_ranks(values)
-        for name, own in varying.items():
-            if own is not None and result_ranks is not None:
-                correlation = _product(own, result_ranks)
-                rows.append(Driver(name, result, correlation, *fisher_interval(correlation, outcome.trials)))
+        other = ranked(values)
+        for name, own in parameters.items():
+            if own is not None and other is not None:
+                strength = correlation(own, other)
+                found.append((name, result, strength, p_value(own, other, strength)))
+    adjusted = holm([row[3] for row in found])
+    rows = [
+        Driver(name, result, strength, *fisher_interval(strength, outcome.trials), p)
+        for (name, result, strength, _), p in zip(found, adjusted, strict=True)
+    ]
     rows.sort(key=lambda row: -abs(row.correlation))
     return Drivers(tuple(rows), _note(outcome), tuple(against))
-
-
-def ranks(values: Values) -> Values:
-    """Return the ranks from 1 on; equal values share the mean of their ranks."""
-    order = np.argsort(values, kind="stable")
-    ordered = values[order]
-    starts = np.flatnonzero(np.concatenate([[True], ordered[1:] != ordered[:-1]]))
-    counts = np.diff(np.append(starts, len(values)))
-    result = np.empty(len(values))
-    result[order] = np.repeat(starts + 0.5 * (counts + 1), counts)
-    return result
-
-
-def fisher_interval(correlation: float, count: int) -> tuple[float, float]:
-    """Return the interval of a rank correlation from `count` pairs."""
-    if count <= 3:
-        return -1.0, 1.0
-    if abs(correlation) >= 1.0:
-        return correlation, correlation
-    half = NormalDist().inv_cdf(0.5 + 0.5 * CONFIDENCE) * math.sqrt(1.06 / (count - 3))
-    z = math.atanh(correlation)
-    return math.tanh(z - half), math.tanh(z + half)
-
-
-def _unit_ranks(values: Values) -> Values | None:
-    """Return ranks with mean 0 and length 1, whose product is their correlation; None where nothing varies."""
-    centred = ranks(values)
-    centred -= centred.mean()
-    length = math.sqrt(_sum_of_products(centred, centred))
-    return centred / length if length > 0.0 else None
-
-
-def _product(a: Values, b: Values) -> float:
-    return min(max(_sum_of_products(a, b), -1.0), 1.0)
-
-
-def _sum_of_products(a: Values, b: Values) -> float:
-    # Not by a matrix library: its threads would wait for each other longer than they work.
-    return float(np.einsum("i,i", a, b, optimize=False))
 
 
 def _no_rows(key: object) -> NoReturn:
