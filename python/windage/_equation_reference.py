@@ -26,7 +26,8 @@ def _remainder(x: Values, divisor: Values) -> Values:
     return np.where(np.abs(np.floor(x / divisor)) < 2.0**51, np.mod(x, divisor), np.nan)
 
 
-_FUNCTIONS: dict[str, Callable[..., object]] = {
+#: Operations by name, on NumPy numbers.
+FUNCTIONS: dict[str, Callable[..., object]] = {
     "add": np.add,
     "sub": np.subtract,
     "mul": np.multiply,
@@ -104,4 +105,4 @@ def _step(instruction: Instruction, program: Program, values: Mapping[str, Array
             raise EquationError("values", sorted(values), f"a value for {name!r}", suggestion(name, values))
         return _number(values[name])
     operands = [results[value] for value in (instruction.a, instruction.b, instruction.c) if value >= 0]
-    return _number(_FUNCTIONS[instruction.op](*operands))
+    return _number(FUNCTIONS[instruction.op](*operands))

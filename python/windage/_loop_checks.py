@@ -7,6 +7,7 @@ from typing import TYPE_CHECKING
 
 from ._equations import names_used
 from ._errors import DescriptionError
+from ._input_gain import advice_on_input
 from ._numbers import Spread, high_of, low_of
 from ._plants import Plant
 
@@ -59,6 +60,7 @@ def advice(loop: Loop) -> list[str]:
     found: list[str] = []
     found += _advice_on_observer(loop)
     found += _advice_on_delay(loop)
+    found += advice_on_input(loop)
     if isinstance(loop.plant, Plant):
         found += [f"plant: no equation reads {name!r}" for name in loop.plant.unused() if not _is_read(loop, name)]
     return found
