@@ -105,7 +105,11 @@ class Loop(Description):
 
     def warnings(self) -> list[str]:
         """Return what looks wrong with the loop but is allowed, in words; empty where nothing does."""
-        return advice(self)
+        return list(self._advice)
+
+    @cached_property
+    def _advice(self) -> tuple[str, ...]:
+        return tuple(advice(self))
 
     def _check_parts(self) -> None:
         parts: tuple[tuple[str, object, type, str], ...] = (

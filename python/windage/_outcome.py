@@ -191,7 +191,7 @@ class Outcome(Portable):
             requirement=joint_requirement(self.study.requirements),
             **self._cautions(),
             looks=self._look(),
-            numerics=self.audit().numerics if audit else UNEXAMINED,
+            numerics=self.audit().numerics if audit and not self.interrupted else UNEXAMINED,
         )
 
     def verdicts(
@@ -211,7 +211,9 @@ class Outcome(Portable):
             confidence,
             **self._cautions(),
             looks=self._look(),
-            numerics=self.audit().by_requirement if audit else dict.fromkeys(missed, UNEXAMINED),
+            numerics=self.audit().by_requirement
+            if audit and not self.interrupted
+            else dict.fromkeys(missed, UNEXAMINED),
         )
 
     def extend(self, trials: int, threads: int = 0, progress: bool | Report | None = None) -> Outcome:
@@ -384,10 +386,16 @@ class Outcome(Portable):
         found = self.study.cautions()
         if self.interrupted:
             found["basis"] = Basis(kind="interim", planned=self.requested)
-        values = self._columns.measures
-        if self.trials > 1 and found["basis"] == SAMPLE and bool((values[:, 1:] == values[:, :1]).all()):
+        if self.trials > 1 and found["basis"] == SAMPLE and self._same_measures is not None:
             found["advice"] += (ALL_THE_SAME,)
         return found
+
+    @cached_property
+    def _same_measures(self) -> tuple[float, ...] | None:
+        """The measures, if they are the same in all trials."""
+        values = self._columns.measures
+        is_same = self.trials > 0 and bool((values == values[:, :1]).all())
+        return tuple(values[:, 0].tolist()) if is_same else None
 
     def _look(self) -> int:
         """Count this judgement; one that decides nothing is no look."""

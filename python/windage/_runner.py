@@ -85,7 +85,7 @@ def run_columns(campaign: Any, first: int, count: int, threads: int = 0, go_on: 
     threads = checked_integer(threads, "threads", 0, MOST_THREADS) or default_threads()
     available = int(campaign.trials_available)
     if first + count > available:
-        mend = "Ask for fewer trials, or give a table with more rows."
+        mend = "Ask for fewer trials, or let rows be drawn (table_rows = 'drawn')."
         raise DescriptionError("trials", first + count, f"at most {available}, the rows of the study's table", mend)
     parameters, measures, status, completed = campaign.run(first, count, threads, 0, go_on)
     if completed < count:

@@ -11,11 +11,11 @@ import numpy as np
 from numpy.typing import NDArray
 
 from ._audit_trials import Watch
-from ._basis import Basis
+from ._basis import SAMPLE, Basis
 from ._descriptions import FrozenMapping
 from ._looks import look
 from ._numerics import UNEXAMINED
-from ._outcome import Outcome, joint_requirement
+from ._outcome import ALL_THE_SAME, Outcome, joint_requirement
 from ._portable import Portable, freeze
 from ._reporter import Report, Reporter
 from ._text_table import plainly_grouped, text_table
@@ -45,6 +45,8 @@ class Tally(Portable):
         Trials asked for.
     watch : Watch
         What an audit needs of the trials.
+    measures : tuple of float or None
+        The measures, if they are the same in all trials.
     """
 
     study: Study
@@ -55,6 +57,7 @@ class Tally(Portable):
     first_failures: NDArray[np.int64]
     requested: int
     watch: Watch = field(repr=False, compare=False)
+    measures: tuple[float, ...] | None = None
 
     def __post_init__(self) -> None:
         object.__setattr__(self, "requirement_failures", FrozenMapping(self.requirement_failures))
@@ -89,7 +92,7 @@ class Tally(Portable):
             requirement=joint_requirement(self.study.requirements),
             **self._cautions(),
             looks=self._look(),
-            numerics=self.audit().numerics if audit else UNEXAMINED,
+            numerics=self.audit().numerics if audit and not self._is_interrupted else UNEXAMINED,
         )
 
     def verdicts(
@@ -99,7 +102,9 @@ class Tally(Portable):
         from windage._verdict import judge_many
 
         counts = dict(self.requirement_failures)
-        numerics = self.audit().by_requirement if audit else dict.fromkeys(counts, UNEXAMINED)
+        numerics = (
+            self.audit().by_requirement if audit and not self._is_interrupted else dict.fromkeys(counts, UNEXAMINED)
+        )
         return judge_many(
             counts,
             self.trials,
@@ -111,14 +116,20 @@ class Tally(Portable):
             numerics=numerics,
         )
 
+    @property
+    def _is_interrupted(self) -> bool:
+        return self.trials < self.requested
+
     def _cautions(self) -> Cautions:
         found = self.study.cautions()
-        if self.trials < self.requested:
+        if self._is_interrupted:
             found["basis"] = Basis(kind="interim", planned=self.requested)
+        if self.trials > 1 and found["basis"] == SAMPLE and self.measures is not None:
+            found["advice"] += (ALL_THE_SAME,)
         return found
 
     def _look(self) -> int:
-        return 1 if self.trials < self.requested else len(look(self.study.digest, 0, self.trials))
+        return 1 if self._is_interrupted else len(look(self.study.digest, 0, self.trials))
 
     def __repr__(self) -> str:
         asked = f" (stopped; {plainly_grouped(self.requested)} asked for)" if self.trials < self.requested else ""
@@ -158,6 +169,7 @@ class Counter:
             first,
             requested=0,
             watch=old.watch.joined(*outcome._audit_rows()) if outcome.trials else old.watch,
+            measures=outcome._same_measures if outcome._same_measures == old.measures or not old.trials else None,
         )
 
     def tally(self, requested: int) -> Tally:

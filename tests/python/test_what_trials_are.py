@@ -89,6 +89,9 @@ def test_a_spread_that_reaches_no_measure_is_advised_of() -> None:
     assert "Advice: all trials measured the same; see whether any spread or noise reaches" in text_of(only_limit)
     reaches = study(gain=wd.uniform(0.9, 1.1), seed=3).run(100, progress=False).verdict(0.9)
     assert "measured the same" not in str(reaches)
+    for gain, batch, is_said in ((1.0, 30, True), (1.0, 100, True), (wd.choice([1.0, 1.1]), 1, False)):
+        counted = study(gain=gain, limit=wd.uniform(2.0, 3.0), seed=4).count(100, size=batch, progress=False)
+        assert ("measured the same" in text_of(counted.verdict(0.9))) is is_said
 
 
 def test_the_command_says_no_claim_for_a_nominal_check(tmp_path: Any, monkeypatch: Any, capsys: Any) -> None:
@@ -203,6 +206,15 @@ def test_a_stopped_run_gives_neither_a_pass_nor_a_fail(kind: str, limit: float) 
     assert "of 3 000 000 trials; this is no verdict, neither a pass nor a fail" in text_of(verdict)
     assert "INTERIM" in str(found.verdicts(0.5))
     assert not any(found.verdicts(0.5))
+
+
+def test_nobody_waits_for_an_audit_of_a_run_that_was_stopped(monkeypatch: pytest.MonkeyPatch) -> None:
+    found = [stopped("run", 14), stopped("count", 14)]
+    for kind in (wd.Outcome, type(found[1])):
+        monkeypatch.setattr(kind, "audit", lambda _: pytest.fail("audited"))
+    for outcome in found:
+        assert not outcome.verdict(0.5)
+        assert not any(outcome.verdicts(0.5))
 
 
 def test_a_complete_run_does_not_speak_of_interim_results() -> None:
