@@ -36,14 +36,14 @@ class Distribution(Spread):
     def _usual_nominal(self) -> float:
         raise NotImplementedError
 
-    def _check_nominal(self) -> None:
+    def _check_nominal(self, place: str = "") -> None:
         if self.stated_nominal is not None:
-            object.__setattr__(self, "stated_nominal", checked_nominal(self, self.stated_nominal))
+            value = checked_nominal(self, self.stated_nominal, place or f"{self._kind}.nominal")
+            object.__setattr__(self, "stated_nominal", value)
 
 
-def checked_nominal(spread: Distribution, value: object) -> float:
+def checked_nominal(spread: Distribution, value: object, place: str) -> float:
     """Return a stated nominal value that is within the spread, so that what holds for trials holds for it."""
-    place = f"{spread._kind}.nominal"
     plain = plain_number(value, place)
     below = plain < spread.low or (plain == spread.low and spread._excludes_low())
     if below or plain > spread.high:

@@ -93,7 +93,7 @@ class Column(Distribution):
         known = {"low": min(rows), "high": max(rows), "rows": rows, "in_order": in_order}
         for key, value in known.items():
             object.__setattr__(column, key, value)
-        column._check_nominal()
+        column._check_nominal(f"column.{self.name}.nominal")
         return column
 
     def _usual_nominal(self) -> float:

@@ -99,6 +99,17 @@ def test_a_few_coincidences_of_rare_values_are_not_called_clear() -> None:
     assert not any(row.is_clear for row in find_drivers(outcome({"part": part}, slack)))
 
 
+@pytest.mark.parametrize(("failures", "is_told"), [(39, False), (40, True)])
+def test_rare_values_have_to_coincide_twenty_times_on_average(failures: int, is_told: bool) -> None:
+    part = np.repeat([0.0, 1.0], 500)
+    failed = np.zeros(1000)
+    failed[-failures:] = 1.0
+    first, second = ranked(part), ranked(failed)
+    assert first is not None
+    assert second is not None
+    assert (p_value(first, second, 0.2) < 1e-6) is is_told
+
+
 def test_the_command_hints_at_no_driver_where_nothing_matters(capsys: pytest.CaptureFixture[str]) -> None:
     from windage._command_output import _print_hints
 

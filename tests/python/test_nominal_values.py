@@ -91,7 +91,7 @@ def test_without_one_the_distribution_suggests_it_after_a_change_too() -> None:
         (lambda: wd.normal(1.0, 0.1, low=0.9, nominal=0.8), "normal.nominal"),
         (lambda: wd.lognormal(1.0, 0.1, nominal=0.0), "lognormal.nominal"),
         (lambda: wd.choice([1.0, 2.0], nominal=3.0), "choice.nominal"),
-        (lambda: study(wd.column("mass", nominal=200.0)), "column.nominal"),
+        (lambda: study(wd.column("mass", nominal=200.0)), "column.mass.nominal"),
         (lambda: wd.column("mass", nominal=True), "column.nominal"),
     ],
 )

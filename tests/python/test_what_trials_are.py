@@ -178,6 +178,10 @@ def test_few_observed_values_are_named_with_the_claim_that_they_cannot_carry() -
     assert table.verdict(0.99).few_values == ("g (150 values)",)
     shared = study(gain=wd.shared("mass", wd.samples([0.9, 1.1, 1.1])), seed=5).run(20, progress=False)
     assert shared.verdict(0.5).few_values == ("mass (2 values)",)
+    # Exactly ten in the fraction that may fail are enough.
+    for count, few in ((200, ()), (199, ("gain (199 values)",))):
+        gains = wd.samples(np.linspace(0.9, 1.1, count))
+        assert study(gain=gains, seed=6).run(20, progress=False).verdict(0.95).few_values == few
     # The values of a choice are all there are.
     assert study(gain=wd.choice([0.9, 1.1]), seed=5).run(20, progress=False).verdict(0.99).few_values == ()
 
