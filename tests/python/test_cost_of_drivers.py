@@ -14,14 +14,14 @@ from windage._demo import demo_study
 def test_every_parameter_and_result_is_ranked_once(monkeypatch: pytest.MonkeyPatch) -> None:
     requirements = [wd.peak("error", after=5.0) <= 1e-3, wd.rms("torque") <= 12.0, wd.peak("torque") <= 50.0]
     outcome = demo_study().with_(requirements=requirements).run(400, progress=False)
-    ranks, ranked = _drivers.ranks, list[int]()
+    ranked, sizes = _drivers.ranked, list[int]()
 
     def counted(values: Any) -> Any:
-        ranked.append(len(values))
-        return ranks(values)
+        sizes.append(len(values))
+        return ranked(values)
 
-    monkeypatch.setattr(_drivers, "ranks", counted)
+    monkeypatch.setattr(_drivers, "ranked", counted)
     outcome.plot()
     outcome.plot(parameters=6)
     assert outcome.drivers() is outcome.drivers()
-    assert len(ranked) == len(outcome.parameters) + len(requirements) + 1
+    assert len(sizes) == len(outcome.parameters) + len(requirements) + 1
