@@ -17,7 +17,7 @@ import numpy as np
 import pytest
 
 import windage as wd
-from windage import _stopping
+from windage import _stopping, _tally
 
 
 @pytest.fixture(autouse=True)
@@ -280,6 +280,28 @@ def test_a_handler_of_the_program_is_kept() -> None:
         signal.signal(signal.SIGINT, before)
     assert heard == [signal.SIGINT]
     assert not outcome.interrupted
+
+
+@pytest.mark.parametrize("is_handled", [False, True])
+def test_counts_survive_ctrl_c_between_two_batches(is_handled: bool, monkeypatch: pytest.MonkeyPatch) -> None:
+    add, added = _tally.Counter.add, list[int]()
+
+    def adds(counter: Any, outcome: wd.Outcome) -> None:
+        add(counter, outcome)
+        added.append(outcome.trials)
+        if len(added) == 5:
+            signal.raise_signal(signal.SIGINT)
+
+    def raises(*_: object) -> None:
+        raise KeyboardInterrupt
+
+    monkeypatch.setattr(_tally.Counter, "add", adds)
+    if is_handled:  # a program with a handler of its own
+        signal.signal(signal.SIGINT, raises)
+    tally = quick_study().count(10**9, size=300, progress=False)
+    assert tally.trials == sum(added)
+    assert len(added) >= 5
+    assert tally.failures == len(quick_study().run(tally.trials, progress=False).failures)
 
 
 def test_a_second_ctrl_c_ends_a_call_that_does_not_answer(monkeypatch: pytest.MonkeyPatch) -> None:
