@@ -9,6 +9,7 @@ from __future__ import annotations
 import dataclasses
 import math
 from collections.abc import Callable, Iterator, Mapping
+from contextlib import suppress
 from typing import Any, ClassVar, NoReturn, Self, TypeVar
 
 from ._arguments import ExplainedCalls, unknown_name
@@ -99,12 +100,19 @@ def _is_default(value: Any, default: Any) -> bool:
 
 def frozen(value: object, place: str, expected: str) -> FrozenMapping[Any]:
     """Return a mapping with text keys as a frozen copy."""
-    if not isinstance(value, Mapping):
-        raise DescriptionError(place, value, expected)
-    for key in value:
+    copy = copied(value, place, expected)
+    for key in copy:
         if not isinstance(key, str):
             raise DescriptionError(place, key, "names written as text")
-    return FrozenMapping(value)
+    return copy
+
+
+def copied(value: object, place: str, expected: str) -> FrozenMapping[Any]:
+    """Return a mapping as a frozen copy."""
+    if isinstance(value, Mapping):
+        with suppress(Exception):  # whatever a foreign mapping raises
+            return FrozenMapping({key: value[key] for key in value})
+    raise DescriptionError(place, value, expected)
 
 
 def parts(description: Any) -> Iterator[tuple[dataclasses.Field[Any], Any]]:

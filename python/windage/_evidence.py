@@ -469,7 +469,7 @@ def _as_index(value: Any) -> int | None:
         return None
     try:
         return operator.index(value)
-    except TypeError:
+    except Exception:  # TypeError, or whatever a foreign object raises
         return None
 
 
@@ -478,7 +478,7 @@ def _as_float(field: str, value: Any) -> float:
     if not isinstance(value, (bool, np.bool_, str, bytes)):
         try:
             return float(value)
-        except (TypeError, ValueError, OverflowError):
+        except Exception:  # TypeError, ValueError, OverflowError, or whatever a foreign object raises
             pass
     raise DescriptionError(field, value, "a number")
 

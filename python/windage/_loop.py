@@ -137,7 +137,7 @@ class Loop(Description):
         return FrozenMapping({name: _disturbance(given.get(name, 0.0), name) for name in names})
 
     def _check_steps(self) -> None:
-        if self.steps_per_sample != "auto":
+        if not isinstance(self.steps_per_sample, str) or self.steps_per_sample != "auto":
             if isinstance(self.steps_per_sample, str):
                 expected = f"'auto' or a whole number from 1 to {MOST_STEPS}"
                 raise DescriptionError("loop.steps_per_sample", self.steps_per_sample, expected)

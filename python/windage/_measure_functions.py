@@ -190,9 +190,9 @@ def settling_time(
         raise DescriptionError("settling_time.tolerance", tolerance, "either band or tolerance")
     if tolerance is not None:
         tolerance = checked_number(tolerance, "settling_time.tolerance", POSITIVE)
-        return Measure("settling_time", signal or "error", after, before, tolerance=tolerance)
+        return Measure("settling_time", "error" if signal is None else signal, after, before, tolerance=tolerance)
     band = checked_number(0.02 if band is None else band, "settling_time.band", POSITIVE)
-    return Measure("settling_time", signal or "output", after, before, band=band)
+    return Measure("settling_time", "output" if signal is None else signal, after, before, band=band)
 
 
 @explained

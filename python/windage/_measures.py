@@ -88,14 +88,14 @@ class Measure(Description):
     second: Measure | None = None
 
     def __post_init__(self) -> None:
+        if not isinstance(self.kind, str) or checked_label(self.kind, "measure.kind") is None:
+            raise DescriptionError("measure.kind", self.kind, "the name of a function that makes a measure")
         if self.kind in COMBINATIONS:
             self._check_operands()
             return
         if self.first is not None or self.second is not None:
             expected = f"one of {', '.join(COMBINATIONS)} for a measure made of two"
             raise DescriptionError("measure.kind", self.kind, expected)
-        if checked_label(self.kind, "measure.kind") is None:
-            raise DescriptionError("measure.kind", self.kind, "the name of a function that makes a measure")
         object.__setattr__(self, "signal", checked_title(self.signal, f"{self.kind}.signal"))
         for name, rule in (("after", NON_NEGATIVE), ("before", _BEFORE)):
             object.__setattr__(self, name, checked_number(getattr(self, name), f"{self.kind}.{name}", rule))

@@ -19,6 +19,8 @@ from ._descriptions import Description
 from ._errors import DescriptionError, suggestion
 from ._shown_text import LONGEST_NAME, hidden_character, shorten
 
+#: Longest sequence of numbers that is taken anywhere.
+MOST_ITEMS = 10_000_000
 #: Names of drawn parameters, and of anything else that becomes part of a path.
 NAME_EXPECTED = "a name of letters (a to z, A to Z), digits and underscores that does not start with a digit"
 
@@ -129,6 +131,8 @@ def plain_number(value: object, place: str, expected: str = "a finite number") -
         result = float(value)  # type: ignore[arg-type]
     except OverflowError:
         result = math.inf
+    except Exception:  # whatever a foreign number raises
+        raise DescriptionError(place, value, expected) from None
     if not math.isfinite(result):
         raise DescriptionError(place, value, expected, "It must not be infinite or NaN.")
     return result
@@ -203,9 +207,14 @@ def checked_sequence(value: object, place: str, expected: str) -> list[Any]:
     """Return the items of a list, tuple or array (not of a text or a mapping)."""
     if isinstance(value, str | bytes) or not (isinstance(value, Sequence) or hasattr(value, "__array__")):
         raise DescriptionError(place, value, expected)
-    if hasattr(value, "ndim") and value.ndim == 0:
-        raise DescriptionError(place, value, expected)
-    return list(value)  # type: ignore[call-overload,no-any-return]
+    try:
+        count = len(value)  # type: ignore[arg-type]
+        items = list(value) if count <= MOST_ITEMS else []  # type: ignore[call-overload]
+    except Exception:  # an array without axes, a length that no memory has, whatever a foreign object raises
+        raise DescriptionError(place, value, expected) from None
+    if count > MOST_ITEMS:
+        raise DescriptionError(place, value, f"{expected}, at most {MOST_ITEMS}")
+    return items
 
 
 def check_count(items: Sized, place: str, most: int) -> None:
@@ -221,7 +230,7 @@ def checked_integer(value: object, place: str, low: int, high: int) -> int:
         raise DescriptionError(place, value, expected)
     try:
         whole = operator.index(value)  # type: ignore[arg-type]
-    except TypeError:
+    except Exception:  # TypeError, or whatever a foreign object raises
         raise DescriptionError(place, value, expected) from None
     if not low <= whole <= high:
         raise DescriptionError(place, value, expected)

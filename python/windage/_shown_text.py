@@ -68,7 +68,7 @@ def shorten(value: object, limit: int = 80) -> str:
         # Quoting may make several characters of one.
         return f"{_cut(one_line(repr(value[: limit - 20])), limit + 10)}... ({len(value)} characters)"
     try:
-        text = _Short().repr(value)
+        text = _Short().repr(value)[: 10 * limit]
         text = one_line(" ".join(text.split()) if "\n" in text else text)
     except Exception:  # whatever a foreign __repr__ raises
         text = f"<{type(value).__name__} that cannot be shown>"

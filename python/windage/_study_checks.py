@@ -8,7 +8,7 @@ from typing import Any, TypeVar
 
 import numpy as np
 
-from ._descriptions import FrozenMapping, rebuilt
+from ._descriptions import FrozenMapping, copied, frozen, rebuilt
 from ._errors import DescriptionError, suggestion
 from ._loop import Loop
 from ._measures import Measure, Requirement
@@ -60,10 +60,11 @@ def checked_table(value: object) -> FrozenMapping[tuple[float, ...]] | None:
     """Return the table of a study: columns of the same length with finite numbers."""
     if value is None:
         return None
-    if not isinstance(value, Mapping) or not value:
+    given = frozen(value, "study.table", "a mapping from column names to values")
+    if not given:
         raise DescriptionError("study.table", value, "a mapping from column names to values")
     columns: dict[str, tuple[float, ...]] = {}
-    for name, rows in value.items():
+    for name, rows in given.items():
         if checked_label(name, "study.table") is None:
             raise DescriptionError("study.table", name, "column names written as text")
         place = f"study.table.{name}"
@@ -82,11 +83,10 @@ def checked_correlations(value: object) -> FrozenMapping[float] | None:
     if value is None:
         return None
     place = "study.correlations"
-    if not isinstance(value, Mapping):
-        raise DescriptionError(place, value, "a mapping such as {('plant.inertia', 'plant.drag'): 0.6}")
-    check_count(value, place, MOST_PAIRS)
+    given = copied(value, place, "a mapping such as {('plant.inertia', 'plant.drag'): 0.6}")
+    check_count(given, place, MOST_PAIRS)
     pairs: dict[Any, float] = {}
-    for key, item in value.items():
+    for key, item in given.items():
         is_pair = isinstance(key, tuple) and len(key) == 2 and all(isinstance(name, str) for name in key)
         if not is_pair:
             raise DescriptionError(place, key, "pairs of names, ('plant.inertia', 'plant.drag')")

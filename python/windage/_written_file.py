@@ -52,7 +52,8 @@ def written(path: str | os.PathLike[str]) -> Iterator[BinaryIO]:
     """
     try:
         wanted = Path(path)
-    except TypeError as error:
+        os.fsencode(wanted)
+    except (TypeError, UnicodeError) as error:
         raise OutputError(shorten(path), "no name of a file", "Give a text or a path.") from error
     try:
         if is_written_in_place(wanted):
