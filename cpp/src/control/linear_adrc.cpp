@@ -153,7 +153,7 @@ void linear_adrc::sample_form(const signal* reference, constant_signal measured,
         }
         correct<Order>(x, followed, n.observer_gain);
         for (int s = 0; s <= Order; ++s) x[s].store(estimates_ + s * size_ + i);
-        command<Order, Form>(x, n, reference, i).store(output_ + i);
+        settled(command<Order, Form>(x, n, reference, i)).store(output_ + i);
     };
     for_each_pack_with(size_, sample_pack, number_reader<Order>{*this});
 }

@@ -52,6 +52,7 @@ void loop::begin(const trial_block& block) {
 
 void loop::sample(std::int64_t k) {
     clock_.tick(k, size_);
+    if (k % settle_every == 0) settle_states();
     disturbances_->sample(k);
     plant_->evaluate_output(clock_.time(), input());
     reference_.sample(clock_, reference_signals_.data(), int(reference_signals_.size()) - 1);
@@ -63,6 +64,13 @@ void loop::sample(std::int64_t k) {
     if (delayed_input_)
         std::copy_n(plant_->lagged_input() ? plant_->lagged_input() : delay_.acting(), size_, delayed_input_);
     for (named_expression& e : expressions_) e.formula.run();
+}
+
+// Whatever is carried on from one sample to the next and decays; noises never rest.
+void loop::settle_states() {
+    plant_->settle_states();
+    controller_->settle_states();
+    sensor_.settle_states();
 }
 
 void loop::sample_error() {

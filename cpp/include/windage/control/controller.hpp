@@ -16,6 +16,8 @@ public:
     /// Sample k: `reference` holds r and its derivatives, `applied` the limited command of the sample before.
     virtual void sample(std::int64_t k, const signal* reference, constant_signal measured, constant_signal applied) = 0;
 
+    /// Sets to zero what has decayed to nothing (lanes/settle.hpp).
+    virtual void settle_states() = 0;
     virtual constant_signal output() const = 0;
     /// Derivatives of the reference that `sample` reads.
     virtual int reference_derivatives() const = 0;

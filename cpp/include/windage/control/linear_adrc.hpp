@@ -7,6 +7,7 @@
 
 #include <windage/control/controller.hpp>
 #include <windage/control/description.hpp>
+#include <windage/lanes/settle.hpp>
 
 namespace windage {
 
@@ -16,6 +17,7 @@ public:
 
     void begin(const trial_block& block, const held_value& initial_command) override;
     void sample(std::int64_t k, const signal* reference, constant_signal measured, constant_signal applied) override;
+    void settle_states() override { settle(estimates_, std::size_t(estimates()) * size_); }
     constant_signal output() const override { return output_; }
     int reference_derivatives() const override;
     int estimates() const override { return d_.order + 1; }

@@ -52,6 +52,7 @@ private:
     };
 
     constant_signal input() const { return delayed_input_ ? delayed_input_ : limiter_.command(); }
+    void settle_states();
     void sample_error();
     void add_expression(const expression_description& e, signal_arena& arena);
     void name_signals(const loop_description& d);

@@ -3,6 +3,7 @@
 
 #include <optional>
 
+#include <windage/lanes/settle.hpp>
 #include <windage/loop/clock.hpp>
 #include <windage/loop/description.hpp>
 #include <windage/loop/noise.hpp>
@@ -17,6 +18,7 @@ public:
 
     void begin(const trial_block& block);
     void sample(std::int64_t k);
+    void settle_states() { settle(filtered_, size_); }
     constant_signal measured() const { return is_transparent_ ? output_ : measured_; }
 
 private:

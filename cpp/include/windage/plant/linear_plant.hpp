@@ -5,6 +5,7 @@
 
 #include <vector>
 
+#include <windage/lanes/settle.hpp>
 #include <windage/plant/description.hpp>
 #include <windage/plant/linear_model.hpp>
 #include <windage/plant/plant.hpp>
@@ -19,6 +20,7 @@ public:
     void begin(const trial_block& block, const held_value& initial_command) override;
     void evaluate_output(constant_signal time, constant_signal input) override;
     void advance(const sample_interval& interval) override;
+    void settle_states() override { settle(x_, std::size_t(order_) * size_); }
     constant_signal output() const override { return output_is_first_state_ ? x_ : output_; }
     constant_signal state(int i) const override { return x_ + std::size_t(i) * size_; }
     int states() const override { return states_; }

@@ -10,6 +10,7 @@
 #include <boost/numeric/odeint/stepper/runge_kutta4_classic.hpp>
 #include <boost/numeric/odeint/stepper/runge_kutta_cash_karp54.hpp>
 
+#include <windage/lanes/settle.hpp>
 #include <windage/plant/block_state.hpp>
 #include <windage/plant/description.hpp>
 #include <windage/plant/plant.hpp>
@@ -33,6 +34,7 @@ public:
 
     void begin(const trial_block& block, const held_value& initial_command) override;
     void advance(const sample_interval& interval) override;
+    void settle_states() override { settle(x_.data(), x_.size()); }
     constant_signal state(int i) const override { return x_[i]; }
     int states() const override { return states_; }
     constant_signal lagged_input() const override { return has_lag_ ? x_[states_] : nullptr; }

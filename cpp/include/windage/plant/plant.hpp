@@ -61,6 +61,8 @@ public:
     /// Computes the output; `time` is the sample instant, `input` the input that acts at it.
     virtual void evaluate_output(constant_signal time, constant_signal input) = 0;
     virtual void advance(const sample_interval& interval) = 0;
+    /// Sets to zero what has decayed to nothing (lanes/settle.hpp).
+    virtual void settle_states() = 0;
     virtual constant_signal output() const = 0;
     virtual constant_signal state(int i) const = 0;
     virtual int states() const = 0;
