@@ -235,7 +235,9 @@ class Study(Description):
 
     def warnings(self) -> list[str]:
         """Return what looks wrong with the study but is allowed, in words."""
-        return self._bound[0].warnings()
+        from ._window_advice import window_advice
+
+        return [*self._bound[0].warnings(), *window_advice(*self._bound)]
 
     def with_(self, **changes: Any) -> Self:
         """Return a copy with some arguments changed, those of the study or those of its loop.

@@ -9,6 +9,7 @@ import numpy as np
 import pytest
 
 import windage as wd
+from windage._window_advice import jump_times
 
 PERIOD = 0.01
 Values = np.ndarray
@@ -119,3 +120,34 @@ def held_error() -> wd.Replay:
 def test_the_sample_at_the_end_is_part_of_the_window() -> None:
     """Said in the documentation: at the instant of a step the error is that after it."""
     assert list(held_error().measures.values()) == [1.0, 0.0]
+
+
+@pytest.mark.parametrize(
+    ("reference", "times"),
+    [
+        (wd.Step(1.0, at=1.0), [1.0]),
+        (wd.Pulse(1.0, 0.25, 0.5), [0.25, 0.75]),
+        (wd.Pulse(1.0, 0.25, wd.uniform(0.1, 0.2)), [0.25]),
+        (STEPS["step on a step"], [1.0]),
+        (STEPS["vertical part"], [1.0]),
+        (wd.Ramp(1.0), []),
+        (wd.Step(1.0, at=wd.uniform(0.1, 0.2)), []),
+    ],
+    ids=repr,
+)
+def test_jumps_of_a_reference(reference: wd.Step, times: list[float]) -> None:
+    assert jump_times(reference) == times
+
+
+def test_a_window_whose_last_sample_shows_a_step_is_pointed_out() -> None:
+    late = wd.peak("error", before=1.0)
+    study = wd.Study(
+        loop(wd.Step(1.0, at=1.0), signals={"effort": "abs(command)"}),
+        [late <= 0.1, wd.rms("effort", before=1.0) - late <= 1.0, wd.overshoot(before=1.0) <= 9.0],
+        measures=[wd.peak("error", before=0.99), wd.peak("error", after=1.0), wd.final("measured", before=1.0)],
+    )
+    advice = [text for text in study.warnings() if text.startswith("measures")]
+    assert len(advice) == 2
+    assert "peak of error before 1 s" in advice[0]
+    assert "before=0.99 leaves that sample out" in advice[0]
+    assert "rms of effort before 1 s" in advice[1]
