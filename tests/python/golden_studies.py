@@ -212,9 +212,36 @@ def equations() -> dict[str, wd.Study]:
     }
 
 
+def roundings() -> dict[str, wd.Study]:
+    """Roundings in equations and in the actuator, windows at steps, and measures made of two."""
+    plant = wd.Plant(
+        states={"x": 0.0, "v": 0.0},
+        equations={"x": "v", "v": "u - 0.5*v - 0.2*floor(4*x)/4 - 0.1*round(3*v) - 0.1*mod(x, size)"},
+        input="u",
+        output="x",
+        parameters={"size": wd.uniform(0.2, 0.4)},
+    )
+    adrc = wd.OutputADRC(order=2, controller_bandwidth=8.0, observer_bandwidth=40.0, b0=1.0, reference_derivatives=1)
+    actuator = wd.Actuator(limits=(wd.uniform(-20.0, -10.0), 15.1), resolution=0.25, rate_limit=2000.0, initial=-12.0)
+    loop = loop_of(
+        plant, adrc, actuator=actuator, reference=wd.Table([0.0, 0.1, 0.3], [0.0, 1.0, 3.0], interpolation="hold")
+    )
+    early, late = wd.peak("error", before=0.3), wd.peak("error", after=0.3)
+    measures = [
+        wd.overshoot(before=0.3),
+        wd.settling_time(band=0.5, before=wd.uniform(0.25, 0.35)),
+        wd.time_in_saturation(),
+        wd.peak_to_peak("command"),
+        wd.reversals("measured", dead_band=wd.uniform(0.0, 0.01)),
+        wd.time_of_peak("v", after=0.1),
+        (early - late) / wd.rms("error"),
+    ]
+    return {"roundings": wd.Study(loop, [early <= 2.0], measures=measures, seed=6)}
+
+
 def all_studies() -> dict[str, wd.Study]:
     """Name and study of every golden digest."""
-    return {**chains(), **stock_plants(), **equations()}
+    return {**chains(), **stock_plants(), **equations(), **roundings()}
 
 
 if __name__ == "__main__":
