@@ -12,6 +12,7 @@ import pytest
 
 import windage as wd
 from windage import _audit
+from windage._audit_trials import Rows
 from windage._runner import Columns, make_campaign, run_columns
 
 
@@ -244,3 +245,59 @@ def test_a_divergence_that_cannot_be_confirmed_decides_nothing(monkeypatch: pyte
     assert verdict.decision == "inconclusive"
     assert "no number of steps tried was enough" in words(verdict)
     assert 'set steps_per_sample="auto"' in words(verdict)
+
+
+class Confirming:
+    """An examination whose shares are known, with a finer run that differs from it as told."""
+
+    def __init__(self, shares: list[float], missing: list[float]) -> None:
+        places = np.arange(len(shares))
+        slack = np.ones((1, len(shares)))
+        self.share = np.array([shares])
+        self.scales = np.ones(1)
+        self.tight = Rows(places.astype(np.uint64), np.empty((0, len(shares))), slack, np.zeros(len(shares), np.uint8))
+        self.missing = np.array(missing)
+        self.asked: list[tuple[int, list[int]]] = []
+
+    def again(self, steps: int) -> Any:
+        def run(rows: Rows) -> Rows:
+            self.asked.append((steps, rows.trials.tolist()))
+            changed = rows.slack / (1.0 - 2.0 * self.missing[rows.trials.astype(np.int64)])
+            return Rows(rows.trials, rows.parameters, changed, rows.status)
+
+        return run
+
+    def holds(self) -> bool:
+        told: Any = self
+        return _audit._is_confirmed(told, told, 4)
+
+
+def test_the_tighter_run_is_confirmed_on_the_first_and_the_most_changed_trials() -> None:
+    shares = [0.0, 1e-4, 0.02, 0.03, 0.01, 0.2]
+    exact = Confirming(shares, [0.0] * 6)
+    assert exact.holds()
+    assert exact.asked == [(8, [0, 1, 3, 5])]
+    assert not Confirming(shares, [0.0, 0.0, 0.0, 0.006, 0.0, 0.03]).holds()  # more than an eighth of the change
+    assert Confirming(shares, [0.0, 0.0, 0.0, 0.002, 0.0, 0.015]).holds()
+    assert Confirming(shares, [0.0, 0.0, 0.0, 0.006, 0.0, 0.0]).holds()  # one may have been rounded otherwise
+    assert Confirming([0.0] * 6, [2e-7] * 6).holds()
+    assert not Confirming([0.0] * 6, [2e-6] * 6).holds()
+    assert not Confirming([9.0] * 6, [0.2] * 6).holds()  # however wrong the run is, this is no reference
+
+
+def test_a_few_flips_call_for_no_advice() -> None:
+    study = friction(steps_per_sample=20)
+    study = study.with_(requirements=[wd.iae() <= float(np.median(study.run(400).measures["IAE of error"]) + 1e-7)])
+    outcome = study.run(1500, progress=False)
+    assert 1 <= outcome.audit().flipped + outcome.audit().undecided <= 7
+    assert outcome.audit().numerics.caution == ""
+
+
+def test_the_scale_of_a_limit_of_zero_is_that_of_the_first_trials() -> None:
+    described = friction().with_(requirements=[wd.iae() <= 0.0])._describe(1)
+    measures = np.concatenate([np.full(128, 1.0), np.full(10_000, 5.0)])[None, :]
+    columns = Columns(np.empty((3, 10_128)), measures, np.zeros(10_128, np.uint8), 10_128)
+    study = friction().with_(requirements=[wd.iae() <= 0.0])
+    assert _audit.scales_for(study, described, columns).tolist() == [1.0]
+    measures[0, 1:127] = 3.0
+    assert _audit.scales_for(study, described, columns).tolist() == [3.0]
