@@ -78,7 +78,20 @@ def load_outcome(path: str | os.PathLike[str]) -> Outcome:
     DescriptionError
         If the outcome does not fit into the memory.
     """
+    import pyarrow as pa
+
     name = str(path)
+    # What JSON, Arrow and the parts of a study say to content that is none of theirs.
+    foreign = (
+        pa.ArrowException,
+        ValueError,
+        KeyError,
+        IndexError,
+        TypeError,
+        AttributeError,
+        OverflowError,
+        RecursionError,
+    )
     try:
         with Path(path).open("rb") as file:
             return _read(file, name)
@@ -90,7 +103,7 @@ def load_outcome(path: str | os.PathLike[str]) -> Outcome:
         if error.field == name:  # does not fit
             raise
         raise OutcomeFileError(name, f"a study with {error}", "a study of this release") from error
-    except (ValueError, KeyError, TypeError, OverflowError, RecursionError) as error:  # of JSON and of Arrow
+    except foreign as error:
         raise OutcomeFileError(name, f"{type(error).__name__}: {error}", _FOREIGN) from error
 
 

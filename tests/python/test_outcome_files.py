@@ -219,6 +219,19 @@ def test_damaged_and_foreign_files_are_refused_by_their_names(kept: Path, tmp_pa
             wd.load_outcome(path)
 
 
+@pytest.mark.parametrize("kind", [pa.ArrowNotImplementedError, pa.ArrowInvalid, pa.ArrowSerializationError, IndexError])
+def test_whatever_arrow_says_of_a_damaged_file_names_the_file(
+    kind: type[Exception], kept: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    def fails(*_: Any) -> None:
+        raise kind("whole numbers of 128 bits")
+
+    monkeypatch.setattr(pq, "ParquetFile", fails)
+    with pytest.raises(wd.OutcomeFileError, match="whole numbers of 128 bits") as caught:
+        wd.load_outcome(kept)
+    assert caught.value.field == str(kept)
+
+
 def test_another_release_with_other_digits_is_told_apart(kept: Path, monkeypatch: pytest.MonkeyPatch) -> None:
     monkeypatch.setattr(wd, "__version__", "9.9")
     assert wd.load_outcome(kept).trials == 200  # the digits are those of this one
