@@ -67,7 +67,7 @@ def test_outcomes_can_be_sent_before_and_after_they_are_read(way: str, is_read: 
 
 
 def test_a_sent_outcome_is_no_larger_for_having_been_read() -> None:
-    outcome = demo_study().run(2_000, progress=False)
+    outcome = demo_study().run(1_000, progress=False)
     before = len(pickle.dumps(outcome))
     read_everything(outcome)
     assert len(pickle.dumps(outcome)) < before + 1_000  # the looks taken, and no column twice

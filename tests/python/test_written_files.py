@@ -113,7 +113,7 @@ def test_devices_and_open_descriptors_are_written_to_and_stay(tmp_path: Path) ->
     assert os.path.samestat(before, Path("/dev/null").stat())
     program = "import sys; from windage._written_file import written\nprint('before')\n"
     program += "with written(sys.argv[1]) as file: file.write(b'whole')\nprint('after')"
-    for name in ("/dev/stdout", "/proc/self/fd/1", "link"):
+    for name in ("/dev/stdout", "link"):
         if name == "link":
             (tmp_path / name).symlink_to("/dev/stdout")
             name = str(tmp_path / name)
@@ -204,8 +204,8 @@ import test_written_files as here
 
 os.chdir(sys.argv[1])
 wd.save(here.study(), "study.toml")
-outcome = here.study().run(20_000, progress=False)
-files = ["outcome.parquet", "table.parquet", "table.csv", "picture.png", "picture.svg", "picture.pdf", "verdict.json"]
+outcome = here.study().run(2_000, progress=False)
+files = ["outcome.parquet", "table.parquet", "picture.pdf", "verdict.json"]
 for name in files:
     open(name, "w").write("old")
 resource.setrlimit(resource.RLIMIT_FSIZE, (1_000, 1_000))
@@ -215,7 +215,7 @@ except wd.OutputError as error:
     print(error, file=sys.stderr)
 for name in files[1:]:
     option = {"t": "--table", "p": "--plot", "v": "--json"}[name[0]]
-    _command_line.main(["run", "study.toml", "--trials", "500", "--short", option, name])
+    _command_line.main(["run", "study.toml", "--trials", "100", "--short", option, name])
 assert sorted(os.listdir()) == sorted([*files, "study.toml"]), os.listdir()
 assert all(open(name).read() == "old" for name in files)
 """
@@ -232,7 +232,7 @@ def test_files_that_outgrow_their_place_leave_the_old_ones_and_nothing_else(tmp_
         env={**os.environ, "PYTHONPATH": path},
     )
     assert done.returncode == 0, done.stderr
-    assert done.stderr.count("cannot be written: File too large") == 7
+    assert done.stderr.count("cannot be written: File too large") == 4
 
 
 def test_the_content_is_on_the_disk_before_the_name_is_moved(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
@@ -271,14 +271,14 @@ while True:
 def test_a_kill_at_any_instant_leaves_the_old_file_or_the_new_one(tmp_path: Path) -> None:
     path = tmp_path / "file"
     path.write_bytes(b"0" * 640_000)
-    for shot in range(6):
-        letter = "abcdef"[shot]
+    for shot in range(4):
+        letter = "abcd"[shot]
         process = subprocess.Popen(
             [sys.executable, "-c", WRITER, str(path), letter], stdout=subprocess.PIPE, env=with_path()
         )
         assert process.stdout is not None
         process.stdout.readline()
-        time.sleep(0.003 * shot + 0.001)
+        time.sleep(0.004 * shot + 0.001)
         process.send_signal(signal.SIGKILL)
         process.wait()
         process.stdout.close()
