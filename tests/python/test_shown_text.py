@@ -151,3 +151,16 @@ def test_plots_read_no_mathematics_and_legends_leave_no_name_out() -> None:
         assert (drawn.strip(), is_mathematics) == (name, False)
         axes.plot([0, 1], label=plot_text(name))
     assert len(axes.get_legend_handles_labels()[1]) == 6
+
+
+def test_names_in_plots_are_shown_as_they_are() -> None:
+    from matplotlib.text import Text
+
+    name = r"cost $x_1$ \$ {y} _z_"
+    study = wd.Study(wd.Loop(**LOOP), [(wd.peak("error", after=0.1) <= wd.uniform(0.1, 1.0)).named(name)], title=name)
+    for plot in (study.run(64, progress=False).plot, study.replay(0).plot):
+        figure = plot()
+        shown = [text._preprocess_math(text.get_text()) for text in figure.findobj(Text) if "cost" in text.get_text()]
+        assert shown
+        assert not any(is_mathematics for _, is_mathematics in shown)
+        assert any("$x_1$" in drawn for drawn, _ in shown)
