@@ -84,7 +84,7 @@ DESCRIBING = [
     value
     for value in PUBLIC
     if (isinstance(value, type) and issubclass(value, Description))
-    or (not isinstance(value, type) and value.__module__ in ("windage._measures", "windage._spreads"))
+    or (not isinstance(value, type) and value.__module__ in ("windage._measure_functions", "windage._spreads"))
 ]
 
 

@@ -50,7 +50,8 @@ def test_trials_beyond_the_rows_of_a_table_cannot_be_chosen() -> None:
         reference=1.0,
         disturbances={"load": 0.0},
     )
-    campaign = wd.Study(loop, [wd.peak("error") <= 2.0], table={"gain": [1.0, 2.0, 3.0]})._campaign
+    table = {"gain": [1.0, 2.0, 3.0]}
+    campaign = wd.Study(loop, [wd.peak("error") <= 2.0], table=table, table_rows="in_order")._campaign
     assert campaign.draw(0, 3).tolist() == [[1.0, 2.0, 3.0]]
     assert campaign.run_chosen(np.array([2, 0], dtype=np.uint64))[0].tolist() == [[3.0, 1.0]]
     for ask in (lambda: campaign.run_chosen(np.array([0, 3], dtype=np.uint64)), lambda: campaign.draw(2, 2)):
