@@ -14,6 +14,7 @@ from numpy.typing import NDArray
 
 from windage import _statistics
 
+from ._basis import SAMPLE
 from ._cautions import percent_above, percent_below
 from ._drivers import Driver
 from ._errors import DescriptionError
@@ -64,13 +65,15 @@ def draw_outcome(
     if not outcome.trials:
         raise DescriptionError("outcome", "0 trials", "at least 1 trial to plot")
     rows = [row_of(outcome, place) for place in _places(outcome, requirements)]
+    # What is no sample, or was stopped, has no bounds.
+    sure = confidence if outcome._cautions()["basis"] == SAMPLE else None
     columns = 1 + min(parameters, len(outcome.parameters))
     figure = StudyFigure(CURVE_WIDTH + PANEL_WIDTH * (columns - 1), 1.7 + 3.2 * len(rows))
     grid = figure.add_gridspec(len(rows), columns, width_ratios=[1.35] + [1.0] * (columns - 1))
     drivers = outcome.drivers() if columns > 1 else None
     kinds: dict[str, Line2D | Patch] = {}
     for i, row in enumerate(rows):
-        _draw_distribution(figure.add_subplot(grid[i, 0]), row, confidence)
+        _draw_distribution(figure.add_subplot(grid[i, 0]), row, sure)
         if drivers is None:
             continue
         dependence = Dependence(row, ~outcome.passed)
@@ -83,7 +86,7 @@ def draw_outcome(
             dress(axes, plot_text(wrapped(name, 27)), plot_text(wrapped(row.axis_words, 34)) if j == 0 else "")
             panel_title(axes, _correlation_words(driver))
         kinds |= dependence.legend()
-    handles = [*_curve_legend(confidence), *kinds.values()]
+    handles = [*_curve_legend(sure), *kinds.values()]
     across = max(1, int(figure.get_figwidth() / 3.4))
     figure.legend(handles=handles, loc="outside lower left", ncols=across, fontsize=8, frameon=False)
     _write_title(figure, outcome, verdict)
@@ -123,17 +126,18 @@ def _correlation_words(driver: Driver | None) -> str:
     return f"slack: rank correlation {driver.correlation:+z.2f}".replace("-", "\u2212")
 
 
-def _draw_distribution(axes: Axes, row: Row, confidence: float) -> None:
+def _draw_distribution(axes: Axes, row: Row, confidence: float | None) -> None:
     trials = row.trials
     ordered = row.worst_first()
     ranks = _curve_ranks(trials)
-    bounds = [_statistics.clopper_pearson_interval(int(rank), trials, confidence) for rank in ranks]
-    lower, upper = np.array(bounds).T
-    # The pass probability's bounds are those of "not among the ranks": turned round, of being among them.
-    lower, upper = 1.0 - upper, 1.0 - lower
     at = np.clip(ordered[ranks - 1], row.low, row.high)
     floor = 0.5 / trials
-    axes.fill_between(at, np.maximum(lower, floor), upper, step="post", color=SKY, alpha=0.35, linewidth=0)
+    if confidence is not None:
+        bounds = [_statistics.clopper_pearson_interval(int(rank), trials, confidence) for rank in ranks]
+        lower, upper = np.array(bounds).T
+        # The pass probability's bounds are those of "not among the ranks": turned round, of being among them.
+        lower, upper = 1.0 - upper, 1.0 - lower
+        axes.fill_between(at, np.maximum(lower, floor), upper, step="post", color=SKY, alpha=0.35, linewidth=0)
     axes.step(at, ranks / trials, where="post", color=BLUE, linewidth=1.6)
     row.mark_limit(axes, vertical=True)
     axes.set_yscale("log")
@@ -165,10 +169,11 @@ def _curve_ranks(trials: int) -> NDArray[np.int64]:
     return np.unique(np.rint(np.concatenate([tail, body])).astype(np.int64))
 
 
-def _write_missed(axes: Axes, row: Row, confidence: float) -> None:
-    low, high = _statistics.clopper_pearson_interval(row.missed, row.trials, confidence)
-    share = f"{percent_below(1.0 - high)} to {percent_above(1.0 - low)}"
-    lines = [f"{plainly_grouped(row.missed)} missed", share.replace("\u00a0%", " %")]
+def _write_missed(axes: Axes, row: Row, confidence: float | None) -> None:
+    lines = [f"{plainly_grouped(row.missed)} missed"]
+    if confidence is not None:
+        low, high = _statistics.clopper_pearson_interval(row.missed, row.trials, confidence)
+        lines.append(f"{percent_below(1.0 - high)} to {percent_above(1.0 - low)}".replace("\u00a0%", " %"))
     if row.undefined:
         lines.append(f"{plainly_grouped(row.undefined)} without a value")
     # Where the curve is not. It falls towards the missed side, and is high there where most trials miss.
@@ -188,11 +193,11 @@ def _percent(share: float) -> str:
     return f"{100.0 * share:.3g} %" if share >= 1e-6 or not share else f"{100.0 * share:.0e} %"
 
 
-def _curve_legend(confidence: float) -> list[Line2D | Patch]:
+def _curve_legend(confidence: float | None) -> list[Line2D | Patch]:
+    observed = Line2D([], [], color=BLUE, linewidth=1.6, label="observed fraction")
+    limit = Line2D([], [], color=INK, linestyle="--", label="limit")
+    missed = Patch(facecolor=VERMILLION, alpha=0.25, hatch="//", edgecolor=VERMILLION, label="missed")
+    if confidence is None:
+        return [observed, limit, missed]
     band = f"{100 * confidence:g} % Clopper-Pearson band, pointwise"
-    return [
-        Line2D([], [], color=BLUE, linewidth=1.6, label="observed fraction"),
-        Patch(facecolor=SKY, alpha=0.35, label=band),
-        Line2D([], [], color=INK, linestyle="--", label="limit"),
-        Patch(facecolor=VERMILLION, alpha=0.25, hatch="//", edgecolor=VERMILLION, label="missed"),
-    ]
+    return [observed, Patch(facecolor=SKY, alpha=0.35, label=band), limit, missed]

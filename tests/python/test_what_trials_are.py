@@ -236,6 +236,19 @@ def test_a_stopped_run_that_is_run_to_its_end_is_one_look_and_any_other_end_is_t
     assert short.extend(70, progress=False).verdict(0.5).looks == 3  # stopped, the planned end, another end
 
 
+def test_a_picture_shows_no_bounds_where_there_are_none() -> None:
+    pytest.importorskip("matplotlib")
+
+    def legend_of(outcome: Any) -> str:
+        return " ".join(text.get_text() for text in outcome.plot(parameters=0).legends[0].get_texts())
+
+    sample = study(gain=wd.uniform(0.8, 1.2), seed=15)
+    assert "Clopper-Pearson" in legend_of(sample.run(50, progress=False))
+    listed = study(gain=wd.column("g"), table={"g": GAINS}, table_rows="in_order").run(1000, progress=False)
+    for outcome in (study().run(50, progress=False), listed, stopped("run", 15)):
+        assert "Clopper-Pearson" not in legend_of(outcome)
+
+
 # --- looks
 
 
