@@ -7,7 +7,7 @@ from typing import Any, TypedDict
 
 from ._basis import SAMPLE, Basis
 from ._describe import DrawnColumn
-from ._descriptions import Description, FrozenMapping, arguments
+from ._descriptions import Description, FrozenMapping, arguments, parts
 from ._distributions import Samples
 from ._loop import Loop
 from ._numbers import Spread
@@ -57,9 +57,21 @@ def _is_observed(spread: Spread) -> bool:
 
 
 def _has_noise(loop: Loop) -> bool:
-    noises = [part for part in loop.disturbances.values() if isinstance(part, Noise)]
+    noises = [part for disturbance in loop.disturbances.values() for part in _noises(disturbance)]
     sizes = [loop.sensor.noise, *(getattr(noise, noise.engine_order[0]) for noise in noises)]
     return any(isinstance(size, Spread) or size != 0.0 for size in sizes)
+
+
+def _noises(value: Any) -> Iterator[Noise]:
+    """Walk over the noises that a disturbance is, or is made of."""
+    if isinstance(value, Noise):
+        yield value
+    elif isinstance(value, Description):
+        for _, part in parts(value):
+            yield from _noises(part)
+    elif isinstance(value, tuple):
+        for part in value:
+            yield from _noises(part)
 
 
 def not_varied(loop: Loop) -> tuple[str, ...]:
