@@ -69,7 +69,7 @@ class OutputError(WindageError, OSError):
 
 
 class EngineError(WindageError, RuntimeError):
-    """The engine cannot do what was asked (for example an instruction set that this machine lacks)."""
+    """The engine cannot do what was asked: an instruction set that this machine lacks, a trial it cannot compute."""
 
 
 class Shown:

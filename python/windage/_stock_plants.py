@@ -35,7 +35,9 @@ _DEAD_TIME = Rule("a dead time of at least 0 s or a spread of such times", low=0
 class LinearPlant(StockPlant):
     """Root of the linear stock plants.
 
-    Disturbances are held over a sample interval; a function of time takes its value in the middle of it.
+    Disturbances are exact as well: functions of time wherever they jump or bend, also between two samples, and noises,
+    which are held from sample to sample. A trial for which the digits of the engine are not enough is refused with an
+    `EngineError` that names it.
     """
 
     is_linear = True

@@ -76,17 +76,17 @@ def step_response(numerator: Sequence[float], denominator: Sequence[float], peri
         return found
 
 
-def uncontrolled(plant: Any, period: float, samples: int, load: Any = 1.0, **parts: Any) -> wd.Replay:
-    """Replay a plant on which nothing but its load acts: the command is limited to 1e-200."""
+def uncontrolled(plant: Any, period: float, samples: int, load: Any = 1.0) -> wd.Replay:
+    """Replay a plant on which nothing but its load acts: the command is 0 all the time."""
     loop = wd.Loop(
         plant=plant,
-        controller=wd.ErrorADRC(1, controller_bandwidth=0.1 / period, observer_bandwidth=0.5 / period, b0=1.0),
+        controller=wd.OutputADRC(
+            1, controller_gains=[0.0], observer_gains=[0.0, 0.0], b0=1.0, cancel_disturbance=False
+        ),
         sample_period=period,
         duration=samples * period,
         reference=0.0,
-        actuator=wd.Actuator(limits=(-1e-200, 1e-200)),
         disturbances={"load": load},
-        **parts,
     )
     return wd.Study(loop, requirements=[wd.peak("error") <= 1.0]).replay(0)
 

@@ -6,6 +6,7 @@ computed so is refused. The first two claims state the worst of the errors found
 
 from __future__ import annotations
 
+import math
 import sys
 from pathlib import Path
 from typing import Any
@@ -81,6 +82,12 @@ def test_zeros_integrators_and_unstable_poles_are_exact(numerator: Any, roots: A
     assert worst_error(numerator, polynomial(roots), PERIOD, longest) < 1e-11
 
 
+def test_a_motion_that_dies_within_a_sample_leaves_zero_and_no_subnormal_number() -> None:
+    for speed, left in ((720.0, 0.0), (600.0, math.exp(-600.0))):  # exp(-720) = 2e-313
+        plant = wd.FirstOrder(1.0, PERIOD / speed, initial=1.0)
+        assert uncontrolled(plant, PERIOD, 3, load=0.0)["output"][1] == pytest.approx(left, rel=1e-12, abs=0.0)
+
+
 def test_a_large_gain_takes_no_digits_from_the_motion() -> None:
     small, large = (uncontrolled(wd.FirstOrder(gain, 0.3), 0.01, 100)["output"] / gain for gain in (1.0, 2.0**40))
     np.testing.assert_allclose(large, small, rtol=1e-14)
@@ -106,8 +113,48 @@ def test_a_lane_does_not_see_the_speed_of_its_neighbours() -> None:
         assert np.array_equal(values[same], fast.measures[name][same])
 
 
-def test_a_plant_that_loses_its_digits_is_refused_by_trial_and_reason() -> None:
+def test_a_motion_that_loses_its_digits_within_a_sample_is_refused() -> None:
     modes = [pair(1e6 * (1 + 0.07 * k), 0.01) for k in range(10)]
     plant = wd.TransferFunction([1.0], polynomial([p for mode in modes for p in mode]))
     with pytest.raises(wd.EngineError, match=r"plant: trial 0 moves .* cannot be computed accurately enough"):
         uncontrolled(plant, PERIOD, 10)
+
+
+@pytest.mark.parametrize("ratio", [0.3, 10.0])
+@pytest.mark.parametrize("apart", [0.3, 0.1, 0.03, 1e-3, 1e-5])
+@pytest.mark.parametrize("order", [6, 8, 10, 12])
+def test_modes_ever_closer_are_within_the_bound_or_refused(order: int, apart: float, ratio: float) -> None:
+    modes = [pair((1 + apart * k) / (ratio * PERIOD), apart / 3) for k in range(order // 2)]
+    denominator = polynomial([p for mode in modes for p in mode])
+    try:
+        assert worst_error([1.0], denominator, PERIOD, 10 * ratio * PERIOD / apart) < BOUND
+        assert (order, apart) not in {(12, 1e-3), (12, 1e-5)}
+    except wd.EngineError as error:
+        assert "plant: trial 0 would lose its digits" in str(error)  # noqa: PT017
+        assert (order, apart) != (6, 0.3)
+
+
+def test_the_same_modes_as_a_state_space_are_no_problem() -> None:
+    """Five modes in parallel: the response is the sum of theirs (any text on vibration)."""
+    frequencies = [100.0 * (1 + 0.03 * k) for k in range(5)]
+    a = np.zeros((10, 10))
+    for k, w in enumerate(frequencies):
+        a[2 * k, 2 * k + 1], a[2 * k + 1, 2 * k], a[2 * k + 1, 2 * k + 1] = w, -w, -0.02 * w
+    plant = wd.StateSpace(a.tolist(), b=[0.0] * 10, c=[1.0, 0.0] * 5, e=[[0.0], [1.0]] * 5)
+    replay = uncontrolled(plant, PERIOD, 2000)
+    expected = np.zeros(2001)
+    for w in frequencies:
+        rate, angle = 0.01 * w, w * math.sqrt(1 - 1e-4) * replay.time
+        swing = np.cos(angle) + 0.01 / math.sqrt(1 - 1e-4) * np.sin(angle)
+        expected += (1.0 - np.exp(-rate * replay.time) * swing) / w
+    assert np.max(np.abs(replay["output"] - expected)) < 1e-12 * np.max(expected)
+
+
+def test_states_of_which_the_output_is_a_tiny_difference_are_refused() -> None:
+    """The coordinates hide all but 1e-7 of two states from the output, and rounding is 1e7 times as large."""
+    hidden, shown = np.array([[1.0, 1.0, 0.0], [1.0, 1.0 + 1e-7, 0.0], [0.0, 0.0, 1.0]]), np.diag([-3.0, -5.0, -7.0])
+    inverse = np.linalg.inv(hidden)
+    a, b = hidden @ shown @ inverse, hidden @ np.ones(3)
+    plant = wd.StateSpace(a.tolist(), b=[0.0] * 3, c=inverse[1].tolist(), e=[[x] for x in b])
+    with pytest.raises(wd.EngineError, match="would lose its digits to rounding"):
+        uncontrolled(plant, 0.01, 100)

@@ -59,8 +59,13 @@ def measured(plant: Any, integrator: str, **parts: Any) -> np.ndarray[Any, Any]:
 @pytest.mark.parametrize("name", plants())
 @pytest.mark.parametrize(
     "parts",
-    [{}, {"actuator": wd.Actuator(delay=0.0037, time_constant=0.02)}],
-    ids=["ideal actuator", "delay and lag"],
+    [
+        {},
+        {"actuator": wd.Actuator(delay=0.0037, time_constant=0.02)},
+        {"disturbances": {"load": wd.Pulse(5.0, start=1.0042, width=0.0031)}},
+        {"disturbances": {"load": wd.Sine(0.5, period=0.021)}, "actuator": wd.Actuator(delay=0.0037)},
+    ],
+    ids=["ideal actuator", "delay and lag", "short pulse", "fast sine"],
 )
 def test_the_integrated_plant_agrees_with_the_exactly_sampled_one(name: str, parts: dict[str, Any]) -> None:
     plant = plants()[name]

@@ -122,6 +122,18 @@ def stock_plants() -> dict[str, wd.Study]:
                 reference=wd.Step(0.5, at=0.1),
             )
         ),
+        "moving loads": measured(
+            loop_of(
+                wd.StateSpace(
+                    [[0.0, 1.0], [-4.0, wd.uniform(-0.8, -0.2)]], [0.0, 50.0], [1.0, 0.0], e=[[0.0, 0.2], [1.0, 0.0]]
+                ),
+                adrc,
+                disturbances={
+                    "load_1": wd.Pulse(9.0, start=wd.uniform(0.1, 0.2), width=wd.uniform(0.001, 0.1)),
+                    "load_2": wd.Sine(2.0, wd.uniform(0.01, 0.5), start=wd.uniform(0.0, 0.2)),
+                },
+            )
+        ),
         "state space": measured(
             loop_of(
                 wd.StateSpace([[0.0, 1.0], [-4.0, -0.4]], [0.0, 50.0], [1.0, 0.0], e=[[0.0], [1.0]]),

@@ -52,8 +52,8 @@ void disturbance::sample(std::int64_t k) {
 }
 
 void disturbance::evaluate(constant_signal time, jump_side side, signal out, bool own_times) const {
-    if (own_times) return function_->evaluate_at_own_times(time, side, out);
     signal outs[1] = {out};
+    if (own_times) return function_->evaluate_at_own_times(time, side, outs, 0);
     function_->evaluate(time, outs, 0, side);
 }
 

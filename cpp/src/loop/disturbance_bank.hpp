@@ -22,12 +22,21 @@ public:
     bool is_zero(int which) const override { return all_[which].is_zero(); }
     constant_signal now(int which) const override { return all_[which].now(); }
     void evaluate(int which, constant_signal time, bool ends_a_step, signal out, bool own_times) const override {
-        all_[which].evaluate(time, ends_a_step ? jump_side::before : jump_side::after, out, own_times);
+        all_[which].evaluate(time, side(ends_a_step), out, own_times);
+    }
+    bool is_held(int which) const override { return all_[which].is_held(); }
+    smooth_motion motion(int which) const override { return all_[which].motion(); }
+    void evaluate_motion(int which, constant_signal time, bool ends_a_step, signal* out) const override {
+        all_[which].evaluate_motion(time, side(ends_a_step), out);
+    }
+    void evaluate_motion_at_own_times(int which, constant_signal time, bool ends_a_step, signal* out) const override {
+        all_[which].evaluate_motion_at_own_times(time, side(ends_a_step), out);
     }
     bool break_soon() const override { return break_soon_; }
     bool piece_end(constant_signal from, constant_signal end, signal until) const override;
 
 private:
+    static jump_side side(bool ends_a_step) { return ends_a_step ? jump_side::before : jump_side::after; }
     double next_break(double t, std::size_t lane) const;
     void look_for_breaks(std::int64_t k);
 

@@ -27,16 +27,17 @@ time_function::time_function(const time_function_description& d, bool time_is_un
     : kind_(d.kind), size_(arena.block_size()), uniform_(time_is_uniform && all_constant(d.numbers)), period_(period),
       has_common_numbers_(all_constant(d.numbers)), allowance_(period.is_same(), arena) {
     for (const number& n : d.numbers) numbers_.emplace_back(n, arena);
-    const int derived = kind_ == time_function_kind::sine ? 1 : kind_ == time_function_kind::jerk_limited ? 5 : 0;
-    for (int i = 0; i < derived; ++i) derived_.push_back(arena.take());
+    if (kind_ == time_function_kind::sine) angular_frequency_.emplace(d.numbers[1].is_constant(), arena);
+    if (kind_ == time_function_kind::jerk_limited)
+        for (int i = 0; i < 5; ++i) derived_.push_back(arena.take());
 }
 
 void time_function::begin(const trial_block& block) {
     holds_until_ = -infinity;
     for (lane_value& n : numbers_) n.begin(block);
     allowance_.fill([&](std::size_t i) { return same_instant * period_.pack_at(i); });
+    if (angular_frequency_) angular_frequency_->fill([&](std::size_t i) { return two_pi / number_at(1, i); });
     for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP {
-        if (kind_ == time_function_kind::sine) (wide(two_pi) / number_at(1, i)).store(derived_[0] + i);
         if (kind_ == time_function_kind::jerk_limited)
             plan_profile(number_at(0, i), number_at(2, i), number_at(3, i), number_at(4, i)).store(derived_.data(), i);
     });
@@ -118,12 +119,23 @@ void time_function::write_where_new(wide value, signal out) const {
     for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP { value.store(out + i); });
 }
 
-void time_function::evaluate_at_own_times(constant_signal time, jump_side side, signal out) const {
+void time_function::evaluate_at_own_times(constant_signal time, jump_side side, signal* out, int derivatives) const {
     for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP {
-        wide value;
-        evaluate_pack(i, instant_at(wide::load(time + i), i, side), &value, 0);
-        value.store(out + i);
+        wide values[max_order + 1];
+        evaluate_pack(i, instant_at(wide::load(time + i), i, side), values, derivatives);
+        for (int d = 0; d <= derivatives; ++d) values[d].store(out[d] + i);
     });
+}
+
+smooth_motion time_function::motion() const {
+    switch (kind_) {
+    case time_function_kind::ramp:
+    case time_function_kind::table_linear: return {1};
+    case time_function_kind::jerk_limited: return {3};
+    case time_function_kind::quintic: return {5};
+    case time_function_kind::sine: return {2, &*angular_frequency_};
+    default: return {};
+    }
 }
 
 void time_function::evaluate_at_own_times(const held_value& time, const held_value& before_jump, signal out) const {
@@ -164,7 +176,7 @@ void time_function::evaluate_pack(std::size_t i, instant at, wide* out, int deri
 
 void time_function::sine_pack(std::size_t i, instant at, wide* out, int derivatives) const {
     const wide amplitude = number_at(0, i), phase = number_at(2, i), offset = number_at(3, i), start = number_at(4, i);
-    const wide omega = wide::load(derived_[0] + i);
+    const wide omega = angular_frequency_->pack_at(i);
     const auto [s, c] = sine_cosine(omega * (at.t - start) + phase);
     const wide turned[4] = {s, c, -s, -c}; // the derivatives of a sine turn by a quarter each
     const auto started = at.sided >= start;

@@ -3,12 +3,14 @@
 #include <stdexcept>
 #include <string>
 
+#include <windage/lanes/double_double.hpp>
+
 namespace windage {
 namespace {
 
 linear_model zeros(int states, int disturbances) {
     return {lane_matrix(states, states), lane_matrix(states, 1), lane_matrix(states, disturbances),
-            lane_matrix(1, states)};
+            lane_matrix(1, states), lane_matrix()};
 }
 
 // y^(n) = b u + w
@@ -48,7 +50,12 @@ linear_model transfer_function(const std::vector<wide>& numbers, int numerator_t
     const wide lead = numbers[numerator_terms];
     linear_model m = zeros(n, 1);
     for (int i = 0; i + 1 < n; ++i) m.a(i, i + 1) = 1.0;
-    for (int i = 0; i < n; ++i) m.a(n - 1, i) = -numbers[numbers.size() - 1 - i] / lead;
+    m.a_low = lane_matrix(n, n); // close modes feel the rounding of a coefficient a million times
+    for (int i = 0; i < n; ++i) {
+        const wide_pair coefficient = wide_pair(-numbers[numbers.size() - 1 - std::size_t(i)]) / wide_pair(lead);
+        m.a(n - 1, i) = coefficient.high;
+        m.a_low(n - 1, i) = coefficient.low;
+    }
     m.b(n - 1, 0) = m.e(n - 1, 0) = 1.0;
     for (int i = 0; i < numerator_terms; ++i) m.c(0, i) = numbers[numerator_terms - 1 - i] / lead;
     return m;
@@ -115,6 +122,11 @@ linear_model with_lag(const linear_model& m, wide time_constant) {
         for (int k = 0; k < w; ++k) out.e(i, k) = m.e(i, k);
         out.a(i, n) = m.b(i, 0);
         out.c(0, i) = m.c(0, i);
+    }
+    if (m.a_low.rows() > 0) {
+        out.a_low = lane_matrix(n + 1, n + 1);
+        for (int i = 0; i < n; ++i)
+            for (int j = 0; j < n; ++j) out.a_low(i, j) = m.a_low(i, j);
     }
     out.a(n, n) = -1.0 / time_constant;
     out.b(n, 0) = 1.0 / time_constant;

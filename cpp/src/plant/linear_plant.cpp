@@ -5,6 +5,7 @@
 
 #include <windage/plant/matrix_exponential.hpp>
 #include <windage/plant/refused_trial.hpp>
+#include <windage/plant/roundoff.hpp>
 
 namespace windage {
 namespace {
@@ -27,16 +28,6 @@ bool has_general_output(plant_kind kind) {
     return kind == plant_kind::transfer_function || kind == plant_kind::state_space;
 }
 
-// Inputs that keep their values: the command, then the disturbances.
-drive held_inputs(const linear_model& m) {
-    drive v{lane_matrix(m.a.rows(), 1 + m.e.columns()), {}};
-    for (int i = 0; i < m.a.rows(); ++i) {
-        v.g(i, 0) = m.b(i, 0);
-        for (int k = 0; k < m.e.columns(); ++k) v.g(i, 1 + k) = m.e(i, k);
-    }
-    return v;
-}
-
 // A result that is not finite is no error: that trial diverges.
 void expect_accurate(const step_matrices& step, const trial_block& trials, std::size_t i) {
     constexpr double largest_error = 1e-13;
@@ -49,27 +40,39 @@ void expect_accurate(const step_matrices& step, const trial_block& trials, std::
 
 } // namespace
 
+// Lightly damped modes close to each other, and states of which the output is a small difference.
+void linear_plant::expect_small_roundoff(const linear_model& m, const step_matrices& step, const trial_block& trials,
+                                         std::size_t i) const {
+    constexpr double largest_roundoff = 1e-10; // estimated; found are up to twenty times as much
+    if (order_ < 3) return;
+    const wide roundoff = relative_roundoff(step.phi, acting_.held(step.gamma), m.c);
+    for (int lane = 0; lane < lanes; ++lane)
+        if (roundoff[lane] > largest_roundoff)
+            throw refused_trial(trials, i + std::size_t(lane),
+                                "would lose its digits to rounding from sample to sample: its modes are too close "
+                                "together for this form; write it as a state space of its modes, or as equations");
+}
+
 linear_plant::linear_plant(const plant_description& d, number lag, const plant_timing& timing,
                            const plant_disturbances& w, signal_arena& arena)
     : d_(checked(d, w)), timing_(timing), w_(w), size_(arena.block_size()), states_(int(d.states.size())),
-      order_(lag.is_constant(0.0) ? states_ : states_ + 1), w_count_(w.count()), has_lag_(order_ > states_),
+      order_(lag.is_constant(0.0) ? states_ : states_ + 1), has_lag_(order_ > states_),
       output_is_first_state_(!has_general_output(d.kind)), lag_(lag, arena), numbers_(lane_values(d.numbers, arena)),
       initial_state_(lane_values(d.initial_state, arena)), x_(arena.take(order_)), next_(arena.take(order_)),
-      output_(arena.take()), middle_(arena.take()), phi_(order_, order_, is_same(), arena),
-      before_(order_, 1, is_same(), arena), after_(order_, 1, is_same(), arena),
-      gamma_w_(order_, w_count_, is_same(), arena), c_(1, order_, is_same(), arena) {
-    for (int k = 0; k < w_count_; ++k) {
-        w_middle_.push_back(arena.take());
-        if (!w.is_zero(k)) acting_.push_back(k);
-    }
-    w_now_.resize(acting_.size());
+      output_(arena.take()), acting_(w, arena), phi_(order_, order_, is_same(), arena),
+      before_(order_, 1, is_same(), arena), gamma_(order_, acting_.columns(), is_same(), arena),
+      c_(1, order_, is_same(), arena) {
+    if (w.are_held()) return;
+    from_ = arena.take();
+    until_ = arena.take();
+    end_ = arena.take();
 }
 
 // All lanes are the same plant at the same instants.
 bool linear_plant::is_same() const {
     const bool same_numbers =
         std::all_of(numbers_.begin(), numbers_.end(), [](const lane_value& v) { return v.is_same(); });
-    return same_numbers && are_same(lag_, timing_.period, timing_.fraction);
+    return same_numbers && acting_.is_same() && are_same(lag_, timing_.period, timing_.fraction);
 }
 
 void linear_plant::begin(const trial_block& trials, const held_value& initial_command) {
@@ -84,25 +87,30 @@ void linear_plant::begin(const trial_block& trials, const held_value& initial_co
     for (std::size_t i = 0; i < packs; i += lanes) sample_exactly(i, trials);
 }
 
-void linear_plant::sample_exactly(std::size_t i, const trial_block& trials) {
+linear_model linear_plant::model_at(std::size_t i) const {
     std::vector<wide> numbers;
     for (const lane_value& n : numbers_) numbers.push_back(n.pack_at(i));
-    const linear_model own = realise(d_, numbers), m = has_lag_ ? with_lag(own, lag_.pack_at(i)) : own;
+    const linear_model own = realise(d_, numbers);
+    return has_lag_ ? with_lag(own, lag_.pack_at(i)) : own;
+}
+
+void linear_plant::sample_exactly(std::size_t i, const trial_block& trials) {
+    const linear_model m = model_at(i);
     const wide period = timing_.period.pack_at(i);
-    const step_matrices whole = transition(m.a, held_inputs(m), period);
+    const step_matrices whole = acting_.step(m, period, period, i);
     expect_accurate(whole, trials, i);
+    expect_small_roundoff(m, whole, trials, i);
     for (int r = 0; r < order_; ++r) {
         for (int k = 0; k < order_; ++k) phi_.set(r, k, i, whole.phi(r, k));
-        after_.set(r, 0, i, whole.gamma(r, 0));
-        for (int k = 0; k < w_count_; ++k) gamma_w_.set(r, k, i, whole.gamma(r, 1 + k));
+        for (int k = 0; k < acting_.columns(); ++k) gamma_.set(r, k, i, whole.gamma(r, k));
         c_.set(0, r, i, m.c(0, r));
     }
     if (!timing_.is_split) return;
     // The command before the change acts all the time, and the change for the rest of the interval.
-    const step_matrices rest = transition(m.a, {m.b, {}}, period - timing_.fraction.pack_at(i));
+    const step_matrices rest = transition(m.a, m.a_low, {m.b, {}}, period - timing_.fraction.pack_at(i));
     expect_accurate(rest, trials, i);
     for (int r = 0; r < order_; ++r) {
-        after_.set(r, 0, i, rest.gamma(r, 0));
+        gamma_.set(r, 0, i, rest.gamma(r, 0));
         before_.set(r, 0, i, whole.gamma(r, 0) - rest.gamma(r, 0));
     }
 }
@@ -116,24 +124,47 @@ void linear_plant::evaluate_output(constant_signal, constant_signal) {
     });
 }
 
-void linear_plant::find_disturbances(const sample_interval& interval) {
-    bool has_middle = false;
-    for (std::size_t k = 0; k < acting_.size(); ++k) {
-        const int which = acting_[k];
-        w_now_[k] = w_.now(which);
-        if (w_.holds(which)) continue;
-        if (!has_middle)
-            for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP {
-                (wide::load(interval.time + i) + 0.5 * timing_.period.pack_at(i)).store(middle_ + i);
-            });
-        has_middle = true;
-        w_.evaluate(which, middle_, false, w_middle_[which]);
-        w_now_[k] = w_middle_[which];
+void linear_plant::advance(const sample_interval& interval) {
+    inputs_ = acting_.at_start(interval.time);
+    move_on(interval);
+    if (w_.break_soon()) add_jumps(interval.time);
+}
+
+// What the motion at the start of the interval does not know of acts from its own instant to the end.
+void linear_plant::add_jumps(constant_signal time) {
+    for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP {
+        const wide start = wide::load(time + i);
+        start.store(from_ + i);
+        (start + timing_.period.pack_at(i)).store(end_ + i);
+    });
+    while (w_.piece_end(from_, end_, until_)) {
+        inputs_ = acting_.jumps_at(until_);
+        const auto same = [this](constant_signal s) {
+            return std::all_of(s, s + size_, [s](double x) { return x == s[0]; });
+        };
+        const bool is_one = is_same() && same(until_) && same(end_);
+        step_matrices rest;
+        for (std::size_t i = 0; i < size_; i += lanes) {
+            const wide left = wide::load(end_ + i) - wide::load(until_ + i);
+            const auto jumps = left > 0.0;
+            if (!any(jumps)) continue;
+            if (!is_one || i == 0) rest = acting_.step(model_at(i), left, timing_.period.pack_at(i), i);
+            add_jump(rest, jumps, i);
+        }
+        std::copy_n(until_, size_, from_);
     }
 }
 
-void linear_plant::advance(const sample_interval& interval) {
-    find_disturbances(interval);
+void linear_plant::add_jump(const step_matrices& rest, mask<lanes> where, std::size_t i) {
+    for (int r = 0; r < order_; ++r) {
+        const signal state = x_ + std::size_t(r) * size_ + i;
+        wide sum = wide::load(state);
+        for (const exosystem::input& v : inputs_) sum += rest.gamma(r, v.column) * wide::load(v.value + i);
+        select(where, sum, wide::load(state)).store(state);
+    }
+}
+
+void linear_plant::move_on(const sample_interval& interval) {
     switch (order_) {
     case 1: return advance_order<1>(interval);
     case 2: return advance_order<2>(interval);
@@ -143,14 +174,14 @@ void linear_plant::advance(const sample_interval& interval) {
     }
 }
 
-// Row r of the new state; `n` states, known to the compiler for the usual plants.
+// Row r of the new state; `n` states, known to the compiler for the usual plants. The sum starts at a zero whose sign
+// no later zero changes: whether an input that is zero is added or left out makes no digit.
 WINDAGE_INLINE wide linear_plant::next_state(int r, int n, const sample_interval& interval, std::size_t i) const {
-    wide sum = after_.pack_at(r, 0, i) * wide::load(interval.after + i);
+    wide sum = 0.0 + gamma_.pack_at(r, 0, i) * wide::load(interval.after + i);
     if (timing_.is_split) sum += before_.pack_at(r, 0, i) * wide::load(interval.before + i);
 #pragma GCC unroll 4
     for (int k = 0; k < n; ++k) sum += phi_.pack_at(r, k, i) * wide::load(x_ + k * size_ + i);
-    for (std::size_t k = 0; k < acting_.size(); ++k)
-        sum += gamma_w_.pack_at(r, acting_[k], i) * wide::load(w_now_[k] + i);
+    for (const exosystem::input& v : inputs_) sum += gamma_.pack_at(r, v.column, i) * wide::load(v.value + i);
     return sum;
 }
 

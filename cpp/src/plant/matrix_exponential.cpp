@@ -13,6 +13,7 @@ namespace {
 constexpr double largest_norm = 0.5; // of what the series is summed for
 constexpr double few_squarings = 2;  // up to here the digits of a pack are enough
 constexpr int most_squarings = 1000;
+constexpr double nothing = 0x1p-900;
 constexpr double pair_rounding = 0x1p-104, small_error = 0x1p-60;
 
 /// Terms of the series whose remainder is below the rounding of a number.
@@ -180,7 +181,7 @@ wide error_of(const blocks<wide_pair>& x, wide h, scaling scale, const exponenti
 
 } // namespace
 
-step_matrices transition(const lane_matrix& a, const drive& v, wide h) {
+step_matrices transition(const lane_matrix& a, const lane_matrix& a_low, const drive& v, wide h) {
     const lane_matrix unit = balanced_units(a);
     blocks<wide> x{a, v.g, v.s};
     for_each_entry(x, [&](std::size_t k, int i, int j) {
@@ -199,7 +200,9 @@ step_matrices transition(const lane_matrix& a, const drive& v, wide h) {
         step = {lane_matrix(a.rows(), a.columns()), lane_matrix(v.g.rows(), v.g.columns())};
     }
     if (any(needs_pairs)) {
-        const blocks<wide_pair> pairs = in_pairs(x);
+        blocks<wide_pair> pairs = in_pairs(x);
+        for (int i = 0; i < a_low.rows(); ++i)
+            for (int j = 0; j < a_low.columns(); ++j) pairs.a(i, j).low = a_low(i, j) * unit(j, 0) / unit(i, 0);
         const exponential_of<wide_pair> found(pairs, h, scale);
         step.error = select(needs_pairs, error_of(pairs, h, scale, found), 0.0);
         for_each_entry(found.value, [&](std::size_t k, int i, int j) {
@@ -208,7 +211,11 @@ step_matrices transition(const lane_matrix& a, const drive& v, wide h) {
         });
     }
     for (int i = 0; i < a.rows(); ++i) {
-        for (int j = 0; j < a.columns(); ++j) step.phi(i, j) = step.phi(i, j) * unit(i, 0) / unit(j, 0);
+        for (int j = 0; j < a.columns(); ++j) {
+            // What dies within a step leaves a zero: subnormal numbers would make every sample slow.
+            const wide balanced = select(absolute(step.phi(i, j)) < nothing, 0.0, step.phi(i, j));
+            step.phi(i, j) = balanced * unit(i, 0) / unit(j, 0);
+        }
         for (int j = 0; j < v.g.columns(); ++j) step.gamma(i, j) *= unit(i, 0);
     }
     return step;

@@ -26,6 +26,14 @@ public:
     double next_break(double t, std::size_t lane) const {
         return function_ ? function_->next_break(t, lane) : std::numeric_limits<double>::infinity();
     }
+    /// How it moves between its breaks, and with which derivatives.
+    smooth_motion motion() const { return function_ ? function_->motion() : smooth_motion{}; }
+    void evaluate_motion(constant_signal time, jump_side side, signal* out) const {
+        function_->evaluate(time, out, motion().derivatives, side);
+    }
+    void evaluate_motion_at_own_times(constant_signal time, jump_side side, signal* out) const {
+        function_->evaluate_at_own_times(time, side, out, motion().derivatives);
+    }
     bool has_common_breaks() const { return !function_ || function_->has_common_breaks(); }
 
     /// Keeps its value until the next sample.

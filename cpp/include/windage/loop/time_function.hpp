@@ -2,11 +2,13 @@
 // Where nothing differs between the trials the value is computed for one pack and copied to the others when it changes.
 #pragma once
 
+#include <optional>
 #include <vector>
 
 #include <windage/lanes/signal.hpp>
 #include <windage/loop/clock.hpp>
 #include <windage/loop/description.hpp>
+#include <windage/plant/plant.hpp>
 
 namespace windage {
 
@@ -34,9 +36,12 @@ public:
     /// The value alone, at times that may differ from lane to lane even where those of `evaluate` do not. At a jump it
     /// is the one before it where `before_jump` is not zero.
     void evaluate_at_own_times(const held_value& time, const held_value& before_jump, signal out) const;
-    /// The same on one side of a jump. A signal written so must be the same in all lanes again before `evaluate` or
-    /// `sample` may write it.
-    void evaluate_at_own_times(constant_signal time, jump_side side, signal out) const;
+    /// With derivatives, on one side of a jump. A signal written so must be the same in all lanes again before
+    /// `evaluate` or `sample` may write it.
+    void evaluate_at_own_times(constant_signal time, jump_side side, signal* out, int derivatives) const;
+
+    /// Between two breaks, with the derivatives that `evaluate` gives.
+    smooth_motion motion() const;
 
     /// The lane's first break later than t and not the same instant; infinity if there is none. At a break the value
     /// jumps, or a derivative of it. Costs a search in a table, whatever its length.
@@ -78,7 +83,8 @@ private:
     std::vector<lane_value> numbers_;
     bool has_common_numbers_;
     held_value allowance_;        // within which two instants are the same
-    std::vector<signal> derived_; // angular frequency of a sine; phase times of a jerk-limited profile
+    std::vector<signal> derived_; // phase times of a jerk-limited profile
+    std::optional<held_value> angular_frequency_;
 };
 
 } // namespace windage

@@ -31,6 +31,7 @@ using lane_matrix = matrix_of<wide>;
 
 struct linear_model {
     lane_matrix a, b, e, c;
+    lane_matrix a_low; ///< what rounding has left of A; empty where that does not matter
 };
 
 /// Throws std::invalid_argument where the description has the wrong count of numbers or states.

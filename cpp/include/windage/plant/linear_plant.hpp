@@ -1,12 +1,14 @@
 // Linear stock plants, sampled exactly: x_{k+1} = Phi x_k + Gamma_b u_b + Gamma_a u_a + Gamma_w w with the matrix
 // exponential, for a command that changes from u_b to u_a anywhere inside the interval, and including the first-order
-// lag of the actuator. Disturbances are held over the interval; a function of time takes its value at mid-interval.
+// lag of the actuator. Disturbances are exact too: noises are held, functions of time are polynomials or sines between
+// their breaks, which may lie anywhere inside the interval, each trial with its own.
 #pragma once
 
 #include <vector>
 
 #include <windage/lanes/settle.hpp>
 #include <windage/plant/description.hpp>
+#include <windage/plant/exosystem.hpp>
 #include <windage/plant/linear_model.hpp>
 #include <windage/plant/plant.hpp>
 
@@ -29,7 +31,12 @@ public:
 private:
     bool is_same() const;
     void sample_exactly(std::size_t i, const trial_block& trials);
-    void find_disturbances(const sample_interval& interval);
+    void expect_small_roundoff(const linear_model& m, const step_matrices& step, const trial_block& trials,
+                               std::size_t i) const;
+    linear_model model_at(std::size_t i) const;
+    void add_jumps(constant_signal time);
+    void add_jump(const step_matrices& rest, mask<lanes> where, std::size_t i);
+    void move_on(const sample_interval& interval);
     wide next_state(int row, int order, const sample_interval& interval, std::size_t i) const;
     template <int Order> void advance_order(const sample_interval& interval);
     void advance_any_order(const sample_interval& interval);
@@ -38,15 +45,15 @@ private:
     const plant_timing timing_;
     const plant_disturbances& w_;
     std::size_t size_;
-    int states_, order_, w_count_; // order: with the lag
+    int states_, order_; // order: with the lag
     bool has_lag_, output_is_first_state_;
     lane_value lag_;
     std::vector<lane_value> numbers_, initial_state_;
-    signal x_, next_, output_, middle_;
-    held_matrix phi_, before_, after_, gamma_w_, c_;
-    std::vector<int> acting_; // disturbances that are not zero for good
-    std::vector<signal> w_middle_;
-    std::vector<constant_signal> w_now_; // of those that act
+    signal x_, next_, output_;
+    exosystem acting_;
+    held_matrix phi_, before_, gamma_, c_;
+    std::vector<exosystem::input> inputs_;
+    signal from_ = nullptr, until_ = nullptr, end_ = nullptr; // pieces between breaks
 };
 
 } // namespace windage

@@ -23,6 +23,7 @@ struct step_matrices {
 /// units; each lane is scaled by its own norm, so that its digits do not depend on its neighbours. Lanes that need more
 /// than two squarings are computed with twice the digits, since rounding grows with each of them; where the norms on
 /// the way do not exclude that too much is lost even so, the result is compared with that of one squaring more.
-step_matrices transition(const lane_matrix& a, const drive& v, wide h);
+/// `a_low`: what rounding has left of A, or empty.
+step_matrices transition(const lane_matrix& a, const lane_matrix& a_low, const drive& v, wide h);
 
 } // namespace windage

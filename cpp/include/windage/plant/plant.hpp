@@ -10,6 +10,13 @@ namespace windage {
 /// Two instants closer than this fraction of a sample period are the same instant.
 inline constexpr double same_instant = 1e-9;
 
+/// How a disturbance moves between its breaks: as a polynomial of which the derivatives up to this one are given, or,
+/// with an angular frequency, as a sine about an offset, given by two.
+struct smooth_motion {
+    int derivatives = 0;
+    const held_value* angular_frequency = nullptr;
+};
+
 /// Disturbances as the plant sees them. Between two samples they are smooth but for their breaks: instants at which one
 /// of them, or a derivative of it, jumps (a step, the ends of a pulse or ramp, the corners of a table or profile). To
 /// be exact, or to keep its order, a plant moves from break to break; each lane has its own:
@@ -33,6 +40,13 @@ public:
     /// still to come. `own_times`: the times differ between lanes although those of whole steps do not.
     virtual void evaluate(int which, constant_signal time, bool ends_a_step, signal out,
                           bool own_times = false) const = 0;
+    /// Never changes between two samples.
+    virtual bool is_held(int which) const = 0;
+    virtual smooth_motion motion(int which) const = 0;
+    /// Value and derivatives of its motion, as `evaluate`.
+    virtual void evaluate_motion(int which, constant_signal time, bool ends_a_step, signal* out) const = 0;
+    /// The same at times that differ between lanes.
+    virtual void evaluate_motion_at_own_times(int which, constant_signal time, bool ends_a_step, signal* out) const = 0;
     /// In some lane there may be a break between this sample and the next one.
     virtual bool break_soon() const = 0;
     /// The end of the smooth piece that starts at `from`: the lane's first break after it and before `end`, else `end`.
