@@ -44,6 +44,8 @@ LEAST_BOUND = 1e-9
 ROUNDS, LEFT_OVER = 4, 1e-4
 #: Trials of one look along the tail, and how clear a rank correlation has to be for the look.
 TAIL, CLEAR_CORRELATION = 32, 0.3
+#: A change of less than this share of slack and scale does not stand out, however small the typical ones are.
+UNREMARKABLE = 1e-4
 
 RunAgain = Callable[[Rows], Rows]
 
@@ -130,7 +132,7 @@ class Examination:
 
     def first_round(self) -> None:
         """Run the trials of the first round again."""
-        count = max(2, self._sizes.nearest // len(self.scales))
+        count = max(1, self._sizes.nearest // len(self.scales))
         passing, failing = sample(self.rows, self._sizes.passing, self._sizes.failing)
         self._typical = np.unique(np.concatenate([nearest(self._near, count), passing, failing]))
         self._run(np.unique(np.concatenate([self._typical, extremes(self.rows, 1, self._sizes.extremes)])))
@@ -242,7 +244,7 @@ class Examination:
         for limit, slack in enumerate(latest.slack):
             for fails, misses in np.ndindex(2, 2):
                 alike = (~latest.passed == fails) & (~(slack >= 0.0) == misses)
-                reached = np.max(self._alike(limit, fails, misses), initial=SAFETY * LEAST_BOUND)
+                reached = np.max(self._alike(limit, fails, misses), initial=UNREMARKABLE)
                 if np.any(share[limit, alike] > reached):
                     return True
         return False

@@ -50,9 +50,9 @@ class Sizes:
         return max(self.least, trials // self.one_of)
 
 
-USUAL = Sizes(nearest=32, extremes=32, passing=32, failing=16, least=256, one_of=80)
+USUAL = Sizes(nearest=32, extremes=32, passing=32, failing=16, least=160, one_of=125)
 #: Where each trial is run again by itself, with step control.
-ONE_BY_ONE = Sizes(nearest=4, extremes=4, passing=2, failing=2, least=24, one_of=2000)
+ONE_BY_ONE = Sizes(nearest=2, extremes=2, passing=1, failing=1, least=12, one_of=4000)
 
 
 @dataclass(frozen=True)
@@ -108,11 +108,13 @@ def scattered(trials: NDArray[np.uint64]) -> NDArray[np.uint64]:
 
 
 def smallest(keys: NDArray[np.generic], count: int, among: Flags | None = None) -> Places:
-    """Return the places of the smallest keys, smallest first."""
+    """Return the places of the smallest keys, smallest first, equal ones in order of place: the same everywhere."""
     places = np.arange(len(keys)) if among is None else np.flatnonzero(among)
     chosen = keys[places]
-    if count < len(places):
-        places = places[np.sort(np.argpartition(chosen, count)[: count + 1])]
+    if 0 < count < len(places):
+        last = np.partition(chosen, count - 1)[count - 1]
+        less, equal = np.flatnonzero(chosen < last), np.flatnonzero(chosen == last)
+        places = places[np.sort(np.concatenate([less, equal[: count - len(less)]]))]
         chosen = keys[places]
     return places[np.argsort(chosen, kind="stable")[:count]].astype(np.int64)
 

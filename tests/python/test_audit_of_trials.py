@@ -84,6 +84,15 @@ def test_the_first_round_takes_nearest_extremes_and_samples() -> None:
     assert set(made.asked) == expected  # nothing changed, so nothing else is looked at
 
 
+def test_of_equal_keys_the_first_are_taken() -> None:
+    keys = np.repeat([3.0, 1.0, 2.0], 1000)
+    assert audit_trials.smallest(keys, 5).tolist() == [1000, 1001, 1002, 1003, 1004]
+    assert audit_trials.smallest(keys, 1002)[-2:].tolist() == [2000, 2001]
+    assert audit_trials.smallest(keys, 3, keys > 1.0).tolist() == [2000, 2001, 2002]
+    assert audit_trials.smallest(keys, 0).tolist() == []
+    assert len(audit_trials.smallest(keys, 9000)) == 3000
+
+
 def test_many_spreads_share_the_extremes() -> None:
     slack = np.ones((1, 2000))
     parameters = np.random.default_rng(3).normal(size=(100, 2000))
@@ -94,16 +103,16 @@ def test_many_spreads_share_the_extremes() -> None:
 
 def test_every_trial_that_the_changes_seen_could_reach_is_run_again() -> None:
     slack = passing()
-    made = Made(slack, slack - share_of(slack, 0.005))
+    made = Made(slack, slack - share_of(slack, 0.003))
     counts = made.counts()
-    assert set(counts.lost.tolist()) == set(np.flatnonzero(slack[0] - 0.005 * (slack[0] + 1.0) < 0.0).tolist())
-    unsure = np.abs(slack - share_of(slack, 0.005)) < share_of(slack, 0.005) / 8
-    assert counts.undecided_passing == np.sum(unsure & (slack >= share_of(slack, 0.005)))
+    assert set(counts.lost.tolist()) == set(np.flatnonzero(slack[0] - 0.003 * (slack[0] + 1.0) < 0.0).tolist())
+    unsure = np.abs(slack - share_of(slack, 0.003)) < share_of(slack, 0.003) / 8
+    assert counts.undecided_passing == np.sum(unsure & (slack >= share_of(slack, 0.003)))
     assert len(counts.lost) < len(made.asked) <= audit_trials.USUAL.least
 
 
 def test_a_change_three_times_as_large_as_any_seen_is_found_near_a_limit() -> None:
-    slack = passing(20_000)
+    slack = passing(10_000)
     after = slack - share_of(slack, 0.002)
     first = Made(slack, after).first
     near = slack[0] / (slack[0] + 1.0)
@@ -115,14 +124,14 @@ def test_a_change_three_times_as_large_as_any_seen_is_found_near_a_limit() -> No
 
 def test_rounding_alone_puts_a_trial_on_a_limit_in_question() -> None:
     slack = np.ones((1, 5000))
-    slack[0, 100:200] = 5e-10  # more than the nearest that are always taken
+    slack[0, 100:160] = 5e-10  # more than the nearest that are always taken
     made = Made(slack, slack)
     assert made.counts().undecided_passing == 0
-    assert set(range(100, 200)) <= set(made.asked)
-    slack[0, 100:200] = 5e-9
+    assert set(range(100, 160)) <= set(made.asked)
+    slack[0, 100:160] = 5e-9
     made = Made(slack, slack)
     assert made.counts().undecided_passing == 0
-    assert not set(range(100, 200)) <= set(made.asked)
+    assert not set(range(100, 160)) <= set(made.asked)
 
 
 @pytest.mark.parametrize("watch", [0, 7000])
@@ -132,8 +141,8 @@ def test_what_the_budget_leaves_counts_as_undecided(watch: int) -> None:
     made = Made(slack, after, watch=watch)
     counts = made.counts()
     truly = int(np.sum(after < 0.0))
-    assert audit_trials.USUAL.budget(60_000) == 750
-    assert len(made.asked) <= 750
+    assert audit_trials.USUAL.budget(60_000) == 480
+    assert len(made.asked) <= 480
     assert truly > 1100
     assert truly <= len(counts.lost) + counts.undecided_passing <= 8 * truly
 
@@ -164,17 +173,27 @@ def test_failing_trials_that_move_irregularly_say_nothing_about_passing_ones() -
 
 
 def test_changes_that_grow_over_a_parameter_are_followed_to_where_they_end() -> None:
-    # The stiffest hundredth of the trials passes though it should not; nothing else tells of it.
-    random = np.random.default_rng(5)
+    # Six stiff trials in a thousand pass though they should not; nothing else tells of it.
+    random = np.random.default_rng(11)
     parameters = random.uniform(0.0, 1.0, (2, 10_000))
     slack = np.full((1, 10_000), 0.5)
-    stiff = parameters[1] > 0.99
+    stiff = parameters[1] > 0.994
     change = 1e-9 * 1e3 ** parameters[1] * 1e3 ** random.uniform(-0.6, 0.6, 10_000)  # seen through much else
     after = slack - np.where(stiff, 1.0, change)
     made = Made(slack, after, parameters)
     counts = made.counts()
-    assert np.sum(stiff[sorted(made.first)]) < 5
+    assert np.sum(stiff[sorted(made.first)]) == 1  # the extreme one alone
     assert set(counts.lost.tolist()) == set(np.flatnonzero(stiff).tolist())
+
+
+def test_a_tail_of_changes_too_small_to_matter_is_not_followed() -> None:
+    parameters = np.linspace(0.0, 1.0, 10_000)[None, :]
+    slack = np.full((1, 10_000), 0.5)
+    for largest, is_followed in ((5e-5, False), (2e-4, True)):
+        change = share_of(slack, largest) * np.where(parameters > 0.997, 1.0, 1e-6 * parameters)
+        made = Made(slack, slack - change, parameters)
+        made.counts()
+        assert (len(made.asked) - len(made.first) > 32) == is_followed
 
 
 def test_a_changed_trial_is_decided_where_its_rest_of_error_does_not_reach() -> None:
