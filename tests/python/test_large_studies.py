@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import time
 from collections.abc import Callable
+from pathlib import Path
 from typing import Any
 
 import pytest
@@ -169,6 +170,11 @@ def test_limits_are_where_users_read_them() -> None:
     ]
     for where, most in documented:
         assert f"{most:,}".replace(",", " " if most >= 10_000 else "") in str(where.__doc__), (where, most)
+    assert (LARGEST_FILE, MOST_STATES, MOST_DRAWN) == (5_000_000, 100, 10_000)
+    assert {_loop.MOST_SIGNALS, MOST_REQUIREMENTS, MOST_MEASURES} == {1000}
+    words = (Path(__file__).parents[2] / "README.md").read_text(encoding="utf-8")
+    stated = "at most 5 MB, 100 states, 1000 signals, requirements and measures each, and 10 000 drawn parameters"
+    assert stated in " ".join(words.split())
 
 
 def refused(text: str, expected: str, monkeypatch: pytest.MonkeyPatch) -> None:
