@@ -209,7 +209,7 @@ class Loop(Description):
         sources: dict[str, tuple[str, int, Any, str]] = {}
         for used in inputs_read(program):
             if used in self.plant.named_numbers:
-                value = numbers.take(self.plant.named_numbers[used], f"plant.{used}")
+                value = numbers.take(self.plant.named_numbers[used], self.plant.path_of(used))
                 sources[used] = ("value", 0, value, "")
             elif used == "t":
                 sources[used] = ("time", 0, 0.0, "")

@@ -75,6 +75,10 @@ class AnyPlant(Description, ABC):
     def named_numbers(self) -> Mapping[str, Number]:
         """Numbers that signals may read by name; their paths are `plant.<name>`."""
 
+    def path_of(self, name: str) -> str:
+        """Return the path of a named number, under which the plant itself draws it."""
+        return f"plant.{name}"
+
     @property
     def named_expressions(self) -> Mapping[str, str]:
         """Expressions over states, input, disturbances and numbers that are signals too."""

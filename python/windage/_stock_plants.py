@@ -97,6 +97,10 @@ class FirstOrder(LinearPlant):
     def _initial(self) -> Sequence[Number]:
         return (self.initial,)
 
+    def path_of(self, name: str) -> str:
+        """Return the path of a named number; the initial value is drawn as that of the first state."""
+        return "plant.initial[0]" if name == "initial" else super().path_of(name)
+
 
 @dataclass(frozen=True, repr=False)
 class SecondOrder(LinearPlant):

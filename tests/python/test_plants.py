@@ -243,3 +243,22 @@ def test_disturbances_that_are_described_act_beside_those_that_are_not() -> None
     loop = loop_of(STOCK[4], disturbances={names[1]: wd.Step(0.5)})
     assert loop.disturbances == {names[0]: wd.Constant(0.0), names[1]: wd.Step(0.5)}
     assert wd.Loop(wd.FirstOrder(1.0, 0.3), CONTROLLER, 0.01, 1.0, 1.0).disturbances == {"load": wd.Constant(0.0)}
+
+
+def test_a_signal_reads_the_number_that_the_plant_drew() -> None:
+    plant = wd.FirstOrder(wd.uniform(0.5, 1.5), wd.uniform(0.5, 1.5), wd.uniform(0.0, 0.02), wd.uniform(0.0, 1.0))
+    loop = wd.Loop(
+        plant=plant,
+        controller=wd.ErrorADRC(1, b0=1.0, controller_bandwidth=3.0, observer_bandwidth=9.0),
+        sample_period=0.01,
+        duration=0.1,
+        reference=1.0,
+        disturbances={"load": 0.0},
+        signals={"start": "initial", "k": "gain", "T": "time_constant"},
+    )
+    study = wd.Study(loop, measures=[wd.final(name) for name in ("start", "k", "T")])
+    outcome = study.run(5, progress=False)
+    assert list(outcome.parameters) == ["plant.initial[0]", "gain", "time_constant", "dead_time"]
+    for name, drawn in (("start", "plant.initial[0]"), ("k", "gain"), ("T", "time_constant")):
+        assert outcome.measures[f"final of {name}"].tolist() == outcome.parameters[drawn].tolist()
+    assert study.replay(3)["output"][0] == outcome.parameters["plant.initial[0]"][3]
