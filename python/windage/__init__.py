@@ -4,6 +4,7 @@ Describe plant, loop, spreads and requirements once; run 10^4 to 10^8 trials in 
 exact bound, replay any trial to the last digit, and see which spread breaks the tuning.
 """
 
+from ._audit import Audit
 from ._controllers import ErrorADRC, OutputADRC
 from ._errors import (
     DescriptionError,
@@ -83,6 +84,7 @@ __version__ = "0.1.0"
 
 __all__ = [
     "Actuator",
+    "Audit",
     "Constant",
     "DCDrive",
     "DescriptionError",
