@@ -122,6 +122,23 @@ def test_failing_pilots_on_a_limit_cycle_are_compared_coarsely_and_that_is_said(
         chaotic.with_(requirements=(), measures=[wd.final("c")]).resolved_steps()
 
 
+@pytest.mark.parametrize("seed", [0, 1])
+def test_steps_at_drawn_instants_between_samples_cost_no_further_steps(seed: int) -> None:
+    plant = wd.Plant(
+        {"x": 0.0, "v": 0.0},
+        {"x": "v", "v": "(force - 3*v - 5*tanh(v/0.05) - load)/m"},
+        input="force",
+        output="x",
+        disturbances=["load"],
+        parameters={"m": wd.uniform(10.0, 14.0)},
+    )
+    loads = {"load": wd.Step(4.0, at=wd.uniform(3.0, 3.5))}
+    controller = wd.OutputADRC(2, b0=1 / 12, controller_bandwidth=6.0, observer_bandwidth=30.0)
+    measures = [wd.peak("error", after=3.0), wd.iae()]
+    settings = {"controller": controller, "duration": 4.0, "reference": wd.Step(0.2), "actuator": wd.Actuator()}
+    assert study(plant, (), seed, measures, disturbances=loads, **settings).resolved_steps() <= 2
+
+
 def test_a_limit_decides_as_under_the_reference() -> None:
     # The measure may differ by a thousandth of its limit; a pilot whose slack is larger has to come out the same.
     chosen = flexible(0.35)
