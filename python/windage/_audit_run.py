@@ -38,7 +38,7 @@ from ._audit_trials import (
 SAFETY = 4.0
 #: What is left of a change when the tighter run is itself compared with the truth, where that was confirmed.
 REST = 1.0 / 8.0
-#: Trials nearer to a limit than this are in question whatever was seen: rounding alone could have decided.
+#: Trials nearer to a limit than this are on it: rounding alone could have decided, wherever anything moves.
 LEAST_BOUND = 1e-9
 #: Rounds after the first, and the share of the run's trials that may be left in question after them.
 ROUNDS, LEFT_OVER = 4, 1e-4
@@ -197,7 +197,18 @@ class Examination:
         reached = self._alike(limit, fails, misses)
         count = len(reached) - np.searchsorted(reached, near)
         chance = np.where(count > 0, np.minimum((count + 1.0) / max(1, len(reached)), 1.0), 0.0)
-        return np.where(near <= LEAST_BOUND, 1.0, chance)
+        return np.where(near <= LEAST_BOUND, self._chance_on(limit, fails, misses), chance)
+
+    def _chance_on(self, limit: int, fails: int, misses: int) -> float:
+        """Return the chance that trials on a limit move at all: a count, a time or a saturated command mostly stays.
+
+        They are compared with those on the limit that were run again; without any, all are in question.
+        """
+        again = self.rows.at(self.places)
+        on_it = (~again.passed == fails) & (~(again.slack[limit] >= 0.0) == misses)
+        on_it &= self._near[limit, self.places] <= LEAST_BOUND
+        moved = int(np.sum(self.share[limit, on_it] > 0.0))
+        return min(1.0, (moved + 1.0) / max(1, int(np.sum(on_it)))) if moved or not on_it.any() else 0.0
 
     def _chances(self, which: Sequence[int]) -> Values:
         """Return the chance that the fate of each kept trial is another one, for a claim of some requirements."""

@@ -16,7 +16,7 @@ from windage._audit_trials import Rows
 from windage._runner import Columns, make_campaign, run_columns
 
 
-def loop_of(plant: wd.Plant, **loop: Any) -> wd.Loop:
+def loop_of(plant: Any, **loop: Any) -> wd.Loop:
     settings: dict[str, Any] = {
         "plant": plant,
         "controller": wd.ErrorADRC(1, controller_bandwidth=4.0, observer_bandwidth=20.0, b0=1.0),
@@ -301,3 +301,15 @@ def test_the_scale_of_a_limit_of_zero_is_that_of_the_first_trials() -> None:
     assert _audit.scales_for(study, described, columns).tolist() == [1.0]
     measures[0, 1:127] = 3.0
     assert _audit.scales_for(study, described, columns).tolist() == [3.0]
+
+
+@pytest.mark.parametrize("linear", [False, True])
+def test_what_never_happens_may_be_required_never_to_happen(linear: bool) -> None:
+    """Every slack is zero, and no integration changes that: nothing is in question."""
+    gain = wd.uniform(0.8, 1.2)
+    written = wd.Plant({"y": 0.0}, {"y": "gain*u - y"}, input="u", output="y", parameters={"gain": gain})
+    loop = loop_of(wd.FirstOrder(gain=gain, time_constant=1.0) if linear else written, actuator=wd.Actuator((-40, 40)))
+    requirements = [wd.time_in_saturation() <= 0.0, wd.time_outside("output", -1.0, 2.0) <= 0.0]
+    outcome = wd.Study(loop, requirements, seed=1).run(500, progress=False)
+    assert outcome.audit().undecided == 0
+    assert outcome.verdict(0.95).decision == "pass"

@@ -122,16 +122,29 @@ def test_a_change_three_times_as_large_as_any_seen_is_found_near_a_limit() -> No
     assert set(large) <= set(Made(slack, after).counts().lost.tolist())
 
 
-def test_rounding_alone_puts_a_trial_on_a_limit_in_question() -> None:
+def test_rounding_alone_puts_a_trial_on_a_limit_in_question_where_such_trials_move() -> None:
     slack = np.ones((1, 5000))
     slack[0, 100:160] = 5e-10  # more than the nearest that are always taken
-    made = Made(slack, slack)
+    after = slack.copy()
+    after[0, 110] -= 1e-16
+    made = Made(slack, after)
     assert made.counts().undecided_passing == 0
     assert set(range(100, 160)) <= set(made.asked)
-    slack[0, 100:160] = 5e-9
-    made = Made(slack, slack)
+    slack[0, 100:160] = after[0, 100:160] = 5e-9
+    after[0, 110] -= 1e-16
+    made = Made(slack, after)
     assert made.counts().undecided_passing == 0
     assert not set(range(100, 160)) <= set(made.asked)
+
+
+@pytest.mark.parametrize("watch", [0, 7000])
+def test_trials_on_a_limit_that_do_not_move_are_decided(watch: int) -> None:
+    slack = np.zeros((1, 20_000))
+    assert Made(slack, slack, watch=watch).counts().undecided_passing == 0
+    after = slack.copy()
+    after[0, ::16] = -1e-12
+    counts = Made(slack, after, watch=watch).counts()
+    assert 1250 <= len(counts.lost) + counts.undecided_passing <= 5000
 
 
 @pytest.mark.parametrize("watch", [0, 7000])
