@@ -18,11 +18,9 @@ template <> std::vector<std::string> enumerators<discretisation_kind>() { return
 template <> std::vector<std::string> enumerators<observer_input_kind>() { return {"limited", "commanded"}; }
 template <> std::vector<std::string> enumerators<observer_start_kind>() { return {"zero", "measured"}; }
 template <> std::vector<std::string> enumerators<time_function_kind>() {
-    return {"constant", "step", "ramp", "sine", "pulse", "quintic", "jerk_limited", "table_linear", "table_hold"};
+    return {"constant", "step", "ramp", "sine", "pulse", "quintic", "jerk_limited", "table_linear", "table_hold", "sum"};
 }
-template <> std::vector<std::string> enumerators<disturbance_kind>() {
-    return {"time_function", "gauss_markov", "white"};
-}
+template <> std::vector<std::string> enumerators<noise_kind>() { return {"gauss_markov", "white"}; }
 template <> std::vector<std::string> enumerators<spread_kind>() {
     return {"normal", "uniform", "triangular", "lognormal", "beta", "choice", "samples", "rows", "drawn_rows"};
 }
@@ -127,10 +125,28 @@ controller_description read_controller(py::handle source, const std::string& pat
     return d;
 }
 
-time_function_description read_time_function(py::handle source, const std::string& path) {
+// A term of a sum is no sum itself: the depth of a description does not come from outside.
+time_function_description read_term(py::handle source, const std::string& path) {
     time_function_description d;
     dict_reader r(source, path);
     r.choice("kind", d.kind).numbers("numbers", d.numbers);
+    r.finish();
+    if (d.kind == time_function_kind::sum) throw std::invalid_argument(path + ": a term that is no sum is expected");
+    return d;
+}
+
+time_function_description read_time_function(py::handle source, const std::string& path) {
+    time_function_description d;
+    dict_reader r(source, path);
+    r.choice("kind", d.kind).numbers("numbers", d.numbers).list("terms", d.terms, read_term);
+    r.finish();
+    return d;
+}
+
+noise_description read_noise(py::handle source, const std::string& path) {
+    noise_description d;
+    dict_reader r(source, path);
+    r.choice("kind", d.kind).numbers("numbers", d.numbers).plain("stream", d.stream);
     r.finish();
     return d;
 }
@@ -138,11 +154,7 @@ time_function_description read_time_function(py::handle source, const std::strin
 disturbance_description read_disturbance(py::handle source, const std::string& path) {
     disturbance_description d;
     dict_reader r(source, path);
-    r.plain("name", d.name)
-        .choice("kind", d.kind)
-        .field("function", d.function, read_time_function)
-        .numbers("numbers", d.numbers)
-        .plain("stream", d.stream);
+    r.plain("name", d.name).field("function", d.function, read_time_function).list("noises", d.noises, read_noise);
     r.finish();
     return d;
 }

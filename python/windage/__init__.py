@@ -75,6 +75,7 @@ from ._time_functions import (
     Ramp,
     Sine,
     Step,
+    Sum,
     Table,
     WhiteNoise,
 )
@@ -114,6 +115,7 @@ __all__ = [
     "Step",
     "Study",
     "StudyFileError",
+    "Sum",
     "Table",
     "Tally",
     "TransferFunction",

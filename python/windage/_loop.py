@@ -23,7 +23,7 @@ from ._numbers import (
 )
 from ._plants import LOOP_SIGNALS, AnyPlant, engine_program, inputs_read, is_loop_signal
 from ._sensor_actuator import Actuator, Sensor
-from ._time_functions import Constant, Disturbance, Noise, TimeFunction
+from ._time_functions import Constant, Disturbance, Noise, Sum, TimeFunction, describe_disturbance
 
 if TYPE_CHECKING:
     from ._describe import Numbers
@@ -54,8 +54,8 @@ class Loop(Description):
     actuator : Actuator
         By default ideal, with the command acting at once.
     disturbances : mapping of str to time function, noise or float
-        What each disturbance of the plant is. Every one of a plant written as equations has to be given; on a
-        stock plant nothing acts where none is.
+        What each disturbance of the plant is, or a sum of these. Every one of a plant written as equations has to
+        be given; on a stock plant nothing acts where none is.
     integrator : {"rk4", "euler", "cash_karp5"}
         How equations are integrated between samples. Linear stock plants are sampled exactly instead.
     steps_per_sample : "auto" or int
@@ -198,11 +198,8 @@ class Loop(Description):
         return described
 
     def _describe_disturbance(self, name: str, numbers: Numbers) -> dict[str, Any]:
-        disturbance = self.disturbances[name]
-        inner = disturbance._describe(numbers, f"disturbances.{name}")
-        if isinstance(disturbance, Noise):
-            return {"name": name, **inner}
-        return {"name": name, "kind": "time_function", "function": inner}
+        described = describe_disturbance(self.disturbances[name], numbers, f"disturbances.{name}")
+        return {"name": name, **described}
 
     def _describe_expression(self, name: str, numbers: Numbers) -> dict[str, Any]:
         program = self._expressions[name]
@@ -224,11 +221,11 @@ class Loop(Description):
 
 
 def _time_function(value: object) -> TimeFunction:
+    if isinstance(value, Noise) or (isinstance(value, Sum) and value.noises):
+        mend = "A noise, or a sum with one, can be a disturbance, not a reference."
+        raise DescriptionError("loop.reference", value, "a function of time", mend)
     if isinstance(value, TimeFunction):
         return value
-    if isinstance(value, Noise):
-        mend = "A noise can be a disturbance, not a reference."
-        raise DescriptionError("loop.reference", value, "a function of time", mend)
     expected = "a function of time such as Step(...) or Sine(...), or a number"
     return _constant(value, "loop.reference", expected)
 

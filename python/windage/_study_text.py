@@ -44,6 +44,7 @@ from ._time_functions import (
     Ramp,
     Sine,
     Step,
+    Sum,
     Table,
     WhiteNoise,
 )
@@ -116,7 +117,7 @@ PLANTS: Mapping[str, Maker] = {
 }
 CONTROLLERS: Mapping[str, Maker] = {c.__name__: c for c in (OutputADRC, ErrorADRC)}
 TIME_FUNCTIONS: Mapping[str, Maker] = {
-    c.__name__: c for c in (Constant, Step, Ramp, Sine, Pulse, Quintic, JerkLimited, Table)
+    c.__name__: c for c in (Constant, Step, Ramp, Sine, Pulse, Quintic, JerkLimited, Table, Sum)
 }
 DISTURBANCES: Mapping[str, Maker] = {**TIME_FUNCTIONS, **{c.__name__: c for c in (Gust, WhiteNoise)}}
 
@@ -261,7 +262,12 @@ def _of_kind(item: Any, kinds: Mapping[str, Maker], place: str) -> Any:
         return item
     data = _table(item, place)
     kind = _word(data, "kind", kinds, place)
-    return _made(kinds[kind], {key: part for key, part in data.items() if key != "kind"}, place)
+    inside = {key: part for key, part in data.items() if key != "kind"}
+    if kinds[kind] is not Sum or "terms" not in inside:
+        return _made(kinds[kind], inside, place)
+    terms = _list(inside["terms"], f"{place}.terms")
+    made = [_of_kind(term, DISTURBANCES, f"{place}.terms[{i}]") for i, term in enumerate(terms)]
+    return _call(Sum, {**inside, "terms": made}, place)
 
 
 def _made(maker: Maker, data: Mapping[str, Any], place: str) -> Any:

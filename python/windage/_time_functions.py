@@ -18,10 +18,13 @@ from ._numbers import (
     POSITIVE,
     Number,
     Rule,
+    Spread,
     check_order,
     checked_choice,
     checked_number,
     checked_numbers,
+    checked_sequence,
+    is_plain_number,
     takes,
 )
 
@@ -31,11 +34,26 @@ if TYPE_CHECKING:
 #: What the engine takes for "never".
 NEVER = 1e300
 MOST_ROWS = 100_000
+MOST_TERMS = 100
 _STOP = Rule("a time in s, or infinity for none", infinite=True)
 
 
-class TimeFunction(Description):
-    """Root of the functions of time."""
+class _Course(Description):
+    """Root of what a disturbance can be: courses add up with `+`."""
+
+    __slots__ = ()
+
+    def __add__(self, other: Any) -> Sum:
+        return Sum((self, other)) if is_course(other) else NotImplemented
+
+    def __radd__(self, other: Any) -> _Course:
+        if isinstance(other, int) and other == 0:  # where Python's own `sum` begins
+            return self
+        return Sum((other, self)) if is_course(other) else NotImplemented
+
+
+class TimeFunction(_Course):
+    """Root of the functions of time; they add up: `Step(1.0) + Sine(0.1, period=2.0)`."""
 
     #: The engine's name, and the arguments in the engine's order.
     engine_kind: ClassVar[str]
@@ -196,7 +214,7 @@ def _check_rising(times: Sequence[Number]) -> None:
         check_order(first, second, f"Table.times[{i + 1}]", strict=False)
 
 
-class Noise(Description):
+class Noise(_Course):
     """Root of the noises: drawn at each sample and held in between."""
 
     engine_kind: ClassVar[str]
@@ -241,6 +259,68 @@ class WhiteNoise(Noise):
     engine_order: ClassVar[tuple[str, ...]] = ("density",)
 
     density: Number = field(metadata=takes(NON_NEGATIVE))
+
+
+@dataclass(frozen=True, repr=False)
+class Sum(TimeFunction):
+    """The sum of its terms, and of their derivatives; usually written `first + second`.
+
+    Parameters
+    ----------
+    terms : sequence of time function, noise or float
+        What is added, from the first to the last. With a noise among them it can be a disturbance, not a
+        reference. Sums among them are taken apart, and a number is a `Constant`.
+    """
+
+    terms: Sequence[_Course | Number]
+
+    def __post_init__(self) -> None:
+        given = checked_sequence(self.terms, "Sum.terms", "a list of functions of time and noises")
+        terms: list[_Course | Number] = []
+        for i, term in enumerate(given):
+            terms += term.terms if isinstance(term, Sum) else [_checked_term(term, f"Sum.terms[{i}]")]
+        if not 1 <= len(terms) <= MOST_TERMS:
+            raise DescriptionError("Sum.terms", f"{len(terms)} terms", f"1 to {MOST_TERMS} terms")
+        object.__setattr__(self, "terms", tuple(terms))
+
+    def __repr__(self) -> str:
+        return " + ".join(map(repr, self.terms)) if len(self.terms) > 1 else super().__repr__()
+
+    @property
+    def noises(self) -> list[tuple[int, Noise]]:
+        """The noises among the terms, each with its place."""
+        return [(i, term) for i, term in enumerate(self.terms) if isinstance(term, Noise)]
+
+    def _describe(self, numbers: Numbers, path: str) -> dict[str, Any]:
+        terms = [
+            term._describe(numbers, f"{path}.terms[{i}]")
+            for i, term in enumerate(self.terms)
+            if isinstance(term, TimeFunction)
+        ]
+        return {"kind": "sum", "numbers": [], "terms": terms}
+
+
+def is_course(value: object) -> bool:
+    """Tell whether a value can be a term of a sum."""
+    return isinstance(value, _Course | Spread) or is_plain_number(value)
+
+
+def _checked_term(value: object, place: str) -> TimeFunction | Noise:
+    if isinstance(value, TimeFunction | Noise):
+        return value
+    expected = "a function of time such as Step(...), a noise such as Gust(...), or a number"
+    return Constant(checked_number(value, place, Rule(expected)))
+
+
+def describe_disturbance(value: TimeFunction | Noise, numbers: Numbers, path: str) -> dict[str, Any]:
+    """Return a disturbance as the engine wants it: a function of time, and noises."""
+    if isinstance(value, Noise):
+        return {"noises": [value._describe(numbers, path)]}
+    if not isinstance(value, Sum) or not value.noises:
+        return {"function": value._describe(numbers, path)}
+    noises = [noise._describe(numbers, f"{path}.terms[{i}]") for i, noise in value.noises]
+    described = value._describe(numbers, path)
+    return {"noises": noises} | ({"function": described} if described["terms"] else {})
 
 
 Disturbance = TimeFunction | Noise

@@ -91,6 +91,10 @@ def ramped(t: float, _: float) -> float:
     return 1.1 * (min(max(t, 0.713), 2.419) - 0.713)
 
 
+def added(t: float, inside: float) -> float:
+    return stepped(t, inside) + pulsed(t, inside) + started(t, inside)
+
+
 COURSES = {
     "step": Course(wd.Step(1.3, at=1.618), [1.618], stepped),
     "pulse within one interval": Course(wd.Pulse(2.1, start=2.213, width=0.117), [2.213, 2.33], pulsed),
@@ -100,6 +104,13 @@ COURSES = {
     "sine that starts": Course(wd.Sine(0.8, period=0.9, phase=0.6, offset=0.1, start=1.377), [1.377], started),
     "quintic": Course(wd.Quintic(1.5, start=0.77, duration=1.31), [0.77, 2.08], quintic),
     "jerk limited": jerk_limited(),
+    "sum": Course(
+        wd.Step(1.3, at=1.618)
+        + wd.Pulse(2.1, start=2.213, width=0.117)
+        + wd.Sine(0.8, period=0.9, phase=0.6, offset=0.1, start=1.377),
+        [1.618, 2.213, 2.33, 1.377],
+        added,
+    ),
 }
 
 

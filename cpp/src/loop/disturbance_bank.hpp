@@ -25,12 +25,16 @@ public:
         all_[which].evaluate(time, side(ends_a_step), out, own_times);
     }
     bool is_held(int which) const override { return all_[which].is_held(); }
-    smooth_motion motion(int which) const override { return all_[which].motion(); }
-    void evaluate_motion(int which, constant_signal time, bool ends_a_step, signal* out) const override {
-        all_[which].evaluate_motion(time, side(ends_a_step), out);
+    int terms(int which) const override { return all_[which].terms(); }
+    smooth_motion motion(int which, int term) const override { return all_[which].term(term).motion(); }
+    void evaluate_motion(int which, int term, constant_signal time, signal* out) const override {
+        const time_function& f = all_[which].term(term);
+        f.evaluate(time, out, f.motion().derivatives);
     }
-    void evaluate_motion_at_own_times(int which, constant_signal time, bool ends_a_step, signal* out) const override {
-        all_[which].evaluate_motion_at_own_times(time, side(ends_a_step), out);
+    void evaluate_motion_at_own_times(int which, int term, constant_signal time, bool ends_a_step,
+                                      signal* out) const override {
+        const time_function& f = all_[which].term(term);
+        f.evaluate_at_own_times(time, side(ends_a_step), out, f.motion().derivatives);
     }
     bool break_soon() const override { return break_soon_; }
     bool piece_end(constant_signal from, constant_signal end, signal until) const override;

@@ -16,17 +16,21 @@ namespace {
 constexpr double two_pi = 6.283185307179586476925;
 constexpr double infinity = std::numeric_limits<double>::infinity();
 
-bool all_constant(const std::vector<number>& numbers) {
-    return std::all_of(numbers.begin(), numbers.end(), [](const number& n) { return n.is_constant(); });
+bool all_constant(const time_function_description& d) {
+    return std::all_of(d.numbers.begin(), d.numbers.end(), [](const number& n) { return n.is_constant(); }) &&
+           std::all_of(d.terms.begin(), d.terms.end(), all_constant);
 }
 
 } // namespace
 
 time_function::time_function(const time_function_description& d, bool time_is_uniform, const held_value& period,
                              signal_arena& arena)
-    : kind_(d.kind), size_(arena.block_size()), uniform_(time_is_uniform && all_constant(d.numbers)), period_(period),
-      has_common_numbers_(all_constant(d.numbers)), allowance_(period.is_same(), arena) {
+    : kind_(d.kind), size_(arena.block_size()), uniform_(time_is_uniform && all_constant(d)), period_(period),
+      has_common_numbers_(all_constant(d)), allowance_(period.is_same(), arena) {
+    if ((kind_ == time_function_kind::sum) == d.terms.empty())
+        throw std::invalid_argument("time function: a sum, and nothing else, has terms");
     for (const number& n : d.numbers) numbers_.emplace_back(n, arena);
+    for (const time_function_description& t : d.terms) terms_.emplace_back(t, time_is_uniform, period, arena);
     if (kind_ == time_function_kind::sine) angular_frequency_.emplace(d.numbers[1].is_constant(), arena);
     if (kind_ == time_function_kind::jerk_limited)
         for (int i = 0; i < 5; ++i) derived_.push_back(arena.take());
@@ -35,6 +39,7 @@ time_function::time_function(const time_function_description& d, bool time_is_un
 void time_function::begin(const trial_block& block) {
     holds_until_ = -infinity;
     for (lane_value& n : numbers_) n.begin(block);
+    for (time_function& t : terms_) t.begin(block);
     allowance_.fill([&](std::size_t i) { return same_instant * period_.pack_at(i); });
     if (angular_frequency_) angular_frequency_->fill([&](std::size_t i) { return two_pi / number_at(1, i); });
     for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP {
@@ -73,7 +78,6 @@ double time_function::lane_holds_until(double t, std::size_t lane) const {
         if (t + allowance < start) return start - 2.0 * allowance;
         return t - allowance > stop ? infinity : t;
     };
-    const std::size_t entries = numbers_.size() / 2;
     switch (kind_) {
     case time_function_kind::constant: return infinity;
     case time_function_kind::step: return until_jump(number(1));
@@ -84,10 +88,11 @@ double time_function::lane_holds_until(double t, std::size_t lane) const {
     case time_function_kind::jerk_limited:
         return unless_moving(
             number(1), number(1) + profile_plan::load(derived_.data(), lane / lanes * lanes).total[int(lane % lanes)]);
-    case time_function_kind::table_linear: return unless_moving(number(0), number(entries - 1));
-    case time_function_kind::table_hold: {
+    case time_function_kind::table_linear: return unless_moving(number(0), number(numbers_.size() / 2 - 1));
+    case time_function_kind::table_hold: return until_jump(next_table_time(t + allowance, lane));
+    case time_function_kind::sum: {
         double earliest = infinity;
-        for (std::size_t k = 0; k < entries; ++k) earliest = std::min(earliest, until_jump(number(k)));
+        for (const time_function& term : terms_) earliest = std::min(earliest, term.lane_holds_until(t, lane));
         return earliest;
     }
     }
@@ -134,7 +139,7 @@ smooth_motion time_function::motion() const {
     case time_function_kind::jerk_limited: return {3};
     case time_function_kind::quintic: return {5};
     case time_function_kind::sine: return {2, &*angular_frequency_};
-    default: return {};
+    default: return {}; // of a sum: see its terms
     }
 }
 
@@ -171,6 +176,16 @@ void time_function::evaluate_pack(std::size_t i, instant at, wide* out, int deri
     case time_function_kind::jerk_limited: return jerk_limited_pack(i, at, out, derivatives);
     case time_function_kind::table_linear:
     case time_function_kind::table_hold: return table_pack(i, at, out, derivatives);
+    case time_function_kind::sum: return sum_pack(i, at, out, derivatives);
+    }
+}
+
+void time_function::sum_pack(std::size_t i, instant at, wide* out, int derivatives) const {
+    terms_[0].evaluate_pack(i, at, out, derivatives);
+    for (std::size_t term = 1; term < terms_.size(); ++term) {
+        wide more[max_order + 1];
+        terms_[term].evaluate_pack(i, at, more, derivatives);
+        for (int d = 0; d <= derivatives; ++d) out[d] += more[d];
     }
 }
 

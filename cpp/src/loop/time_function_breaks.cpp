@@ -48,6 +48,9 @@ double time_function::next_break(double t, std::size_t lane) const {
         }
         break;
     }
+    case time_function_kind::sum:
+        for (const time_function& term : terms_) next.consider(term.next_break(t, lane));
+        break;
     case time_function_kind::table_linear:
     case time_function_kind::table_hold: return next_table_time(t + allowance_[lane], lane);
     }

@@ -6,14 +6,15 @@ namespace windage {
 
 exosystem::exosystem(const plant_disturbances& w, signal_arena& arena) : w_(w), size_(arena.block_size()) {
     for (int k = 0; k < w.count(); ++k) {
-        if (w.is_zero(k)) continue;
-        part p{k, columns_, w.motion(k), {}, {}, {}};
-        columns_ += 1 + p.motion.derivatives;
-        all_held_ = all_held_ && p.motion.derivatives == 0;
-        if (!w.is_held(k))
-            for (auto* values : {&p.start, &p.before, &p.after})
-                for (int d = 0; d <= p.motion.derivatives; ++d) values->push_back(arena.take());
-        parts_.push_back(std::move(p));
+        for (int term = 0; term < w.terms(k) && !w.is_zero(k); ++term) {
+            part p{k, term, columns_, w.motion(k, term), {}, {}, {}};
+            columns_ += 1 + p.motion.derivatives;
+            all_held_ = all_held_ && p.motion.derivatives == 0;
+            if (!w.is_held(k))
+                for (auto* values : {&p.start, &p.before, &p.after})
+                    for (int d = 0; d <= p.motion.derivatives; ++d) values->push_back(arena.take());
+            parts_.push_back(std::move(p));
+        }
     }
 }
 
@@ -66,9 +67,9 @@ lane_matrix exosystem::held(const lane_matrix& gamma) const {
 const std::vector<exosystem::input>& exosystem::at_start(constant_signal time) {
     inputs_.clear();
     for (part& p : parts_) {
-        inputs_.push_back({p.column, w_.now(p.which)});
+        if (p.term == 0) inputs_.push_back({p.column, w_.now(p.which)}); // values act alike: that of the whole sum
         if (p.motion.derivatives == 0 || w_.holds(p.which)) continue;
-        w_.evaluate_motion(p.which, time, false, p.start.data());
+        w_.evaluate_motion(p.which, p.term, time, p.start.data());
         for (int d = 1; d <= p.motion.derivatives; ++d) inputs_.push_back({p.column + d, p.start[std::size_t(d)]});
     }
     return inputs_;
@@ -78,8 +79,8 @@ const std::vector<exosystem::input>& exosystem::jumps_at(constant_signal time) {
     inputs_.clear();
     for (part& p : parts_) {
         if (w_.holds(p.which)) continue;
-        w_.evaluate_motion_at_own_times(p.which, time, true, p.before.data());
-        w_.evaluate_motion_at_own_times(p.which, time, false, p.after.data());
+        w_.evaluate_motion_at_own_times(p.which, p.term, time, true, p.before.data());
+        w_.evaluate_motion_at_own_times(p.which, p.term, time, false, p.after.data());
         for (int d = 0; d <= p.motion.derivatives; ++d) {
             const signal jump = p.after[std::size_t(d)], before = p.before[std::size_t(d)];
             for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP {

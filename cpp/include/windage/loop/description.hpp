@@ -21,25 +21,31 @@ enum class time_function_kind {
     jerk_limited, ///< amplitude, start, speed limit, acceleration limit, jerk limit, initial
     table_linear, ///< times, then as many values; straight lines between, held outside
     table_hold,   ///< times, then as many values; each value held until the next time
+    sum,          ///< none; the sum of its terms, from the first to the last
 };
 
 struct time_function_description {
     time_function_kind kind = time_function_kind::constant;
     std::vector<number> numbers{0.0};
+    std::vector<time_function_description> terms; ///< of a sum; none of them a sum
 };
 
-enum class disturbance_kind {
-    time_function,
+enum class noise_kind {
     gauss_markov, ///< standard deviation, correlation time: first-order, exactly sampled, held between samples
     white,        ///< two-sided spectral density (unit^2/Hz): variance density / Ts, held between samples
 };
 
+struct noise_description {
+    noise_kind kind = noise_kind::gauss_markov;
+    std::vector<number> numbers;
+    std::uint32_t stream = 0; ///< random stream
+};
+
+/// A function of time plus noises.
 struct disturbance_description {
     std::string name;
-    disturbance_kind kind = disturbance_kind::time_function;
-    time_function_description function; ///< for time_function
-    std::vector<number> numbers;        ///< for the noises
-    std::uint32_t stream = 0;           ///< random stream of a noise
+    time_function_description function; ///< zero by default
+    std::vector<noise_description> noises;
 };
 
 /// y_m = clip(quantise(filter(gain * y + bias + noise))).

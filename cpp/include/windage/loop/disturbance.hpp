@@ -2,13 +2,10 @@
 // integrator asks for it; a noise changes at each sample and is held in between.
 #pragma once
 
-#include <limits>
-#include <memory>
-#include <optional>
 #include <vector>
 
 #include <windage/loop/clock.hpp>
-#include <windage/loop/noise.hpp>
+#include <windage/loop/sampled_noise.hpp>
 #include <windage/loop/time_function.hpp>
 
 namespace windage {
@@ -22,38 +19,30 @@ public:
     void sample(std::int64_t k);
     /// Value at any other time of this sample interval.
     void evaluate(constant_signal time, jump_side side, signal out, bool own_times) const;
+
     /// The lane's first break later than t; infinity if there is none. A noise has none between two samples.
-    double next_break(double t, std::size_t lane) const {
-        return function_ ? function_->next_break(t, lane) : std::numeric_limits<double>::infinity();
-    }
-    /// How it moves between its breaks, and with which derivatives.
-    smooth_motion motion() const { return function_ ? function_->motion() : smooth_motion{}; }
-    void evaluate_motion(constant_signal time, jump_side side, signal* out) const {
-        function_->evaluate(time, out, motion().derivatives, side);
-    }
-    void evaluate_motion_at_own_times(constant_signal time, jump_side side, signal* out) const {
-        function_->evaluate_at_own_times(time, side, out, motion().derivatives);
-    }
-    bool has_common_breaks() const { return !function_ || function_->has_common_breaks(); }
+    double next_break(double t, std::size_t lane) const { return function_.next_break(t, lane); }
+    bool has_common_breaks() const { return function_.has_common_breaks(); }
+    /// The terms of its function, which move each in its way between the breaks.
+    int terms() const { return function_.terms(); }
+    const time_function& term(int i) const { return function_.term(i); }
 
     /// Keeps its value until the next sample.
-    bool holds() const { return !function_ || function_->holds(clock_); }
+    bool holds() const { return function_.holds(clock_); }
     /// Never changes between two samples.
-    bool is_held() const { return !function_ || function_->is_constant(); }
-    bool is_zero() const { return function_ && function_->is_constant(0.0); }
+    bool is_held() const { return function_.is_constant(); }
+    bool is_zero() const { return noises_.empty() && function_.is_constant(0.0); }
     constant_signal now() const { return now_; }
 
 private:
-    void begin_gauss_markov();
+    void add_noises(signal to) const;
 
-    disturbance_kind kind_;
     const sample_clock& clock_;
     std::size_t size_;
-    std::optional<time_function> function_;
-    std::vector<lane_value> numbers_;
-    std::optional<white_noise> noise_;
-    signal now_;
-    std::optional<held_value> keep_, gain_; // of the noise: w_{k+1} = keep * w_k + gain * n
+    time_function function_;
+    std::vector<sampled_noise> noises_;
+    signal function_now_ = nullptr, sum_ = nullptr; // null where the noise is all there is; where there is none
+    constant_signal now_;
 };
 
 } // namespace windage

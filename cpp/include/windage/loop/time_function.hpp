@@ -40,8 +40,11 @@ public:
     /// `evaluate` or `sample` may write it.
     void evaluate_at_own_times(constant_signal time, jump_side side, signal* out, int derivatives) const;
 
-    /// Between two breaks, with the derivatives that `evaluate` gives.
+    /// Between two breaks, with the derivatives that `evaluate` gives; of a function that is no sum.
     smooth_motion motion() const;
+    /// The terms of a sum; any other function is its only term.
+    int terms() const { return terms_.empty() ? 1 : int(terms_.size()); }
+    const time_function& term(int i) const { return terms_.empty() ? *this : terms_[std::size_t(i)]; }
 
     /// The lane's first break later than t and not the same instant; infinity if there is none. At a break the value
     /// jumps, or a derivative of it. Costs a search in a table, whatever its length.
@@ -67,6 +70,7 @@ private:
     void sine_pack(std::size_t i, instant at, wide* out, int derivatives) const;
     void quintic_pack(std::size_t i, instant at, wide* out, int derivatives) const;
     void jerk_limited_pack(std::size_t i, instant at, wide* out, int derivatives) const;
+    void sum_pack(std::size_t i, instant at, wide* out, int derivatives) const;
     void table_pack(std::size_t i, instant at, wide* out, int derivatives) const;
     struct table_point {
         double value, slope;
@@ -81,6 +85,7 @@ private:
     double holds_until_ = 0.0; // from the last sample that was evaluated
     const held_value& period_;
     std::vector<lane_value> numbers_;
+    std::vector<time_function> terms_; // of a sum
     bool has_common_numbers_;
     held_value allowance_;        // within which two instants are the same
     std::vector<signal> derived_; // phase times of a jerk-limited profile

@@ -37,7 +37,7 @@ public:
 
 private:
     struct part {
-        int which, column;
+        int which, term, column;
         smooth_motion motion;
         std::vector<signal> start, before, after; // value and derivatives
     };

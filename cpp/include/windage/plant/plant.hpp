@@ -42,11 +42,14 @@ public:
                           bool own_times = false) const = 0;
     /// Never changes between two samples.
     virtual bool is_held(int which) const = 0;
-    virtual smooth_motion motion(int which) const = 0;
-    /// Value and derivatives of its motion, as `evaluate`.
-    virtual void evaluate_motion(int which, constant_signal time, bool ends_a_step, signal* out) const = 0;
-    /// The same at times that differ between lanes.
-    virtual void evaluate_motion_at_own_times(int which, constant_signal time, bool ends_a_step, signal* out) const = 0;
+    /// What it is the sum of, besides noises; each term has a motion of its own.
+    virtual int terms(int which) const = 0;
+    virtual smooth_motion motion(int which, int term) const = 0;
+    /// Value and derivatives of the motion that begins at a sample instant.
+    virtual void evaluate_motion(int which, int term, constant_signal time, signal* out) const = 0;
+    /// The same at times that differ between lanes, on either side of a break.
+    virtual void evaluate_motion_at_own_times(int which, int term, constant_signal time, bool ends_a_step,
+                                              signal* out) const = 0;
     /// In some lane there may be a break between this sample and the next one.
     virtual bool break_soon() const = 0;
     /// The end of the smooth piece that starts at `from`: the lane's first break after it and before `end`, else `end`.
