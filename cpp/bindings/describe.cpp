@@ -18,7 +18,8 @@ template <> std::vector<std::string> enumerators<discretisation_kind>() { return
 template <> std::vector<std::string> enumerators<observer_input_kind>() { return {"limited", "commanded"}; }
 template <> std::vector<std::string> enumerators<observer_start_kind>() { return {"zero", "measured"}; }
 template <> std::vector<std::string> enumerators<time_function_kind>() {
-    return {"constant", "step", "ramp", "sine", "pulse", "quintic", "jerk_limited", "table_linear", "table_hold", "sum"};
+    return {"constant", "step",         "ramp",         "sine",       "pulse",
+            "quintic",  "jerk_limited", "table_linear", "table_hold", "sum"};
 }
 template <> std::vector<std::string> enumerators<noise_kind>() { return {"gauss_markov", "white"}; }
 template <> std::vector<std::string> enumerators<spread_kind>() {
@@ -162,7 +163,8 @@ disturbance_description read_disturbance(py::handle source, const std::string& p
 sensor_description read_sensor(py::handle source, const std::string& path) {
     sensor_description d;
     dict_reader r(source, path);
-    r.number_field("gain", d.gain)
+    r.number_field("delay", d.delay)
+        .number_field("gain", d.gain)
         .number_field("bias", d.bias)
         .number_field("noise", d.noise)
         .number_field("filter_frequency", d.filter_frequency)

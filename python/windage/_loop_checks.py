@@ -35,13 +35,16 @@ def check_length(loop: Loop) -> None:
 
 
 def check_delay(loop: Loop) -> None:
-    """Refuse delays whose history of commands would not fit into memory."""
-    delay = high_of(loop.actuator.delay) + high_of(loop.plant.dead_time)
-    samples = delay / low_of(loop.sample_period)
-    if samples >= LONGEST_DELAY:
-        expected = f"a delay below {LONGEST_DELAY} sample periods, the plant's dead time included"
-        mend = f"It reaches {samples:.3g} sample periods."
-        raise DescriptionError("actuator.delay", loop.actuator.delay, expected, mend)
+    """Refuse delays whose history of commands or outputs would not fit into memory."""
+    to_the_plant = high_of(loop.actuator.delay) + high_of(loop.plant.dead_time)
+    for place, value, delay, also in (
+        ("actuator.delay", loop.actuator.delay, to_the_plant, ", the plant's dead time included"),
+        ("sensor.delay", loop.sensor.delay, high_of(loop.sensor.delay), ""),
+    ):
+        samples = delay / low_of(loop.sample_period)
+        if samples >= LONGEST_DELAY:
+            expected = f"a delay below {LONGEST_DELAY} sample periods{also}"
+            raise DescriptionError(place, value, expected, f"It reaches {samples:.3g} sample periods.")
 
 
 def delay_is_whole(loop: Loop) -> bool:
@@ -87,7 +90,7 @@ def _advice_on_observer(loop: Loop) -> list[str]:
 
 def _advice_on_delay(loop: Loop) -> list[str]:
     observer = loop.controller.observer_bandwidth
-    delay = high_of(loop.actuator.delay) + high_of(loop.plant.dead_time)
+    delay = high_of(loop.actuator.delay) + high_of(loop.plant.dead_time) + high_of(loop.sensor.delay)
     if observer is None or not high_of(observer) * delay > 1.0:
         return []
     return [

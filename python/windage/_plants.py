@@ -12,13 +12,14 @@ from typing import TYPE_CHECKING, Any
 from ._descriptions import Description, FrozenMapping, frozen
 from ._equations import Program, check_name, compile_equations
 from ._errors import DescriptionError, suggestion
-from ._numbers import ANY, Number, check_count, checked_number, checked_sequence, is_text
+from ._numbers import ANY, Number, Rule, Spread, check_count, checked_number, checked_sequence, is_text, takes
 
 if TYPE_CHECKING:
     from ._describe import Numbers
 
 #: Names of signals that every loop has.
 LOOP_SIGNALS = ("time", "reference", "error", "output", "measured", "command", "input")
+DEAD_TIME = Rule("a dead time of at least 0 s or a spread of such times", low=0.0, bounded=True)
 MOST_STATES = 100
 MOST_AUXILIARIES = 1000
 MOST_PARAMETERS = 10_000
@@ -117,6 +118,9 @@ class Plant(AnyPlant):
     auxiliaries : mapping of str to str
         Named expressions that equations, the output and each other may read. At most 1000; with the equations
         at most 200 000 characters.
+    dead_time : float or spread, s
+        Time after which the input acts, besides the delay of the actuator; any number. (Dead time at the output is
+        the delay of the sensor.)
 
     Raises
     ------
@@ -158,8 +162,10 @@ class Plant(AnyPlant):
     disturbances: Sequence[str] = ()
     parameters: Mapping[str, Number] = field(default_factory=FrozenMapping)
     auxiliaries: Mapping[str, str] = field(default_factory=FrozenMapping)
+    dead_time: Number = field(default=0.0, metadata=takes(DEAD_TIME))
 
     def __post_init__(self) -> None:
+        object.__setattr__(self, "dead_time", checked_number(self.dead_time, "plant.dead_time", DEAD_TIME))
         states = _states(self.states)
         disturbances = _names(self.disturbances, "plant.disturbances")
         parameters = _numbers(self.parameters, "plant.parameters")
@@ -265,6 +271,9 @@ class Plant(AnyPlant):
         if name in taken:
             mend = f"{name!r} is in {taken[name]} already; rename one of them."
             raise DescriptionError(place, name, "a name of its own", mend)
+        if (place, name) == ("plant.parameters", "dead_time") and isinstance(self.dead_time, Spread):
+            mend = "Both would be drawn as plant.dead_time; rename the parameter."
+            raise DescriptionError(place, name, "a name of its own", mend)
         is_own_word = (place, name) == ("plant.input", "input")
         if is_loop_signal(name) and not is_own_word:
             mend = f"{name!r} is a signal of every loop; choose another name."
@@ -290,6 +299,7 @@ class Plant(AnyPlant):
             "disturbances": len(self.disturbances),
             "derivatives": engine_program(derivatives, sources),
             "output": engine_program(output, sources),
+            "dead_time": numbers.take(self.dead_time, "plant.dead_time"),
         }
 
 

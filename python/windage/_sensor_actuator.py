@@ -31,7 +31,7 @@ _DELAY = Rule("a delay of at least 0 s or a spread of such delays", low=0.0, bou
 
 @dataclass(frozen=True, repr=False)
 class Sensor(Description):
-    """What the controller gets to see: clip(round(filter(gain * output + bias + noise))).
+    """What the controller gets to see: clip(round(filter(gain * output(t - delay) + bias + noise))).
 
     Parameters
     ----------
@@ -47,6 +47,15 @@ class Sensor(Description):
         Step to whose multiples the value is rounded; 0 for none.
     range : pair of float or spread, optional
         Lowest and highest reading.
+    delay : float or spread, s
+        Dead time between the output and its reading; any number, not only multiples of the sample period.
+
+    Notes
+    -----
+    With a delay that is no multiple of the sample period the plant's own output between two samples is read: linear
+    stock plants are evaluated exactly there, and an integration step of any other plant ends there. Nothing is
+    interpolated. Before time 0 the output is taken for what it is at time 0. The signal `output` is not delayed,
+    `measured` is.
     """
 
     gain: Number = field(default=1.0, metadata=takes(NONZERO))
@@ -55,13 +64,14 @@ class Sensor(Description):
     filter_frequency: Number = field(default=0.0, metadata=takes(NON_NEGATIVE))
     resolution: Number = field(default=0.0, metadata=takes(NON_NEGATIVE))
     range: Sequence[Number] | None = None
+    delay: Number = field(default=0.0, metadata=takes(_DELAY))
 
     def __post_init__(self) -> None:
         _check_fields(self, "sensor")
         object.__setattr__(self, "range", _pair(self.range, "sensor.range"))
 
     def _describe(self, numbers: Numbers) -> dict[str, Any]:
-        names = ("gain", "bias", "noise", "filter_frequency", "resolution")
+        names = ("gain", "bias", "noise", "filter_frequency", "resolution", "delay")
         described = {name: numbers.take(getattr(self, name), f"sensor.{name}") for name in names}
         if self.range is not None:
             low, high = numbers.take_all(self.range, "sensor.range")

@@ -16,20 +16,19 @@ from ._numbers import (
     NONZERO,
     POSITIVE,
     Number,
-    Rule,
     checked_integer,
     checked_number,
     checked_numbers,
     checked_sequence,
     takes,
 )
+from ._plants import DEAD_TIME
 from ._stock_plant import StockPlant
 
 if TYPE_CHECKING:
     from ._describe import Numbers
 
 HIGHEST_ORDER = 20
-_DEAD_TIME = Rule("a dead time of at least 0 s or a spread of such times", low=0.0, bounded=True)
 
 
 class LinearPlant(StockPlant):
@@ -55,6 +54,8 @@ class IntegratorChain(LinearPlant):
         Input gain, not 0.
     initial : float, spread or sequence of them
         Output at time 0, or output and its derivatives up to n - 1.
+    dead_time : float or spread, s
+        Before the input, any number.
     """
 
     engine_kind: ClassVar[str] = "integrator_chain"
@@ -63,6 +64,7 @@ class IntegratorChain(LinearPlant):
     order: int
     gain: Number = field(metadata=takes(NONZERO))
     initial: Number | Sequence[Number] = 0.0
+    dead_time: Number = field(default=0.0, metadata=takes(DEAD_TIME))
 
     def __post_init__(self) -> None:
         object.__setattr__(self, "order", checked_integer(self.order, "plant.order", 1, HIGHEST_ORDER))
@@ -88,7 +90,7 @@ class FirstOrder(LinearPlant):
 
     gain: Number = field(metadata=takes(NONZERO))
     time_constant: Number = field(metadata=takes(POSITIVE))
-    dead_time: Number = field(default=0.0, metadata=takes(_DEAD_TIME))
+    dead_time: Number = field(default=0.0, metadata=takes(DEAD_TIME))
     initial: Number = field(default=0.0, metadata=takes(ANY))
 
     def _states(self) -> int:
@@ -115,7 +117,7 @@ class SecondOrder(LinearPlant):
     gain: Number = field(metadata=takes(NONZERO))
     time_constant: Number = field(metadata=takes(POSITIVE))
     damping: Number = field(metadata=takes(ANY))
-    dead_time: Number = field(default=0.0, metadata=takes(_DEAD_TIME))
+    dead_time: Number = field(default=0.0, metadata=takes(DEAD_TIME))
     initial: Number | Sequence[Number] = 0.0
 
     def __post_init__(self) -> None:
@@ -150,7 +152,7 @@ class TransferFunction(LinearPlant):
 
     numerator: Sequence[Number]
     denominator: Sequence[Number]
-    dead_time: Number = field(default=0.0, metadata=takes(_DEAD_TIME))
+    dead_time: Number = field(default=0.0, metadata=takes(DEAD_TIME))
 
     def __post_init__(self) -> None:
         super().__post_init__()
@@ -193,6 +195,8 @@ class StateSpace(LinearPlant):
         Disturbances, one a column: "load" if there is one, else "load_1", "load_2", ... By default none.
     initial : sequence of float or spread, shape (n,), optional
         States at time 0, by default 0.
+    dead_time : float or spread, s
+        Before the input, any number.
     """
 
     engine_kind: ClassVar[str] = "state_space"
@@ -202,8 +206,10 @@ class StateSpace(LinearPlant):
     c: Sequence[Number]
     e: Sequence[Sequence[Number]] | None = None
     initial: Sequence[Number] | None = None
+    dead_time: Number = field(default=0.0, metadata=takes(DEAD_TIME))
 
     def __post_init__(self) -> None:
+        super().__post_init__()
         a = _matrix(self.a, "plant.a", None, None)
         n = len(a)
         if not n <= HIGHEST_ORDER:

@@ -68,6 +68,7 @@ EVERY_DISTURBANCE = [
     wd.Table([0.0, 0.5, SPREAD], [1.0, wd.uniform(0.0, 1.0), 2.0], interpolation="hold"),
     wd.Gust(SPREAD, correlation_time=0.5),
     wd.WhiteNoise(0.01),
+    wd.Step(SPREAD) + wd.Sine(1.0, period=SPREAD) + wd.Gust(SPREAD, correlation_time=0.5) + 2.0,
 ]
 EVERY_MEASURE = [
     *(make("error", after=0.1, before=0.9) for make in (wd.peak, wd.minimum, wd.maximum, wd.mean, wd.rms)),
@@ -129,7 +130,9 @@ EVERY_STUDY = [
         controller=CONTROLLER,
         sample_period=wd.uniform(0.01, 0.02),
         reference=wd.Sine(1.0, 2.0),
-        sensor=wd.Sensor(gain=1.1, bias=SPREAD, noise=0.1, filter_frequency=20.0, resolution=0.01, range=(-9, 9)),
+        sensor=wd.Sensor(
+            gain=1.1, bias=SPREAD, noise=0.1, filter_frequency=20.0, resolution=0.01, range=(-9, 9), delay=SPREAD
+        ),
         actuator=wd.Actuator(
             (-1.0, SPREAD), rate_limit=9.0, resolution=0.1, delay=SPREAD, time_constant=1, initial=0.1
         ),

@@ -21,21 +21,26 @@ PARTS: list[Any] = [
 ]
 
 
-def study(reference: Any = 0.0, load: Any = 0.0, **options: Any) -> wd.Study:
-    """A chain of two; the command is the second derivative of the reference and nothing else."""
+EQUATIONS = wd.Plant({"x": 0.0}, {"x": "u + w"}, "u", "x", ["w"])
+EXACT = wd.StateSpace([[0.0]], [1.0], [1.0], e=[[1.0]])
+
+
+def study(reference: Any = 0.0, load: Any = 0.0, plant: Any = EQUATIONS, **options: Any) -> wd.Study:
+    """An integrator; the command is the second derivative of the reference and nothing else."""
+    word = plant.disturbance_names[0]
     loop = wd.Loop(
-        plant=wd.Plant({"x": 0.0}, {"x": "u + w"}, "u", "x", ["w"]),
+        plant=plant,
         controller=wd.OutputADRC(
             order=2, controller_gains=[0.0, 0.0], observer_gains=[0.0] * 3, b0=1.0, cancel_disturbance=False
         ),
         sample_period=0.01,
         duration=1.0,
         reference=reference,
-        disturbances={"w": load},
-        steps_per_sample=1,
+        disturbances={word: load},
+        steps_per_sample=64,
         **options,
     )
-    return wd.Study(loop, measures=[wd.final("x"), wd.peak("w")], seed=4)
+    return wd.Study(loop, measures=[wd.final("output"), wd.peak(word)], seed=4)
 
 
 def test_a_sum_and_its_derivatives_are_those_of_its_terms_added() -> None:
@@ -49,24 +54,42 @@ def test_a_sum_and_its_derivatives_are_those_of_its_terms_added() -> None:
 
 
 @pytest.mark.parametrize("delay", [0.0, 0.0037])
-def test_a_noise_may_be_added_to_a_function(delay: float) -> None:
+@pytest.mark.parametrize("plant", [EQUATIONS, EXACT], ids=["equations", "sampled exactly"])
+def test_a_noise_may_be_added_to_a_function(plant: Any, delay: float) -> None:
     """The noise of a sum is the noise alone where its place bears the same name: each changes nothing of the other."""
     gust, white = wd.Gust(0.5, 0.2), wd.WhiteNoise(1e-3)
-    actuator = wd.Actuator(delay=delay)
-    both = study(load=wd.Step(2.0, at=0.305) + gust + white, actuator=actuator)
-    noises = study(load=wd.Constant(0.0) + gust + white, actuator=actuator)
-    step = study(load=wd.Step(2.0, at=0.305), actuator=actuator)
+    options: Any = {"plant": plant, "actuator": wd.Actuator(delay=delay)}
+    word = plant.disturbance_names[0]
+    both = study(load=wd.Step(2.0, at=0.305) + gust + white, **options)
+    noises = study(load=wd.Constant(0.0) + gust + white, **options)
+    step = study(load=wd.Step(2.0, at=0.305), **options)
     for trial in range(3):
-        sums = noises.replay(trial)["w"] + step.replay(trial)["w"]
-        np.testing.assert_allclose(both.replay(trial)["w"], sums, rtol=0, atol=1e-14)
+        sums = noises.replay(trial)[word] + step.replay(trial)[word]
+        np.testing.assert_allclose(both.replay(trial)[word], sums, rtol=0, atol=1e-14)
         # x' = w: exact for the step between samples and for the noise held from sample to sample.
         np.testing.assert_allclose(
-            both.replay(trial)["x"], noises.replay(trial)["x"] + step.replay(trial)["x"], rtol=0, atol=1e-13
+            both.replay(trial)["output"],
+            noises.replay(trial)["output"] + step.replay(trial)["output"],
+            rtol=0,
+            atol=1e-12,
         )
-        assert step.replay(trial)["x"][-1] == pytest.approx(2.0 * (1.0 - 0.305), abs=1e-13)
-    noise = noises.replay(0)["w"]
+        assert step.replay(trial)["output"][-1] == pytest.approx(2.0 * (1.0 - 0.305), abs=1e-12)
+    noise = noises.replay(0)[word]
     assert np.std(noise) > 0.1
-    assert not np.array_equal(noise, noises.replay(1)["w"])
+    assert not np.array_equal(noise, noises.replay(1)[word])
+
+
+def test_a_sum_of_sines_and_tables_is_exact_on_linear_plants() -> None:
+    """Each term moves in its own way between the samples; against equations at 64 steps a sample."""
+    load = sum(PARTS) + wd.Sine(0.3, period=0.045) + wd.Gust(0.5, 0.2)
+    linear = wd.StateSpace([[0.0, 1.0], [-400.0, -8.0]], [0.0, 1.0], [1.0, 0.0], e=[[0.0], [400.0]])
+    equations = wd.Plant(["x", "v"], {"x": "v", "v": "-400*x - 8*v + u + 400*load"}, "u", "x", ["load"])
+    found, expected = (
+        study(load=load, plant=plant, sensor=wd.Sensor(delay=0.0237)).replay(0) for plant in (linear, equations)
+    )
+    assert np.max(np.abs(expected["output"])) > 0.5
+    for name in ("output", "measured"):
+        np.testing.assert_allclose(found[name], expected[name], rtol=0, atol=1e-10)
 
 
 def test_holding_sums_hold() -> None:

@@ -35,8 +35,8 @@ delay_line::delay_line(const loop_description& d, const held_value& sample_perio
 void delay_line::begin(const trial_block& block, const held_value& initial_command) {
     delay_.begin(block);
     dead_time_.begin(block);
-    whole_.fill([&](std::size_t i) { return split_delay(i).whole; });
-    fraction_.fill([&](std::size_t i) { return split_delay(i).fraction; });
+    whole_.fill([&](std::size_t i) { return parts_at(i).whole; });
+    fraction_.fill([&](std::size_t i) { return parts_at(i).fraction; });
     shortest_ = longest_ = std::int64_t(whole_[0]);
     for (std::size_t lane = 1; lane < size_; ++lane) {
         shortest_ = std::min(shortest_, std::int64_t(whole_[lane]));
@@ -47,12 +47,11 @@ void delay_line::begin(const trial_block& block, const held_value& initial_comma
     for (std::int64_t k = 0; k < depth_; ++k) initial_command.copy_to(slot(k), size_);
 }
 
-delay_line::parts delay_line::split_delay(std::size_t i) const {
-    const wide period = period_.pack_at(i), total = delay_.pack_at(i) + dead_time_.pack_at(i);
-    const wide samples = total / period, nearest = floor(samples + 0.5);
+delay_parts split_delay(wide delay, wide sample_period) {
+    const wide samples = delay / sample_period, nearest = floor(samples + 0.5);
     const auto is_whole = absolute(samples - nearest) <= whole_tolerance;
     const wide whole = select(is_whole, nearest, floor(samples));
-    return {whole, select(is_whole, wide(0.0), total - whole * period)};
+    return {whole, select(is_whole, wide(0.0), delay - whole * sample_period)};
 }
 
 void delay_line::sample(std::int64_t k, constant_signal command) {

@@ -32,9 +32,8 @@ void disturbance::sample(std::int64_t k) {
 
 void disturbance::add_noises(signal to) const {
     for (const sampled_noise& n : noises_)
-        for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP {
-            (wide::load(to + i) + wide::load(n.now() + i)).store(to + i);
-        });
+        for_each_pack(size_, [&](std::size_t i)
+                                 WINDAGE_LANE_LOOP { (wide::load(to + i) + wide::load(n.now() + i)).store(to + i); });
 }
 
 void disturbance::evaluate(constant_signal time, jump_side side, signal out, bool own_times) const {

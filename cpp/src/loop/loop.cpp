@@ -23,10 +23,11 @@ bool stages_are_uniform(const loop_description& d) {
 loop::loop(const loop_description& d, signal_arena& arena)
     : size_(arena.block_size()), clock_(d.sample_period, d.duration, arena),
       disturbances_(std::make_unique<disturbance_bank>(d.disturbances, clock_, stages_are_uniform(d), arena)),
-      delay_(d, clock_.period(), arena),
-      plant_(make_plant(d, {clock_.period(), delay_.fraction(), delay_.is_split()}, *disturbances_, arena)),
+      delay_(d, clock_.period(), arena), output_delay_(d, clock_.period(), arena),
+      plant_(make_plant(d, {clock_.period(), delay_.fraction(), delay_.is_split(), output_delay_.probe()},
+                        *disturbances_, arena)),
       reference_(d.reference, d.sample_period.is_constant(), clock_.period(), arena),
-      sensor_(d.sensor, clock_, plant_->output(), arena),
+      sensor_(d.sensor, clock_, seen_output(), arena),
       controller_(std::make_unique<linear_adrc>(d.controller, clock_.period(), arena)),
       limiter_(d.actuator, clock_, controller_->output(), arena), error_(arena.take()) {
     if (!delay_.is_absent() || plant_->lagged_input()) delayed_input_ = arena.take();
@@ -44,6 +45,7 @@ void loop::begin(const trial_block& block) {
     sensor_.begin(block);
     limiter_.begin(block);
     delay_.begin(block, limiter_.initial());
+    output_delay_.begin(block);
     plant_->begin(block, limiter_.initial());
     controller_->begin(block, limiter_.initial());
     for (named_expression& e : expressions_) e.formula.begin(block);
@@ -57,6 +59,7 @@ void loop::sample(std::int64_t k) {
     plant_->evaluate_output(clock_.time(), input());
     reference_.sample(clock_, reference_signals_.data(), int(reference_signals_.size()) - 1);
     sample_error();
+    output_delay_.sample(k, plant_->output(), plant_->probed_output());
     sensor_.sample(k);
     controller_->sample(k, reference_signals_.data(), sensor_.measured(), limiter_.command());
     limiter_.sample();

@@ -22,8 +22,8 @@ bool keeps_the_same(const noise_description& d, const sample_clock& clock, const
 } // namespace
 
 sampled_noise::sampled_noise(const noise_description& d, const sample_clock& clock, signal_arena& arena)
-    : kind_(d.kind), clock_(clock), size_(arena.block_size()), numbers_(lane_values(d, arena)),
-      noise_(d.stream, arena), now_(arena.take()), keep_(keeps_the_same(d, clock, numbers_), arena),
+    : kind_(d.kind), clock_(clock), size_(arena.block_size()), numbers_(lane_values(d, arena)), noise_(d.stream, arena),
+      now_(arena.take()), keep_(keeps_the_same(d, clock, numbers_), arena),
       gain_(keep_.is_same() && are_same(clock.period(), numbers_[0]), arena) {}
 
 void sampled_noise::begin(const trial_block& block) {

@@ -37,6 +37,8 @@ const plant_description& checked(const plant_description& d, const plant_disturb
     check_inputs(d.output, d);
     if (d.derivatives.outputs.size() != d.states.size())
         throw std::invalid_argument("plant: one equation a state is expected");
+    if (d.output.reads(source_kind::plant_input))
+        throw std::invalid_argument("plant: an output that does not read the input is expected");
     if (d.output.outputs.size() != 1) throw std::invalid_argument("plant: one output is expected");
     if (w.count() != d.disturbances) throw std::invalid_argument("plant: one disturbance for each name is expected");
     return d;
@@ -90,12 +92,18 @@ void equation_plant::derivative(const block_state& x, block_state& dx, const sta
     derivatives_.run();
 }
 
-void equation_plant::evaluate_output(constant_signal time, constant_signal input) {
-    if (output_state_) return;
+void equation_plant::evaluate_output(constant_signal time, constant_signal) {
     now_.resize(disturbances_.count());
     for (int k = 0; k < disturbances_.count(); ++k) now_[k] = disturbances_.now(k);
-    bind(output_tape_, output_bindings_, x_, time, input, now_.data());
+    output_between(time, now_);
+}
+
+// The output reads no input: it is not bound.
+constant_signal equation_plant::output_between(constant_signal time, const std::vector<constant_signal>& disturbances) {
+    if (output_state_) return output();
+    bind(output_tape_, output_bindings_, x_, time, nullptr, disturbances.data());
     output_tape_.run();
+    return output_;
 }
 
 } // namespace windage

@@ -61,7 +61,10 @@ linear_plant::linear_plant(const plant_description& d, number lag, const plant_t
       initial_state_(lane_values(d.initial_state, arena)), x_(arena.take(order_)), next_(arena.take(order_)),
       output_(arena.take()), acting_(w, arena), phi_(order_, order_, is_same(), arena),
       before_(order_, 1, is_same(), arena), gamma_(order_, acting_.columns(), is_same(), arena),
-      c_(1, order_, is_same(), arena) {
+      c_(1, order_, is_same(), arena), probed_(timing.probe ? arena.take() : nullptr),
+      probe_phi_(timing.probe ? 1 : 0, order_, is_same(), arena),
+      probe_before_(timing.probe ? 1 : 0, 1, is_same(), arena),
+      probe_gamma_(timing.probe ? 1 : 0, acting_.columns(), is_same(), arena) {
     if (w.are_held()) return;
     from_ = arena.take();
     until_ = arena.take();
@@ -72,7 +75,8 @@ linear_plant::linear_plant(const plant_description& d, number lag, const plant_t
 bool linear_plant::is_same() const {
     const bool same_numbers =
         std::all_of(numbers_.begin(), numbers_.end(), [](const lane_value& v) { return v.is_same(); });
-    return same_numbers && acting_.is_same() && are_same(lag_, timing_.period, timing_.fraction);
+    const bool same_probe = !timing_.probe || timing_.probe->is_same();
+    return same_numbers && same_probe && acting_.is_same() && are_same(lag_, timing_.period, timing_.fraction);
 }
 
 void linear_plant::begin(const trial_block& trials, const held_value& initial_command) {
@@ -100,6 +104,7 @@ void linear_plant::sample_exactly(std::size_t i, const trial_block& trials) {
     const step_matrices whole = acting_.step(m, period, period, i);
     expect_accurate(whole, trials, i);
     expect_small_roundoff(m, whole, trials, i);
+    if (timing_.probe) sample_probe(m, trials, i);
     for (int r = 0; r < order_; ++r) {
         for (int k = 0; k < order_; ++k) phi_.set(r, k, i, whole.phi(r, k));
         for (int k = 0; k < acting_.columns(); ++k) gamma_.set(r, k, i, whole.gamma(r, k));
@@ -115,6 +120,38 @@ void linear_plant::sample_exactly(std::size_t i, const trial_block& trials) {
     }
 }
 
+// The same for the output at the probe, which may lie before or after the change of the command.
+void linear_plant::sample_probe(const linear_model& m, const trial_block& trials, std::size_t i) {
+    const wide period = timing_.period.pack_at(i), wanted = timing_.probe->pack_at(i);
+    const wide span = select(wanted > 0.0, wanted, period); // lanes without a probe are not read
+    const step_matrices whole = acting_.step(m, span, period, i);
+    expect_accurate(whole, trials, i);
+    const auto seen = [&](const lane_matrix& x, int column) {
+        wide sum = m.c(0, 0) * x(0, column);
+        for (int r = 1; r < order_; ++r) sum += m.c(0, r) * x(r, column);
+        return sum;
+    };
+    for (int k = 0; k < order_; ++k) probe_phi_.set(0, k, i, seen(whole.phi, k));
+    for (int k = 0; k < acting_.columns(); ++k) probe_gamma_.set(0, k, i, seen(whole.gamma, k));
+    if (!timing_.is_split) return;
+    const step_matrices rest =
+        transition(m.a, m.a_low, {m.b, {}}, maximum(span - timing_.fraction.pack_at(i), wide(0.0)));
+    expect_accurate(rest, trials, i);
+    probe_gamma_.set(0, 0, i, seen(rest.gamma, 0));
+    probe_before_.set(0, 0, i, seen(whole.gamma, 0) - seen(rest.gamma, 0));
+}
+
+// From the states at the start of the interval.
+void linear_plant::probe(const sample_interval& interval) {
+    for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP {
+        wide y = 0.0 + probe_gamma_.pack_at(0, 0, i) * wide::load(interval.after + i);
+        if (timing_.is_split) y += probe_before_.pack_at(0, 0, i) * wide::load(interval.before + i);
+        for (int k = 0; k < order_; ++k) y += probe_phi_.pack_at(0, k, i) * wide::load(x_ + k * size_ + i);
+        for (const exosystem::input& v : inputs_) y += probe_gamma_.pack_at(0, v.column, i) * wide::load(v.value + i);
+        y.store(probed_ + i);
+    });
+}
+
 void linear_plant::evaluate_output(constant_signal, constant_signal) {
     if (output_is_first_state_) return;
     for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP {
@@ -126,6 +163,7 @@ void linear_plant::evaluate_output(constant_signal, constant_signal) {
 
 void linear_plant::advance(const sample_interval& interval) {
     inputs_ = acting_.at_start(interval.time);
+    if (timing_.probe) probe(interval);
     move_on(interval);
     if (w_.break_soon()) add_jumps(interval.time);
 }
@@ -148,11 +186,24 @@ void linear_plant::add_jumps(constant_signal time) {
             const wide left = wide::load(end_ + i) - wide::load(until_ + i);
             const auto jumps = left > 0.0;
             if (!any(jumps)) continue;
+            if (timing_.probe) add_jump_to_probe(model_at(i), time, i);
             if (!is_one || i == 0) rest = acting_.step(model_at(i), left, timing_.period.pack_at(i), i);
             add_jump(rest, jumps, i);
         }
         std::copy_n(until_, size_, from_);
     }
+}
+
+void linear_plant::add_jump_to_probe(const linear_model& m, constant_signal time, std::size_t i) {
+    const wide left = wide::load(time + i) + timing_.probe->pack_at(i) - wide::load(until_ + i);
+    const auto sees = (left > 0.0) & (wide::load(until_ + i) < wide::load(end_ + i));
+    if (!any(sees)) return;
+    const step_matrices rest =
+        acting_.step(m, select(sees, left, timing_.period.pack_at(i)), timing_.period.pack_at(i), i);
+    wide sum = wide::load(probed_ + i);
+    for (const exosystem::input& v : inputs_)
+        for (int r = 0; r < order_; ++r) sum += m.c(0, r) * rest.gamma(r, v.column) * wide::load(v.value + i);
+    select(sees, sum, wide::load(probed_ + i)).store(probed_ + i);
 }
 
 void linear_plant::add_jump(const step_matrices& rest, mask<lanes> where, std::size_t i) {

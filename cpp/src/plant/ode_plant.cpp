@@ -48,10 +48,11 @@ ode_plant::ode_plant(const plant_description& d, const integration_settings& set
         stage_values_.emplace_back();
         for (int i = 0; i < w.count(); ++i) stage_values_[c].push_back(arena.take());
     }
-    if (!w.are_held()) {
+    if (!w.are_held() || timing.probe) {
         piece_ = block_state(4, size_);
         kept_ = x_;
     }
+    if (timing.probe) probe_ = block_state(2 + std::size_t(w.count()), size_);
     stages_.resize(stage_buffer_.size());
     for (stage& s : stages_) s.disturbances.resize(w.count());
 }
@@ -71,15 +72,59 @@ void ode_plant::begin(const trial_block& block, const held_value& initial_comman
 }
 
 void ode_plant::advance(const sample_interval& interval) {
-    if (integrator_ == integrator_kind::reference) return advance_reference(interval);
     find_moving();
-    const bool break_soon = w_.break_soon();
+    if (timing_.probe) set_probes(interval.time);
+    if (integrator_ == integrator_kind::reference) return advance_reference(interval);
+    const bool may_be_in_pieces = w_.break_soon() || timing_.probe;
     for (int j = 0; j < plan_.steps(); ++j) {
-        plan_.prepare(j, interval, needs_times());
-        if (break_soon && take_step_in_pieces()) continue;
+        plan_.prepare(j, interval, needs_times() || may_be_in_pieces);
+        if (may_be_in_pieces && take_step_in_pieces()) continue;
         prepare_stages(plan_.start(), plan_.step(), false);
         take_step(stages_);
+        if (timing_.probe) probe(plan_.start(), piece_[3]);
     }
+}
+
+void ode_plant::set_probes(constant_signal time) {
+    for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP {
+        const wide after = timing_.probe->pack_at(i);
+        select(after > 0.0, wide::load(time + i) + after, -0x1p1000).store(probe_[0] + i);
+    });
+}
+
+// The end of a piece: a break of a disturbance, the instant of the probe, or the end of the step.
+bool ode_plant::piece_end(constant_signal from, constant_signal end, signal until) {
+    bool is_found = w_.break_soon() && w_.piece_end(from, end, until);
+    if (!is_found) std::copy_n(end, size_, until);
+    if (!timing_.probe) return is_found;
+    for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP {
+        const wide at = wide::load(probe_[0] + i), close = 0.5 * same_instant * timing_.period.pack_at(i);
+        const auto is_inside = (wide::load(from + i) < at - close) & (at < wide::load(until + i) - close);
+        select(is_inside, at, wide::load(until + i)).store(until + i);
+        is_found = is_found || any(is_inside);
+    });
+    return is_found;
+}
+
+// Reads the output in the lanes whose probe is the end of the piece that has just been taken.
+void ode_plant::probe(constant_signal from, constant_signal until) {
+    const auto is_reached = [&](std::size_t i) {
+        const wide earliest = wide::load(probe_[0] + i) - 0.5 * same_instant * timing_.period.pack_at(i);
+        return (wide::load(from + i) < earliest) & (wide::load(until + i) >= earliest);
+    };
+    bool is_any = false;
+    for_each_pack(size_, [&](std::size_t i) { is_any = is_any || any(is_reached(i)); });
+    if (!is_any) return;
+    at_probe_.resize(std::size_t(w_.count()));
+    for (std::size_t k = 0; k < at_probe_.size(); ++k) at_probe_[k] = w_.now(int(k));
+    for (int k : moving_) {
+        w_.evaluate(k, probe_[0], false, probe_[2 + std::size_t(k)], true);
+        at_probe_[std::size_t(k)] = probe_[2 + std::size_t(k)];
+    }
+    const constant_signal y = output_between(probe_[0], at_probe_);
+    for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP {
+        select(is_reached(i), wide::load(y + i), wide::load(probe_[1] + i)).store(probe_[1] + i);
+    });
 }
 
 // False, and nothing done, if no lane has a break in this step.
@@ -88,7 +133,7 @@ bool ode_plant::take_step_in_pieces() {
     for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP {
         (wide::load(plan_.start() + i) + wide::load(plan_.step() + i)).store(end + i);
     });
-    if (!w_.piece_end(plan_.start(), end, until)) return false;
+    if (!piece_end(plan_.start(), end, until)) return false;
     for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP {
         const wide to = wide::load(until + i);
         select(to < wide::load(end + i), to - wide::load(plan_.start() + i), wide::load(plan_.step() + i))
@@ -96,6 +141,7 @@ bool ode_plant::take_step_in_pieces() {
     });
     prepare_stages(plan_.start(), length, true);
     take_step(stages_);
+    if (timing_.probe) probe(plan_.start(), until);
     take_rest_of_step();
     restore_common_times();
     return true;
@@ -106,7 +152,7 @@ void ode_plant::take_rest_of_step() {
     const signal from = piece_[0], until = piece_[1], length = piece_[2], end = piece_[3];
     for (bool is_left = true; is_left;) {
         std::copy_n(until, size_, from);
-        is_left = w_.piece_end(from, end, until);
+        is_left = piece_end(from, end, until);
         for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP {
             (wide::load(until + i) - wide::load(from + i)).store(length + i);
         });
@@ -118,6 +164,7 @@ void ode_plant::take_rest_of_step() {
                 const auto is_done = wide::load(from + i) >= wide::load(end + i);
                 select(is_done, wide::load(kept_[s] + i), wide::load(x_[s] + i)).store(x_[s] + i);
             });
+        if (timing_.probe) probe(from, until);
     }
 }
 
@@ -183,7 +230,7 @@ void ode_plant::advance_reference(const sample_interval& interval) {
 }
 
 void ode_plant::integrate_pieces(constant_signal start, constant_signal length, constant_signal command) {
-    if (!w_.break_soon()) return integrate_reference(start, length, command);
+    if (!w_.break_soon() && !timing_.probe) return integrate_reference(start, length, command);
     block_state piece(4, size_);
     const signal from = piece[0], until = piece[1], whole = piece[2], end = piece[3];
     for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP {
@@ -191,11 +238,12 @@ void ode_plant::integrate_pieces(constant_signal start, constant_signal length, 
         (wide::load(start + i) + wide::load(length + i)).store(end + i);
     });
     for (bool is_left = true; is_left; std::copy_n(until, size_, from)) {
-        is_left = w_.piece_end(from, end, until);
+        is_left = piece_end(from, end, until);
         for_each_pack(size_, [&](std::size_t i) WINDAGE_LANE_LOOP {
             (wide::load(until + i) - wide::load(from + i)).store(whole + i);
         });
         integrate_reference(from, whole, command);
+        if (timing_.probe) probe(from, until);
     }
 }
 

@@ -10,6 +10,12 @@
 
 namespace windage {
 
+/// A delay as whole sample periods and what is left, in s.
+struct delay_parts {
+    wide whole, fraction;
+};
+delay_parts split_delay(wide delay, wide sample_period);
+
 class delay_line {
 public:
     delay_line(const loop_description& d, const held_value& sample_period, signal_arena& arena);
@@ -32,10 +38,9 @@ public:
 private:
     /// Commands of sample k, also of those before the first one.
     double* slot(std::int64_t k) { return history_.data() + std::size_t(k & (depth_ - 1)) * size_; }
-    struct parts {
-        wide whole, fraction;
-    };
-    parts split_delay(std::size_t i) const;
+    delay_parts parts_at(std::size_t i) const {
+        return split_delay(delay_.pack_at(i) + dead_time_.pack_at(i), period_.pack_at(i));
+    }
     void choose_by_comparing(std::int64_t k);
     void choose_lane_by_lane(std::int64_t k);
     WINDAGE_INLINE void store_chosen(std::size_t i, wide before, wide after);

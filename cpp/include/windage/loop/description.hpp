@@ -48,8 +48,9 @@ struct disturbance_description {
     std::vector<noise_description> noises;
 };
 
-/// y_m = clip(quantise(filter(gain * y + bias + noise))).
+/// y_m = clip(quantise(filter(gain * y(t - delay) + bias + noise))).
 struct sensor_description {
+    number delay = 0.0; ///< s, any real number >= 0
     number gain = 1.0;
     number bias = 0.0;
     number noise = 0.0;            ///< standard deviation of white noise, a sample

@@ -1,6 +1,7 @@
 // The loop of a block of trials: an ordered list of stages, each called once a sample for all trials of the block.
 //
-//     clock -> disturbances -> plant output -> reference -> sensor -> controller -> limits -> delay -> signals -> plant
+//     clock -> disturbances -> plant output -> reference -> sensor delay -> sensor -> controller -> limits -> delay ->
+//     signals -> plant
 //
 // After `sample(k)` every signal holds its value at t_k; `advance` then moves the plant to t_{k+1}.
 #pragma once
@@ -15,6 +16,7 @@
 #include <windage/loop/delay_line.hpp>
 #include <windage/loop/description.hpp>
 #include <windage/loop/disturbance.hpp>
+#include <windage/loop/output_delay.hpp>
 #include <windage/loop/sensor.hpp>
 #include <windage/plant/plant.hpp>
 #include <windage/plant/tape.hpp>
@@ -51,6 +53,9 @@ private:
         signal value;
     };
 
+    constant_signal seen_output() const {
+        return output_delay_.is_absent() ? plant_->output() : output_delay_.delayed();
+    }
     constant_signal input() const { return delayed_input_ ? delayed_input_ : limiter_.command(); }
     void settle_states();
     void sample_error();
@@ -61,6 +66,7 @@ private:
     sample_clock clock_;
     std::unique_ptr<disturbance_bank> disturbances_;
     delay_line delay_;
+    output_delay output_delay_;
     std::unique_ptr<plant> plant_;
     time_function reference_;
     std::vector<signal> reference_signals_;

@@ -1,4 +1,4 @@
-// The sensor: y_m = clip(quantise(filter(gain * y + bias + noise))).
+// The sensor after its delay (`output_delay`): y_m = clip(quantise(filter(gain * y + bias + noise))).
 #pragma once
 
 #include <optional>

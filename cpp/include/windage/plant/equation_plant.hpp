@@ -17,6 +17,7 @@ public:
     constant_signal output() const override { return output_state_ ? x_[*output_state_] : output_; }
 
 private:
+    constant_signal output_between(constant_signal time, const std::vector<constant_signal>& disturbances) override;
     void begin_step(const block_state& x, const stage& s) override;
     void derivative(const block_state& x, block_state& dx, const stage& s) override;
     void begin_plant(const trial_block& block) override;

@@ -23,6 +23,11 @@ public:
     constant_signal state(int i) const override { return shown_[i]; }
 
 private:
+    constant_signal output_between(constant_signal, const std::vector<constant_signal>&) override {
+        show_states();
+        evaluate_output(nullptr, nullptr);
+        return output_;
+    }
     void begin_plant(const trial_block& block) override;
     void balance(const linear_model& m, wide period, std::size_t i, const trial_block& block);
     void derivative(const block_state& x, block_state& dx, const stage& s) override;

@@ -27,6 +27,7 @@ public:
     constant_signal state(int i) const override { return x_ + std::size_t(i) * size_; }
     int states() const override { return states_; }
     constant_signal lagged_input() const override { return has_lag_ ? state(states_) : nullptr; }
+    constant_signal probed_output() const override { return probed_; }
 
 private:
     bool is_same() const;
@@ -34,7 +35,10 @@ private:
     void expect_small_roundoff(const linear_model& m, const step_matrices& step, const trial_block& trials,
                                std::size_t i) const;
     linear_model model_at(std::size_t i) const;
+    void sample_probe(const linear_model& m, const trial_block& trials, std::size_t i);
+    void probe(const sample_interval& interval);
     void add_jumps(constant_signal time);
+    void add_jump_to_probe(const linear_model& m, constant_signal time, std::size_t i);
     void add_jump(const step_matrices& rest, mask<lanes> where, std::size_t i);
     void move_on(const sample_interval& interval);
     wide next_state(int row, int order, const sample_interval& interval, std::size_t i) const;
@@ -53,6 +57,8 @@ private:
     exosystem acting_;
     held_matrix phi_, before_, gamma_, c_;
     std::vector<exosystem::input> inputs_;
+    signal probed_ = nullptr;                                 // output at the probe
+    held_matrix probe_phi_, probe_before_, probe_gamma_;      // what it is made of, one row each
     signal from_ = nullptr, until_ = nullptr, end_ = nullptr; // pieces between breaks
 };
 

@@ -28,6 +28,7 @@ public:
     constant_signal output() const override { return x_[output_state_]; }
 
 private:
+    constant_signal output_between(constant_signal, const std::vector<constant_signal>&) override { return output(); }
     static const plant_description& checked(const plant_description& d, const plant_disturbances& w) {
         const bool fits = int(d.states.size()) == Drive::states && int(d.numbers.size()) == Drive::numbers &&
                           w.count() <= Drive::disturbances && d.output_state >= 0 && d.output_state < Drive::states;

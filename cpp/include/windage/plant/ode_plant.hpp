@@ -37,6 +37,7 @@ public:
     void settle_states() override { settle(x_.data(), x_.size()); }
     constant_signal state(int i) const override { return x_[i]; }
     int states() const override { return states_; }
+    constant_signal probed_output() const override { return timing_.probe ? probe_[1] : nullptr; }
     constant_signal lagged_input() const override { return has_lag_ ? x_[states_] : nullptr; }
 
 protected:
@@ -55,6 +56,8 @@ protected:
     /// One step of every lane; `stages` as many as the integrator has.
     virtual void take_step(const std::vector<stage>& stages);
     virtual void begin_plant(const trial_block& block) = 0;
+    /// The output for the states as they are, at a time between samples and under the disturbances of that time.
+    virtual constant_signal output_between(constant_signal time, const std::vector<constant_signal>& disturbances) = 0;
 
     std::size_t size_;
     int states_;
@@ -68,10 +71,13 @@ private:
     void find_moving();
     bool needs_times() const { return reads_time_ || !moving_.empty(); }
     void prepare_stages(constant_signal start, constant_signal length, bool own_times);
+    bool piece_end(constant_signal from, constant_signal end, signal until);
     bool take_step_in_pieces();
     void take_rest_of_step();
     void restore_common_times();
     void advance_reference(const sample_interval& interval);
+    void set_probes(constant_signal time);
+    void probe(constant_signal from, constant_signal until);
     void integrate_pieces(constant_signal start, constant_signal length, constant_signal command);
     void integrate_reference(constant_signal start, constant_signal length, constant_signal command);
 
@@ -89,6 +95,8 @@ private:
     std::vector<signal> stage_time_;                // one a distinct abscissa
     std::vector<std::vector<signal>> stage_values_; // per abscissa, one a disturbance
     block_state piece_, kept_;                      // start, end, length and end of the step; states before a piece
+    block_state probe_;                             // its instant, the output there; then disturbances there
+    std::vector<constant_signal> at_probe_;
     odeint::euler<block_state, double, block_state, double, block_algebra> euler_;
     odeint::runge_kutta4_classic<block_state, double, block_state, double, block_algebra> rk4_;
     odeint::runge_kutta_cash_karp54<block_state, double, block_state, double, block_algebra> cash_karp_;

@@ -62,6 +62,8 @@ struct plant_timing {
     const held_value& period;
     const held_value& fraction;
     bool is_split;
+    /// Seconds after each sample instant at which the output is asked for as well; not in lanes where it is 0.
+    const held_value* probe = nullptr;
 };
 
 /// What acts during one of them.
@@ -81,6 +83,8 @@ public:
     /// Sets to zero what has decayed to nothing (lanes/settle.hpp).
     virtual void settle_states() = 0;
     virtual constant_signal output() const = 0;
+    /// The output at `plant_timing::probe` in the interval that the plant has moved through last; null without one.
+    virtual constant_signal probed_output() const = 0;
     virtual constant_signal state(int i) const = 0;
     virtual int states() const = 0;
     /// What acts on the plant after the lag of the actuator; null without a lag.
