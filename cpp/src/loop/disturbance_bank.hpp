@@ -42,11 +42,13 @@ public:
 private:
     static jump_side side(bool ends_a_step) { return ends_a_step ? jump_side::before : jump_side::after; }
     double next_break(double t, std::size_t lane) const;
+    double find_next_break(double t, std::size_t lane) const;
     void look_for_breaks(std::int64_t k);
 
     const sample_clock& clock_;
     std::size_t size_;
     std::vector<disturbance> all_;
+    std::vector<double> next_breaks_; // of each lane, from the last look on
     bool break_soon_ = false;
     std::int64_t next_look_ = 0; // no lane has a break before this sample
 };
