@@ -72,14 +72,14 @@ class ExplainedCalls(ABCMeta):
 
 
 def explained(function: Callable[P, R]) -> Callable[P, R]:
-    """Decorate a function so that it explains a call that does not fit."""
+    """Decorate a function or method so that it explains a call that does not fit."""
 
     @functools.wraps(function)
     def called(*given: P.args, **named: P.kwargs) -> R:
         try:
             return function(*given, **named)
         except TypeError:
-            explain(function.__name__, inspect.signature(function), given, named)
+            explain(function.__qualname__, inspect.signature(function), given, named)
             raise
 
     return called
@@ -91,13 +91,15 @@ def explain(place: str, signature: inspect.Signature, given: tuple[Any, ...], na
     Parameters
     ----------
     place : str
-        Public name of the class or function.
+        Public name of the class, function or method.
     signature : inspect.Signature
         Its signature.
     given, named : tuple and mapping
         Arguments of the call.
     """
     taken = list(signature.parameters.values())
+    if taken and taken[0].name == "self":
+        taken, given = taken[1:], given[1:]
     if any(p.kind in (p.VAR_KEYWORD, p.VAR_POSITIONAL) for p in taken):
         return
     names = [p.name for p in taken]

@@ -17,6 +17,8 @@ import numpy.typing as npt
 from windage import _statistics
 from windage._errors import DescriptionError
 
+from ._arguments import explained
+
 Method = Literal["clopper-pearson", "wilson", "jeffreys"]
 Side = Literal["lower", "upper", "two-sided"]
 
@@ -100,6 +102,7 @@ _METHODS: dict[str, tuple[_Bound, _Bound, _Interval]] = {
 }
 
 
+@explained
 def pass_probability_bounds(
     failures: int,
     trials: int,
@@ -177,6 +180,7 @@ def _both_sides(
     return 0.0, upper(failures, trials, confidence)
 
 
+@explained
 def trials_needed(at_least: float, confidence: float, allowed_failures: int = 0) -> int:
     """Return the smallest number of trials that can prove a pass probability.
 
@@ -327,6 +331,7 @@ def trials_for_accuracy(accuracy: float, confidence: float) -> int:
     return _statistics.chernoff_trials(distance, checked_probability("confidence", confidence))
 
 
+@explained
 def tolerance_bound(
     values: npt.ArrayLike, content: float, confidence: float, side: Literal["upper", "lower"] = "upper"
 ) -> ToleranceBound:

@@ -10,6 +10,8 @@ from ._errors import DescriptionError
 from ._measures import Measure
 from ._numbers import ANY, NON_NEGATIVE, POSITIVE, Rule, check_order, checked_number
 
+#: A band wider than the change holds the initial value: whatever happens, it would be settled from the start.
+_BAND = Rule("a fraction of the change above 0, at most 1 (2 % is 0.02)", low=0.0, open_low=True, high=1.0)
 _FRACTION = Rule("a fraction of the change from 0 to 1", low=0.0, high=1.0)
 
 
@@ -157,7 +159,10 @@ def undershoot(signal: str = "output", after: Any = 0.0, before: Any = math.inf)
 def rise_time(
     low: Any = 0.1, high: Any = 0.9, signal: str = "output", after: Any = 0.0, before: Any = math.inf
 ) -> Measure:
-    """Measure the time from fraction `low` to `high` of the change (IEC 60050-351:2013, 351-45-36)."""
+    """Measure the time from fraction `low` to `high` of the change (IEC 60050-351:2013, 351-45-36).
+
+    The change is that of `overshoot`. Where there is none, or `high` is not reached, the rise time is infinite.
+    """
     low = checked_number(low, "rise_time.low", _FRACTION)
     high = checked_number(high, "rise_time.high", _FRACTION)
     check_order(low, high, "rise_time.low")
@@ -191,7 +196,7 @@ def settling_time(
     if tolerance is not None:
         tolerance = checked_number(tolerance, "settling_time.tolerance", POSITIVE)
         return Measure("settling_time", "error" if signal is None else signal, after, before, tolerance=tolerance)
-    band = checked_number(0.02 if band is None else band, "settling_time.band", POSITIVE)
+    band = checked_number(0.02 if band is None else band, "settling_time.band", _BAND)
     return Measure("settling_time", "output" if signal is None else signal, after, before, band=band)
 
 

@@ -231,7 +231,10 @@ def checked_integer(value: object, place: str, low: int, high: int) -> int:
     try:
         whole = operator.index(value)  # type: ignore[arg-type]
     except Exception:  # TypeError, or whatever a foreign object raises
-        raise DescriptionError(place, value, expected) from None
+        mend = ""
+        if isinstance(value, float) and low <= value <= high and value.is_integer():
+            mend = f"Write {int(value)}, without point and exponent."
+        raise DescriptionError(place, value, expected, mend) from None
     if not low <= whole <= high:
         raise DescriptionError(place, value, expected)
     return whole

@@ -11,6 +11,7 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 from numpy.typing import NDArray
 
+from ._arguments import explained
 from ._basis import SAMPLE, Basis
 from ._describe import Described
 from ._errors import DescriptionError, suggestion
@@ -126,10 +127,12 @@ class Outcome(Portable):
         """The requirements under their names."""
         return tuple(requirement.label for requirement in self.study.requirements)
 
+    @explained
     def failed(self, requirement: int | str) -> NDArray[np.int64]:
         """Return the indices of the trials that missed one requirement, given by its place or name."""
         return self._indices(~(self.slack[:, self._place(requirement)] >= 0.0))
 
+    @explained
     def audit(self, threads: int = 0, progress: bool | Report = False) -> Audit:
         """Find out what numerical error can have changed, once; later calls return what was found.
 
@@ -160,6 +163,7 @@ class Outcome(Portable):
             self._audit = found
         return self._audit
 
+    @explained
     def verdict(self, at_least: float, confidence: float = 0.95, audit: bool = True) -> Verdict:
         """Judge the claim that at least a fraction of all trials passes, at a confidence.
 
@@ -194,6 +198,7 @@ class Outcome(Portable):
             numerics=self.audit().numerics if audit and not self.interrupted else UNEXAMINED,
         )
 
+    @explained
     def verdicts(
         self, at_least: float | Mapping[str, float], confidence: float = 0.95, audit: bool = True
     ) -> VerdictTable:
@@ -216,6 +221,7 @@ class Outcome(Portable):
             else dict.fromkeys(missed, UNEXAMINED),
         )
 
+    @explained
     def extend(self, trials: int, threads: int = 0, progress: bool | Report | None = None) -> Outcome:
         """Return an outcome with further trials, equal to the last bit to one longer run.
 
@@ -253,6 +259,7 @@ class Outcome(Portable):
 
         return outcome_table(self)
 
+    @explained
     def save(self, path: str | os.PathLike[str]) -> None:
         """Write the outcome to a Parquet file with its study inside, which `load_outcome` reads.
 
@@ -280,6 +287,7 @@ class Outcome(Portable):
 
         return find_drivers(self)
 
+    @explained
     def plot(
         self,
         *,

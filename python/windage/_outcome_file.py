@@ -18,6 +18,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from ._accuracy import Choice
+from ._arguments import explained
 from ._describe import Described
 from ._errors import DescriptionError, OutcomeFileError
 from ._memory import check_memory
@@ -57,6 +58,7 @@ def save_outcome(outcome: Outcome, path: str | os.PathLike[str]) -> None:
             writer.write_table(pa.Table.from_arrays(columns, schema=schema))
 
 
+@explained
 def load_outcome(path: str | os.PathLike[str]) -> Outcome:
     """Read an outcome that `Outcome.save` wrote.
 

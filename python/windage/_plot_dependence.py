@@ -16,6 +16,8 @@ from ._plot_style import GREY, INK, SKY, VERMILLION, Values
 MOST_DOTS = 3_000
 #: Marks of failing trials: all, or every n-th of either kind, so that none looks more frequent than it is.
 MOST_MARKS = 300
+#: As many marks, or fewer, are drawn large.
+FEW = 100
 #: Trials that medians and quantiles are taken from, and groups of them.
 MOST_SORTED, BINS = 200_000, 16
 CELLS = 64
@@ -40,11 +42,12 @@ class Dependence:
         if self._is_dense:
             _draw_density(axes, row, parameter)
         else:
-            self._scatter(axes, parameter, self._passing, s=5, marker="o", color=SKY, alpha=0.6, linewidths=0)
+            size = 5 if len(self._passing) > FEW else 20
+            self._scatter(axes, parameter, self._passing, s=size, marker="o", color=SKY, alpha=0.6, linewidths=0)
         # Rings are small, grey and thin: where many trials miss another limit, the others stay visible.
         ring = {"facecolors": "none", "edgecolors": GREY, "linewidths": 0.6, "alpha": 0.8}
         self._scatter(axes, parameter, self._elsewhere, s=9, marker="o", **ring)
-        size = 20 if len(self._missed) <= 100 else 9
+        size = 9 if len(self._missed) > FEW else 20
         self._scatter(axes, parameter, self._missed, s=size, marker="x", color=VERMILLION, linewidths=0.8)
         if self._is_sorted:
             _draw_trend(axes, row, parameter)

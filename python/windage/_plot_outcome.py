@@ -38,10 +38,10 @@ from ._plot_style import (
 from ._plot_ticks import set_ticks
 from ._shown_text import plot_text
 from ._text_table import plainly_grouped
+from ._verdict import Verdict
 
 if TYPE_CHECKING:
     from ._outcome import Outcome
-    from ._verdict import Verdict
 
 MOST_ROWS = 6
 MOST_PARAMETERS = 6
@@ -49,6 +49,8 @@ MOST_PARAMETERS = 6
 CURVE = 300
 #: Inches of a panel, and characters of its tick labels that fit side by side.
 CURVE_WIDTH, CURVE_ROOM = 4.2, 46.0
+#: Part of the panel that the text on the missed trials takes, across and up.
+TEXT = (0.45, 0.24)
 PANEL_WIDTH, PANEL_ROOM = 2.9, 30.0
 
 
@@ -62,6 +64,8 @@ def draw_outcome(
     """Draw the figure; see `windage._plots.plot_outcome`."""
     parameters = checked_integer(parameters, "parameters", 0, MOST_PARAMETERS)
     confidence = checked_probability("confidence", confidence)
+    if verdict is not None and not isinstance(verdict, Verdict):
+        raise DescriptionError("verdict", verdict, "a verdict of this outcome", "Give outcome.verdict(at_least=...).")
     if not outcome.trials:
         raise DescriptionError("outcome", "0 trials", "at least 1 trial to plot")
     rows = [row_of(outcome, place) for place in _places(outcome, requirements)]
@@ -138,7 +142,8 @@ def _draw_distribution(axes: Axes, row: Row, confidence: float | None) -> None:
         # The pass probability's bounds are those of "not among the ranks": turned round, of being among them.
         lower, upper = 1.0 - upper, 1.0 - lower
         axes.fill_between(at, np.maximum(lower, floor), upper, step="post", color=SKY, alpha=0.35, linewidth=0)
-    axes.step(at, ranks / trials, where="post", color=BLUE, linewidth=1.6)
+    # A step has no length where there is one trial only.
+    axes.step(at, ranks / trials, where="post", color=BLUE, linewidth=1.6, marker="o" if trials == 1 else None)
     row.mark_limit(axes, vertical=True)
     axes.set_yscale("log")
     axes.set_ylim(floor, 1.6)
@@ -176,17 +181,28 @@ def _write_missed(axes: Axes, row: Row, confidence: float | None) -> None:
         lines.append(f"{percent_below(1.0 - high)} to {percent_above(1.0 - low)}".replace("\u00a0%", " %"))
     if row.undefined:
         lines.append(f"{plainly_grouped(row.undefined)} without a value")
-    # Where the curve is not. It falls towards the missed side, and is high there where most trials miss.
-    is_missed_side_free = row.share_beyond(0.5 * (row.low + row.high)) < 0.2
-    is_right = (row.missed_side > 0) == is_missed_side_free
-    y, down = (0.96, "top") if is_missed_side_free else (0.05, "bottom")
-    # Beside the limit, not upon it.
-    place = (row.limit - row.low) / (row.high - row.low)
-    x, across = (0.97 if place < 0.7 else min(place - 0.03, 0.97), "right")
-    if not is_right:
-        x, across = (0.03 if place > 0.3 else max(place + 0.03, 0.03), "left")
+    x, across, y, down = _free_corner(row)
     box = {"facecolor": "white", "edgecolor": "none", "alpha": 0.9, "pad": 2.5}
     axes.text(x, y, "\n".join(lines), transform=axes.transAxes, ha=across, va=down, fontsize=9, bbox=box)
+
+
+def _free_corner(row: Row) -> tuple[float, str, float, str]:
+    """Return where a text covers least of the curve: x and the side that is there, y and the side that is there."""
+    width, height = TEXT
+    ranks = _curve_ranks(row.trials)
+    along = (np.clip(row.worst_first()[ranks - 1], row.low, row.high) - row.low) / (row.high - row.low)
+    floor, top = np.log(0.5 / row.trials), np.log(1.6)
+    up = (np.log(ranks / row.trials) - floor) / (top - floor)
+    limit = (row.limit - row.low) / (row.high - row.low)
+    # Beside the limit, not upon it.
+    right = 0.97 if limit < 0.97 - width else min(limit - 0.03, 0.97)
+    left = 0.03 if limit > 0.03 + width else max(limit + 0.03, 0.03)
+    covered = {}
+    for low, at in ((right - width, (right, "right")), (left, (left, "left"))):
+        for bottom, height_at in ((0.96 - height, (0.96, "top")), (0.05, (0.05, "bottom"))):
+            is_hit = (along >= low) & (along <= low + width) & (up >= bottom) & (up <= bottom + height)
+            covered[(*at, *height_at)] = int(np.count_nonzero(is_hit))
+    return min(covered, key=lambda corner: covered[corner])
 
 
 def _percent(share: float) -> str:

@@ -9,6 +9,7 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 from numpy.typing import NDArray
 
+from ._arguments import explained
 from ._describe import Described
 from ._errors import DescriptionError, suggestion
 from ._measures import Requirement
@@ -137,6 +138,7 @@ class Replay(Portable):
         period = self._value(self._loop.sample_period, "sample_period")
         return central_difference(self["reference"], n, period) - last
 
+    @explained
     def plot(
         self,
         *,

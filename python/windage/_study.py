@@ -11,7 +11,7 @@ from typing import Any, Self
 import numpy as np
 
 from ._accuracy import Choice, chosen_steps
-from ._arguments import unknown_name
+from ._arguments import explained, unknown_name
 from ._controllers import Controller
 from ._describe import Described, describe
 from ._descriptions import Description, rebuilt
@@ -106,6 +106,7 @@ class Study(Description):
         check_windows(loop, requirements, measures)
         check_positive_definite(self._describe(1).study["correlations"])
 
+    @explained
     def run(self, trials: int, threads: int = 0, progress: bool | Report | None = None) -> Outcome:
         """Run the trials 0 to trials - 1.
 
@@ -129,6 +130,7 @@ class Study(Description):
         with Reporter(progress, count) as reporter:
             return self._outcome(0, count, threads, reporter)
 
+    @explained
     def batches(
         self, trials: int, size: int = 100_000, threads: int = 0, progress: bool | Report | None = None
     ) -> Iterator[Outcome]:
@@ -156,6 +158,7 @@ class Study(Description):
         finally:
             reporter.close()
 
+    @explained
     def count(
         self,
         trials: int,
@@ -193,6 +196,7 @@ class Study(Description):
                     raise
             return counter.tally(count)
 
+    @explained
     def replay(self, trial: int) -> Replay:
         """Run one trial again and return every signal, with the same digits as in `run`."""
         trial = checked_integer(trial, "trial", 0, MOST_TRIALS)
@@ -235,9 +239,10 @@ class Study(Description):
 
     def warnings(self) -> list[str]:
         """Return what looks wrong with the study but is allowed, in words."""
+        from ._fraction_advice import fraction_advice
         from ._window_advice import window_advice
 
-        return [*self._bound[0].warnings(), *window_advice(*self._bound)]
+        return [*self._bound[0].warnings(), *window_advice(*self._bound), *fraction_advice(self.requirements)]
 
     def with_(self, **changes: Any) -> Self:
         """Return a copy with some arguments changed, those of the study or those of its loop.

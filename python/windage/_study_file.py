@@ -6,6 +6,7 @@ import os
 from pathlib import Path
 from typing import Any
 
+from ._arguments import explained
 from ._errors import DescriptionError, StudyFileError
 from ._study import Study
 from ._study_text import from_data, to_data
@@ -16,6 +17,7 @@ from ._written_file import written
 LARGEST_FILE = 5_000_000
 
 
+@explained
 def save(study: Study, path: str | os.PathLike[str]) -> None:
     """Write a study to a TOML file, which `load` turns into an equal study with the same digest.
 
@@ -38,6 +40,7 @@ def save(study: Study, path: str | os.PathLike[str]) -> None:
         file.write(text.encode())
 
 
+@explained
 def load(path: str | os.PathLike[str]) -> Study:
     """Read a study from a TOML file. Nothing in the file is ever executed.
 

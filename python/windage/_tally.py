@@ -10,6 +10,7 @@ from typing import TYPE_CHECKING
 import numpy as np
 from numpy.typing import NDArray
 
+from ._arguments import explained
 from ._audit_trials import Watch
 from ._basis import SAMPLE, Basis
 from ._descriptions import FrozenMapping
@@ -63,6 +64,7 @@ class Tally(Portable):
         object.__setattr__(self, "requirement_failures", FrozenMapping(self.requirement_failures))
         freeze(self.first_failures)
 
+    @explained
     def audit(self, threads: int = 0, progress: bool | Report = False) -> Audit:
         """Find out what numerical error can have changed, once; see `Outcome.audit`."""
         from ._audit import audit
@@ -79,6 +81,7 @@ class Tally(Portable):
             self.__dict__["_audit"] = found
         return found
 
+    @explained
     def verdict(self, at_least: float, confidence: float = 0.95, audit: bool = True) -> Verdict:
         """Judge the claim that at least a fraction of all trials passes; see `Outcome.verdict`."""
         from windage._verdict import judge
@@ -95,6 +98,7 @@ class Tally(Portable):
             numerics=self.audit().numerics if audit and not self._is_interrupted else UNEXAMINED,
         )
 
+    @explained
     def verdicts(
         self, at_least: float | Mapping[str, float], confidence: float = 0.95, audit: bool = True
     ) -> VerdictTable:

@@ -64,6 +64,37 @@ def test_missing_surplus_and_double_arguments_are_explained(call: Callable[[], o
     assert words in str(caught.value)
 
 
+@pytest.mark.parametrize(
+    ("owner", "method"),
+    [
+        (wd.Study, "run batches count replay"),
+        (wd.Outcome, "verdict verdicts audit extend failed save plot"),
+        (wd.Tally, "verdict verdicts audit"),
+        (wd.Replay, "plot"),
+        (wd, "save load load_outcome trials_needed pass_probability_bounds tolerance_bound"),
+    ],
+    ids=lambda value: getattr(value, "__name__", "methods"),
+)
+def test_methods_and_functions_explain_their_calls_too(owner: Any, method: str) -> None:
+    for name in method.split():
+        function = getattr(owner, name)
+        known = [p for p in inspect.signature(function).parameters if p != "self"]
+        object_itself = [] if owner is wd else [None]
+        with pytest.raises(wd.DescriptionError) as caught:
+            function(*object_itself, **{known[0] + "s_": 1})
+        assert caught.value.field == function.__qualname__
+        assert repr(known[0]) in caught.value.mend
+
+
+def test_a_whole_number_written_with_a_point_is_told_how_to_be_written() -> None:
+    loop = wd.Loop(wd.FirstOrder(1.0, 1.0), wd.ErrorADRC(**ADRC), 0.1, 1.0, 1.0)  # type: ignore[arg-type]
+    study = wd.Study(loop, [wd.peak("error") <= 1.0])
+    for wrong, mend in ((1e4, "Write 10000, without point and exponent."), (1.5, ""), (1e30, ""), (float("nan"), "")):
+        with pytest.raises(wd.DescriptionError, match="whole number") as caught:
+            study.run(wrong)  # type: ignore[arg-type]
+        assert caught.value.mend == mend
+
+
 def test_a_synonym_in_with_is_explained_too() -> None:
     controller = wd.ErrorADRC(**ADRC)  # type: ignore[arg-type]
     with pytest.raises(wd.DescriptionError, match="It is called 'controller_bandwidth' here"):

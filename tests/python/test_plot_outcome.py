@@ -56,6 +56,41 @@ def test_a_row_for_each_requirement_with_its_strongest_parameters(outcome: wd.Ou
         assert word in title
 
 
+def test_the_text_on_missed_trials_lies_beside_the_curve_and_the_limit(outcome: wd.Outcome) -> None:
+    for requirement in outcome.study.requirements:
+        # From nearly none to nearly all: the limit moves over the whole axis.
+        values = np.sort(outcome.measures[requirement.measure.label])
+        for share in (0.003, 0.1, 0.5, 0.9):
+            limit = float(np.quantile(values, 1.0 - share if requirement.at_most is not None else share))
+            moved = wd.Requirement(requirement.measure, **{"at_most" if requirement.at_most else "at_least": limit})
+            study = outcome.study.with_(requirements=[moved])
+            figure = study.run(300, progress=False).plot(parameters=0)
+            figure.canvas.draw()  # type: ignore[attr-defined]
+            axes = figure.axes[0]
+            box = next(t for t in axes.texts if "missed" in t.get_text()).get_window_extent()
+            curve = next(line for line in axes.lines if len(line.get_xdata()) > 2)  # type: ignore[arg-type]
+            at = axes.transData.transform(np.column_stack([curve.get_xdata(), curve.get_ydata()]))
+            inside = (at[:, 0] > box.x0) & (at[:, 0] < box.x1) & (at[:, 1] > box.y0) & (at[:, 1] < box.y1)
+            assert not inside.any(), (requirement.label, share)
+            place = float(axes.transData.transform((limit, 1.0))[0])
+            assert not box.x0 < place < box.x1
+
+
+def test_a_single_trial_can_be_seen() -> None:
+    figure = servo().run(1, progress=False).plot(parameters=1)
+    for distribution, dependence in panels(figure, 3):
+        curve = distribution.lines[0]
+        assert curve.get_marker() == "o"
+        assert len(curve.get_xdata()) == 1
+        dots = [c for c in dependence.collections if isinstance(c, PathCollection) and len(c.get_offsets())]
+        assert max(float(c.get_sizes()[0]) for c in dots) >= 20.0
+
+
+def test_what_is_no_verdict_heads_no_picture(outcome: wd.Outcome) -> None:
+    with pytest.raises(wd.DescriptionError, match="verdict: found True; expected a verdict of this outcome"):
+        outcome.plot(verdict=True)  # type: ignore[arg-type]
+
+
 def test_claim_and_verdict_head_the_picture(outcome: wd.Outcome) -> None:
     verdict = outcome.verdict(0.5)
     lines = outcome.plot(parameters=1, verdict=verdict).get_suptitle().split("\n")

@@ -73,7 +73,11 @@ public:
         v[3] = fraction;
         v[4] = at.t;
     }
-    static wide finish(const wide* v) { return v[2] - select(v[1] < reducers::infinite, v[1], 0.0); }
+    /// Infinite where there is no change: any move, however small, would cross all its fractions at once.
+    wide finish(const wide* v, std::size_t i, wide) const {
+        const wide time = v[2] - select(v[1] < reducers::infinite, v[1], 0.0);
+        return select(absolute(span_.final_value(i) - v[0]) > 0.0, time, reducers::infinite);
+    }
 
 private:
     static wide first_crossing(wide known, wide level, const wide* v, wide fraction, wide t) {
