@@ -348,13 +348,12 @@ STUDIES: list[Case] = [
     (lambda: study().with_(plan=PLANT), "Study", "Did you mean 'plant'?"),
     (lambda: study().run(0), "trials", "0"),
     (lambda: study().run(1.5), "trials", "1.5"),  # type: ignore[arg-type]
-    (lambda: study().run(10**10), "trials", "Use study.count"),
+    (lambda: study().run(10**12), "trials", "Use study.count"),
     (lambda: study().run(10, threads=-1), "threads", "-1"),
     (lambda: study().run(10, progress="bar"), "progress", "'bar'"),  # type: ignore[arg-type]
     (lambda: study().replay(-1), "trial", "-1"),
     (lambda: study().replay("3"), "trial", "'3'"),  # type: ignore[arg-type]
     (lambda: study().count(10, size=0), "size", "0"),
-    (lambda: study(duration=1e5, sample_period=1e-3).replay(0), "replay", "Shorten the trial"),
 ]
 ALL = [*SPREADS, *PLANTS, *CONTROLLERS, *PARTS, *LOOPS, *MEASURES, *STUDIES]
 
