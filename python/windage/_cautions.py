@@ -106,7 +106,7 @@ def repeated_looks(looks: int) -> str:
     """Warn that the confidence does not hold after several looks; empty after one."""
     if looks <= 1:
         return ""
-    judged = f"These trials were judged {grouped(looks)} times; the stated confidence holds for one."
+    judged = f"Trials of this study were judged {grouped(looks)} times; the stated confidence holds for one."
     return f"{judged} {REPEATED_LOOKS}"
 
 

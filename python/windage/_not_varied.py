@@ -10,7 +10,7 @@ from ._describe import DrawnColumn
 from ._descriptions import Description, FrozenMapping, arguments, parts
 from ._distributions import Samples
 from ._loop import Loop
-from ._numbers import Spread
+from ._numbers import Spread, high_of, low_of
 from ._shared_numbers import Column, Shared
 from ._time_functions import Noise
 
@@ -59,7 +59,7 @@ def _is_observed(spread: Spread) -> bool:
 def _has_noise(loop: Loop) -> bool:
     noises = [part for disturbance in loop.disturbances.values() for part in _noises(disturbance)]
     sizes = [loop.sensor.noise, *(getattr(noise, noise.engine_order[0]) for noise in noises)]
-    return any(isinstance(size, Spread) or size != 0.0 for size in sizes)
+    return any(low_of(size) != 0.0 or high_of(size) != 0.0 for size in sizes)
 
 
 def _noises(value: Any) -> Iterator[Noise]:

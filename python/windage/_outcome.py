@@ -15,7 +15,7 @@ from ._arguments import explained
 from ._basis import SAMPLE, Basis
 from ._describe import Described
 from ._errors import DescriptionError, suggestion
-from ._looks import look
+from ._looks import Look, look, stopped
 from ._numbers import checked_integer
 from ._numerics import UNEXAMINED
 from ._portable import Portable, freeze
@@ -53,7 +53,7 @@ class Outcome(Portable):
         described: Described,
         columns: Columns,
         first: int = 0,
-        judged: frozenset[int] = frozenset(),
+        judged: frozenset[Look] = frozenset(),
     ) -> None:
         self.study = study
         self.first = first
@@ -180,8 +180,8 @@ class Outcome(Portable):
         Returns
         -------
         Verdict
-            Pass, fail or inconclusive, by exact one-sided Clopper-Pearson bounds. Another number of trials of
-            the same study, by `extend`, a longer run or a tally, is a further look, and the verdict says so.
+            Pass, fail or inconclusive, by exact one-sided Clopper-Pearson bounds. Another range of trials of
+            the same study, by `extend`, a longer run, a batch or a tally, is a further look, and the verdict says so.
             Of a run that was stopped it is inconclusive: the number of trials was not fixed beforehand.
         """
         from windage._verdict import judge
@@ -246,7 +246,7 @@ class Outcome(Portable):
             described = self.study._run_description if more.trials else self._described
             # Another number than was asked for is chosen with what was seen of a run that was stopped.
             is_as_planned = not self.interrupted or self.trials + trials == self.requested
-            judged = self._judged if is_as_planned else self._judged | {self.trials}
+            judged = self._judged if is_as_planned else self._judged | {(self.first, self.trials, self.requested)}
             return Outcome(self.study, described, joined, self.first, frozenset(judged))
 
     def table(self) -> Any:
@@ -408,8 +408,9 @@ class Outcome(Portable):
     def _look(self) -> int:
         """Count this judgement; one that decides nothing is no look."""
         if self.interrupted:
+            stopped(self.study._claim, self.first, self.trials, self.requested)
             return max(1, len(self._judged))
-        self._judged |= look(self.study.digest, self.first, self.trials, self._judged)
+        self._judged |= look(self.study._claim, self.first, self.trials, self._judged)
         return len(self._judged)
 
 

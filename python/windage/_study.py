@@ -237,6 +237,13 @@ class Study(Description):
 
         return digest_of(self)
 
+    @cached_property
+    def _claim(self) -> str:
+        """What identifies the claim that trials of this study pass, whatever it is called and measured besides."""
+        from ._study_text import claim_of
+
+        return claim_of(self)
+
     def warnings(self) -> list[str]:
         """Return what looks wrong with the study but is allowed, in words."""
         from ._fraction_advice import fraction_advice

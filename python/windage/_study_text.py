@@ -152,10 +152,21 @@ def to_data(study: Study) -> dict[str, Any]:
 
 def digest_of(study: Study) -> str:
     """Return the SHA-256 of a study's data, with names in sorted order."""
+    return _hashed({key: part for key, part in to_data(_without_nominal(study)).items() if key != "title"})
+
+
+def claim_of(study: Study) -> str:
+    """Return the same of what decides which trials pass: without further measures and without names of requirements."""
+    data = to_data(_without_nominal(study))
+    named = data.get("requirements", [])
+    limits = [{key: part for key, part in requirement.items() if key != "name"} for requirement in named]
+    return _hashed({key: data[key] for key in data if key not in ("title", "measures")} | {"requirements": limits})
+
+
+def _hashed(data: dict[str, Any]) -> str:
     import hashlib  # both cost import time and are seldom needed
     import json
 
-    data = {key: part for key, part in to_data(_without_nominal(study)).items() if key != "title"}
     text = json.dumps(data, sort_keys=True, separators=(",", ":"), allow_nan=False)
     return hashlib.sha256(text.encode()).hexdigest()
 

@@ -14,7 +14,7 @@ from ._arguments import explained
 from ._audit_trials import Watch
 from ._basis import SAMPLE, Basis
 from ._descriptions import FrozenMapping
-from ._looks import look
+from ._looks import Look, look, stopped
 from ._numerics import UNEXAMINED
 from ._outcome import ALL_THE_SAME, Outcome, joint_requirement
 from ._portable import Portable, freeze
@@ -133,7 +133,12 @@ class Tally(Portable):
         return found
 
     def _look(self) -> int:
-        return 1 if self._is_interrupted else len(look(self.study.digest, 0, self.trials))
+        if self._is_interrupted:
+            stopped(self.study._claim, 0, self.trials, self.requested)
+            return 1
+        known: frozenset[Look] = self.__dict__.get("_judged", frozenset())
+        self.__dict__["_judged"] = judged = look(self.study._claim, 0, self.trials, known)
+        return len(judged)
 
     def __repr__(self) -> str:
         asked = f" (stopped; {plainly_grouped(self.requested)} asked for)" if self.trials < self.requested else ""

@@ -59,7 +59,7 @@ class Verdict:
     advice : tuple of str
         What looks wrong with the study but is allowed.
     looks : int
-        Numbers of trials at which the study has been judged, this one included.
+        Ranges of trials at which the study has been judged, this one included.
     basis : Basis
         What the trials are: a sample, a list, one trial repeated, or those of a run that was stopped. Only for a
         sample do the bounds have a confidence.
@@ -234,7 +234,7 @@ def judge(
     advice : sequence of str
         What looks wrong with the study but is allowed: printed with the verdict.
     looks : int
-        Times these trials have been judged, this one included; 1 or more. More than one voids the confidence,
+        Times trials of the study have been judged, this one included; 1 or more. More than one voids the confidence,
         and the verdict says so.
     basis : Basis
         What the trials are; by default independent ones, their number fixed beforehand.

@@ -10,3 +10,4 @@ from windage import _looks
 @pytest.fixture(autouse=True)
 def _no_looks_so_far(monkeypatch: pytest.MonkeyPatch) -> None:
     monkeypatch.setattr(_looks, "_judged", {})
+    monkeypatch.setattr(_looks, "_stopped", {})

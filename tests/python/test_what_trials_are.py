@@ -50,6 +50,7 @@ def text_of(verdict: object) -> str:
         {"gain": wd.column("g"), "table": {"g": [1.0, 1.0]}},
         {"sensor": wd.Sensor(noise=0.0), "disturbances": {"load": wd.Gust(0.0, 1.0)}},
         {"disturbances": {"load": wd.WhiteNoise(0.0)}},
+        {"sensor": wd.Sensor(noise=wd.choice([0.0]))},
     ],
 )
 def test_a_study_in_which_nothing_varies_passes_no_verdict_however_often_it_is_repeated(same: Any) -> None:
@@ -229,9 +230,9 @@ def test_a_complete_run_does_not_speak_of_interim_results() -> None:
 
 def test_a_stopped_run_that_is_run_to_its_end_is_one_look_and_any_other_end_is_two() -> None:
     outcome = stopped("run", 13)
-    outcome.verdict(0.5)
     short = wd.Outcome.__new__(wd.Outcome)
     short.__dict__ |= {**outcome.__dict__, "requested": outcome.trials + 50, "_judged": set()}
+    short.verdict(0.5)
     assert short.extend(50, progress=False).verdict(0.5).looks == 1
     assert short.extend(70, progress=False).verdict(0.5).looks == 3  # stopped, the planned end, another end
 
