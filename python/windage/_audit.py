@@ -98,7 +98,7 @@ def not_examined(
     labels: tuple[str, ...], text: str, caution: str = "", *, is_open: bool = False, interrupted: bool = False
 ) -> Audit:
     """Return the audit of an outcome that was not examined, for a reason."""
-    numerics = Numerics(text=text, caution=caution, is_open=is_open or interrupted)
+    numerics = Numerics(text=text, caution=caution, is_open=is_open or interrupted, is_stopped=interrupted)
     every = dict.fromkeys(labels, numerics)
     return Audit(0, 0, np.empty(0, dtype=np.uint64), 0, {}, numerics, every, interrupted)
 

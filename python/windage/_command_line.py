@@ -25,6 +25,8 @@ from ._verdict import Verdict, judge
 
 PASS, FAIL, INCONCLUSIVE, WRONG, INTERRUPTED, DEFECT, UNWRITTEN = range(7)
 CODES = {"pass": PASS, "fail": FAIL, "inconclusive": INCONCLUSIVE}
+#: What Typer returns after a Ctrl-C that no call of ours heard; its older releases raise Abort.
+UNHEARD = 130
 DEMO_FILE, DEMO_PICTURE = "dish.toml", "windage-demo.png"
 
 #: Root of the errors in how a command was written; BadParameter is the one of them that Typer makes public.
@@ -230,6 +232,8 @@ def main(arguments: Sequence[str] | None = None) -> int:
 def _run(arguments: Sequence[str] | None) -> int:
     try:
         code = app(arguments, prog_name=output.called_as(), standalone_mode=False)
+        if code == UNHEARD:
+            raise KeyboardInterrupt
     except UsageError as error:
         message, context = cast(Any, error).format_message(), getattr(error, "ctx", None)
         command = context.command_path if context else output.called_as()
@@ -253,7 +257,8 @@ def _run(arguments: Sequence[str] | None) -> int:
 def _judged(outcome: Outcome, at_least: float, confidence: float) -> tuple[Verdict, int]:
     """Return the verdict and the exit code."""
     verdict = outcome.verdict(at_least, confidence)
-    return verdict, INTERRUPTED if outcome.interrupted else CODES[verdict.decision]
+    is_interim = outcome.interrupted or verdict.numerics.is_stopped
+    return verdict, INTERRUPTED if is_interim else CODES[verdict.decision]
 
 
 def _check_demo_folder(study: Study, folder: Path, file: Path) -> None:

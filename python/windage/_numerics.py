@@ -21,6 +21,8 @@ class Numerics:
         A sentence on what to do or to bear in mind; empty where there is nothing to say.
     is_open : bool
         Whether the examination is missing where it was wanted, so that nothing can be decided.
+    is_stopped : bool
+        Whether that is because it was interrupted.
     """
 
     text: str
@@ -28,6 +30,7 @@ class Numerics:
     doubtful: int = 0
     caution: str = ""
     is_open: bool = False
+    is_stopped: bool = False
 
 
 #: Of counts whose origin is unknown.

@@ -57,12 +57,15 @@ class StopRequests:
         return self
 
     def __exit__(self, kind: type[BaseException] | None, error: BaseException | None, at: TracebackType | None) -> None:
-        if self._replaces:
-            # Signals that came before are noted: Python handles them before it exchanges the handler.
-            self._replaces = False
-            signal.signal(signal.SIGINT, signal.default_int_handler)
-        if self in _open:
-            _open.remove(self)
+        try:
+            if self._replaces:
+                # Signals that came before are noted: Python handles them before it exchanges the handler.
+                self._replaces = False
+                signal.signal(signal.SIGINT, signal.default_int_handler)
+        finally:
+            # One that comes right after is raised here. What stayed open would raise in later calls.
+            if self in _open:
+                _open.remove(self)
 
 
 _open: list[StopRequests] = []

@@ -304,6 +304,21 @@ def test_counts_survive_ctrl_c_between_two_batches(is_handled: bool, monkeypatch
     assert tally.failures == len(quick_study().run(tally.trials, progress=False).failures)
 
 
+def test_ctrl_c_at_the_very_end_of_a_call_leaves_nothing_open(monkeypatch: pytest.MonkeyPatch) -> None:
+    really = signal.signal
+
+    def exchanged(number: int, handler: Any) -> Any:
+        before = really(number, handler)
+        if handler is signal.default_int_handler:
+            signal.raise_signal(signal.SIGINT)
+        return before
+
+    with monkeypatch.context() as patch, pytest.raises(KeyboardInterrupt):
+        patch.setattr(signal, "signal", exchanged)
+        quick_study().run(100, progress=False)
+    assert not _stopping._open
+
+
 def test_a_second_ctrl_c_ends_a_call_that_does_not_answer(monkeypatch: pytest.MonkeyPatch) -> None:
     monkeypatch.setattr(_stopping, "PATIENCE", 0.05)
 
