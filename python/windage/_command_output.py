@@ -14,8 +14,9 @@ from pathlib import Path
 from typing import TYPE_CHECKING, Any, BinaryIO
 
 from ._command_screen import Screen
-from ._drivers import FAILING, FEW_FAILURES
+from ._drivers import FEW_FAILURES
 from ._errors import DescriptionError, WindageError
+from ._measures import FAILING
 from ._plots import HOW_TO_INSTALL, has_matplotlib
 from ._shown_text import one_line, shorten
 from ._text_table import plainly_grouped
@@ -117,7 +118,7 @@ def print_verdict(outcome: Outcome, verdict: Verdict, short: bool = False) -> No
 def _print_hints(outcome: Outcome) -> None:
     """Print the drawn parameters that go most strongly along with failing, or with slack."""
     drivers = outcome.drivers()
-    against = [FAILING] if len(outcome.failures) >= FEW_FAILURES else list(outcome.requirements)
+    against = [FAILING] if drivers.failures >= FEW_FAILURES else list(outcome.requirements)
     for result in against:
         rows = [row for row in drivers.of(result) if row.is_clear][:HINTS]
         if not rows:
@@ -258,6 +259,7 @@ def write_json(report: Mapping[str, Any], path: Path) -> None:
 def run_report(outcome: Outcome, verdict: Verdict, source: Path, code: int) -> dict[str, Any]:
     """Return what `windage run --json` writes."""
     worst = outcome.slack.argmin(axis=0) + outcome.first
+    is_interim = outcome.interrupted or verdict.numerics.is_stopped
     return {
         "windage": version(),
         "study": {
@@ -267,15 +269,15 @@ def run_report(outcome: Outcome, verdict: Verdict, source: Path, code: int) -> d
             "seed": outcome.study.seed,
         },
         "exit_code": code,
-        "interim": outcome.interrupted,
+        "interim": is_interim,
         "trials": {
             "asked_for": outcome.requested,
             "run": outcome.trials,
             "failed": len(outcome.failures),
             "diverged": len(outcome.diverged),
         },
-        "verdict": None if outcome.interrupted else verdict.to_dict(),
-        "interim_verdict": verdict.to_dict() if outcome.interrupted else None,
+        "verdict": None if is_interim else verdict.to_dict(),
+        "interim_verdict": verdict.to_dict() if is_interim else None,
         "requirements": [
             {"requirement": label, "missed": line.missed, "worst_trial": int(trial), **line.to_dict()}
             for label, line, trial in zip(outcome.requirements, outcome._lines, worst, strict=False)

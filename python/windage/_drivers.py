@@ -10,15 +10,18 @@ import numpy as np
 from numpy.typing import NDArray
 
 from ._errors import DescriptionError, suggestion
+from ._measures import FAILING
 from ._numbers import checked_integer
 from ._rank_correlation import CONFIDENCE, correlation, fisher_interval, holm, p_value, ranked
+from ._text_table import plainly_grouped
 
 if TYPE_CHECKING:
     from ._outcome import Outcome
 
 #: Below this many failures a ranking of causes is mostly noise.
 FEW_FAILURES = 20
-FAILING = "failing"
+#: Ranking sorts, and more trials tell nothing more of correlations: beyond, every n-th trial is ranked.
+MOST_RANKED = 200_000
 
 Values = NDArray[np.float64]
 
@@ -67,11 +70,15 @@ class Drivers:
         What to keep in mind, empty if nothing in particular.
     results : tuple of str
         What `of` takes: the requirements under their names, and "failing".
+    trials, failures : int
+        Trials that were ranked, and how many of them failed.
     """
 
     rows: tuple[Driver, ...]
     note: str
     results: tuple[str, ...] = (FAILING,)
+    trials: int = 0
+    failures: int = 0
 
     def __iter__(self) -> Iterator[Driver]:
         return iter(self.rows)
@@ -126,11 +133,13 @@ def find_drivers(outcome: Outcome) -> Drivers:
     Notes
     -----
     Parameters or results without any variation are left out. Ties share their mean rank; diverged trials rank
-    lowest in slack. P-values are adjusted over all rows (Holm).
+    lowest in slack. P-values are adjusted over all rows (Holm). Of more than `MOST_RANKED` trials every n-th is ranked.
     """
-    against = dict(zip(outcome.requirements, outcome.slack.T, strict=True))
-    against[FAILING] = (~outcome.passed).astype(np.float64)
-    parameters = {name: ranked(values) for name, values in outcome.parameters.items()}
+    some = slice(None, None, max(1, -(-outcome.trials // MOST_RANKED)))
+    against = dict(zip(outcome.requirements, outcome.slack[some].T, strict=True))
+    against[FAILING] = (~outcome.passed[some]).astype(np.float64)
+    trials, failures = len(against[FAILING]), int(np.count_nonzero(against[FAILING]))
+    parameters = {name: ranked(values[some]) for name, values in outcome.parameters.items()}
     found: list[tuple[str, str, float, float]] = []
     for result, values in against.items():
         other = ranked(values)
@@ -140,22 +149,24 @@ def find_drivers(outcome: Outcome) -> Drivers:
                 found.append((name, result, strength, p_value(own, other, strength)))
     adjusted = holm([row[3] for row in found])
     rows = [
-        Driver(name, result, strength, *fisher_interval(strength, outcome.trials), p)
+        Driver(name, result, strength, *fisher_interval(strength, trials), p)
         for (name, result, strength, _), p in zip(found, adjusted, strict=True)
     ]
     rows.sort(key=lambda row: -abs(row.correlation))
-    return Drivers(tuple(rows), _note(outcome), tuple(against))
+    return Drivers(tuple(rows), _note(outcome.trials, trials, failures), tuple(against), trials, failures)
 
 
 def _no_rows(key: object) -> NoReturn:
     raise DescriptionError("drivers", key, "a row", "There are none: no drawn parameter or no result varies.")
 
 
-def _note(outcome: Outcome) -> str:
-    failures = len(outcome.failures)
-    if failures >= FEW_FAILURES:
-        return ""
-    return (
-        f"Too few failures ({failures}) to rank causes of failing; {FEW_FAILURES} or more are needed. "
-        "The slacks use all trials."
-    )
+def _note(run: int, trials: int, failures: int) -> str:
+    is_all = trials == run
+    notes = [] if is_all else [f"Ranked: {plainly_grouped(trials)} of {plainly_grouped(run)} trials, evenly taken."]
+    if failures < FEW_FAILURES:
+        among = "" if is_all else " among them"
+        notes.append(
+            f"Too few failures ({failures}{among}) to rank causes of failing; {FEW_FAILURES} or more are needed. "
+            f"The slacks use all {'trials' if is_all else 'of them'}."
+        )
+    return " ".join(notes)

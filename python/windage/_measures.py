@@ -50,6 +50,8 @@ _EXTRAS = ("low", "high", "band", "tolerance", "dead_band")
 #: Kinds that are made of two measures, with the sign between them.
 COMBINATIONS = {"difference": "-", "ratio": "/"}
 DEEPEST_COMBINATION = 8
+#: Stands for all requirements together where drivers are named after one.
+FAILING = "failing"
 _CLASSICAL = {"ise": "integral_square", "iae": "integral_absolute", "itae": "integral_time_absolute"}
 
 
@@ -260,6 +262,9 @@ class Requirement(Description):
                 object.__setattr__(self, side, checked)
         if self.name is not None:
             object.__setattr__(self, "name", checked_title(self.name, "requirement.name"))
+        if self.name == FAILING:
+            expected = f"a name other than {FAILING!r}, which stands for all requirements together"
+            raise DescriptionError("requirement.name", self.name, expected)
 
     @property
     def limit(self) -> Number:
