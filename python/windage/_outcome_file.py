@@ -165,7 +165,13 @@ def _read(file: BinaryIO, name: str) -> Outcome:
     if _digest(facts, text, _arrays(columns)) != given:
         mend = "It was damaged or changed after it was written."
         raise OutcomeFileError(name, "a content that its digest does not fit", "the content that was saved", mend)
-    outcome = Outcome(study, described, columns, facts["first"], frozenset((first, run, asked) for first, run, asked in facts["looks"]))
+    outcome = Outcome(
+        study,
+        described,
+        columns,
+        facts["first"],
+        frozenset((first, run, asked) for first, run, asked in facts["looks"]),
+    )
     _check_release(outcome, facts["windage"], name)
     return outcome
 

@@ -313,9 +313,10 @@ def test_ctrl_c_at_the_very_end_of_a_call_leaves_nothing_open(monkeypatch: pytes
             signal.raise_signal(signal.SIGINT)
         return before
 
-    with monkeypatch.context() as patch, pytest.raises(KeyboardInterrupt):
+    with monkeypatch.context() as patch:
         patch.setattr(signal, "signal", exchanged)
-        quick_study().run(100, progress=False)
+        with pytest.raises(KeyboardInterrupt):
+            quick_study().run(100, progress=False)
     assert not _stopping._open
 
 
