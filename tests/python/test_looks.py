@@ -72,4 +72,4 @@ def test_a_tally_takes_its_looks_to_another_process(monkeypatch: pytest.MonkeyPa
     assert looks(tally) == 2
     sent = pickle.dumps(tally)
     monkeypatch.setattr(_looks, "_judged", {})
-    assert looks(pickle.loads(sent)) == 2  # noqa: S301
+    assert looks(pickle.loads(sent)) == 2
