@@ -234,8 +234,9 @@ class Examination:
                 if limit in which and (len(which) == 1 or fails == misses):
                     near, unseen = self.run.watch.unseen(limit, fails, misses)
                     left[misses] += float(np.sum(unseen * self._chance(limit, fails, misses, near)))
-        room = self.run.population(which)
-        return min(room[0], ceil(left[0])), min(room[1], ceil(left[1]))
+        known = passes[self._done]  # a trial run again is counted by itself, and no trial twice
+        room = np.subtract(self.run.population(which), (np.sum(known), np.sum(~known)))
+        return min(int(room[0]), ceil(left[0])), min(int(room[1]), ceil(left[1]))
 
     def _follow_tail(self) -> None:
         score = self._expected()

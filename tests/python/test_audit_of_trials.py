@@ -172,6 +172,14 @@ def test_gross_changes_in_the_sample_stand_for_the_others() -> None:
     assert counts.undecided_passing == 0
 
 
+@pytest.mark.parametrize("limits", [1, 2])
+def test_no_trial_counts_twice_in_a_stream(limits: int) -> None:
+    lost = Made(np.full((limits, 2000), 0.9), np.full((limits, 2000), -1.0), watch=500).counts()
+    assert len(lost.lost) + lost.undecided_passing == 2000
+    won = Made(np.full((limits, 2000), -np.inf), np.ones((limits, 2000)), watch=500).counts()
+    assert len(won.won) + won.undecided_failing == 2000
+
+
 def test_failing_trials_that_move_irregularly_say_nothing_about_passing_ones() -> None:
     random = np.random.default_rng(4)
     slack = passing(4000)
