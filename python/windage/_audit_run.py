@@ -228,15 +228,26 @@ class Examination:
         """Count the trials, by chance, that are not run again and whose fate may be another one."""
         chance = np.where(self._done, 0.0, self._chances(which))
         passes = _passes(self.rows, which)
-        left = [float(np.sum(chance[passes])), float(np.sum(chance[~passes]))]
-        if self.run.watch is not None:
-            for limit, fails, misses in np.ndindex(len(self.scales), 2, 2):
-                if limit in which and (len(which) == 1 or fails == misses):
-                    near, unseen = self.run.watch.unseen(limit, fails, misses)
-                    left[misses] += float(np.sum(unseen * self._chance(limit, fails, misses, near)))
+        left = np.array([np.sum(chance[passes]), np.sum(chance[~passes])]) + self._unseen(which)
         known = passes[self._done]  # a trial run again is counted by itself, and no trial twice
         room = np.subtract(self.run.population(which), (np.sum(known), np.sum(~known)))
         return min(int(room[0]), ceil(left[0])), min(int(room[1]), ceil(left[1]))
+
+    def _unseen(self, which: Sequence[int]) -> Values:
+        """Count the same of trials that are not kept, of which is known only how many lie how near to each limit."""
+        if self.run.watch is None:
+            return np.zeros(2)
+        there, reached = np.zeros((2, 2, len(which)))
+        for row, limit in enumerate(which):
+            for fails, misses in np.ndindex(2, 2):
+                if len(which) == 1 or fails == misses:
+                    near, unseen = self.run.watch.unseen(limit, fails, misses)
+                    there[misses, row] += np.sum(unseen)
+                    reached[misses, row] += np.sum(unseen * self._chance(limit, fails, misses, near))
+        lost, won = np.sum(reached, axis=1)
+        # Every limit missed has to be reached: beyond those that reach one there are those at most that do not miss it.
+        failing = self.run.population(which)[1] - np.sum(~_passes(self.rows, which))
+        return np.array([lost, min(won, np.min(reached[1] + failing - there[1]))])
 
     def _follow_tail(self) -> None:
         score = self._expected()

@@ -180,6 +180,15 @@ def test_no_trial_counts_twice_in_a_stream(limits: int) -> None:
     assert len(won.won) + won.undecided_failing == 2000
 
 
+def test_of_a_stream_a_trial_that_misses_one_limit_for_certain_fails() -> None:
+    slack = np.vstack([np.full(2000, -0.1), np.full(2000, -0.5)])
+    after = np.vstack([np.full(2000, 0.1), np.full(2000, -0.5)])
+    streamed, whole = Made(slack, after, watch=500), Made(slack, after)
+    for which, doubtful in ((0,), 2000), ((1,), 0), ((), 0):
+        for counts in (streamed.counts(*which), whole.counts(*which)):
+            assert len(counts.won) + counts.undecided_failing == doubtful
+
+
 def test_failing_trials_that_move_irregularly_say_nothing_about_passing_ones() -> None:
     random = np.random.default_rng(4)
     slack = passing(4000)
