@@ -43,7 +43,7 @@ void expect_accurate(const step_matrices& step, const trial_block& trials, std::
 // Lightly damped modes close to each other, and states of which the output is a small difference.
 void linear_plant::expect_small_roundoff(const linear_model& m, const step_matrices& step, const trial_block& trials,
                                          std::size_t i) const {
-    constexpr double largest_roundoff = 1e-10; // estimated; found are up to twenty times as much
+    constexpr double largest_roundoff = 1e-9;
     if (order_ < 3) return;
     const wide roundoff = relative_roundoff(step.phi, acting_.held(step.gamma), m.c);
     for (int lane = 0; lane < lanes; ++lane)

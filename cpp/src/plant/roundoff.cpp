@@ -56,17 +56,18 @@ struct response {
     }
 
     // So many samples round alike as the shorter one of both times has, and their roundings meet at about the longer.
-    wide largest_variance() const {
+    // They add up, since a coefficient is rounded once for all samples: a lightly damped mode repeats what that does.
+    wide largest_square() const {
         wide worst = 0.0;
         for (std::size_t later = 0; later < points; ++later)
             for (std::size_t at = 0; at + 1 < points; ++at) {
-                wide variance = 0.0;
+                wide square = 0.0;
                 for (int i = 0; i < rounded[at].rows(); ++i) {
                     const wide part = weight[later](0, i) * rounded[at](i, 0);
-                    variance += part * part;
+                    square += part * part;
                 }
                 const double samples = double(std::size_t(1) << std::min(later > 0 ? later - 1 : 0, at));
-                worst = maximum(worst, variance * (samples * relative[std::max(later, at + 1)]));
+                worst = maximum(worst, square * (samples * samples * relative[std::max(later, at + 1)]));
             }
         return worst;
     }
@@ -90,7 +91,7 @@ bool is_like_the_first(const lane_matrix& m, int which) {
 wide relative_roundoff(const lane_matrix& phi, const lane_matrix& gamma, const lane_matrix& c) {
     wide worst = 0.0;
     for (int j = 0; j < gamma.columns(); ++j)
-        if (!is_like_the_first(gamma, j)) worst = maximum(worst, response(phi, column(gamma, j), c).largest_variance());
+        if (!is_like_the_first(gamma, j)) worst = maximum(worst, response(phi, column(gamma, j), c).largest_square());
     return rounding * square_root(worst);
 }
 

@@ -5,7 +5,7 @@
 
 namespace windage {
 
-/// Standard deviation of the error that rounding leaves in the response to a unit step of the worst input, relative to
+/// About the largest error that rounding leaves in the response to a unit step of the worst input, relative to
 /// the largest output of that response, over 2^14 samples; one recurrence a lane. From where a motion no longer fits
 /// into the numbers on, it is left out.
 ///
