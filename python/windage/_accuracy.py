@@ -121,7 +121,7 @@ def _excess(pilots: Pilots, columns: Columns, allowed: Values) -> Values:
     """Return each difference as a multiple of what is allowed, 0 for pilots that cannot be compared."""
     own = slice(len(allowed))
     ours, theirs = columns.measures[own], pilots.columns.measures[own]
-    with np.errstate(invalid="ignore"):
+    with np.errstate(invalid="ignore", over="ignore"):  # an excess beyond all numbers is one
         same = (ours == theirs) | (np.isnan(ours) & np.isnan(theirs))
         excess = np.where(same, 0.0, np.abs(ours - theirs) / allowed)
     return np.where(pilots.finished, np.where(np.isnan(excess), np.inf, excess), 0.0)

@@ -46,7 +46,7 @@ def changed(study: Study, changes: Sequence[str], seed: int | None = None) -> St
     if changes:
         data = to_data(study)
         for change in changes:
-            path, is_set, text = change.partition("=")
+            path, is_set, text = _parted(change)
             if not is_set or not path.strip():
                 raise DescriptionError(OPTION, change, EXPECTED)
             _put(data, _located(path.strip(), data), _value(text, change), path.strip())
@@ -57,6 +57,13 @@ def changed(study: Study, changes: Sequence[str], seed: int | None = None) -> St
 def arguments_of(changes: Sequence[str], seed: int | None) -> list[str]:
     """Return the arguments of a command that makes the same changes again."""
     return [part for change in changes for part in (OPTION, change)] + ([] if seed is None else ["--seed", str(seed)])
+
+
+def _parted(change: str) -> tuple[str, str, str]:
+    """Part a change at its first "=" outside brackets, since names of requirements may hold one."""
+    inside = re.match(r"(?:[^=\[]|\[[^\]]*\])*", change)
+    assert inside is not None  # it matches at least nothing
+    return change[: inside.end()], change[inside.end() : inside.end() + 1], change[inside.end() + 1 :]
 
 
 def _value(text: str, change: str) -> Any:
@@ -78,6 +85,8 @@ def _located(path: str, data: dict[str, Any]) -> list[Step]:
     """Return the steps from the top of the file; a path may leave out `loop` and `plant.parameters`."""
     steps = _steps(path)
     first = steps[0]
+    if first == "requirements":
+        return _of_requirement(steps, path, data)
     if first in TOP:
         return steps
     parameters = data["loop"]["plant"].get("parameters", {})
@@ -88,6 +97,17 @@ def _located(path: str, data: dict[str, Any]) -> list[Step]:
     if first in parameters:
         return ["loop", "plant", "parameters", *steps]
     raise DescriptionError(OPTION, path, "the path of a number of the study", _known(path, data))
+
+
+def _of_requirement(steps: list[Step], path: str, data: dict[str, Any]) -> list[Step]:
+    """Return the steps in the file for a path of a drawn parameter, which names a limit and a measure apart."""
+    if len(steps) < 3:
+        return steps
+    requirements = data.get("requirements", [])
+    requirement = requirements[_key(requirements, steps[1], path, data)]
+    if steps[2] == "limit":
+        return [*steps[:2], "at_most" if "at_most" in requirement else "at_least", *steps[3:]]
+    return [*steps[:2], *steps[3:]] if steps[2] == "measure" and len(steps) > 3 else steps
 
 
 def _steps(path: str) -> list[Step]:
@@ -133,9 +153,11 @@ def _key(place: Any, step: Step, path: str, data: dict[str, Any]) -> Step:
 
 
 def _known(path: str, data: dict[str, Any]) -> str:
-    short = [known.removeprefix("loop.").replace("plant.parameters.", "plant.") for known in _paths(data, "")]
-    parameters = data["loop"]["plant"].get("parameters", {})
-    return suggestion(path, [*short, *parameters])
+    short = [name.removeprefix("loop.").replace("plant.parameters.", "plant.") for name in _paths(data, "")]
+    known = [*(name for name in short if name != "windage_study"), *data["loop"]["plant"].get("parameters", {})]
+    last = path.rpartition(".")[2]
+    same = [name for name in known if name.rpartition(".")[2] == last]
+    return f"Did you mean {same[0]!r}?" if len(same) == 1 else suggestion(path, known)
 
 
 def _paths(value: Any, path: str) -> Iterator[str]:

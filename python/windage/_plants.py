@@ -143,6 +143,9 @@ class Plant(AnyPlant):
     - Division by what does not change within a trial (numbers and parameters) is multiplication by its
       reciprocal: its last digit may differ from that of a division, and a divisor below 5.6e-309 in magnitude
       counts as 0.
+    - An undefined number goes on through sums, products and functions, but not through a comparison, which is
+      false (`!=` true), nor as a later argument of `min`, `max` and `clip`, where the first one is taken: in
+      `max(0, sqrt(x))` a negative x counts as 0.
     - Constants that alone give no finite number (`1/0`, `log(-1)`, `2**1024`) are an error. What a state or
       parameter makes undefined or infinite makes the trial diverge, or its measures undefined: it fails.
 

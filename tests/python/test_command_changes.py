@@ -25,6 +25,33 @@ def study() -> wd.Study:
     return demo_study().with_(requirements=named, duration=6.0)
 
 
+def test_every_drawn_parameter_can_be_set_at_the_path_that_is_printed(study: wd.Study) -> None:
+    def drawn(value: float) -> object:
+        return wd.uniform(0.9 * value, 1.1 * value)
+
+    window = {"after": drawn(1.0), "before": drawn(3.0)}
+    requirements = [
+        (wd.peak("error", **window) <= drawn(1e-3)).named("late error <= 1 mrad"),
+        wd.minimum("torque") >= drawn(90.0),
+        wd.settling_time(tolerance=drawn(0.01)) / wd.rms("torque", **window) <= drawn(2.0),
+    ]
+    everywhere = study.with_(
+        sample_period=drawn(2e-3),
+        duration=drawn(6.0),
+        sensor=wd.Sensor(noise=drawn(1e-5), range=(-1.0, drawn(2.0)), delay=drawn(1e-3)),
+        reference=wd.Step(drawn(0.1)) + wd.Sine(0.1, period=drawn(3.0)),
+        controller=wd.ErrorADRC(2, b0=drawn(0.07), controller_bandwidth=8.0, observer_gains=[drawn(99.0), 6e3, 5e5]),
+        requirements=requirements,
+        measures=[wd.reversals("torque", drawn(0.1))],
+    )
+    paths = list(everywhere.parameters)
+    assert len(paths) == 24
+    for path in paths:
+        value = everywhere.parameters[path].nominal
+        rest = changed(everywhere, [f"{path}={value!r}"]).parameters
+        assert list(rest) == [other for other in paths if other != path]
+
+
 @pytest.fixture
 def study_file(study: wd.Study, tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> str:
     monkeypatch.chdir(tmp_path)
@@ -78,6 +105,8 @@ def test_nothing_changed_is_the_same_study_and_changes_add_up(study: wd.Study) -
         ("senzor.noise=1", ["senzor.noise", "Did you mean 'sensor.noise'"]),
         ("actuator.limits[7]=1", ["actuator.limits[7]"]),
         ("requirements[none].at_most=1", ["requirements[none].at_most"]),
+        ("b0=1", ["Did you mean 'controller.b0'?"]),
+        ("windage_study=2", ["Known: "]),
         ("sample_period.low=1", ["sample_period.low"]),
         ("sample_period=-1", ["sample_period", "-1"]),
         ("sample_period", ["PATH=VALUE"]),
