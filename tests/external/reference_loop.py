@@ -200,6 +200,7 @@ class ReferenceLoop:
     delay: float = 0.0
     lag: float = 0.0
     initial_command: float = 0.0
+    breaks: Sequence[float] = ()  # instants at which a disturbance jumps
 
     def run(self) -> dict[str, Values]:
         """Return every signal at every sample instant."""
@@ -250,9 +251,9 @@ class ReferenceLoop:
 
     def _advance(self, t: float, x: Values, arrivals: Sequence[tuple[float, float]]) -> Values:
         end, small = t + self.period, 1e-9 * self.period
-        held = [w(t + 0.5 * self.period) for w in self.disturbances.values()]
-        bounds = [t, *(at for at, _ in arrivals if t + small < at < end - small), end]
-        for start, stop in itertools.pairwise(bounds):
+        inside = {at for at in (*(at for at, _ in arrivals), *self.breaks) if t + small < at < end - small}
+        for start, stop in itertools.pairwise([t, *sorted(inside), end]):
+            held = [w(0.5 * (start + stop)) for w in self.disturbances.values()]
             x = self.plant.move(start, stop - start, x, self._acting(arrivals, start), self.lag, held)
         return x
 

@@ -175,7 +175,9 @@ def first_order_measures(period: float) -> tuple[Values, Values]:
         disturbances={"load": 0.0},
     )
     table = {"K": FIRST_ORDER[:, 0], "T": FIRST_ORDER[:, 1]}
-    outcome = wd.Study(loop, measures=[wd.settling_time(), wd.overshoot()], table=table).run(6, progress=False)
+    outcome = wd.Study(loop, measures=[wd.settling_time(), wd.overshoot()], table=table, table_rows="in_order").run(
+        6, progress=False
+    )
     settling, overshoot = outcome.measures.values()
     return settling, overshoot
 

@@ -69,6 +69,7 @@ def test_drawn_numbers_reach_every_place() -> None:
             reference=[lambda t, s=start: s[1] if t >= s[0] else 0.0, lambda _: 0.0, lambda _: 0.0],
             initial_state=[p["initial[0]"], 0.0],
             disturbances={"load": lambda t, s=load: s[1] if t >= s[0] else 0.0},
+            breaks=(load[0],),
             gain=p["sensor.gain"],
             bias=p["sensor.bias"],
             filter_frequency=p["sensor.filter_frequency"],

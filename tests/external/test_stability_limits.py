@@ -40,7 +40,7 @@ def growth(loop: wd.Loop, trials: int, table: dict[str, list[float]] | None = No
         wd.peak("output", after=0.75 * end),
         wd.peak("output", after=0.5 * end, before=0.75 * end),
     ]
-    outcome = wd.Study(loop, measures=measures, table=table).run(trials, progress=False)
+    outcome = wd.Study(loop, measures=measures, table=table, table_rows="in_order").run(trials, progress=False)
     late, early = outcome.measures.values()
     return np.where(outcome.status == 0, late / early, np.inf)
 

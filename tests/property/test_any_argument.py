@@ -216,6 +216,7 @@ CALLS: dict[Callable[..., Any], dict[str, Any]] = {
     wd.Actuator: {"limits": (-1, 1), "rate_limit": 1.0, "resolution": 0.0, "delay": 0.0, "time_constant": 0.0},
     wd.Constant: {"value": 1.0},
     wd.Step: {"amplitude": 1.0, "at": 0.0, "initial": 0.0},
+    wd.Sum: {"terms": [wd.Step(1.0), 2.0]},
     wd.Ramp: {"slope": 1.0, "start": 0.0, "stop": 1.0, "initial": 0.0},
     wd.Sine: {"amplitude": 1.0, "period": 1.0, "phase": 0.0, "offset": 0.0, "start": 0.0},
     wd.Pulse: {"amplitude": 1.0, "start": 0.0, "width": 1.0},
@@ -257,7 +258,7 @@ CALLS: dict[Callable[..., Any], dict[str, Any]] = {
 #: Calls that do not work as they stand, for want of a file or folder.
 FAILING = (wd.load, wd.save)
 #: Public names that are made and not called, and functions that take no argument.
-UNCALLED = {"Outcome", "Replay", "Tally", "Verdict", "show_config"}
+UNCALLED = {"Audit", "Outcome", "Replay", "Tally", "Verdict", "show_config"}
 
 
 @pytest.fixture(autouse=True)
