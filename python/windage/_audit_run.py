@@ -214,14 +214,14 @@ class Examination:
         """Return the chance that the fate of each kept trial is another one, for a claim of some requirements."""
         fails = ~self.rows.passed
         met = self.rows.slack >= 0.0
-        chance = np.zeros((len(which), len(fails)))
-        for row, limit in zip(chance, which, strict=True):
+        passes = _passes(self.rows, which)
+        other, chance = np.where(passes, 0.0, 1.0), np.empty(len(fails))
+        for limit in which:
             for kind, side in np.ndindex(2, 2):
                 alike = (fails == kind) & (~met[limit] == side)
-                row[alike] = self._chance(limit, kind, side, self._near[limit, alike])
-        lost = np.max(chance, axis=0)  # one limit is enough to fail
-        won = np.min(np.where(met[list(which)], 1.0, chance), axis=0)  # every limit missed has to be reached
-        other: Values = np.where(_passes(self.rows, which), lost, won)
+                chance[alike] = self._chance(limit, kind, side, self._near[limit, alike])
+            np.maximum(other, chance, out=other, where=passes)  # one limit is enough to fail
+            np.minimum(other, chance, out=other, where=~passes & ~met[limit])  # every limit missed has to be reached
         return other
 
     def _left(self, which: Sequence[int]) -> tuple[int, int]:

@@ -93,10 +93,13 @@ class Rows:
 
 def nearness(slack: Values, scales: Values) -> Values:
     """Return the slack as a share of itself and its scale: 0 on the limit, 1 far away, infinite where there is none."""
-    size = np.abs(slack)
-    with np.errstate(invalid="ignore"):
-        share = size / (size + scales[:, None])
-    return np.where(np.isfinite(size), share, np.inf)
+    near = np.abs(slack)
+    # Limit by limit: all of a large run at once would need its memory several times over.
+    for row, scale in zip(near, scales, strict=True):
+        is_finite = np.isfinite(row)
+        np.divide(row, row + scale, out=row, where=is_finite)
+        row[~is_finite] = np.inf
+    return near
 
 
 def scattered(trials: NDArray[np.uint64]) -> NDArray[np.uint64]:

@@ -40,6 +40,8 @@ from ._study_checks import (
 from ._tally import Counter, Tally
 
 MOST_TRIALS = 1 << 40
+#: Bytes a trial that the audit of a verdict takes: for each requirement its slacks and their nearness, and room to sort.
+AUDIT_EACH, AUDIT_BESIDE = 17, 64
 
 
 @dataclass(frozen=True, repr=False, eq=False)
@@ -359,8 +361,9 @@ class Study(Description):
         """Refuse an outcome that the memory does not hold beside the trials that are held already."""
         described = self._describe(1)
         numbers, judged = len(described.columns) + len(described.measures), len(self.requirements)
-        # Columns from the engine, then slacks and what follows from them; a longer outcome is a copy of both parts.
-        each, worked_out = 8 * numbers + 1, 9 * judged + 2
+        # Columns from the engine, then slacks and what follows from them, which a verdict examines in copies; a longer
+        # outcome is a copy of both parts.
+        each, worked_out = 8 * numbers + 1, 9 * judged + 2 + AUDIT_EACH * max(1, judged) + AUDIT_BESIDE
         needed = float(trials) * each + (held and float(held + trials) * each) + float(held + trials) * worked_out
         mend = "Use study.count(...) or study.batches(...), whose memory does not grow with the trials."
         if field == "size":

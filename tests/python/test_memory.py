@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import sys
 import time
+import tracemalloc
 from collections.abc import Callable
 from pathlib import Path
 from typing import Any
@@ -60,15 +61,22 @@ def test_runs_that_fit_are_not_refused(call: str, study: wd.Study, monkeypatch: 
     CALLS[call](study, 300_000)
 
 
-def test_what_a_run_needs_is_what_its_outcome_takes(study: wd.Study, monkeypatch: pytest.MonkeyPatch) -> None:
-    outcome = study.run(1_000_000, progress=False)
-    arrays = [*outcome.parameters.values(), *outcome.measures.values(), outcome.status, outcome.slack, outcome.passed]
-    size = sum(array.nbytes for array in arrays)
-    has(monkeypatch, int(0.9 * size / _memory.USABLE))
+def test_what_a_run_needs_is_what_its_outcome_and_its_verdict_take(
+    study: wd.Study, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    study.run(1_000, progress=False).verdict(0.5)
+    tracemalloc.start()
+    outcome = study.run(500_000, progress=False)
+    outcome.verdict(0.5)
+    str(outcome)
+    outcome.drivers()
+    size = tracemalloc.get_traced_memory()[1]
+    tracemalloc.stop()
+    has(monkeypatch, int(0.95 * size / _memory.USABLE))
     with pytest.raises(wd.DescriptionError, match="needed"):
-        study.run(1_000_000, progress=False)
-    has(monkeypatch, int(1.1 * size / _memory.USABLE))
-    study.run(1_000_000, progress=False)
+        study.run(500_000, progress=False)
+    has(monkeypatch, int(1.25 * size / _memory.USABLE))
+    study.run(500_000, progress=False)
 
 
 def test_counting_in_small_batches_needs_no_more_for_more_trials(
