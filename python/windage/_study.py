@@ -40,7 +40,7 @@ from ._study_checks import (
 from ._tally import Counter, Tally
 
 MOST_TRIALS = 1 << 40
-#: Bytes a trial that the audit of a verdict takes: for each requirement its slacks and their nearness, and room to sort.
+#: Bytes a trial that the audit of a verdict takes: slacks and nearness of each requirement, and room to sort.
 AUDIT_EACH, AUDIT_BESIDE = 17, 64
 
 
