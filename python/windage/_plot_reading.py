@@ -147,7 +147,10 @@ class _Reader:
         size = float(np.sqrt(np.mean((self._values[self._places] - centre) ** 2)))
         self._put_levels(centre + self._limit, centre - self._limit)
         self._reading.measured = [centre + size, centre - size]
-        self._reading.beyond = self._reading.inside & (np.abs(self._values - centre) > self._limit)
+        # A missed limit is seen where what has come together exceeds it, whatever follows; a missed lower one is not.
+        added = np.where(self._reading.inside, (self._values - centre) ** 2, 0.0)
+        together = np.sqrt(np.cumsum(added) / len(self._places))
+        self._reading.beyond = self._reading.inside & self._is_upper & (together > self._limit)
         self._reading.shows_beyond = False
 
     def _read_standard_deviation(self) -> None:

@@ -5,7 +5,7 @@ from __future__ import annotations
 import textwrap
 from collections.abc import Sequence
 
-WIDTH = 100
+from ._text_table import WIDTH
 
 
 def wrapped(text: str, indent: int, first: str = "") -> list[str]:

@@ -263,6 +263,19 @@ def test_onset_is_where_the_first_requirement_is_missed(outcome: wd.Outcome) -> 
         replay.plot(onset=1)  # type: ignore[arg-type]
 
 
+def test_a_root_mean_square_is_missed_where_its_sum_is_too_large(outcome: wd.Outcome) -> None:
+    study = outcome.study.with_(requirements=[wd.rms("error", after=0.1) <= 0.05])
+    replay = study.replay(0)
+    assert not replay.passed
+    places = np.flatnonzero(replay.time >= 0.1 - 1e-9)
+    together = np.cumsum(replay["error"][places] ** 2) > 0.05**2 * len(places)
+    instant = replay.time[places[together][0]]
+    assert instant > replay.time[places[np.abs(replay["error"][places]) > 0.05][0]]
+    assert first_missed(replay) == instant
+    # One that is too small is so at the end only, and no sample shows it.
+    assert first_missed(study.with_(requirements=[wd.rms("error") >= 9.0]).replay(0)) is None
+
+
 def test_a_diverged_trial_is_shown_until_it_leaves_and_can_be_read() -> None:
     study = unstable_study()
     assert "Nominal unit" in study.nominal().plot().get_suptitle()

@@ -205,7 +205,7 @@ VERDICTS = [
 @pytest.mark.parametrize("verdict", VERDICTS)
 def test_text_fits_a_terminal_and_carries_every_standing_caution(verdict: Verdict) -> None:
     text = str(verdict)
-    assert max(len(line) for line in text.splitlines()) <= 100
+    assert max(len(line) for line in text.splitlines()) <= 80
     assert "\u00a0" not in text
     assert "Clopper-Pearson, exact, one-sided" in text
     assert text.startswith(verdict.decision.upper() + ":")
@@ -346,7 +346,7 @@ def test_each_requirement_is_judged_at_the_corrected_confidence() -> None:
     assert table["rms torque <= 12"] is table[1]
     assert len(table) == 3
     text = str(table)
-    assert max(len(line) for line in text.splitlines()) <= 100
+    assert max(len(line) for line in text.splitlines()) <= 80
     assert "Bonferroni correction: each verdict, and each bound by itself, at 98.3333 %" in _flat(text)
     assert re.search(r"FAIL +overshoot <= 0.1 +99 % +90/4 000", text)
     assert json.loads(json.dumps(table.to_dict(), allow_nan=False))["correction"] == "Bonferroni"
