@@ -20,6 +20,7 @@ from ._drivers import Driver
 from ._errors import DescriptionError
 from ._evidence import checked_probability
 from ._numbers import checked_integer
+from ._outcome import joint_requirement
 from ._plot_dependence import Dependence
 from ._plot_row import Row, row_of
 from ._plot_style import (
@@ -64,7 +65,7 @@ def draw_outcome(
     """Draw the figure; see `windage._plots.plot_outcome`."""
     parameters = checked_integer(parameters, "parameters", 0, MOST_PARAMETERS)
     confidence = checked_probability("confidence", confidence)
-    if verdict is not None and not isinstance(verdict, Verdict):
+    if verdict is not None and not (isinstance(verdict, Verdict) and _is_of(outcome, verdict)):
         raise DescriptionError("verdict", verdict, "a verdict of this outcome", "Give outcome.verdict(at_least=...).")
     if not outcome.trials:
         raise DescriptionError("outcome", "0 trials", "at least 1 trial to plot")
@@ -108,10 +109,21 @@ def _write_title(figure: StudyFigure, outcome: Outcome, verdict: Verdict | None)
     title_lines(figure, lines, source_line(study.digest, study.seed, study.title))
 
 
+def _is_of(outcome: Outcome, verdict: Verdict) -> bool:
+    """Tell whether a verdict may head the picture of an outcome: it has its trials and its failures."""
+    missed = dict(zip(outcome.requirements, (~outcome.met).sum(axis=0).tolist(), strict=True))
+    failed = missed | {joint_requirement(outcome.study.requirements): len(outcome.failures)}
+    seen = (verdict.trials, verdict.failures - verdict.numerics.hidden, verdict.diverged)
+    return seen == (outcome.trials, failed.get(verdict.requirement), len(outcome.diverged))
+
+
 def _places(outcome: Outcome, requirements: Sequence[int | str] | None) -> list[int]:
     if not outcome.requirements:
         raise DescriptionError("study.requirements", "none", "at least one requirement to plot")
     if requirements is not None:
+        if isinstance(requirements, str) or not isinstance(requirements, Sequence) or not requirements:
+            mend = "Write [0] or ['...'] for a single one."
+            raise DescriptionError("requirements", requirements, "a list of requirements by place or name", mend)
         return [outcome._place(requirement) for requirement in requirements]
     missed = (~outcome.met).sum(axis=0)
     most_missed = np.argsort(-missed, kind="stable")[:MOST_ROWS]

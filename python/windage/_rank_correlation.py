@@ -30,6 +30,8 @@ class Ranked:
 
 def ranked(values: Values) -> Ranked | None:
     """Return the ranks of a column, ties at their mean, or None if it does not vary."""
+    if not len(values):
+        return None
     own = ranks(values)
     own -= own.mean()
     length = math.sqrt(float(np.einsum("i,i", own, own)))

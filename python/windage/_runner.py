@@ -108,6 +108,6 @@ def run_chosen(campaign: Any, trials: NDArray[np.uint64], go_on: GoOn | None = N
     threads : int
         As for `run_columns`.
     """
-    threads = threads or default_threads()
+    threads = checked_integer(threads, "threads", 0, MOST_THREADS) or default_threads()
     parameters, measures, status, done = campaign.run_chosen(trials, threads, 0, go_on)
     return Columns(parameters[:, :done], measures[:, :done], status[:done], len(trials))

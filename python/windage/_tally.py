@@ -14,6 +14,7 @@ from ._arguments import explained
 from ._audit_trials import Watch
 from ._basis import SAMPLE, Basis
 from ._descriptions import FrozenMapping
+from ._errors import DescriptionError
 from ._looks import Look, look, stopped
 from ._numerics import UNEXAMINED
 from ._outcome import ALL_THE_SAME, Outcome, joint_requirement
@@ -105,6 +106,8 @@ class Tally(Portable):
         """Judge each requirement by itself; see `Outcome.verdicts`."""
         from windage._verdict import judge_many
 
+        if not self.requirement_failures:
+            raise DescriptionError("study.requirements", "none", "at least one requirement to judge")
         counts = dict(self.requirement_failures)
         numerics = (
             self.audit().by_requirement if audit and not self._is_interrupted else dict.fromkeys(counts, UNEXAMINED)

@@ -136,6 +136,8 @@ class Verdict:
 class VerdictTable:
     """Verdicts on several requirements, corrected so that they hold together. Built by `judge_many`.
 
+    As a truth value a table is true only where every verdict of it is a pass.
+
     Attributes
     ----------
     verdicts : tuple of Verdict
@@ -156,15 +158,17 @@ class VerdictTable:
     def __iter__(self) -> Iterator[Verdict]:
         return iter(self.verdicts)
 
+    def __bool__(self) -> bool:
+        return all(self.verdicts)
+
     def __getitem__(self, requirement: str | int) -> Verdict:
         """Return a verdict by the text of its requirement or by its place."""
         if isinstance(requirement, int):
             return self.verdicts[requirement]
         named = {verdict.requirement: verdict for verdict in self.verdicts}
         if requirement not in named:
-            raise DescriptionError(
-                "requirement", requirement, "a requirement of this table", suggestion(requirement, named)
-            )
+            mend = suggestion(str(requirement), named)
+            raise DescriptionError("requirement", requirement, "a requirement of this table", mend)
         return named[requirement]
 
     @property

@@ -59,7 +59,8 @@ def _of_list(verdict: Verdict) -> str:
     if verdict.decision == "inconclusive":
         return f"{grouped(verdict.trials)} of {rows} rows cannot tell whether at least {at_least} of the rows pass."
     share = "at least" if verdict.decision == "pass" else "fewer than"
-    return f"{share} {at_least} of the {rows} rows of the table pass."
+    rows += " row" if verdict.basis.planned == 1 else " rows"
+    return f"{share} {at_least} of the {rows} of the table pass."
 
 
 def _of_one_trial(verdict: Verdict) -> str:

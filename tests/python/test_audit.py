@@ -13,6 +13,7 @@ import pytest
 import windage as wd
 from windage import _audit
 from windage._audit_trials import Rows
+from windage._demo import demo_study
 from windage._runner import Columns, make_campaign, run_columns
 
 
@@ -149,6 +150,12 @@ def test_an_audit_is_made_once_and_reads_well() -> None:
     assert np.array_equal(copy.audit().flips, audit.flips)
     assert not copy.audit().flips.flags.writeable
     assert np.array_equal(friction().run(300, threads=1, progress=False).audit(threads=1).flips, audit.flips)
+
+
+@pytest.mark.parametrize("threads", [-1, 1025, 1.5])
+def test_threads_of_an_audit_are_checked_as_those_of_a_run(threads: Any) -> None:
+    with pytest.raises(wd.DescriptionError, match="threads: found"):
+        demo_study().run(20, progress=False).audit(threads=threads)
 
 
 def test_a_tally_is_audited_as_an_outcome_is() -> None:

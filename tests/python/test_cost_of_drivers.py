@@ -58,6 +58,11 @@ def test_too_few_failures_among_those_ranked_name_no_cause_of_failing(
     assert "rank correlation of drawn parameters with the slack of" in printed
 
 
+def test_an_outcome_without_any_trial_has_no_drivers() -> None:
+    outcome = list(demo_study().batches(1000, size=10, progress=lambda *_: False))[-1]
+    assert (outcome.trials, len(outcome.drivers())) == (0, 0)
+
+
 def test_no_requirement_is_called_as_the_drivers_call_all_of_them() -> None:
     with pytest.raises(wd.DescriptionError, match=r"requirement\.name: found 'failing'"):
         (wd.rms("error") <= 1.0).named("failing")

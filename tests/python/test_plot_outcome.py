@@ -91,6 +91,21 @@ def test_what_is_no_verdict_heads_no_picture(outcome: wd.Outcome) -> None:
         outcome.plot(verdict=True)  # type: ignore[arg-type]
 
 
+def test_a_verdict_of_other_trials_heads_no_picture(outcome: wd.Outcome) -> None:
+    single = outcome.verdicts(0.5)[0]
+    assert outcome.plot(parameters=0, verdict=single).get_suptitle().replace("\n", " ").startswith(single.headline)
+    failing = outcome.study.with_(requirements=[wd.peak("error") <= 0.0])
+    for other in (outcome.extend(1, progress=False), failing.run(TRIALS, progress=False)):
+        with pytest.raises(wd.DescriptionError, match="expected a verdict of this outcome"):
+            outcome.plot(verdict=other.verdict(0.5, audit=False))
+
+
+@pytest.mark.parametrize("requirements", [[], 0, "peak of error"])
+def test_what_is_no_list_of_requirements_is_refused(outcome: wd.Outcome, requirements: Any) -> None:
+    with pytest.raises(wd.DescriptionError, match=r"requirements: found .* a list of requirements by place or name"):
+        outcome.plot(requirements=requirements)
+
+
 def test_claim_and_verdict_head_the_picture(outcome: wd.Outcome) -> None:
     verdict = outcome.verdict(0.5)
     lines = outcome.plot(parameters=1, verdict=verdict).get_suptitle().split("\n")

@@ -469,3 +469,11 @@ def test_a_lower_bound_mirrors_an_upper_bound_and_leaves_the_values_alone() -> N
     assert lower.rank == upper.rank
     assert np.mean(values >= lower.value) >= 0.9
     np.testing.assert_array_equal(values, kept)
+
+
+def test_a_table_is_true_only_where_every_verdict_passes() -> None:
+    assert judge_many({"a": 0, "b": 0}, 1000, 0, 0.95, 0.95)
+    assert not judge_many({"a": 0, "b": 1000}, 1000, 0, 0.95, 0.95)
+    assert not judge_many({"a": 0, "b": 50}, 1000, 0, 0.95, 0.95)
+    with pytest.raises(DescriptionError, match="requirement: found None; expected a requirement of this table"):
+        judge_many({"a": 0}, 1000, 0, 0.95, 0.95)[None]  # type: ignore[index]

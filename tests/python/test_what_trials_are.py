@@ -250,6 +250,15 @@ def test_a_picture_shows_no_bounds_where_there_are_none() -> None:
         assert "Clopper-Pearson" not in legend_of(outcome)
 
 
+def test_a_table_of_one_row_and_a_study_without_requirements_are_spoken_of_as_such() -> None:
+    listed = study(gain=wd.column("g"), table={"g": [1.0]}, table_rows="in_order").run(1, progress=False)
+    assert listed.verdict(0.9).headline == "PASS: at least 90 % of the 1 row of the table pass."
+    free = study(gain=wd.uniform(0.8, 1.2)).with_(requirements=[], measures=[wd.rms("error")])
+    for found in (free.run(5, progress=False), free.count(5, progress=False)):
+        with pytest.raises(wd.DescriptionError, match=r"study\.requirements: found 'none'"):
+            found.verdicts(0.5)
+
+
 # --- looks
 
 
