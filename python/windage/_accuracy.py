@@ -19,6 +19,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from ._errors import DescriptionError
+from ._loop import Loop
 from ._pilots import Parts, Pilots, pilots_of
 from ._reporter import Reporter
 from ._runner import Columns
@@ -84,11 +85,20 @@ def chosen_steps(parts: Parts, reporter: Reporter | None = None) -> Choice:
             )
             return Choice(steps, caution)
     expected = f"at most {CANDIDATES[-1]} steps in a sample period to be enough"
-    mend = (
-        f"With {CANDIDATES[-1]} steps {worst}. Jumps in the equations may be the reason (write tanh for "
-        "sign); or set steps_per_sample to a number of your own."
-    )
+    mend = f"With {CANDIDATES[-1]} steps {worst}. {_way_out(loop)}; or set steps_per_sample to a number of your own."
     raise DescriptionError("loop.steps_per_sample", "auto", expected, mend)
+
+
+def _way_out(loop: Loop) -> str:
+    """Say what is most likely the reason that no number of steps is enough."""
+    if loop.integrator == "euler":
+        return "Euler's method is of order 1: take integrator='rk4'"
+    if loop.plant.may_jump:
+        return "Jumps in the equations may be the reason (write tanh for sign)"
+    return (
+        "The equations do not jump, but a loop that swings between limits, of its actuator or of a max, min or clip, "
+        "does not repeat itself: try a slower tuning, or another b0"
+    )
 
 
 def _allowed_coarsely(pilots: Pilots) -> Values:

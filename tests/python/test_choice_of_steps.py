@@ -189,3 +189,22 @@ def test_failing_pilots_are_allowed_a_tenth_of_their_size_in_the_second_pass() -
     passing = flexible(1e9).with_(requirements=[wd.peak("q") <= 1e15])
     pilots = _pilots.pilots_of((*passing._bound, {}, chosen.seed))
     assert np.array_equal(_accuracy._allowed_coarsely(pilots), pilots.allowed)
+
+
+@pytest.mark.parametrize(
+    ("derivative", "integrator", "words"),
+    [
+        ("-900*(x - u)", "euler", "Euler's method is of order 1: take integrator='rk4'; or set steps_per_sample"),
+        ("-900*(x - u) - sign(x)", "rk4", "Jumps in the equations may be the reason (write tanh for sign); or set"),
+        ("-900*(x - u)", "rk4", "The equations do not jump, but a loop that swings between limits"),
+    ],
+)
+def test_where_no_steps_are_enough_the_likely_reason_is_named(
+    derivative: str, integrator: str, words: str, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    monkeypatch.setattr(_accuracy, "CANDIDATES", (1,))
+    plant = wd.Plant({"x": 0.0}, {"x": derivative}, "u", "x")
+    too_coarse = study(plant, [wd.peak("error") <= 1.5], sample_period=5e-3, duration=1.0, integrator=integrator)
+    with pytest.raises(wd.DescriptionError, match="to be enough") as caught:
+        too_coarse.resolved_steps()
+    assert words in caught.value.mend
