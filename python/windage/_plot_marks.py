@@ -19,13 +19,24 @@ if TYPE_CHECKING:
 
 #: Samples that may leave a panel whose scale is that of the others: this part of them, and at least so many.
 SPIKES, FEWEST_SPIKES = 0.005, 3
+#: How far outside the signals of a panel a limit is drawn, in multiples of their size.
+FURTHEST_LIMIT = 4.0
 #: Characters of a label in a legend.
 LONGEST_LABEL = 96
 
 Flags = NDArray[np.bool_]
 
 
-def draw_marks(axes: Axes, replay: Replay, place: int, names: Sequence[str], shown: Flags) -> None:
+def room_for_limits(axes: Axes) -> tuple[float, float]:
+    """Return between which values a limit is drawn: far outside it would squeeze the signals into a line."""
+    low, high = axes.get_ylim()
+    reach = FURTHEST_LIMIT * max(abs(low), abs(high), high - low)
+    return low - reach, high + reach
+
+
+def draw_marks(
+    axes: Axes, replay: Replay, place: int, names: Sequence[str], shown: Flags, room: tuple[float, float]
+) -> None:
     """Draw what a requirement reads off the signals of a panel; every kind of measure leaves a mark."""
     is_met = bool(replay.met[place])
     color = INK if is_met else VERMILLION
@@ -34,7 +45,7 @@ def draw_marks(axes: Axes, replay: Replay, place: int, names: Sequence[str], sho
             continue
         values = replay[part.signal]
         before = len(axes.lines) + len(axes.collections)
-        _draw_levels(axes, replay.time, reading, shown, color)
+        _draw_levels(axes, replay.time, reading, shown, color, room)
         _draw_samples(axes, replay.time, values, reading, shown, is_met)
         if len(axes.lines) + len(axes.collections) == before:
             # Nothing that has a place of its own: the course in the window is what counts.
@@ -55,9 +66,11 @@ def _label(replay: Replay, place: int) -> str:
     return f"{name if len(name) <= room else name[: room - 3] + '...'}: {read}"
 
 
-def _draw_levels(axes: Axes, time: Values, reading: Reading, shown: Flags, color: str) -> None:
+def _draw_levels(
+    axes: Axes, time: Values, reading: Reading, shown: Flags, color: str, room: tuple[float, float]
+) -> None:
     ends = time[reading.inside & shown][[0, -1]]
-    for level in reading.levels:
+    for level in (level for level in reading.levels if room[0] <= level <= room[1]):
         axes.plot(ends, [level, level], color=color, linestyle="--", linewidth=1.2)
     for level in reading.measured:
         axes.plot(ends, [level, level], color=color, linestyle="-", linewidth=0.9)

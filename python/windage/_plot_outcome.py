@@ -163,7 +163,7 @@ def _draw_distribution(axes: Axes, row: Row, confidence: float | None) -> None:
     axes.yaxis.set_major_formatter(FuncFormatter(lambda share, _: _percent(share)))
     axes.yaxis.set_minor_formatter(NullFormatter())
     set_ticks(axes.xaxis, row.low, row.high, CURVE_ROOM)
-    dress(axes, plot_text(wrapped(row.axis_words, 52)), row.share_words)
+    dress(axes, plot_text(wrapped(row.axis_words, 44)), row.share_words)
     if not row.is_slack:
         _add_slack_axis(axes, row)
     panel_title(axes, plot_text(wrapped(row.words, 42)), is_heading=True)

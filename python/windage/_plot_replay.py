@@ -14,7 +14,7 @@ from numpy.typing import NDArray
 from ._errors import DescriptionError, WindageError
 from ._numbers import checked_flag, checked_sequence, plain_number
 from ._plot_facts import Fact, facts, facts_height, write_facts
-from ._plot_marks import draw_actuator_limits, draw_marks, hold_spikes
+from ._plot_marks import draw_actuator_limits, draw_marks, hold_spikes, room_for_limits
 from ._plot_reading import first_missed
 from ._plot_style import (
     BLUE,
@@ -244,8 +244,9 @@ def _draw_panel(axes: Axes, replay: Replay, panel: _Panel, shown: Flags, unit: R
         hold_spikes(axes, [line.values[shown] for line in panel.lines])
     if unit is not None and panel.nominal is not None:
         _draw_nominal(axes, unit.time, panel.nominal, time)
+    room = room_for_limits(axes)
     for place in range(len(replay.requirements)):
-        draw_marks(axes, replay, place, panel.names, shown)
+        draw_marks(axes, replay, place, panel.names, shown, room)
     if panel.is_drive:
         draw_actuator_limits(axes, replay)
     low, high = axes.get_ylim()

@@ -81,11 +81,8 @@ def legend_above(axes: Axes) -> int:
     _, labels = axes.get_legend_handles_labels()
     wide = [len(label) + 8 for label in labels]
     columns = len(wide) or 1
-    # Filled column by column; as many as fit beside each other.
-    while columns > 1:
-        rows = -(-len(wide) // columns)
-        if sum(max(wide[i : i + rows]) for i in range(0, len(wide), rows)) <= LEGEND_ROOM:
-            break
+    # Filled column by column, evenly; as many as fit beside each other.
+    while columns > 1 and sum(max(column) for column in np.array_split(wide, columns)) > LEGEND_ROOM:
         columns -= 1
     axes.legend(
         fontsize=8,

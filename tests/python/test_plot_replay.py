@@ -312,3 +312,23 @@ def test_no_texts_overlap(outcome: wd.Outcome) -> None:
         for i, requirement in enumerate(EVERY_KIND[:6])
     ]
     assert_no_texts_overlap(loop_with(long).replay(0).plot())
+
+
+def test_long_and_short_labels_of_a_legend_share_its_room(outcome: wd.Outcome) -> None:
+    # Four labels in three columns: the long last one has a column of its own.
+    requirements = [wd.itae() <= 1e-6, wd.peak("error", after=1.0) - wd.rms("v") >= 123456.0]
+    study = outcome.study.with_(requirements=requirements, signals={"v": "2*output"})
+    assert_no_texts_overlap(study.replay(0).plot())
+    drawn_window = wd.peak("v") / wd.rms("command", before=wd.uniform(1.0, 1.4)) <= 1e-6
+    assert_no_texts_overlap(study.with_(requirements=[drawn_window]).run(50, progress=False).plot(parameters=0))
+
+
+def test_a_limit_far_outside_does_not_flatten_the_signals(outcome: wd.Outcome) -> None:
+    def height(limit: float) -> float:
+        figure = outcome.study.with_(requirements=[wd.peak("error") <= limit]).replay(0).plot()
+        assert f"<= {limit:g} met" in legend_words(figure)
+        low, high = next(axes for axes in figure.get_axes() if axes.get_ylabel() == "error").get_ylim()
+        return high - low
+
+    assert height(4.0) == pytest.approx(8.0, rel=0.2)
+    assert height(1e4) < 3.0
