@@ -5,19 +5,19 @@ from __future__ import annotations
 import sys
 from collections.abc import Sequence
 from pathlib import Path
-from typing import Annotated, Any, cast
+from typing import Annotated, cast
 
 import typer
 
 from . import _command_help as teach
 from . import _command_output as output
 from ._command_changes import arguments_of, changed
+from ._command_usage import explained_usage
 from ._demo import DEMO_AT_LEAST, DEMO_CONFIDENCE, DEMO_TRIALS, demo_study
 from ._errors import DescriptionError, WindageError
 from ._loader import show_config
 from ._outcome import Outcome
 from ._plots import HOW_TO_INSTALL, has_matplotlib
-from ._shown_text import one_line
 from ._stopping import heard_like_ctrl_c
 from ._study import Study
 from ._study_file import load, save
@@ -190,6 +190,10 @@ def replay(
     if (trial is None) != nominal:
         found = "neither" if trial is None else "both"
         raise DescriptionError("--trial", found, "either --trial N or --nominal")
+    given = {"--after": after != 0.0, "--before": before is not None, "--onset": onset, "--signal": bool(signals)}
+    for option, is_given in given.items():
+        if is_given and plot is None:
+            raise DescriptionError(option, "no --plot", "--plot FILE beside it", "It says what the picture shows.")
     output.check_target("--plot", plot, output.PICTURES)
     output.check_target("--csv", csv, (".csv",))
     output.check_target("--parquet", parquet, (".parquet",))
@@ -235,9 +239,8 @@ def _run(arguments: Sequence[str] | None) -> int:
         if code == UNHEARD:
             raise KeyboardInterrupt
     except UsageError as error:
-        message, context = cast(Any, error).format_message(), getattr(error, "ctx", None)
-        command = context.command_path if context else output.called_as()
-        output.print_failure(WindageError(f"{one_line(message)}\n  mend      see {command} --help"))
+        written = sys.argv[1:] if arguments is None else arguments
+        output.print_failure(explained_usage(error, written, output.called_as()))
         return WRONG
     except (KeyboardInterrupt, typer.Abort):
         output.print_failure(WindageError("interrupted; what is not printed above was not finished"))

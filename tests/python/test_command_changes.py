@@ -233,3 +233,33 @@ def test_a_title_heads_everything_and_decides_no_digit(
 def test_a_title_that_is_no_line_of_text_is_refused(study: wd.Study, title: object) -> None:
     with pytest.raises(wd.DescriptionError, match="title"):
         study.with_(title=title)
+
+
+@pytest.mark.parametrize(
+    ("arguments", "words"),
+    [
+        (["--trials", "1e4"], ["--trials", "'1e4'", "a whole number", "Write 10000, without point and exponent."]),
+        (["--trials=20,000.5"], ["--trials", "'20,000.5'", "a whole number"]),
+        (["--at-least", "95%"], ["--at-least", "'95%'", "a number", "fraction: 0.95."]),
+        (["--at-least", "0.9", "--at-least", "0,95"], ["'0,95'", "a number", "Write decimals with a point."]),
+        (["--seed", "abc"], ["--seed", "'abc'", "a whole number"]),
+        (["--sede", "3"], ["--sede", "--seed", "run --help"]),
+    ],
+)
+def test_what_is_no_number_is_shown(
+    arguments: list[str], words: list[str], study_file: str, capsys: pytest.CaptureFixture[str]
+) -> None:
+    assert main(["run", study_file, *arguments]) == 3
+    written = capsys.readouterr().err
+    assert all(word in written for word in words), written
+
+
+@pytest.mark.parametrize("option", [["--after", "1"], ["--before", "2"], ["--onset"], ["--signal", "wind"]])
+def test_what_the_picture_shows_asks_for_a_picture(
+    option: list[str], study_file: str, capsys: pytest.CaptureFixture[str]
+) -> None:
+    assert main(["replay", study_file, "--nominal", *option]) == 3
+    captured = capsys.readouterr()
+    assert option[0] in captured.err
+    assert "--plot FILE" in captured.err
+    assert not captured.out

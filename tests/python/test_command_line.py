@@ -271,7 +271,7 @@ def test_cancelling_the_disturbance_is_worth_a_factor_of_ten() -> None:
     [
         (["run", "absent.toml"], ["study file", "absent.toml", "a file that can be read"]),
         (["run", "servo.toml", "--trials", "0"], ["trials", "0", "a whole number from 1"]),
-        (["run", "servo.toml", "--trials", "many"], ["--trials", "integer"]),
+        (["run", "servo.toml", "--trials", "many"], ["--trials", "whole number"]),
         (["run", "servo.toml", "--trails", "10"], ["--trails", "--trials", "windage run --help"]),
         (["run", "servo.toml", "--at-least", "95"], ["at_least", "95", "below 1", "fraction"]),
         (["run", "servo.toml", "--confidence", "0.05"], ["confidence", "0.05", "at least 0.5"]),
