@@ -83,7 +83,7 @@ def demo(
     save(study, file)
     outcome = study.run(trials, threads)
     if not outcome.trials:
-        return INTERRUPTED
+        raise KeyboardInterrupt
     verdict, code = _judged(outcome, DEMO_AT_LEAST, DEMO_CONFIDENCE)
     output.print_verdict(outcome, verdict)
     output.say(f"Wrote {file}")
@@ -132,7 +132,7 @@ def run(
         output.print_advice(study)
     outcome = study.run(trials, threads)
     if not outcome.trials:
-        return INTERRUPTED
+        raise KeyboardInterrupt
     verdict, code = _judged(outcome, at_least, confidence)
     # What other programs read comes first: nothing on the screen can be in its way.
     if report is not None:

@@ -33,12 +33,18 @@ METHODS = {
 def word_of(verdict: Verdict) -> str:
     """Return the decision as it is printed; what cannot be decided says why."""
     if verdict.decision == "inconclusive":
+        if verdict.numerics.is_stopped:
+            return "INTERIM"
         return {"interim": "INTERIM", "one trial": "NO CLAIM"}.get(verdict.basis.kind, "INCONCLUSIVE")
     return verdict.decision.upper()
 
 
 def headline(verdict: Verdict) -> str:
     """Return the decision and the claim in one sentence."""
+    if verdict.numerics.is_open and verdict.basis.kind in ("sample", "list"):
+        whose = "trials" if verdict.basis.kind == "sample" else "rows"
+        claim = f"whether at least {percent(verdict.at_least)} of all {whose} pass"
+        return f"{word_of(verdict)}: {claim} is open until the numerical error is known."
     sentence = {"sample": _of_sample, "list": _of_list, "one trial": _of_one_trial, "interim": _of_interim}
     return f"{word_of(verdict)}: {sentence[verdict.basis.kind](verdict)}"
 
@@ -69,7 +75,7 @@ def _of_one_trial(verdict: Verdict) -> str:
     times = "" if verdict.trials == 1 else f", repeated {grouped(verdict.trials)} times"
     if verdict.decision == "fail":
         return f"one trial{times}, fails; nothing varies, so that none passes."
-    passes = "passes" if not verdict.failures else "is not safe from numerical error"
+    passes = "passes" if not (verdict.failures or verdict.numerics.is_open) else "is not safe from numerical error"
     return f"one trial{times}, {passes}; nothing varies, so that nothing follows for other units."
 
 

@@ -44,6 +44,17 @@ def test_a_verdict_whose_audit_was_interrupted_is_interim(
     found = json.loads(report.read_text(encoding="utf-8"))
     assert (found["exit_code"], found["interim"], found["verdict"]) == (4, True, None)
     assert found["interim_verdict"]["decision"] == "inconclusive"
-    printed = capsys.readouterr().out
+    printed = " ".join(capsys.readouterr().out.split())
     assert "not examined: stopped before it was done" in printed
+    assert "INTERIM: whether at least 50 % of all trials pass is open until the numerical error is known." in printed
     assert "PASS" not in printed
+
+
+def test_a_run_that_was_stopped_before_its_first_trial_says_so(
+    study_file: str, monkeypatch: pytest.MonkeyPatch, capsys: pytest.CaptureFixture[str]
+) -> None:
+    nothing = next(iter(demo_study().batches(10, size=1, progress=lambda *_: False)))
+    assert nothing.trials == 0
+    monkeypatch.setattr(wd.Study, "run", lambda *_: nothing)
+    assert main(["run", study_file, "--trials", "10"]) == 4
+    assert "interrupted; what is not printed above was not finished" in capsys.readouterr().err
