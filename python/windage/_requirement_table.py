@@ -203,7 +203,9 @@ def _unlimited(measure: Measure, values: Values, status: NDArray[np.uint8], nomi
 
 
 def _nominal_values(outcome: Outcome) -> list[float]:
-    """Return the measures of the nominal unit; NaN where it diverges or cannot be run."""
+    """Return the measures of the nominal unit; NaN where it diverges or cannot be run, or no trial was."""
+    if not outcome.trials:  # a run stopped while its steps were being chosen is not to go on when it is printed
+        return [math.nan] * len(outcome._described.measures)
     try:
         return outcome.study._nominal_measures
     except WindageError:

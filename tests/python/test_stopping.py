@@ -349,3 +349,13 @@ def test_a_forked_process_runs_trials_after_its_parent_did() -> None:
             pytest.fail("the child hangs")
         time.sleep(0.02)
     assert os.waitstatus_to_exitcode(ended[1]) == 0
+
+
+def test_a_run_stopped_before_its_first_trial_is_shown_without_going_on(monkeypatch: pytest.MonkeyPatch) -> None:
+    """Its text wanted the nominal unit, for which the choice of steps began anew, in silence."""
+    study = friction_study()
+    outcome = study.run(100, progress=lambda done, total: False)
+    assert outcome.trials == 0
+    monkeypatch.setattr(wd.Study, "resolved_steps", lambda self: pytest.fail("the steps are chosen again"))
+    assert "stopped" in repr(outcome)
+    assert "stopped" in outcome._repr_html_()
