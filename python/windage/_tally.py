@@ -76,8 +76,10 @@ class Tally(Portable):
             return known
         missed = list(self.requirement_failures.values()) or [self.failures]
         run = Run(self.watch.rows, self.watch.scales, self.trials, self.failures, missed, self.watch)
+        # Without any trial the steps may not be chosen yet, and are not wanted.
+        described = self.study._run_description if self.trials else self.study._describe(1)
         with Reporter(progress, self.trials) as reporter:
-            found = audit(self.study, self.study._run_description, run, threads, reporter)
+            found = audit(self.study, described, run, threads, reporter)
         if not found.interrupted:
             self.__dict__["_audit"] = found
         return found

@@ -354,8 +354,9 @@ def test_a_forked_process_runs_trials_after_its_parent_did() -> None:
 def test_a_run_stopped_before_its_first_trial_is_shown_without_going_on(monkeypatch: pytest.MonkeyPatch) -> None:
     """Its text wanted the nominal unit, for which the choice of steps began anew, in silence."""
     study = friction_study()
-    outcome = study.run(100, progress=lambda done, total: False)
-    assert outcome.trials == 0
-    monkeypatch.setattr(wd.Study, "resolved_steps", lambda self: pytest.fail("the steps are chosen again"))
+    outcome, tally = (call(100, progress=lambda *_: False) for call in (study.run, study.count))
+    assert outcome.trials == tally.trials == 0
+    monkeypatch.setattr(wd.Study, "resolved_steps", lambda _: pytest.fail("the steps are chosen again"))
     assert "stopped" in repr(outcome)
     assert "stopped" in outcome._repr_html_()
+    assert outcome.audit().trials == tally.audit().trials == 0
