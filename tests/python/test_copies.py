@@ -150,4 +150,4 @@ def test_an_error_in_a_worker_process_reaches_the_caller() -> None:
         waiting = [pool.apply_async(fails, [place]) for place in range(len(all_errors()))]
         for error, result in zip(all_errors(), waiting, strict=True):
             with pytest.raises(type(error), match="^" + str(error).split(":", maxsplit=1)[0]):
-                result.get(timeout=60)
+                result.get(timeout=300)

@@ -173,7 +173,7 @@ def test_limits_are_where_users_read_them() -> None:
     assert (LARGEST_FILE, MOST_STATES, MOST_DRAWN) == (5_000_000, 100, 10_000)
     assert {_loop.MOST_SIGNALS, MOST_REQUIREMENTS, MOST_MEASURES} == {1000}
     words = (Path(__file__).parents[2] / "README.md").read_text(encoding="utf-8")
-    stated = "at most 5 MB, 100 states, 1000 signals, requirements and measures each, and 10 000 drawn parameters"
+    stated = "at most 5 MB, 100 states, 1 000 signals, requirements and measures each, and 10 000 drawn parameters"
     assert stated in " ".join(words.split())
 
 

@@ -329,7 +329,7 @@ def test_a_second_ctrl_c_ends_a_call_that_does_not_answer(monkeypatch: pytest.Mo
             time.sleep(0.1)
         raise AssertionError("the second one was not heard")
 
-    outcome = quick_study().run(1_000_000, progress=hangs)
+    outcome = slow_study(seconds=10.0).run(1_000, progress=hangs)
     assert outcome.interrupted
 
 
