@@ -133,7 +133,7 @@ class Outcome(Portable):
         return self._indices(~(self.slack[:, self._place(requirement)] >= 0.0))
 
     @explained
-    def audit(self, threads: int = 0, progress: bool | Report = False) -> Audit:
+    def audit(self, threads: int = 0, progress: bool | Report | None = None) -> Audit:
         """Find out what numerical error can have changed, once; later calls return what was found.
 
         The trials that matter (near a limit, extreme in a spread, failing, and a sample of all) are integrated again
@@ -142,7 +142,7 @@ class Outcome(Portable):
         Parameters
         ----------
         threads, progress
-            As for `Study.run`; by default no progress is shown.
+            As for `Study.run`; a bar shows nothing of the first second.
 
         Returns
         -------
@@ -156,7 +156,7 @@ class Outcome(Portable):
             rows, scales = self._audit_rows()
             missed = (~(rows.slack >= 0.0)).sum(axis=1).tolist()
             run = Run(rows, scales, self.trials, len(self.failures), missed)
-            with Reporter(progress, self.trials) as reporter:
+            with Reporter(progress, self.trials, afterwards=True) as reporter:
                 found = audit(self.study, self._described, run, threads, reporter)
             if found.interrupted:
                 return found

@@ -20,6 +20,8 @@ Report = Callable[[int, int], object]
 GoOn = Callable[[int], bool]
 #: Seconds between two reports.
 INTERVAL = 0.1
+#: Seconds of work after a run that a bar does not show.
+UNSHOWN = 1.0
 
 
 class Reporter:
@@ -35,6 +37,8 @@ class Reporter:
         trials done and asked for, which stops by returning False.
     total : int
         Trials asked for.
+    afterwards : bool
+        All of them are done already, and work beside them follows, of which a bar shows nothing in its first second.
 
     Attributes
     ----------
@@ -42,13 +46,16 @@ class Reporter:
         Whether a stop was asked for, by Ctrl-C or by the function.
     """
 
-    def __init__(self, progress: bool | Report | None, total: int) -> None:
+    def __init__(self, progress: bool | Report | None, total: int, *, afterwards: bool = False) -> None:
         self._tell = _receiver(progress, total)
         self._requests = StopRequests()
         self._total = total
-        self._done = 0
+        self._done = total if afterwards else 0
         self._said_no = False
         self._last = -np.inf
+        self._is_hidden = afterwards and isinstance(self._tell, ProgressBar)
+        if self._is_hidden:
+            self._last = time.perf_counter() + UNSHOWN - INTERVAL
         self._told_end = False
 
     @property
@@ -80,6 +87,7 @@ class Reporter:
             if self._tell is not None and self._is_time():
                 if isinstance(self._tell, ProgressBar):
                     self._tell.show(work, done, total)
+                    self._is_hidden = False
                 else:
                     self._hear(self._tell(self._done, self._total))
             return not self.stopped
@@ -88,7 +96,7 @@ class Reporter:
 
     def close(self) -> None:
         """End the line of a bar; a second call does nothing."""
-        if isinstance(self._tell, ProgressBar):
+        if isinstance(self._tell, ProgressBar) and not self._is_hidden:
             self._tell.close(self._done, self._total)
 
     def listening(self) -> StopRequests:

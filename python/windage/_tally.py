@@ -66,7 +66,7 @@ class Tally(Portable):
         freeze(self.first_failures)
 
     @explained
-    def audit(self, threads: int = 0, progress: bool | Report = False) -> Audit:
+    def audit(self, threads: int = 0, progress: bool | Report | None = None) -> Audit:
         """Find out what numerical error can have changed, once; see `Outcome.audit`."""
         from ._audit import audit
         from ._audit_run import Run
@@ -78,7 +78,7 @@ class Tally(Portable):
         run = Run(self.watch.rows, self.watch.scales, self.trials, self.failures, missed, self.watch)
         # Without any trial the steps may not be chosen yet, and are not wanted.
         described = self.study._run_description if self.trials else self.study._describe(1)
-        with Reporter(progress, self.trials) as reporter:
+        with Reporter(progress, self.trials, afterwards=True) as reporter:
             found = audit(self.study, described, run, threads, reporter)
         if not found.interrupted:
             self.__dict__["_audit"] = found

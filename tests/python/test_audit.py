@@ -11,7 +11,7 @@ import numpy as np
 import pytest
 
 import windage as wd
-from windage import _audit
+from windage import _audit, _progress, _reporter
 from windage._audit_trials import Rows
 from windage._demo import demo_study
 from windage._runner import Columns, make_campaign, run_columns
@@ -320,3 +320,15 @@ def test_what_never_happens_may_be_required_never_to_happen(linear: bool) -> Non
     outcome = wd.Study(loop, requirements, seed=1).run(500, progress=False)
     assert outcome.audit().undecided == 0
     assert outcome.verdict(0.95).decision == "pass"
+
+
+def test_an_audit_shows_progress_once_it_takes_a_while(monkeypatch: pytest.MonkeyPatch) -> None:
+    shown: list[str] = []
+    monkeypatch.setattr(_progress.ProgressBar, "_draw", lambda bar, work, *counts, **ends: shown.append(work))  # noqa: ARG005
+    outcome = stiff(1).run(300, progress=False)
+    outcome.audit(progress=True)
+    assert shown == []
+    monkeypatch.setattr(_reporter, "UNSHOWN", 0.0)
+    stiff(1).run(300, progress=False).audit(progress=True)
+    assert shown[0] == "trials run again"
+    assert shown[-1] == "trials"
